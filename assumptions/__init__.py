@@ -1,0 +1,1 @@
+"""Assumptions: tables and laws of mortality, lapse, interest, expenses; a basis bundles them under a name."""

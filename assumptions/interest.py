@@ -1,0 +1,120 @@
+"""The interest part of a basis: discount factors from the valuation date.
+
+All rates are annual effective. Whatever the form of the document, a curve comes down to the integral H(t) of
+the force of interest from 0 to t years, which is piecewise linear, and v(t) = exp(-H(t)).
+"""
+
+from __future__ import annotations
+
+import math
+from bisect import bisect_left
+from dataclasses import dataclass
+
+from pydantic import Field, field_validator, model_validator
+
+from .items import Item
+from .rules import Rule
+
+
+class InterestRule(Rule):
+    """A curve for the policies that fit: flat, yearly forwards, or spot rates by maturity."""
+
+    flat: float | None = Field(None, description="one rate for all times")
+    forward: list[float] | None = Field(
+        None, min_length=1, description="rates of the first, second ... year from the valuation date, the last held"
+    )
+    spot: dict[float, float] | str | None = Field(
+        None,
+        description="rates by maturity in years, inline or a CSV or Parquet file with columns 'maturity' and 'rate'; "
+        "constant forward rate between maturities, the last one held",
+    )
+
+    @field_validator("spot", mode="before")
+    @classmethod
+    def _keys(cls, value: object) -> object:
+        # TOML keys are text; maturities are numbers.
+        if isinstance(value, dict):
+            return {float(key): rate for key, rate in value.items()}
+        return value
+
+    @model_validator(mode="after")
+    def _one_form(self) -> InterestRule:
+        given = [name for name in ("flat", "forward", "spot") if getattr(self, name) is not None]
+        if len(given) != 1:
+            said = f"; {' and '.join(given)} are given" if given else ""
+            raise ValueError(f"an interest rule needs one of 'flat', 'forward' and 'spot'{said}")
+        if self.flat is not None:
+            _check_rate(self.flat, "flat")
+        for year, rate in enumerate(self.forward or (), 1):
+            _check_rate(rate, f"the forward of year {year}")
+        return self
+
+
+def _check_rate(rate: float, what: str) -> None:
+    if not -0.5 < rate <= 1:
+        raise ValueError(f"{what} is {rate:g}; a yearly rate must lie above -0.5 and not above 1")
+
+
+class Interest(Item):
+    """The curves and which policies each is for."""
+
+    rule: list[InterestRule] = Field(min_length=1, description="read top to bottom, the first that fits wins")
+
+
+@dataclass(frozen=True)
+class Curve:
+    """Integral of the force of interest, linear between knots and after the last at ``final_force``.
+
+    times: knots in years from the valuation date, the first is 0; integrals: H at the knots.
+    """
+
+    times: tuple[float, ...]
+    integrals: tuple[float, ...]
+    final_force: float
+
+    def integral(self, t: float) -> float:
+        """H(t) for t >= 0 in years."""
+        if t >= self.times[-1]:
+            return self.integrals[-1] + self.final_force * (t - self.times[-1])
+        right = max(1, bisect_left(self.times, t))
+        t0, t1 = self.times[right - 1], self.times[right]
+        h0, h1 = self.integrals[right - 1], self.integrals[right]
+        return h0 + (h1 - h0) * ((t - t0) / (t1 - t0))
+
+    def factor(self, t: float) -> float:
+        """Discount factor v(t) = exp(-H(t)) for t >= 0 in years."""
+        return math.exp(-self.integral(t))
+
+
+def curve_from(
+    flat: float | None = None,
+    forward: list[float] | None = None,
+    spot: dict[float, float] | None = None,
+) -> Curve:
+    """Return the curve of a rule's figures; spot rates are by maturity in years, all above 0.
+
+    Raises ValueError for spot rates without a maturity, or with one that is not above 0.
+    """
+    if flat is not None:
+        return Curve((0.0,), (0.0,), math.log1p(flat))
+    if forward is not None:
+        forces = [math.log1p(rate) for rate in forward]
+        integrals = [0.0]
+        for force in forces[:-1]:
+            integrals.append(integrals[-1] + force)
+        return Curve(tuple(float(year) for year in range(len(forces))), tuple(integrals), forces[-1])
+    return _from_spot(spot or {})
+
+
+def _from_spot(spot: dict[float, float]) -> Curve:
+    maturities = sorted(spot)
+    if not maturities:
+        raise ValueError("a spot curve needs at least one maturity")
+    if maturities[0] <= 0:
+        raise ValueError(f"maturity {maturities[0]:g} is not above 0")
+    for maturity in maturities:
+        _check_rate(spot[maturity], f"the spot rate at maturity {maturity:g}")
+    times = [0.0, *maturities]
+    integrals = [0.0, *(maturity * math.log1p(spot[maturity]) for maturity in maturities)]
+    final = (integrals[-1] - integrals[-2]) / (times[-1] - times[-2])
+    return Curve(tuple(times), tuple(integrals), final)

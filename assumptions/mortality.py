@@ -1,0 +1,94 @@
+"""The mortality part of a basis: which rates a policy's life is subject to."""
+
+from __future__ import annotations
+
+from typing import Any, Literal, Protocol
+
+from pydantic import Field, field_validator
+
+from .items import Item
+from .laws import Law
+from .rules import Rule
+
+AgeBasis = Literal["exact", "last birthday", "nearest birthday", "next birthday"]
+Fractions = Literal["constant force", "uniform deaths", "Balducci"]
+
+
+class Rates(Protocol):
+    """Yearly rates by age at entry and completed years since, from a table or a law."""
+
+    @property
+    def first_age(self) -> int:
+        """Lowest age at entry."""
+
+    @property
+    def final_age(self) -> int:
+        """Age at whose end the rates stop."""
+
+    @property
+    def closed(self) -> bool:
+        """Whether nobody is left at ``final_age`` (the last rate is 1)."""
+
+    @property
+    def whole_ages_only(self) -> bool:
+        """Whether age at entry must be a whole number."""
+
+    def rate(self, entry_age: float, duration: int) -> float:
+        """Rate of the year that starts ``duration`` years after entry at ``entry_age``."""
+
+
+class TableFile(Item):
+    """One table in a file that holds several, or whose columns need a word of explanation."""
+
+    file: str = Field(description="CSV, Parquet or XTbML file, relative to the document")
+    table: int | str | None = Field(None, description="which table of an XTbML file: its number in the file, from 1")
+    column: str | None = Field(None, description="which column of a CSV or Parquet file holds the ultimate rates")
+    select_by: Literal["entry age", "attained age"] | None = Field(
+        None, description="what the age beside a row of select rates is; needed where a file has select rates"
+    )
+
+
+class MortalityRule(Rule):
+    """Rates for the policies that fit, with their adjustments.
+
+    The rate that counts is  q = min(1, multiple * q_table + extra)  with the table entered at the age at
+    entry plus ``added_years``.
+    """
+
+    table: str | TableFile | Law = Field(description="a file of rates, one table of it, or a law")
+    multiple: float = Field(1.0, ge=0, le=100, description="factor on every rate")
+    added_years: int = Field(0, ge=-50, le=50, description="years added to the age before the table is entered")
+    extra: float = Field(0.0, ge=0, le=1, description="flat addition to every yearly rate")
+    close: bool = Field(
+        False,
+        description="take the rate at the last age as 1 where the table ends below 1; "
+        "otherwise a policy that outlives the table is an exception",
+    )
+
+    @field_validator("table", mode="before")
+    @classmethod
+    def _one_kind(cls, value: Any) -> Any:
+        # Deciding by the telling key gives one plain error in place of one for each member of the union.
+        if isinstance(value, dict):
+            return Law.model_validate(value) if "law" in value else TableFile.model_validate(value)
+        return value
+
+
+class Mortality(Item):
+    """How age is counted, how mortality runs within a year of age, and the rules."""
+
+    age: AgeBasis = Field("exact", description="age at commencement that enters the tables")
+    fractions: Fractions = Field("constant force", description="mortality within a year of age")
+    rule: list[MortalityRule] = Field(min_length=1, description="read top to bottom, the first that fits wins")
+
+
+def adjusted_rate(rule: MortalityRule, rates: Rates, entry_age: float, duration: int) -> float:
+    """Return the yearly rate that counts for a life under a rule.
+
+    entry_age: age at commencement, before ``added_years``; duration: completed years since.
+    Raises ValueError where the table has no rate and is not closed.
+    """
+    entered = entry_age + rule.added_years
+    if entered + duration >= rates.final_age - 1 and (rule.close or rates.closed):
+        return 1.0
+    return min(1.0, rule.multiple * rates.rate(entered, duration) + rule.extra)

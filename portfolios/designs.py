@@ -1,0 +1,177 @@
+"""Product designs: documents of payment streams hung on states.
+
+A stream is one line of money. It is paid *while* a state lasts or *on* a move, from one duration to another,
+so many times a year, in advance or arrears, as a relative pattern times one amount per policy.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from datetime import date
+from typing import Any, Literal
+
+from pydantic import BaseModel, ConfigDict, Field, field_validator, model_validator
+
+
+class _Part(BaseModel):
+    model_config = ConfigDict(extra="forbid", frozen=True, populate_by_name=True)
+
+
+class AtAge(_Part):
+    """The first monthly due date on or after a birthday."""
+
+    age: int = Field(ge=0, le=130, description="age in whole years")
+
+
+class Share(_Part):
+    """One piece of a pattern: a relative amount for so many years; the last piece may run on."""
+
+    years: int | None = Field(None, ge=1, le=120, description="length of the piece in years; absent: for ever")
+    share: float = Field(ge=0, description="relative amount")
+
+
+class Increase(_Part):
+    """Yearly increase of a stream's relative amount on each anniversary of its clock."""
+
+    rate: float | str = Field(description="yearly rate, or the extract column that holds it")
+    kind: Literal["compound", "simple"] = Field("compound", description="on the last amount or on the first")
+
+
+Duration = float | str | AtAge
+Kind = Literal["premium", "benefit", "expense", "commission"]
+
+
+class Stream(_Part):
+    """One line of money of a contract."""
+
+    name: str = Field(min_length=1, description="name in cash flows and reports")
+    kind: Kind | None = Field(
+        None, description="part of the reserve that it belongs to; absent: 'premium' where the direction is in, else 'benefit'"
+    )
+    direction: Literal["in", "out"] | None = Field(None, description="whether the office receives or pays it")
+    amount: float | str | None = Field(
+        None, description="an extract column or a number: a year for payments while a state lasts, else each time"
+    )
+    share: float = Field(1.0, ge=0, le=1000, description="factor on the amount")
+    of: str | None = Field(
+        None, description="name of another stream: paid whenever that one pays, as a share of it; replaces 'amount' and dates"
+    )
+    while_: Literal["alive", "certain"] | None = Field(
+        None, alias="while", description="paid as long as the life lives and the policy is in force, or for certain"
+    )
+    on: Literal["death", "lapse"] | None = Field(None, description="paid on this move")
+    from_: Duration = Field(
+        0.0, alias="from", description="years from commencement to its start: a number, a column, or { age = x }"
+    )
+    to: Duration | None = Field(None, description="years from commencement to its end; absent: for life")
+    a_year: int | str = Field(1, description="payments a year, 1, 2, 4 or 12: a number or a column")
+    paid: Literal["advance", "arrears", "once"] = Field(
+        "advance", description="at the start or the end of each period, or a single time at 'from'"
+    )
+    guarantee: float | str | None = Field(
+        None, description="years from its start for which it is paid for certain if the life lives at its start"
+    )
+    pattern: list[Share] | None = Field(None, min_length=1, description="relative amounts by years of the stream's clock")
+    increase: Increase | None = Field(None, description="yearly increase")
+    decrease: Literal["yearly", "monthly"] | None = Field(
+        None, description="falls in equal steps from 1 at its start to nothing at its end"
+    )
+    clock: Literal["stream", "commencement"] = Field(
+        "stream", description="from when pattern and increase count their years"
+    )
+    payments: Literal["at their dates", "Woolhouse 2", "Woolhouse 3"] = Field(
+        "at their dates", description="valued one by one, or by Woolhouse's formula with two or three terms"
+    )
+
+    @field_validator("a_year")
+    @classmethod
+    def _frequency(cls, value: int | str) -> int | str:
+        if isinstance(value, int) and value not in (1, 2, 4, 12):
+            raise ValueError(f"{value} payments a year are not known; the choice is 1, 2, 4 and 12")
+        return value
+
+    @field_validator("from_", "to", mode="before")
+    @classmethod
+    def _one_kind(cls, value: Any) -> Any:
+        return AtAge.model_validate(value) if isinstance(value, dict) else value
+
+    @model_validator(mode="after")
+    def _complete(self) -> Stream:
+        given = self.model_fields_set
+        if self.of is not None:
+            extra = sorted(given - {"name", "kind", "direction", "of", "share", "pattern", "clock"})
+            if extra:
+                raise ValueError(f"a stream paid as a share 'of' another takes no '{extra[0].rstrip('_')}'")
+            return self
+        if self.direction is None or self.amount is None:
+            raise ValueError("a stream needs 'direction' and 'amount', or 'of'")
+        if (self.while_ is None) == (self.on is None):
+            raise ValueError("a stream needs one of 'while' and 'on'")
+        if self.on is not None:
+            _none_of(given, f"paid on {self.on}", "a_year", "paid", "guarantee", "payments")
+        if self.paid == "once":
+            _none_of(given, "paid once", "to", "a_year", "guarantee", "decrease", "payments")
+        if self.decrease is not None and self.to is None:
+            raise ValueError("a decrease to nothing needs 'to'")
+        if self.while_ == "certain" and self.to is None and self.paid != "once":
+            raise ValueError("a stream paid for certain needs 'to'")
+        if self.pattern and any(piece.years is None for piece in self.pattern[:-1]):
+            raise ValueError("only the last piece of a pattern may leave out 'years'")
+        if self.guarantee is not None and self.while_ != "alive":
+            raise ValueError("a guarantee needs a stream paid while alive")
+        if self.payments != "at their dates" and (self.guarantee is not None or self.while_ != "alive"):
+            raise ValueError(f"{self.payments} needs a stream paid while alive, without a guarantee")
+        return self
+
+    @property
+    def part(self) -> Kind:
+        """The kind, stated or by direction."""
+        return self.kind or ("premium" if self.direction == "in" else "benefit")
+
+    def columns(self) -> Iterator[str]:
+        """Extract columns that the stream looks at."""
+        increase = self.increase.rate if self.increase else None
+        for value in (self.amount, self.from_, self.to, self.a_year, self.guarantee, increase):
+            if isinstance(value, str):
+                yield value
+
+
+def _none_of(given: set[str], what: str, *keys: str) -> None:
+    for key in keys:
+        if key in given:
+            raise ValueError(f"a stream {what} takes no '{key}'")
+
+
+class Design(_Part):
+    """A product: its states and its streams."""
+
+    code: str = Field(min_length=1, description="value of the extract's column 'product'")
+    title: str = Field("", description="name in reports")
+    effective: date | None = Field(None, description="date from which it is sold")
+    reference: str = Field("", description="where its terms are laid down")
+    states: Literal["one life"] = Field("one life", description="state model that the streams hang on")
+    stream: list[Stream] = Field(min_length=1, description="the payment streams")
+
+    @model_validator(mode="after")
+    def _consistent(self) -> Design:
+        names = [stream.name for stream in self.stream]
+        for name in names:
+            if names.count(name) > 1:
+                raise ValueError(f"two streams are called '{name}'")
+        for stream in self.stream:
+            if stream.of is None:
+                continue
+            base = next((other for other in self.stream if other.name == stream.of), None)
+            if base is None:
+                raise ValueError(f"stream '{stream.name}' is a share of '{stream.of}', which is not there")
+            if base.of is not None:
+                raise ValueError(f"stream '{stream.name}' is a share of '{stream.of}', which is itself a share")
+        return self
+
+    def columns(self) -> list[str]:
+        """Extract columns that the design looks at, in order of first mention."""
+        return list(dict.fromkeys(column for stream in self.stream for column in stream.columns()))
+
+    def named(self, name: str) -> Stream:
+        """Return the stream of this name."""
+        return next(stream for stream in self.stream if stream.name == name)

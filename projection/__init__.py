@@ -1,0 +1,1 @@
+"""Projection: curves, the compiled loops, and the questions that they answer."""

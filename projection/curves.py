@@ -1,0 +1,257 @@
+"""Curves: one row per distinct key met in the portfolio, shared by every policy that has the key.
+
+Survival by mortality rule and age at commencement; persistency by lapse rule and the time at which lapses stop; discount
+factors by interest rule and the part of a step that has passed at the valuation date.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import NDArray
+
+from assumptions.basis import Basis, ClaimDelay
+from assumptions.interest import Curve
+from assumptions.lapse import LapseRule, yearly_lapse
+from assumptions.laws import Law
+from assumptions.mortality import MortalityRule, Rates
+
+from . import loops
+from .documents import DocumentError
+from .settings import Settings
+from .streams import LONGEST
+
+FRACTIONS = {"constant force": 0, "uniform deaths": 1, "Balducci": 2}
+
+IMPOSSIBLE = -1
+"""Row of a key for which there are no rates."""
+
+_SPANS = 367
+"""Days of a year of age, and one more."""
+
+NEVER = LONGEST + 1
+"""Months until lapses stop where they never do."""
+
+Row = NDArray[np.float64]
+
+
+@dataclass
+class Survival:
+    """Rows of survival by mortality rule and age at commencement."""
+
+    basis: Basis
+    living: NDArray[np.float64] = field(default_factory=lambda: np.zeros(1 << 16))
+    living_at: list[int] = field(default_factory=lambda: [0])
+    living_count: list[int] = field(default_factory=list)
+    yearly: list[Row] = field(default_factory=list)
+    offset: list[float] = field(default_factory=list)
+    closed: list[bool] = field(default_factory=list)
+    known: dict[int, int] = field(default_factory=dict)
+
+    def __post_init__(self) -> None:
+        mortality = self.basis.document.mortality
+        self.exact = mortality.age == "exact"
+        self.keys = 2 * _SPANS * 160 if self.exact else 256
+        self.fractions = FRACTIONS[mortality.fractions]
+        for number, (rule, rates) in enumerate(zip(mortality.rule, self.basis.rates, strict=True), 1):
+            if self.exact and getattr(rates, "select_years", 0):
+                raise DocumentError(
+                    f"mortality, rule {number}: select rates of {rule.table} need an age at commencement in whole "
+                    "years; set the key 'age' to last, nearest or next birthday"
+                )
+
+    def codes(self, rule: NDArray[np.int64], places: loops.Places) -> NDArray[np.int64]:
+        """Return the key of each policy's row: rule and age at commencement."""
+        age, since, span = (x.astype(np.int64) for x in (places.age, places.since, places.span))
+        basis = self.basis.document.mortality.age
+        if self.exact:
+            key = (2 * np.clip(age, 0, 159) + (span == 366)) * _SPANS + since
+        elif basis == "last birthday":
+            key = age
+        elif basis == "next birthday":
+            key = age + 1
+        else:
+            key = age + (since > span - since)
+        return rule * self.keys + np.clip(key, 0, self.keys - 1)
+
+    def row(self, code: int) -> int:
+        """Return the row of a key, made on first meeting; IMPOSSIBLE where the rates do not cover the age."""
+        if code not in self.known:
+            number, key = divmod(code, self.keys)
+            age = float(key)
+            if self.exact:
+                halves, since = divmod(key, _SPANS)
+                age = halves // 2 + since / (365 + halves % 2)
+            self.known[code] = self._add(number, age)
+        return self.known[code]
+
+    def _add(self, number: int, age: float) -> int:
+        rule, rates = self.basis.document.mortality.rule[number], self.basis.rates[number]
+        whole = int(age) if rates.whole_ages_only else age
+        try:
+            yearly = yearly_rates(rule, rates, whole)
+        except ValueError:
+            return IMPOSSIBLE
+        if len(yearly) == 0:
+            return IMPOSSIBLE
+        at, count = self.living_at[-1], 12 * len(yearly) + 1
+        while at + count > len(self.living):
+            # A new array: a loop that runs in another thread keeps the one it was given.
+            self.living = np.concatenate((self.living, np.zeros(len(self.living))))
+        offset = age - whole
+        reached = np.concatenate(([1.0], np.cumprod(1 - yearly)))
+        loops.fill_living(yearly, reached, offset, self.fractions, self.living[at : at + count])
+        self.living_at.append(at + count)
+        self.living_count.append(count)
+        self.yearly.append(yearly)
+        self.offset.append(offset)
+        self.closed.append(rule.close or rates.closed)
+        return len(self.living_count) - 1
+
+
+def yearly_rates(rule: MortalityRule, rates: Rates, age: float) -> Row:
+    """Adjusted rates of the years from an age at commencement to the end of a table, by year of age or duration.
+
+    Empty where the age lies beyond the table. Raises ValueError where it lies below, or a rate is missing.
+    """
+    entered = age + rule.added_years
+    if entered < rates.first_age:
+        raise ValueError(f"age {entered:g} lies below {rates.first_age}")
+    years = max(0, int(np.ceil(rates.final_age - entered)))
+    if years == 0:
+        return np.zeros(0)
+    source = rates.rates_from(entered if isinstance(rates, Law) else int(entered), years)  # type: ignore[attr-defined]
+    adjusted = np.minimum(1.0, rule.multiple * source + rule.extra)
+    if rule.close or rates.closed:
+        adjusted[-1] = 1.0
+    return adjusted
+
+
+@dataclass
+class Persistency:
+    """Rows of persistency by lapse rule and the month after which nobody lapses, with one place in front."""
+
+    basis: Basis
+    settings: Settings
+    rows: dict[str, NDArray[np.float64]] = field(default_factory=dict)
+    known: dict[int, int] = field(default_factory=dict)
+
+    def __post_init__(self) -> None:
+        lapse = self.basis.document.lapse
+        self.dependent = lapse is not None and lapse.competing == "dependent rates"
+        self.spread = lapse is not None and lapse.timing == "each step" and self.settings.step == "month"
+        if self.dependent and lapse is not None and lapse.timing == "anniversaries" and not self.yearly:
+            raise DocumentError(
+                "lapse: 'dependent rates' spread lapses over the step, and 'anniversaries' do not; "
+                "take 'each step', or a yearly step"
+            )
+        for name in ("held", "dead", "lapsing"):
+            self.rows[name] = np.ones((0, LONGEST + 14))
+
+    @property
+    def yearly(self) -> bool:
+        """Whether steps are years."""
+        return self.settings.step == "year"
+
+    def row(self, code: int) -> int:
+        """Return the row of (1 + rule) * (NEVER + 1) + until, made on first meeting; rule -1 has no lapses."""
+        if code not in self.known:
+            number, until = divmod(code, NEVER + 1)
+            rates = self._rates(number - 1, until)
+            self.known[code] = len(self.rows["held"])
+            made = self._build(rates)
+            for name, row in zip(("held", "dead", "lapsing"), made, strict=True):
+                self.rows[name] = np.concatenate((self.rows[name], row[None, :]))
+        return self.known[code]
+
+    def _rates(self, rule: int, until: int) -> Row:
+        """Share lapsing at each point 0, 1 ... of those still there before."""
+        points = np.arange(LONGEST + 13)
+        if rule < 0:
+            return np.zeros(len(points))
+        document: LapseRule = self.basis.document.lapse.rule[rule]  # type: ignore[union-attr]
+        table = list(self.basis.lapses[rule])
+        yearly = np.array([yearly_lapse(document, table, year) for year in range(len(points) // 12 + 1)])
+        if self.spread:
+            shares = (1 - (1 - yearly) ** (1 / 12))[np.maximum(points - 1, 0) // 12]
+        else:
+            shares = np.where(points % 12 == 0, yearly[np.maximum(points // 12 - 1, 0)], 0.0)
+        shares[0] = 0.0
+        shares[points > until] = 0.0
+        return shares
+
+    def _build(self, shares: Row) -> tuple[Row, Row, Row]:
+        held = np.concatenate(([1.0], np.cumprod(1 - shares)))
+        before = np.concatenate(([1.0, 1.0], held[1:-1]))
+        dead = (before + held) / 2 if self.dependent else before.copy()
+        if self.dependent and self.yearly:
+            # The step that ends at g starts twelve points earlier, at the persistency before the lapses at g.
+            dead = (before + held) / 2
+        return held, dead, before - held
+
+
+@dataclass
+class Discount:
+    """Rows of discount factors to the points after the valuation date, by interest rule and place in the step."""
+
+    basis: Basis
+    settings: Settings
+    payment: NDArray[np.float64] = field(default_factory=lambda: np.ones((0, LONGEST + 1)))
+    claim: NDArray[np.float64] = field(default_factory=lambda: np.ones((0, LONGEST + 1)))
+    known: dict[int, int] = field(default_factory=dict)
+
+    def __post_init__(self) -> None:
+        self.paid = self.basis.document.claims.paid
+
+    def codes(self, rule: NDArray[np.int64], places: loops.Places) -> NDArray[np.int64]:
+        """Return the key of each policy's row: rule, and the part of a month that has passed."""
+        return (rule * 6 + _WHOLES[places.whole]) * _SPANS + places.part
+
+    def row(self, code: int) -> int:
+        """Return the row of a key, made on first meeting."""
+        if code not in self.known:
+            rest, part = divmod(code, _SPANS)
+            rule, whole = divmod(rest, 6)
+            passed = part / (28, 29, 30, 31, 365, 366)[whole]
+            curve = self.basis.curves[rule]
+            n = np.arange(LONGEST + 1, dtype=np.float64)
+            self.known[code] = len(self.payment)
+            payment = factors(curve, np.maximum(n - passed, 0) / 12)
+            self.payment = np.concatenate((self.payment, payment[None, :]))
+            if self.paid == "end of step":
+                self.claim = self.payment
+            else:
+                begin = np.maximum(n - self.settings.step_months, passed)
+                delay = self.paid.delay_months if isinstance(self.paid, ClaimDelay) else 0.0
+                claim = factors(curve, np.maximum((begin + n) / 2 + delay - passed, 0) / 12)
+                self.claim = np.concatenate((self.claim, claim[None, :]))
+        return self.known[code]
+
+    def months_after_start(self) -> float | None:
+        """Months from the start of a step to the payment of a death claim; None where it is paid at its end."""
+        if self.paid == "end of step":
+            return None
+        delay = self.paid.delay_months if isinstance(self.paid, ClaimDelay) else 0.0
+        return self.settings.step_months / 2 + delay
+
+
+_WHOLES = np.zeros(367, dtype=np.int64)
+_WHOLES[[28, 29, 30, 31, 365, 366]] = range(6)
+
+
+def factors(curve: Curve, years: Row) -> Row:
+    """Discount factors v(t) for many t >= 0 in years."""
+    times, integrals = np.array(curve.times), np.array(curve.integrals)
+    beyond = np.maximum(years - times[-1], 0)
+    integral = np.interp(years, times, integrals) + curve.final_force * beyond
+    return np.exp(-integral)
+
+
+def rows_for(codes: NDArray[np.int64], row: object) -> NDArray[np.int32]:
+    """Look up the row of each policy's key, calling ``row`` once for each distinct one."""
+    from .cells import distinct
+
+    keys, inverse = distinct(codes)
+    found = np.array([row(int(key)) for key in keys], dtype=np.int32)  # type: ignore[operator]
+    return found[inverse]

@@ -1,0 +1,150 @@
+"""Reading documents: TOML in, checked models out, and errors that say file, key, value and remedy."""
+
+from __future__ import annotations
+
+import difflib
+import tomllib
+from collections.abc import Iterable
+from pathlib import Path
+from typing import Any, TypeVar
+
+from pydantic import BaseModel, ValidationError
+
+from assumptions.basis import Basis, BasisDocument, prepare_basis
+from assumptions.tables import TableError
+from portfolios.designs import Design
+
+from .run_document import RunDocument
+
+Model = TypeVar("Model", bound=BaseModel)
+
+
+class DocumentError(ValueError):
+    """A document or table that stops the run: names the file, the place, the value and the remedy."""
+
+
+def read_run(path: Path | str) -> RunDocument:
+    """Read a run document. Raises DocumentError."""
+    return read_document(path, RunDocument)
+
+
+def read_basis(path: Path | str) -> Basis:
+    """Read a basis and the tables that it names, relative to its folder. Raises DocumentError."""
+    path = Path(path)
+    document = read_document(path, BasisDocument)
+    try:
+        return prepare_basis(document, path.parent)
+    except (TableError, ValueError, OSError) as error:
+        raise DocumentError(f"{path}: {error}") from error
+
+
+def read_designs(path: Path | str) -> list[Design]:
+    """Read one design, or every ``*.toml`` of a folder in order of name. Raises DocumentError."""
+    path = Path(path)
+    files = sorted(path.glob("*.toml")) if path.is_dir() else [path]
+    if not files:
+        raise DocumentError(f"{path}: the folder holds no design (*.toml)")
+    designs: dict[str, Design] = {}
+    for file in files:
+        design = read_document(file, Design)
+        if design.code in designs:
+            raise DocumentError(f"{file}: key 'code': '{design.code}' is already the code of another design in {path}")
+        designs[design.code] = design
+    return list(designs.values())
+
+
+def read_document(path: Path | str, model: type[Model]) -> Model:
+    """Read one TOML document as a model. Raises DocumentError."""
+    path = Path(path)
+    try:
+        with path.open("rb") as file:
+            content = tomllib.load(file)
+    except FileNotFoundError:
+        raise DocumentError(f"{path}: there is no such file") from None
+    except OSError as error:
+        raise DocumentError(f"{path}: cannot be read: {error.strerror}") from error
+    except (tomllib.TOMLDecodeError, UnicodeDecodeError) as error:
+        raise DocumentError(f"{path}: not valid TOML: {error}") from error
+    return check_document(content, model, str(path))
+
+
+def check_document(content: dict[str, Any], model: type[Model], name: str) -> Model:
+    """Return the content as a model. Raises DocumentError with every fault, one a line."""
+    try:
+        return model.model_validate(content)
+    except ValidationError as error:
+        faults = dict.fromkeys(_sentence(fault, model, content) for fault in error.errors())
+        raise DocumentError("\n".join(f"{name}: {fault}" for fault in faults)) from None
+
+
+def _sentence(fault: Any, model: type[BaseModel], content: dict[str, Any]) -> str:
+    keys = [part for part in fault["loc"] if _is_place(part)]
+    place = _place(keys, content)
+    kind = fault["type"]
+    if kind == "extra_forbidden":
+        known = sorted(_keys_beside(keys, model))
+        near = difflib.get_close_matches(str(keys[-1]), known, n=1)
+        remedy = f"did you mean '{near[0]}'?" if near else f"known here: {', '.join(known)}"
+        return f"{place} is not known; {remedy}"
+    if kind == "missing":
+        return f"{place} is missing"
+    message = fault["msg"].removeprefix("Value error, ").removeprefix("Input should be ")
+    value = fault.get("input")
+    if kind == "value_error":
+        return f"{place}: {message}" if keys else message
+    shown = f" is {_short(value)}" if not isinstance(value, dict | list) else ""
+    return f"{place}{shown}; it should be {message}"
+
+
+def _is_place(part: Any) -> bool:
+    # The names of union members in a location mean nothing to the author of a document.
+    return isinstance(part, int) or (part.islower() or part.isidentifier()) and "[" not in part and part not in {
+        "str", "float", "int", "bool", "date", "AtAge", "Law", "TableFile", "ClaimDelay", "Band"}  # fmt: skip
+
+
+def _short(value: Any) -> str:
+    text = repr(value) if isinstance(value, str) else str(value)
+    return text if len(text) <= 60 else text[:57] + "..."
+
+
+def _place(keys: Iterable[Any], content: Any) -> str:
+    words: list[str] = []
+    for key in keys:
+        if isinstance(key, int):
+            content = content[key] if isinstance(content, list) and key < len(content) else None
+            name = content.get("name") if isinstance(content, dict) else None
+            words[-1:] = [f"{words[-1] if words else 'item'} {key + 1}" + (f" ('{name}')" if name else "")]
+        else:
+            content = content.get(key) if isinstance(content, dict) else None
+            words.append(str(key))
+    if not words:
+        return "the document"
+    *outer, last = words
+    where = f"{', '.join(outer)}: " if outer else ""
+    return f"{where}key '{last}'" if " " not in last else f"{where}{last}"
+
+
+def _keys_beside(keys: list[Any], model: type[BaseModel]) -> list[str]:
+    """Keys that are known where the last of these stands."""
+    current: Any = model
+    for key in keys[:-1]:
+        if isinstance(key, int):
+            continue
+        field = next(
+            (field for name, field in current.model_fields.items() if key in (name, field.alias)), None
+        )
+        inner = _model_in(field.annotation) if field is not None else None
+        if inner is None:
+            break
+        current = inner
+    return [field.alias or name for name, field in current.model_fields.items()]
+
+
+def _model_in(annotation: Any) -> type[BaseModel] | None:
+    if isinstance(annotation, type) and issubclass(annotation, BaseModel):
+        return annotation
+    for argument in getattr(annotation, "__args__", ()):
+        found = _model_in(argument)
+        if found is not None:
+            return found
+    return None

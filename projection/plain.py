@@ -1,0 +1,243 @@
+"""The plain twin: the reserve of one policy in ordinary Python, payment by payment, from the definitions.
+
+It shares no line with the compiled engine and is written for a reader who has the page of conventions beside
+it. Every run values a sample of its policies a second time with it, and the working of a policy is printed
+from it.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from datetime import date
+from fractions import Fraction
+from math import fsum
+from typing import Any, Literal, NamedTuple
+
+from assumptions.basis import Basis
+from assumptions.rules import Rule, first_fit
+from portfolios.designs import Design
+
+from .plain_dates import Position, age_at, month_after, monthiversary, position_of
+from .plain_expenses import expense_rule, expense_streams
+from .plain_faults import NotValued
+from .plain_lapse import Persistency, until_months
+from .plain_life import Survival, yearly_rates
+from .plain_occasions import Course, Occasion
+from .plain_streams import Part, Policy, PolicyStream, design_streams
+from .settings import Settings
+
+__all__ = ["NotValued", "Payment", "PlainValue", "RulesUsed", "plain_value"]
+
+
+class Payment(NamedTuple):
+    """One payment to come; money in currency, not rounded.
+
+    point: months from commencement, for a death or lapse the end of its step, and ``due`` its date;
+    month: first day of the calendar month in which the cash flow counts; policy_year: from 1, the one of the
+    relative amount; the payment is amount x relative; survival x persistency is its probability (of dying or
+    lapsing in the step, for a payment on a move); t: years from the valuation date to the payment, at which
+    ``discount`` is taken. Against the usual direction of its part (a premium paid out) expected and value are
+    negative. By Woolhouse's formula, relative includes the formula's weight.
+    """
+
+    stream: str
+    part: Part
+    direction: Literal["in", "out"]
+    point: int
+    due: date
+    month: date
+    policy_year: int
+    amount: float
+    relative: float
+    survival: float
+    persistency: float
+    t: float
+    discount: float
+    expected: float
+    value: float
+
+
+class RulesUsed(NamedTuple):
+    """Numbers of the rules that fit, from 1; lapse 0 where nobody lapses; expenses by name of the item."""
+
+    mortality: int
+    lapse: int
+    interest: int
+    expenses: dict[str, int]
+
+
+@dataclass(frozen=True)
+class PlainValue:
+    """The reserve of one policy and what it is made of; money in currency, not rounded.
+
+    age: at commencement, in years; survival and persistency: L(T) and P(T) from commencement to the valuation
+    date; life and lapses: the yearly rates behind them, ``life.yearly`` those used.
+    """
+
+    benefits: float
+    expenses: float
+    premiums: float
+    payments: list[Payment]
+    position: Position
+    age: Fraction
+    survival: float
+    persistency: float
+    life: Survival
+    lapses: Persistency
+    rules: RulesUsed
+
+    @property
+    def reserve(self) -> float:
+        """Value of benefits and expenses (with commission) less that of premiums."""
+        return self.benefits + self.expenses - self.premiums
+
+
+def plain_value(
+    policy: Mapping[str, Any], design: Design, basis: Basis, settings: Settings, payments: bool = True
+) -> PlainValue:
+    """Value one policy.
+
+    policy: extract column to Python value (date, number, text or None); payments: whether to list them, which
+    takes longer than the sums. Raises NotValued, with reason, field, value and rule, for a policy that
+    belongs to the exceptions, and ValueError for a basis at odds with the step.
+    """
+    birth, commencement = _date(policy, "birth_date"), _date(policy, "commencement_date")
+    position = position_of(settings.valuation_date, commencement, settings.step)
+    age = age_at(birth, commencement, basis.document.mortality.age)
+    course, rules = _course(policy, age, position, basis, settings)
+    streams = _streams(policy, design, basis, course, rules, commencement)
+    values: dict[Part, list[float]] = {"benefits": [], "expenses": [], "premiums": []}
+    for stream in streams:
+        values[stream.part].append(stream.sign * _value_of(stream, course))
+    return PlainValue(
+        benefits=fsum(values["benefits"]),
+        expenses=fsum(values["expenses"]),
+        premiums=fsum(values["premiums"]),
+        payments=_payments(streams, course, commencement) if payments else [],
+        position=position,
+        age=age,
+        survival=course.alive_now,
+        persistency=course.in_force_now,
+        life=course.life,
+        lapses=course.lapses,
+        rules=rules,
+    )
+
+
+def _value_of(stream: PolicyStream, course: Course) -> float:
+    """Return the sum of amount x relative x probability x discount factor over the payments of a stream."""
+    return fsum(
+        stream.amount(occasion)
+        * stream.relative(occasion)
+        * occasion.weight
+        * (occasion.survival * occasion.persistency)
+        * course.discount(occasion.paid)
+        for occasion in stream.occasions
+    )
+
+
+def _date(policy: Policy, column: str) -> date:
+    value = policy.get(column)
+    if not isinstance(value, date):
+        raise NotValued("date missing", column, value, "a date is needed")
+    return value
+
+
+def _course(
+    policy: Policy, age: Fraction, position: Position, basis: Basis, settings: Settings
+) -> tuple[Course, RulesUsed]:
+    """Find the rules that fit and return what the policy's probabilities and discount factors depend on."""
+    document = basis.document
+    mortality = _fit("mortality", document.mortality.rule, policy)
+    interest = _fit("interest", document.interest.rule, policy)
+    lapse = _fit("lapse", document.lapse.rule, policy) if document.lapse else -1
+    expenses = {item.name: expense_rule(item, policy) + 1 for item in document.expense}
+    rates = yearly_rates(document.mortality.rule[mortality], basis.rates[mortality], age)
+    life = Survival(rates, document.mortality.fractions)
+    if document.lapse:
+        rule = document.lapse.rule[lapse]
+        until = until_months(rule, policy.get(rule.until) if isinstance(rule.until, str) else None)
+        lapses = Persistency(document.lapse, rule, basis.lapses[lapse], until, settings.step_months)
+    else:
+        lapses = Persistency(None, None, (), None, settings.step_months)
+    outstanding = settings.due == "outstanding"
+    curve = basis.curves[interest]
+    course = Course(position.u, settings.step_months, outstanding, life, lapses, document.claims, curve)
+    for share, what in ((course.alive_now, "alive"), (course.in_force_now, "in force")):
+        if share <= 0:
+            raise NotValued(
+                f"nobody {what} at the valuation date", "commencement_date", None, f"by the basis, {share}"
+            )
+    return course, RulesUsed(mortality + 1, lapse + 1, interest + 1, expenses)
+
+
+def _fit(place: str, rules: list[Any], policy: Policy) -> int:
+    checked: list[Rule] = rules
+    position = first_fit(checked, policy)
+    if position is None:
+        raise NotValued("no rule fits", place, None, f"one of the {place} rules must fit")
+    return position
+
+
+def _streams(
+    policy: Policy, design: Design, basis: Basis, course: Course, rules: RulesUsed, commencement: date
+) -> list[PolicyStream]:
+    """Return the streams of the design and those that the expense items add, in this order."""
+    streams = design_streams(design, policy, course)
+    ends = [stream.terms.end for stream in streams]
+    known = [end for end in ends if end is not None]
+    if len(known) == len(ends) and max(known) < course.u:
+        raise NotValued(
+            "matured", f"product {design.code}", f"{max(known)} months", "ends before the valuation date"
+        )
+    own = {stream.name for stream in design.stream if stream.of is None}
+    added: list[PolicyStream] = []
+    for item in basis.document.expense:
+        rule = item.rule[rules.expenses[item.name] - 1]
+        added += expense_streams(item, rule, streams, own, course, commencement)
+    return streams + added
+
+
+def _payments(streams: list[PolicyStream], course: Course, commencement: date) -> list[Payment]:
+    return [
+        _payment(stream, occasion, course, commencement)
+        for stream in streams
+        for occasion in stream.occasions
+    ]
+
+
+def _payment(stream: PolicyStream, occasion: Occasion, course: Course, commencement: date) -> Payment:
+    due = monthiversary(commencement, occasion.point)
+    month = due.replace(day=1) if occasion.paid == occasion.point else _claim_month(commencement, occasion)
+    amount, relative = stream.amount(occasion), stream.relative(occasion) * occasion.weight
+    expected = stream.sign * amount * relative * (occasion.survival * occasion.persistency)
+    discount = course.discount(occasion.paid)
+    return Payment(
+        stream=stream.name,
+        part=stream.part,
+        direction=stream.direction,
+        point=occasion.point,
+        due=due,
+        month=month,
+        policy_year=occasion.month // 12 + 1,
+        amount=amount,
+        relative=relative,
+        survival=occasion.survival,
+        persistency=occasion.persistency,
+        t=course.years_to(occasion.paid),
+        discount=discount,
+        expected=expected,
+        value=expected * discount,
+    )
+
+
+def _claim_month(commencement: date, occasion: Occasion) -> date:
+    """Return the calendar month of a claim that is not paid at the end of its step.
+
+    The step starts on the day of commencement's day of the month; months of 30.4375 days run on from there.
+    """
+    start = occasion.month
+    later = (commencement.day - 1 + 30.4375 * (occasion.paid - start)) // 30.4375
+    year, month = month_after(commencement, start + int(later))
+    return date(year, month, 1)

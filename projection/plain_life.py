@@ -1,0 +1,152 @@
+"""Survival of one life from commencement, year by year, in ordinary Python."""
+
+from __future__ import annotations
+
+import math
+from fractions import Fraction
+from typing import NamedTuple
+
+from assumptions.mortality import Fractions, MortalityRule, Rates, adjusted_rate
+
+from .plain_faults import NotValued
+
+Months = int | Fraction
+
+
+def through(q: float, s: float, fractions: Fractions) -> float:
+    """Return F(q, s), the probability to survive the first part s (0 to 1) of a year with rate q."""
+    if s == 0:
+        return 1.0
+    if fractions == "constant force":
+        return float((1 - q) ** s)
+    if fractions == "uniform deaths":
+        return 1 - s * q
+    return (1 - q) / (1 - (1 - s) * q)
+
+
+class YearlyRates(NamedTuple):
+    """Adjusted yearly rates of one life.
+
+    Year j starts j - ``offset`` years after commencement. ``offset`` is the part r of an exact age a + r that
+    enters a table of whole ages, 0 otherwise. ``entry`` is the age, before added years, of year 0.
+    """
+
+    rule: MortalityRule
+    rates: Rates
+    entry: float
+    offset: Fraction
+
+    @property
+    def closed(self) -> bool:
+        """Whether nobody is left after the last year."""
+        return self.rule.close or self.rates.closed
+
+    def rate(self, j: int) -> float:
+        """Return q of year j. Raises NotValued after the last age of a table that is not closed."""
+        entered = self.entry + self.rule.added_years
+        if entered + j >= self.rates.final_age and not self.closed:
+            rule = f"the table ends at age {self.rates.final_age} and is not closed"
+            raise NotValued("table ends too early", "age", entered + j, rule)
+        try:
+            return adjusted_rate(self.rule, self.rates, self.entry, j)
+        except ValueError as error:
+            raise NotValued("age outside the tables", "age", entered + j, str(error)) from error
+
+
+def yearly_rates(rule: MortalityRule, rates: Rates, age: Fraction) -> YearlyRates:
+    """Return the rates of a life by its age at commencement.
+
+    A law takes any age; a table is entered at the whole age, and the rest is the offset.
+    Raises NotValued for an age outside the table, or one that is not whole in a select table.
+    """
+    whole = age.numerator // age.denominator
+    offset = age - whole if rates.whole_ages_only else Fraction(0)
+    entry: float = whole if rates.whole_ages_only or age == whole else float(age)
+    select_years: int = getattr(rates, "select_years", 0)
+    if offset > 0 and select_years > 0:
+        raise NotValued(
+            "age not whole", "age", float(age), "a select table needs a whole age at commencement"
+        )
+    entered = entry + rule.added_years
+    if not rates.first_age <= entered < rates.final_age:
+        held = f"the table holds ages {rates.first_age} to {rates.final_age - 1}"
+        raise NotValued("age outside the tables", "age", entered, held)
+    return YearlyRates(rule, rates, entry, offset)
+
+
+class Survival:
+    """L(t) = S(r + t) / S(r), with S the product of the yearly (1 - q), made as far as it is asked for."""
+
+    def __init__(self, rates: YearlyRates, fractions: Fractions) -> None:
+        self.rates = rates
+        self.fractions: Fractions = fractions
+        self.yearly: list[float] = []
+        """The rates q used so far, by year."""
+        self._start_of_year = [1.0]
+        self._seen: dict[Months, float] = {}
+        self._passed = 12 * rates.offset.numerator
+        self._month = rates.offset.denominator
+        self._divisor = self._unscaled(0)
+
+    def at(self, months: Months) -> float:
+        """Return L, the probability at commencement to live ``months`` months (whole or a fraction).
+
+        Raises NotValued where the table ends before.
+        """
+        if months not in self._seen:
+            self._seen[months] = self._unscaled(months) / self._divisor
+        return self._seen[months]
+
+    def end(self) -> int:
+        """Return the first point at which nobody is left. Raises NotValued where the table is not closed."""
+        last = 0
+        while self._rate(last) < 1:
+            last += 1
+        months = 12 * (last - self.rates.offset)
+        if self.fractions == "uniform deaths":
+            return max(0, -(-(months + 12) // 1))
+        return max(0, months // 1 + 1)
+
+    def force(self, point: int) -> float:
+        """Return the force of mortality at a point from the survival of the years before and after it.
+
+        One-sided where there is no year before (within a year of commencement), or where after it nobody or
+        no rate is left.
+        """
+        years = []
+        if point >= 12:
+            years.append((point - 12, point))
+        try:
+            if self.at(point + 12) > 0:
+                years.append((point, point + 12))
+        except NotValued:
+            pass
+        return sum(math.log(self.at(start) / self.at(end)) for start, end in years) / max(1, len(years))
+
+    def rate_before(self, point: int) -> float | None:
+        """Return the yearly rate in force just before a point, None at commencement or if never asked for."""
+        position = 12 * self.rates.offset + point
+        year = -(-position // 12) - 1
+        return self.yearly[year] if 0 <= year < len(self.yearly) else None
+
+    def _unscaled(self, months: Months) -> float:
+        # With r = n / d: r + months / 12 = (12 n + d months) / (12 d), which stays exact, so that the first
+        # moment of a year is never taken for the last one of the year before.
+        year, rest = divmod(self._passed + months * self._month, 12 * self._month)
+        start = self._start(year)
+        if rest == 0 or start == 0:
+            return start
+        return start * through(self._rate(year), float(rest / (12 * self._month)), self.fractions)
+
+    def _start(self, year: int) -> float:
+        while len(self._start_of_year) <= year:
+            if self._start_of_year[-1] == 0:
+                return 0.0
+            q = self._rate(len(self._start_of_year) - 1)
+            self._start_of_year.append(self._start_of_year[-1] * (1 - q))
+        return self._start_of_year[year]
+
+    def _rate(self, year: int) -> float:
+        while len(self.yearly) <= year:
+            self.yearly.append(self.rates.rate(len(self.yearly)))
+        return self.yearly[year]

@@ -1,0 +1,189 @@
+"""The payment streams of one policy, resolved from its design, in ordinary Python."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+from typing import Any, Literal
+
+from portfolios.designs import AtAge, Design, Share, Stream
+
+from .plain_dates import first_point_at_age
+from .plain_faults import NotValued
+from .plain_lapse import TOLERANCE
+from .plain_occasions import Course, Occasion, Terms, Way, last_point, occasions
+
+Policy = Mapping[str, Any]
+Part = Literal["benefits", "expenses", "premiums"]
+PART_OF_KIND: dict[str, Part] = {
+    "benefit": "benefits",
+    "expense": "expenses",
+    "commission": "expenses",
+    "premium": "premiums",
+}
+
+
+@dataclass
+class PolicyStream:
+    """One stream of one policy: its payments to come, and what each amounts to.
+
+    amount and relative are functions of the occasion; the payment is their product with its weight.
+    """
+
+    name: str
+    part: Part
+    direction: Literal["in", "out"]
+    terms: Terms
+    occasions: list[Occasion]
+    amount: Callable[[Occasion], float]
+    relative: Callable[[Occasion], float]
+
+    @property
+    def sign(self) -> int:
+        """1, or -1 for a stream that runs against its part: a premium paid out, a benefit received."""
+        return 1 if (self.direction == "in") == (self.part == "premiums") else -1
+
+
+def design_streams(design: Design, policy: Policy, course: Course) -> list[PolicyStream]:
+    """Return the streams of a design for one policy, in the design's order.
+
+    Raises NotValued where a column of the policy makes no sense for its stream.
+    """
+    bases = {stream.name: _own(stream, policy, course) for stream in design.stream if stream.of is None}
+    return [
+        bases[stream.name] if stream.of is None else _share_of(stream, bases[stream.of])
+        for stream in design.stream
+    ]
+
+
+def _own(stream: Stream, policy: Policy, course: Course) -> PolicyStream:
+    terms = terms_of(stream, policy, course.step_months)
+    last_point(terms, course)
+    amount = number(policy, stream.amount, f"stream '{stream.name}' needs an amount")
+    if isinstance(stream.amount, str) and amount < 0:
+        raise NotValued("amount negative", stream.amount, amount, "an amount is at least 0")
+    if terms.way in ("advance", "arrears"):
+        amount /= terms.a_year
+    amount *= stream.share
+    rate = 0.0
+    if stream.increase is not None:
+        rate = number(policy, stream.increase.rate, f"stream '{stream.name}' needs a rate of increase")
+    varies = stream.pattern or stream.increase or stream.decrease
+    assert stream.direction is not None  # the design has checked it
+    return PolicyStream(
+        stream.name,
+        PART_OF_KIND[stream.part],
+        stream.direction,
+        terms,
+        occasions(terms, course),
+        lambda _: amount,
+        lambda occasion: relative_amount(stream, terms, rate, occasion.month) if varies else 1.0,
+    )
+
+
+def _share_of(stream: Stream, base: PolicyStream) -> PolicyStream:
+    clock = base.terms.start if stream.clock == "stream" else 0
+
+    def relative(occasion: Occasion) -> float:
+        year = max(0, (occasion.month - clock) // 12)
+        return base.relative(occasion) * share_of_year(stream.pattern, year)
+
+    part = PART_OF_KIND[stream.part]
+    return PolicyStream(
+        stream.name,
+        part,
+        stream.direction or ("in" if part == "premiums" else "out"),
+        base.terms,
+        base.occasions,
+        lambda occasion: base.amount(occasion) * stream.share,
+        relative,
+    )
+
+
+def terms_of(stream: Stream, policy: Policy, step_months: int) -> Terms:
+    """Return when a stream is paid. Raises NotValued for durations that do not fit it."""
+    way: Way = stream.on or stream.paid
+    start = _months(stream.from_, stream, policy, step_months)
+    end = None if stream.to is None else _months(stream.to, stream, policy, step_months)
+    if way == "once":
+        end = start
+    if end is not None and end < start:
+        raise NotValued(
+            "end before start", f"stream '{stream.name}'", f"{start} to {end} months", "to >= from"
+        )
+    certain = stream.while_ == "certain"
+    if end is None and certain:
+        raise NotValued("no end", f"stream '{stream.name}'", None, "a stream paid for certain needs 'to'")
+    a_year = _frequency(stream, policy)
+    if way in ("advance", "arrears") and end is not None and (end - start) % (12 // a_year):
+        rule = f"with {a_year} payments a year it lasts a whole number of periods"
+        raise NotValued(
+            "duration not in whole periods", f"stream '{stream.name}'", f"{end - start} months", rule
+        )
+    return Terms(
+        way,
+        certain,
+        start,
+        end,
+        a_year,
+        0 if stream.guarantee is None else _months(stream.guarantee, stream, policy, step_months),
+        {"Woolhouse 2": 2, "Woolhouse 3": 3}.get(stream.payments, 0),
+        start if stream.clock == "stream" else 0,
+    )
+
+
+def _months(value: float | str | AtAge, stream: Stream, policy: Policy, step_months: int) -> int:
+    if isinstance(value, AtAge):
+        birth, commencement = policy["birth_date"], policy["commencement_date"]
+        return first_point_at_age(birth, commencement, value.age, step_months)
+    years = number(policy, value, f"stream '{stream.name}' needs a duration")
+    field = value if isinstance(value, str) else f"stream '{stream.name}'"
+    months = round(12 * years)
+    if abs(12 * years - months) > TOLERANCE or months < 0:
+        raise NotValued(
+            "duration not in whole months", field, years, "years from commencement, in whole months"
+        )
+    if stream.on is not None and months % step_months:
+        raise NotValued("duration not in whole years", field, years, "needed on a move with the step 'year'")
+    return months
+
+
+def _frequency(stream: Stream, policy: Policy) -> int:
+    if stream.on is not None or stream.paid == "once":
+        return 1
+    a_year = number(policy, stream.a_year, f"stream '{stream.name}' needs a number of payments a year")
+    if a_year not in (1, 2, 4, 12):
+        raise NotValued("frequency not 1 2 4 12", str(stream.a_year), a_year, "1, 2, 4 or 12 payments a year")
+    return int(a_year)
+
+
+def number(policy: Policy, value: float | str | None, need: str) -> float:
+    """Return a stated number, or the policy's in the column named. Raises NotValued where it is missing."""
+    found = policy.get(value) if isinstance(value, str) else value
+    if isinstance(found, bool) or not isinstance(found, int | float) or not math.isfinite(found):
+        raise NotValued("value missing", str(value), found, need)
+    return float(found)
+
+
+def relative_amount(stream: Stream, terms: Terms, rate: float, month: int) -> float:
+    """Return pattern x increase x decrease at a month from commencement; ``rate`` is that of the increase."""
+    year = max(0, (month - terms.clock) // 12)
+    relative = share_of_year(stream.pattern, year)
+    if stream.increase is not None:
+        relative *= (1 + rate) ** year if stream.increase.kind == "compound" else 1 + rate * year
+    if stream.decrease is not None and terms.end is not None:
+        passed, months = month - terms.start, terms.end - terms.start
+        relative *= 1 - (passed // 12 * 12 if stream.decrease == "yearly" else passed) / months
+    return relative
+
+
+def share_of_year(pattern: list[Share] | None, year: int) -> float:
+    """Return the share of the piece that holds a year, counted from 0; 0 after the last stated year."""
+    if pattern is None:
+        return 1.0
+    for piece in pattern:
+        if piece.years is None or year < piece.years:
+            return piece.share
+        year -= piece.years
+    return 0.0

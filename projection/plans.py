@@ -1,0 +1,220 @@
+"""Plans: the streams of a cell, from the product's design and the basis's expenses, as records for the loops."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass, field, replace
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from assumptions.basis import Basis
+from assumptions.expenses import Expense
+from portfolios.designs import AtAge, Design, Stream
+
+from . import streams as s
+from .cells import Cell
+from .relative import RelativeRows, pattern_of, shape_of
+from .slots import Slots
+
+_PART = {"premium": s.PREMIUMS, "benefit": s.BENEFITS, "expense": s.EXPENSES, "commission": s.EXPENSES}
+
+
+@dataclass(frozen=True)
+class Line:
+    """One row of the cash flow table."""
+
+    product: str
+    stream: str
+    part: str
+    direction: str
+
+
+@dataclass(frozen=True)
+class _Record:
+    """One record of a plan, still with names."""
+
+    line: int = 0
+    part: int = s.BENEFITS
+    when: int = s.ADVANCE
+    cover: int = s.ALIVE
+    window: int = s.OWN_DATES
+    amount: int = -1
+    factor: float = 1.0
+    start: int = -1
+    end: int = -1
+    period: int = -1
+    power: int = 0
+    guarantee: int = -1
+    clock: int = 0
+    relative: int = -1
+    changing: int = -1
+    calendar: int = -1
+    span_from: int = 0
+    span_to: int = s.FOR_EVER
+    clip_from: int = 0
+    clip_to: int = s.FOR_EVER
+    whole: int = 0
+    own: int = 1
+
+    def clipped(self, begin: int, end: int) -> _Record:
+        """The record for payments of months ``begin`` to ``end`` from commencement only."""
+        return replace(self, clip_from=max(self.clip_from, begin), clip_to=min(self.clip_to, end))
+
+
+@dataclass
+class Plans:
+    """The plans of all cells met so far: one array of records, with the range that belongs to each cell."""
+
+    designs: list[Design]
+    basis: Basis
+    relative: RelativeRows
+    slots: Slots = field(default_factory=Slots)
+    lines: dict[Line, int] = field(default_factory=dict)
+    records: NDArray[Any] = field(default_factory=lambda: np.zeros(0, s.STREAM))
+    ranges: NDArray[np.int64] = field(default_factory=lambda: np.zeros((0, 2), np.int64))
+
+    def add(self, cell: Cell) -> None:
+        """Add the plan of the next cell; a cell without rules gets an empty one."""
+        made = [] if cell.missing else list(self._records(self.designs[cell.design], cell))
+        rows = np.zeros(len(made), s.STREAM)
+        for row, record in zip(rows, made, strict=True):
+            for name in s.STREAM.names or ():
+                row[name] = getattr(record, name)
+        begin = len(self.records)
+        self.records = np.concatenate((self.records, rows))
+        self.ranges = np.concatenate((self.ranges, [[begin, begin + len(rows)]]))
+
+    def changing_in(self, cell: int) -> list[int]:
+        """Numbers of the relative amounts that depend on the policy, among the streams of a cell."""
+        begin, end = self.ranges[cell]
+        return sorted({int(number) for number in self.records["changing"][begin:end] if number >= 0})
+
+    def _records(self, design: Design, cell: Cell) -> Iterator[_Record]:
+        made: dict[str, list[_Record]] = {}
+        for stream in sorted(design.stream, key=lambda stream: stream.of is not None):
+            records = self._stream(design, stream) if stream.of is None else self._share(design, stream, made)
+            made[stream.name] = list(records)
+            yield from made[stream.name]
+        for item, rule in zip(self.basis.document.expense, cell.expenses, strict=True):
+            yield from self._expense(design, item, rule, made)
+
+    def _line(self, design: Design, name: str, part: str, direction: str) -> int:
+        return self.lines.setdefault(Line(design.code, name, part, direction), len(self.lines))
+
+    def _stream(self, design: Design, stream: Stream) -> Iterator[_Record]:
+        amount, factor = self.slots.amount(stream.amount if stream.amount is not None else 0.0)
+        start = self.slots.duration(stream.from_)
+        end = -1 if stream.to is None else self.slots.duration(stream.to)
+        shape = shape_of(stream)
+        record = _Record(
+            line=self._line(design, stream.name, stream.part, stream.direction or "out"),
+            part=_PART[stream.part],
+            amount=amount,
+            factor=factor * stream.share * _sign(stream),
+            start=start,
+            end=end,
+            clock=int(stream.clock == "commencement"),
+            cover=s.CERTAIN if stream.while_ == "certain" else s.ALIVE,
+        )
+        if shape.changing:
+            record = replace(record, changing=self.relative.per_policy(shape, start, end))
+        else:
+            record = replace(record, relative=self.relative.fixed(shape))
+        if stream.on is not None:
+            yield replace(record, when=s.DEATH if stream.on == "death" else s.LAPSE)
+        elif stream.paid == "once":
+            yield replace(record, when=s.ONCE, end=start)
+        else:
+            yield from self._periodic(stream, record)
+
+    def _periodic(self, stream: Stream, record: _Record) -> Iterator[_Record]:
+        when = s.ARREARS if stream.paid == "arrears" else s.ADVANCE
+        ages = isinstance(stream.from_, AtAge) or isinstance(stream.to, AtAge)
+        whole = int(stream.to is not None and not ages)
+        record = replace(record, when=when, period=self.slots.frequency(stream.a_year), power=1, whole=whole)
+        if stream.guarantee is not None:
+            record = replace(record, guarantee=self.slots.duration(stream.guarantee))
+            yield replace(record, cover=s.GUARANTEED)
+            yield replace(record, cover=s.AFTER_GUARANTEE)
+        elif stream.payments == "at their dates":
+            yield record
+        else:
+            yield replace(record, window=s.BROKEN_YEAR)
+            yield from _woolhouse(record, when, third=stream.payments == "Woolhouse 3")
+
+    def _share(self, design: Design, stream: Stream, made: dict[str, list[_Record]]) -> Iterator[_Record]:
+        """A share of another stream: its records again, once for each piece of the own pattern."""
+        direction = stream.direction or ("in" if stream.part == "premium" else "out")
+        line = self._line(design, stream.name, stream.part, direction)
+        sign = _sign(stream.model_copy(update={"direction": direction})) * _sign(design.named(str(stream.of)))
+        begin = 0
+        for years, share in pattern_of(stream.pattern) or ((None, 1.0),):
+            end = s.FOR_EVER if years is None else begin + 12 * years
+            for record in made[str(stream.of)] if share else ():
+                factor = record.factor * stream.share * share * sign
+                piece = replace(record, line=line, part=_PART[stream.part], factor=factor)
+                if stream.clock == "commencement":
+                    yield piece.clipped(begin, end)
+                else:
+                    yield replace(piece, span_from=begin, span_to=end)
+            begin = end
+
+    def _expense(
+        self, design: Design, item: Expense, rule: int, made: dict[str, list[_Record]]
+    ) -> Iterator[_Record]:
+        line = self._line(design, item.name, "expense", "out")
+        figures = item.rule[rule]
+        calendar = -1 if item.inflation is None else self.relative.inflating(item.inflation)
+        for begin, end, figure in ((0, 12, figures.first_year), (12, s.FOR_EVER, figures.later_years)):
+            for record in self._charged(design, item, made) if figure else ():
+                charged = replace(record, line=line, part=s.EXPENSES, own=0, whole=0, factor=record.factor * figure)
+                if calendar >= 0:
+                    charged = replace(charged, calendar=calendar)
+                yield charged.clipped(begin, end)
+
+    def _charged(self, design: Design, item: Expense, made: dict[str, list[_Record]]) -> Iterator[_Record]:
+        """The records whose payments an expense item is charged on."""
+        own = [record for stream in design.stream if stream.of is None for record in made[stream.name]]
+        if item.per == "policy":
+            if any(record.cover != s.CERTAIN and record.when != s.LAPSE for record in own):
+                start, period = self.slots.duration(0.0), self.slots.frequency(item.a_year)
+                yield _Record(start=start, end=self._contract_end(own), period=period, power=1)
+        elif item.per == "claim":
+            for record in own:
+                if record.part == s.BENEFITS and record.when in (s.DEATH, s.ONCE):
+                    yield replace(record, amount=-1, factor=1.0, relative=-1, changing=-1)
+        else:
+            part = s.PREMIUMS if item.per == "premium" else s.BENEFITS
+            for stream in design.stream:
+                if _PART[stream.part] == part:
+                    # A payment against the usual direction of its part costs as much as one along it.
+                    yield from (replace(one, factor=abs(one.factor)) for one in made[stream.name])
+
+    def _contract_end(self, records: list[_Record]) -> int:
+        ends = {record.end for record in records if record.cover != s.CERTAIN and record.when != s.LAPSE}
+        return -1 if -1 in ends or not ends else self.slots.latest(tuple(sorted(ends)))
+
+
+def _sign(stream: Stream) -> int:
+    """1, or -1 for a stream that runs against its part: a premium paid out, a benefit received."""
+    return 1 if (stream.direction == "in") == (stream.part == "premium") else -1
+
+
+def _woolhouse(record: _Record, when: int, third: bool) -> Iterator[_Record]:
+    """Yearly records that stand for m payments a year by Woolhouse's formula.
+
+    A year's payments in advance come to (1 - z) at its start and z at its end, z = (m - 1) / (2 m) = 1/2 - 1/(2 m); so
+    each weight is a half, plus or minus a half of one m-th. The third term carries (m^2 - 1) / (12 m^2).
+    """
+    near, far = (s.ADVANCE, s.ARREARS) if when == s.ADVANCE else (s.ARREARS, s.ADVANCE)
+    yearly = replace(record, window=s.WHOLE_YEARS)
+    yield replace(yearly, when=near, factor=record.factor / 2, power=0)
+    yield replace(yearly, when=near, factor=record.factor / 2, power=1)
+    yield replace(yearly, when=far, factor=record.factor / 2, power=0)
+    yield replace(yearly, when=far, factor=-record.factor / 2, power=1)
+    if third:
+        yield replace(yearly, when=s.THIRD_TERM, factor=-record.factor / 12, power=0)
+        yield replace(yearly, when=s.THIRD_TERM, factor=record.factor / 12, power=2)
+

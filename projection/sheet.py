@@ -1,0 +1,68 @@
+"""The convention sheet: every convention that a number rests on, in words, for this run."""
+
+from __future__ import annotations
+
+from assumptions.basis import Basis, ClaimDelay
+
+from .settings import Settings
+
+Sheet = tuple[tuple[str, str], ...]
+
+
+def convention_sheet(basis: Basis, settings: Settings) -> Sheet:
+    """Return (matter, rule) rows for a run; the page of conventions gives the formulas."""
+    document = basis.document
+    return (
+        ("valuation date", f"{settings.valuation_date.isoformat()}, end of day; {_due(settings)}"),
+        ("step", _step(settings)),
+        ("between two steps", "the first, broken step runs from the valuation date to the next step date, as the exact "
+         "fraction of that step in days; reserves are not interpolated"),
+        ("payments more often than the step", "valued at their own dates under the rule for fractions of a year; "
+         "Woolhouse's formula only where a design asks for it"),
+        ("age", f"{document.mortality.age}{' age' if document.mortality.age == 'exact' else ''} at commencement; "
+         "then it runs with duration"),
+        ("fractions of a year of age", document.mortality.fractions),
+        ("select", "duration since commencement; select rates, then ultimate"),
+        ("improvement", "none"),
+        ("decrements in one step", _decrements(basis)),
+        ("claims paid", _claims(basis)),
+        ("interest", "annual effective; discount factors from the valuation date; constant forward rates between "
+         "maturities, the last one held"),
+        ("sign", "reserve = value of benefits, expenses and commission - value of premiums; cash flows are positive "
+         "amounts with a direction"),
+        ("money", f"double precision inside; each policy's results are rounded half-even to {settings.decimals} "
+         "decimals once, and totals are the exact sums of the rounded policies"),
+        ("expected cash flows", "not discounted; each expected payment is rounded half-even to a thousandth of the "
+         "minor unit before adding, so that sums do not depend on the order"),
+        ("personal data", "policy identifiers only"),
+    )  # fmt: skip
+
+
+def _due(settings: Settings) -> str:
+    if settings.due == "settled":
+        return "cash flows due on it are settled"
+    return "cash flows due on it are outstanding"
+
+
+def _step(settings: Settings) -> str:
+    return (
+        f"one {settings.step}, counted from each policy's commencement; a due date that its month lacks "
+        "falls on the month's last day"
+    )
+
+
+def _decrements(basis: Basis) -> str:
+    lapse = basis.document.lapse
+    if lapse is None:
+        return "deaths only"
+    when = "at the end of every step" if lapse.timing == "each step" else "at policy anniversaries"
+    if lapse.competing == "dependent rates":
+        return f"dependent rates from independent ones, uniform in their single tables; lapses {when}"
+    return f"independent rates: deaths through the step, lapses {when} from the survivors"
+
+
+def _claims(basis: Basis) -> str:
+    paid = basis.document.claims.paid
+    if isinstance(paid, ClaimDelay):
+        return f"{paid.delay_months:g} months after the middle of the step of death"
+    return f"at the {paid} of death"

@@ -1,0 +1,130 @@
+"""Tallies: what chunks add up to, in whole numbers only, so that the order of policies cannot matter."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from typing import Any
+
+import numpy as np
+import pyarrow as pa
+from numpy.typing import NDArray
+
+from . import loops
+from .plans import Line
+from .results import MONEY_COLUMNS, ControlTotal
+
+QUANTA = 1000
+"""Cash flows are added in whole thousandths of a minor unit."""
+
+_EXACT = float(1 << 52)
+
+
+class FlowsTooLarge(ValueError):
+    """Expected cash flows of one chunk too large to be added exactly."""
+
+
+@dataclass
+class ChunkTally:
+    """What one chunk adds: money by group, cash flows by line and month, control totals, curiosities."""
+
+    totals: NDArray[np.int64]
+    flows: NDArray[np.float64]
+    control: dict[str, tuple[int, int, int]]
+    exceptions: pa.Table
+    policies: pa.Table
+    months: int = 0
+    seconds: dict[str, float] = field(default_factory=dict)
+    totals_read: int = 0
+
+
+@dataclass
+class Tally:
+    """The sums over all chunks so far."""
+
+    decimals: int
+    totals: NDArray[Any] = field(default_factory=lambda: np.zeros((0, 1 + len(MONEY_COLUMNS)), dtype=object))
+    flows: NDArray[np.int64] = field(default_factory=lambda: np.zeros((0, loops.BINS), dtype=np.int64))
+    control: dict[str, list[int]] = field(default_factory=dict)
+    exceptions: list[pa.Table] = field(default_factory=list)
+    months: int = 0
+    seconds: dict[str, float] = field(default_factory=dict)
+
+    def add(self, part: ChunkTally) -> None:
+        """Add a chunk. Raises FlowsTooLarge where its cash flows are no longer whole numbers in a double."""
+        self.totals = _grown(self.totals, len(part.totals))
+        self.totals[: len(part.totals)] += part.totals
+        if part.flows.size and max(part.flows.max(), -part.flows.min()) >= _EXACT:
+            raise FlowsTooLarge(
+                "the expected cash flows of one month are too large to be added exactly to a thousandth of the minor "
+                "unit; state the amounts in a larger unit of currency, or use smaller chunks"
+            )
+        self.flows = _grown(self.flows, len(part.flows))
+        self.flows[: len(part.flows)] += part.flows.astype(np.int64)
+        for name, figures in part.control.items():
+            sums = self.control.setdefault(name, [0, 0, 0])
+            for place, figure in enumerate(figures):
+                sums[place] += figure
+        if len(part.exceptions):
+            self.exceptions.append(part.exceptions)
+        self.months += part.months
+        for phase, seconds in part.seconds.items():
+            self.seconds[phase] = self.seconds.get(phase, 0.0) + seconds
+
+    def total(self) -> dict[str, int]:
+        """Sums over all policies in minor units, by money column."""
+        sums = self.totals.sum(axis=0) if len(self.totals) else np.zeros(1 + len(MONEY_COLUMNS), dtype=object)
+        return {name: int(sums[1 + place]) for place, name in enumerate(MONEY_COLUMNS)}
+
+    def control_totals(self) -> tuple[ControlTotal, ...]:
+        """The in-force gate, policies first."""
+        return tuple(ControlTotal(name, *sums) for name, sums in self.control.items())
+
+    def totals_table(self, names: tuple[str, ...], keys: list[tuple[Any, ...]]) -> pa.Table:
+        """Totals by group, sorted by group: group columns, policies, money columns, rounding."""
+        order = sorted(
+            (place for place in range(len(self.totals)) if self.totals[place, 0]),
+            key=lambda place: tuple((value is None, str(type(value)), value) for value in keys[place]),
+        )
+        columns: dict[str, Any] = {name: pa.array([keys[place][at] for place in order]) for at, name in enumerate(names)}
+        rows = self.totals[order] if order else self.totals[:0]
+        columns["policies"] = pa.array([int(row[0]) for row in rows], pa.int64())
+        for at, name in enumerate(MONEY_COLUMNS):
+            columns[name] = self._money([int(row[1 + at]) for row in rows])
+        columns["rounding"] = self._money([int(row[1] - row[2] - row[3] + row[4]) for row in rows])
+        return pa.table(columns)
+
+    def flows_table(self, lines: list[Line], year: int, month: int) -> pa.Table:
+        """Expected cash flows by calendar month and line, without the empty ones after the last payment of all."""
+        used = np.flatnonzero(self.flows.any(axis=0))
+        months = int(used[-1]) + 1 if len(used) else 0
+        first = np.datetime64(f"{year:04d}-{month:02d}", "M")
+        dates = (first + np.arange(months)).astype("datetime64[D]").astype(np.int32)
+        order = sorted(range(len(self.flows)), key=lambda place: (lines[place].product, place))
+        order = [place for place in order if self.flows[place].any()]
+        minor = np.rint(self.flows[order][:, :months].T / QUANTA).astype(np.int64)
+        return pa.table(
+            {
+                "month": pa.array(np.repeat(dates, len(order)), pa.int32()).cast(pa.date32()),
+                **{
+                    name: _tiled([getattr(lines[place], name) for place in order], months)
+                    for name in ("product", "stream", "part", "direction")
+                },
+                "amount": pa.array(minor.reshape(-1) / 10**self.decimals, pa.float64()),
+            }
+        )
+
+    def _money(self, minor: list[int]) -> pa.Array:
+        return pa.array([figure / 10**self.decimals for figure in minor], pa.float64())
+
+
+def _grown(array: NDArray[Any], rows: int) -> NDArray[Any]:
+    if len(array) >= rows:
+        return array
+    return np.concatenate((array, np.zeros((rows - len(array), array.shape[1]), dtype=array.dtype)))
+
+
+def _tiled(values: list[str], times: int) -> pa.Array:
+    """A column that repeats some texts, by reference to the distinct ones."""
+    distinct = list(dict.fromkeys(values))
+    codes = np.array([distinct.index(value) for value in values], dtype=np.int32)
+    return pa.DictionaryArray.from_arrays(np.tile(codes, times), pa.array(distinct, pa.string()))

@@ -1,0 +1,309 @@
+"""A whole valuation: the extract in, chunk by chunk over the threads, the outcome out."""
+
+from __future__ import annotations
+
+import heapq
+import os
+from collections import deque
+from collections.abc import Collection, Iterator
+from concurrent.futures import Future, ThreadPoolExecutor
+from dataclasses import dataclass, field
+from threading import Lock
+from time import perf_counter
+from typing import Any
+
+import numpy as np
+import pyarrow as pa
+
+from assumptions.basis import Basis
+from portfolios.checks import needed_columns
+from portfolios.chunk import Chunk
+from portfolios.columns import BY_NAME
+from portfolios.designs import Design
+from portfolios.exception_rows import exception_rows, no_exceptions
+from portfolios.extract import CHUNK_ROWS, Extract
+from portfolios.identifiers import find_duplicates
+from portfolios.reasons import Reason
+
+from . import loops
+from .engine import Engine, Valued
+from .groups import Groups
+from .plain_check import Candidate, check_sample
+from .results import MONEY_COLUMNS, Outcome, PolicySink, Progress, no_progress
+from .settings import Settings
+from .sheet import convention_sheet
+from .tally import ChunkTally, FlowsTooLarge, Tally
+
+
+class RunStopped(ValueError):
+    """A valuation that must not go on: too many exceptions, a gate that does not close, a sample that differs."""
+
+
+@dataclass(frozen=True)
+class Plan:
+    """What a valuation is asked beside its figures.
+
+    group_by: extract columns of the totals; in_force: values of 'status' that are valued; exceptions_limit: share of policies
+    that may be exceptions; sample: policies that the plain twin values again; threads: at most; chunk_rows: policies at a time.
+    """
+
+    group_by: tuple[str, ...] = ("product",)
+    in_force: tuple[str, ...] = ("in force",)
+    exceptions_limit: float = 1.0
+    sample: int = 40
+    threads: int = field(default_factory=lambda: len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1)
+    chunk_rows: int = CHUNK_ROWS
+
+
+def value_extract(
+    extract: Extract,
+    designs: list[Design],
+    basis: Basis,
+    settings: Settings,
+    *,
+    group_by: Collection[str] = ("product",),
+    in_force: Collection[str] = ("in force",),
+    exceptions_limit: float = 1.0,
+    sample: int = 40,
+    sink: PolicySink | None = None,
+    progress: Progress = no_progress,
+    threads: int | None = None,
+    chunk_rows: int = CHUNK_ROWS,
+) -> Outcome:
+    """Value every policy of an extract.
+
+    sink takes the per-policy results in the order of the extract: policy_id, product, the groups, and the money columns
+    in currency. Raises ExtractError or DocumentError for input that does not fit together, RunStopped where more than
+    ``exceptions_limit`` of the policies cannot be valued, the in-force gate does not close, or the plain twin disagrees.
+    """
+    plan = Plan(tuple(group_by), tuple(in_force), exceptions_limit, sample, threads or Plan().threads, chunk_rows)
+    return _Valuation(extract, designs, basis, settings, plan).run(sink, progress)
+
+
+class _Valuation:
+    """One valuation under way."""
+
+    def __init__(
+        self, extract: Extract, designs: list[Design], basis: Basis, settings: Settings, plan: Plan
+    ) -> None:
+        self.extract, self.designs, self.basis, self.settings, self.plan = extract, designs, basis, settings, plan
+        self.group_by = plan.group_by
+        until = [rule.until for rule in basis.document.lapse.rule] if basis.document.lapse else []
+        numbers = [column for column in until if isinstance(column, str)]
+        rule_columns = basis.document.rule_columns()
+        self.needed = needed_columns(designs, [*numbers, *rule_columns, *self.group_by])
+        extract.need(self.needed, numbers=numbers)
+        self.amounts = [
+            name for name in extract.column_names if name in BY_NAME and BY_NAME[name].kind == "money"
+        ]
+        self.needed = tuple(dict.fromkeys([*self.needed, *self.amounts]))
+        extract.need(self.needed, numbers=numbers)
+        self.groups = Groups(self.group_by)
+        self.sample = _Sample(plan.sample)
+        self.seconds: dict[str, float] = {}
+        self.kinds = {column: str(extract.column_kind(column)) for column in rule_columns}
+        self.read = 0
+
+    def run(self, sink: PolicySink | None, progress: Progress) -> Outcome:
+        """Read, value and add up."""
+        began = perf_counter()
+        duplicates = find_duplicates(self.extract)
+        self.seconds["identifiers"] = perf_counter() - began
+        self.engine = Engine(
+            self.designs, self.basis, self.settings, self.needed, self.kinds, self.plan.in_force, duplicates
+        )
+        tally = Tally(self.settings.decimals)
+        for part in self._parts():
+            try:
+                tally.add(part)
+            except FlowsTooLarge as error:
+                raise RunStopped(str(error)) from error
+            if sink is not None and part.policies.num_rows:
+                sink(part.policies)
+            self.read += part.totals_read
+            progress(self.read, self.extract.rows)
+        return self._outcome(tally, began)
+
+    def _parts(self) -> Iterator[ChunkTally]:
+        """Results of the chunks in their order; a few chunks are under way at any time."""
+        chunks = self._chunks()
+        if self.plan.threads <= 1:
+            yield from map(self._work, chunks)
+            return
+        waiting: deque[Future[ChunkTally]] = deque()
+        with ThreadPoolExecutor(self.plan.threads, thread_name_prefix="value") as pool:
+            try:
+                for chunk in chunks:
+                    waiting.append(pool.submit(self._work, chunk))
+                    if len(waiting) > self.plan.threads + 1:
+                        yield waiting.popleft().result()
+                while waiting:
+                    yield waiting.popleft().result()
+            finally:
+                for future in waiting:
+                    future.cancel()
+
+    def _chunks(self) -> Iterator[Chunk]:
+        chunks = self.extract.chunks(self.needed, self.plan.chunk_rows)
+        while True:
+            began = perf_counter()
+            chunk = next(chunks, None)
+            self.seconds["read"] = self.seconds.get("read", 0.0) + perf_counter() - began
+            if chunk is None:
+                return
+            yield chunk
+
+    def _work(self, chunk: Chunk) -> ChunkTally:
+        valued = self.engine.value(chunk)
+        began = perf_counter()
+        checked, results = valued.checked, valued.results
+        groups = self.groups.of(chunk)
+        totals = np.zeros((len(self.groups.keys), 1 + len(MONEY_COLUMNS)), dtype=np.int64)
+        loops.add_totals(groups, checked.reason, results.minor, totals)
+        exceptions = self._exceptions(chunk, valued)
+        self.sample.offer(chunk, valued)
+        part = ChunkTally(
+            totals=totals,
+            flows=results.flows,
+            control=self._control(chunk, valued),
+            exceptions=exceptions,
+            policies=self._policies(chunk, valued),
+            months=valued.months,
+            seconds=valued.seconds,
+            totals_read=chunk.n,
+        )
+        part.seconds["results"] = perf_counter() - began
+        return part
+
+    def _exceptions(self, chunk: Chunk, valued: Valued) -> pa.Table:
+        if not valued.checked.reason.any():
+            return no_exceptions()
+        rows = exception_rows(chunk, valued.checked, self.needed)
+        unfitted = valued.checked.reason[valued.checked.reason != 0] == Reason.NO_RULE_FITS
+        if not unfitted.any():
+            return rows
+        # The rules are the basis's; say which part of it has none for the policy.
+        cells = self.engine.cells.of(chunk, valued.checked.product)[valued.checked.reason != 0]
+        texts = rows.column("rule").to_pylist()
+        for place in np.flatnonzero(unfitted).tolist():
+            texts[place] = f"a rule of {self.engine.cells.cells[cells[place]].missing} must fit"
+        return rows.set_column(rows.schema.get_field_index("rule"), "rule", pa.array(texts, pa.string()))
+
+    def _control(self, chunk: Chunk, valued: Valued) -> dict[str, tuple[int, int, int]]:
+        """Read, valued and exceptions: policies, and each amount of the extract in minor units."""
+        good = valued.valued
+        control = {"policies": (chunk.n, int(good.sum()), int((~good).sum()))}
+        for name in self.amounts:
+            amounts = np.rint(np.nan_to_num(chunk.number(name), posinf=0.0, neginf=0.0) * self.engine.rules.minor)
+            # What nobody could mean, and no whole number could hold, counts as nothing on all three sides.
+            amounts[np.abs(amounts) > 1e16] = 0.0
+            whole = amounts.astype(np.int64)
+            control[name] = (
+                _exact_sum(whole), _exact_sum(whole[good]), _exact_sum(whole[~good])
+            )  # fmt: skip
+        return control
+
+    def _policies(self, chunk: Chunk, valued: Valued) -> pa.Table:
+        minor = valued.results.minor / self.engine.rules.minor
+        names = dict.fromkeys(["product", *self.group_by])
+        columns: dict[str, Any] = {"policy_id": chunk.ids}
+        columns.update({name: _plain(chunk.raw(name)) for name in names if name != "policy_id"})
+        columns.update({name: pa.array(minor[place]) for place, name in enumerate(MONEY_COLUMNS)})
+        table = pa.table(columns)
+        return table if not valued.checked.reason.any() else table.filter(pa.array(valued.valued))
+
+    def _outcome(self, tally: Tally, began: float) -> Outcome:
+        control = tally.control_totals()
+        exceptions = pa.concat_tables([no_exceptions(), *tally.exceptions])
+        self._check_gate(control, exceptions)
+        started = perf_counter()
+        result = check_sample(self.sample.chosen(), self.designs, self.basis, self.settings)
+        self.seconds["sample"] = perf_counter() - started
+        if not result.passes:
+            raise RunStopped(
+                f"policy {result.policy_id}: the engine and the plain twin differ by {result.largest_difference:.6g} "
+                f"({result.largest_relative:.1e} of the value); this is a fault of the program, please report it"
+            )
+        today = self.settings.valuation_date
+        seconds = {**self.seconds, **tally.seconds, "total": perf_counter() - began}
+        engine = self.engine
+        return Outcome(
+            settings=self.settings,
+            totals=tally.totals_table(self.group_by, self.groups.keys),
+            cash_flows=tally.flows_table(list(engine.plans.lines), today.year, today.month),
+            exceptions=exceptions,
+            control=control,
+            total=tally.total(),
+            sample=result,
+            group_by=self.group_by,
+            conventions=convention_sheet(self.basis, self.settings),
+            counts={
+                "policy-months": tally.months,
+                "sets of policies that rules treat alike": len(engine.cells.cells),
+                "survival curves": len(engine.survival.living_count),
+                "persistency curves": len(engine.persistency.known),
+                "discount curves": len(engine.discount.known),
+                "patterns": engine.plans.relative.used,
+            },
+            timings=seconds,
+        )
+
+    def _check_gate(self, control: tuple[Any, ...], exceptions: pa.Table) -> None:
+        if not control or not control[0].read:
+            raise RunStopped("the extract holds no policies")
+        for total in control:
+            if not total.closes:
+                raise RunStopped(
+                    f"the in-force gate does not close for {total.name}: {total.read:,} read, {total.valued:,} valued, "
+                    f"{total.exceptions:,} exceptions"
+                )
+        if control[0].read != self.extract.rows or control[0].exceptions != exceptions.num_rows:
+            raise RunStopped(
+                f"the in-force gate does not close: {self.extract.rows:,} policies in the files, {control[0].read:,} read, "
+                f"{control[0].exceptions:,} exceptions, {exceptions.num_rows:,} of them listed"
+            )
+        share = control[0].exceptions / control[0].read
+        if share > self.plan.exceptions_limit:
+            reasons = exceptions.group_by("reason").aggregate([("reason", "count")]).sort_by([("reason_count", "descending")])
+            worst = ", ".join(f"{row['reason']}: {row['reason_count']:,}" for row in reasons.slice(0, 3).to_pylist())
+            raise RunStopped(
+                f"{control[0].exceptions:,} of {control[0].read:,} policies are exceptions ({share:.2%}), more than the "
+                f"'exceptions_limit' of {self.plan.exceptions_limit:.2%} allows ({worst}); mend the extract or raise the limit"
+            )
+
+
+class _Sample:
+    """The policies with the smallest hashes among those valued: the same ones in whatever order they come."""
+
+    def __init__(self, size: int) -> None:
+        self.size = size
+        self._kept: list[tuple[int, int, Candidate]] = []
+        self._lock = Lock()
+
+    def offer(self, chunk: Chunk, valued: Valued) -> None:
+        good = np.flatnonzero(valued.valued)
+        hashes = chunk.hashes[good]
+        few = good if len(good) <= self.size else good[np.argpartition(hashes, self.size)[: self.size]]
+        with self._lock:
+            for i in few.tolist():
+                key = -int(chunk.hashes[i])
+                if len(self._kept) >= self.size and key <= self._kept[0][0]:
+                    continue
+                candidate = Candidate(
+                    chunk.policy(i), int(valued.checked.product[i]), valued.results.parts[:, i].tolist()
+                )
+                push = heapq.heappush if len(self._kept) < self.size else heapq.heappushpop
+                push(self._kept, (key, chunk.start + i, candidate))
+
+    def chosen(self) -> list[Candidate]:
+        return [candidate for _, _, candidate in sorted(self._kept, key=lambda kept: -kept[0])]
+
+
+def _exact_sum(whole: Any) -> int:
+    """Sum of whole numbers of up to 1e16, which 64 bits hold for a few hundred of them at least."""
+    high, low = whole >> 32, whole & 0xFFFFFFFF
+    return (int(high.sum()) << 32) + int(low.sum())
+
+
+def _plain(column: pa.Array) -> pa.Array:
+    return column.combine_chunks() if isinstance(column, pa.ChunkedArray) else column

@@ -1,0 +1,1 @@
+"""Everything that a person or another system reads or types: command line, run folders, page, workbook."""

@@ -1,0 +1,157 @@
+"""What page, workbook and console show of a run: the outcome, its record, and the tables they share."""
+
+from __future__ import annotations
+
+from collections import defaultdict
+from dataclasses import dataclass
+from functools import cached_property
+
+from projection.results import JSON, PARTS, Outcome
+
+from .figures import money, shown, words
+from .record import is_count
+
+
+
+@dataclass(frozen=True)
+class YearFlows:
+    """Expected cash flows of a calendar year in currency: by part, and out and in altogether."""
+
+    label: str
+    parts: dict[str, float]
+    paid_out: float
+    paid_in: float
+
+    @property
+    def net(self) -> float:
+        """Out less in."""
+        return self.paid_out - self.paid_in
+
+
+@dataclass(frozen=True)
+class Report:
+    """A finished run, ready to be laid out."""
+
+    outcome: Outcome
+    record: JSON
+
+    @property
+    def decimals(self) -> int:
+        """Decimals of the currency's minor unit."""
+        return self.outcome.settings.decimals
+
+    @property
+    def currency(self) -> str:
+        """Label of the currency, or the word itself."""
+        return str(self.record["settings"]["currency"] or "currency")
+
+    @property
+    def title(self) -> str:
+        """Name of the run."""
+        return str(self.record["title"])
+
+    def money(self, minor: int) -> str:
+        """Return minor units as text."""
+        return money(minor, self.decimals)
+
+    @property
+    def rounding(self) -> int:
+        """Reserve less what its parts, rounded one by one, add up to; minor units."""
+        total = self.outcome.total
+        parts = total["value_of_benefits"] + total["value_of_expenses"] - total["value_of_premiums"]
+        return total["reserve"] - parts
+
+    @cached_property
+    def control_rows(self) -> list[tuple[str, str, str, str, bool]]:
+        """The in-force gate: quantity, read, valued, exceptions, closes."""
+        rows = []
+        for total in self.outcome.control:
+            decimals = 0 if is_count(total) else self.decimals
+            figures = [money(figure, decimals) for figure in (total.read, total.valued, total.exceptions)]
+            rows.append((words(total.name), figures[0], figures[1], figures[2], total.closes))
+        return rows
+
+    @cached_property
+    def total_rows(self) -> list[dict[str, object]]:
+        """Rows of the totals by group."""
+        rows: list[dict[str, object]] = self.outcome.totals.to_pylist()
+        return rows
+
+    @cached_property
+    def by_first_group(self) -> list[tuple[str, float]]:
+        """Reserve by product, or by the first group where product is not among the groups; in currency."""
+        name = self.bar_group
+        if name is None:
+            return []
+        sums: dict[str, int] = defaultdict(int)
+        for row in self.total_rows:
+            sums[shown(row[name])] += round(float(str(row["reserve"])) * 10**self.decimals)
+        return [(group, minor / 10**self.decimals) for group, minor in sums.items()]
+
+    @property
+    def bar_group(self) -> str | None:
+        """The group column whose bars are drawn."""
+        groups = self.outcome.group_by
+        return "product" if "product" in groups else (groups[0] if groups else None)
+
+    @cached_property
+    def years(self) -> list[YearFlows]:
+        """Expected cash flows by calendar year, without gaps."""
+        parts: dict[int, dict[str, float]] = defaultdict(lambda: defaultdict(float))
+        ways: dict[int, dict[str, float]] = defaultdict(lambda: defaultdict(float))
+        for row in self._yearly_rows:
+            parts[row["year"]][str(row["part"])] += row["amount"]
+            ways[row["year"]][str(row["direction"])] += row["amount"]
+        if not parts:
+            return []
+        return [
+            YearFlows(str(year), dict(parts[year]), ways[year]["out"], ways[year]["in"])
+            for year in range(min(parts), max(parts) + 1)
+        ]
+
+    @cached_property
+    def stream_years(self) -> tuple[list[tuple[str, str, str]], dict[int, dict[tuple[str, str, str], float]]]:
+        """Streams as (part, stream, direction) in order of part, and per year the amount of each."""
+        table: dict[int, dict[tuple[str, str, str], float]] = defaultdict(lambda: defaultdict(float))
+        for row in self._yearly_rows:
+            table[row["year"]][row["part"], row["stream"], row["direction"]] += row["amount"]
+        keys = {key for row in table.values() for key in row}
+        return sorted(keys, key=lambda key: (_order(key[0]), key)), {year: dict(table[year]) for year in sorted(table)}
+
+    @cached_property
+    def _yearly_rows(self) -> list[JSON]:
+        import pyarrow.compute as pc
+
+        flows = self.outcome.cash_flows
+        flows = flows.append_column("year", pc.year(flows.column("month")))
+        keys = ["year", "part", "stream", "direction"]
+        rows: list[JSON] = flows.group_by(keys).aggregate([("amount", "sum")]).to_pylist()
+        for row in rows:
+            row["amount"] = float(row.pop("amount_sum"))
+        return rows
+
+    @property
+    def parts(self) -> list[str]:
+        """Parts that some cash flow belongs to, in the order that they are shown."""
+        met = {part for year in self.years for part in year.parts}
+        return sorted(met, key=_order)
+
+
+def in_blocks(years: list[YearFlows], single: int = 10, block: int = 5) -> list[YearFlows]:
+    """Return the first years one by one and the later ones added up in blocks."""
+    rows = list(years[:single])
+    for start in range(single, len(years), block):
+        piece = years[start : start + block]
+        parts: dict[str, float] = defaultdict(float)
+        for year in piece:
+            for part, value in year.parts.items():
+                parts[part] += value
+        label = piece[0].label if len(piece) == 1 else f"{piece[0].label} to {piece[-1].label}"
+        rows.append(
+            YearFlows(label, dict(parts), sum(y.paid_out for y in piece), sum(y.paid_in for y in piece))
+        )
+    return rows
+
+
+def _order(part: str) -> int:
+    return PARTS.index(part) if part in PARTS else len(PARTS)

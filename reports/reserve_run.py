@@ -1,0 +1,117 @@
+"""The month-end run: reads everything, values, writes the run folder."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from concurrent.futures import ThreadPoolExecutor
+from contextlib import AbstractContextManager
+from dataclasses import replace
+from datetime import datetime, timezone
+from pathlib import Path
+from typing import Any
+
+from projection.results import Outcome
+from projection.valuation import value_extract
+
+from .prepared import Prepared, prepare
+from .record import build_record, command_line, complete, sealed_text
+from .report import Report
+from .run_folder import RECORD, RunFolder
+from .sealed_files import WrittenFile, write_sealed
+from .stopwatch import Stopwatch
+from .tables import PolicyWriter, write_table
+
+ProgressOn = Callable[[str], AbstractContextManager[Callable[[int, int], None]]]
+
+
+def reserve_run(
+    run: Path,
+    out: Path,
+    progress_on: ProgressOn,
+    *,
+    replace_finished: bool = False,
+    threads: int | None = None,
+    workbook: bool = True,
+    command: str = "",
+) -> Report:
+    """Value the extract that a run document names and leave a run folder behind, or nothing.
+
+    Raises DocumentError and ExtractError for wrong input, RunFolderError where the folder cannot be written,
+    and RunStopped where the run must not go on.
+    """
+    started, watch = datetime.now(timezone.utc), Stopwatch()
+    with RunFolder(out, replace_finished) as folder, ThreadPoolExecutor(1) as beside:
+        with watch.phase("reading documents"):
+            prepared = prepare(run)
+        digests = beside.submit(prepared.extract.digests)
+        outcome, files = _value(prepared, folder.path, progress_on, watch, threads)
+        with watch.phase("sealing the extract"):
+            sealed = digests.result()
+            prepared.check_unchanged()
+        with watch.phase("writing tables"):
+            files += write_tables(folder.path, outcome)
+        record = build_record(prepared, outcome, sealed, command or command_line(), str(out), started)
+        files += write_reports(folder.path, Report(_timed(outcome, watch), record), watch, workbook)
+        record = complete(record, files, _timed(outcome, watch).timings, datetime.now(timezone.utc))
+        write_sealed(folder.path, RECORD, sealed_text(record))
+        folder.finish()
+    return Report(_timed(outcome, watch), record)
+
+
+def _value(
+    prepared: Prepared, folder: Path, progress_on: ProgressOn, watch: Stopwatch, threads: int | None
+) -> tuple[Outcome, list[WrittenFile]]:
+    with PolicyWriter(folder) as writer, progress_on("valuing") as progress:
+        with watch.phase("valuing"):
+            outcome = value_prepared(prepared, writer, progress, threads)
+        with watch.phase("waiting for the policies to be written"):
+            files = writer.finish()
+    return outcome, files
+
+
+def value_prepared(
+    prepared: Prepared, sink: Any, progress: Callable[[int, int], None], threads: int | None, **changes: Any
+) -> Outcome:
+    """Value what was read, as the run document asks or with some of its questions changed."""
+    document = prepared.document
+    asked: dict[str, Any] = {
+        "group_by": tuple(document.group_by),
+        "in_force": tuple(document.in_force),
+        "exceptions_limit": document.exceptions_limit,
+        "sample": document.sample,
+        "sink": sink,
+        "progress": progress,
+        "threads": threads,
+    }
+    return value_extract(
+        prepared.extract, prepared.designs, prepared.basis, document.settings, **(asked | changes)
+    )
+
+
+def write_tables(folder: Path, outcome: Outcome) -> list[WrittenFile]:
+    """Write totals, cash flows and exceptions."""
+    return [
+        write_table(folder, "totals.parquet", outcome.totals),
+        write_table(folder, "cash_flows.parquet", outcome.cash_flows),
+        write_table(folder, "exceptions.parquet", outcome.exceptions),
+    ]
+
+
+def write_reports(folder: Path, report: Report, watch: Stopwatch, workbook: bool) -> list[WrittenFile]:
+    """Write the page and, if wanted, the workbook."""
+    from .page import page
+
+    files = []
+    with watch.phase("page"):
+        files.append(write_sealed(folder, "report.html", page(report).encode()))
+    if workbook:
+        from .workbook import workbook_bytes
+
+        with watch.phase("workbook"):
+            files.append(write_sealed(folder, "report.xlsx", workbook_bytes(report)))
+    return files
+
+
+def _timed(outcome: Outcome, watch: Stopwatch) -> Outcome:
+    within = {f"of valuing: {name}": taken for name, taken in outcome.timings.items()}
+    return replace(outcome, timings={**watch.seconds, **within, "altogether": watch.total})
