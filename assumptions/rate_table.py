@@ -51,7 +51,9 @@ class RateTable:
                 raise TableError(f"{self.name}: rate {wrong[0]:g} does not lie between 0 and 1")
             rows.flags.writeable = False
         if not np.isfinite(self._entry_rates).any():
-            raise TableError(f"{self.name}: no rate to begin with; a table needs one in the first year after entry")
+            raise TableError(
+                f"{self.name}: no rate to begin with; a table needs one in the first year after entry"
+            )
 
     @property
     def name(self) -> str:
@@ -127,12 +129,13 @@ class RateTable:
         if not entry_age % 1 and entry_age >= self.first_age:
             row = int(entry_age) - self.select_from
             if self.select_years and row < len(self.select):
-                chosen = self.select[row, :years]
+                chosen = self.select[row, : len(rates)]
                 rates[: len(chosen)] = chosen
-            place = int(entry_age) + self.select_years - self.ultimate_from
-            skipped = max(0, -place)
-            later = self.ultimate[place + skipped : place + max(0, years - self.select_years)]
-            rates[self.select_years + skipped :][: len(later)] = later
+            # Ultimate rates follow the select period, or begin later where the table has a gap.
+            start = max(self.select_years, self.ultimate_from - int(entry_age))
+            place = int(entry_age) + start - self.ultimate_from
+            later = self.ultimate[place : place + max(0, len(rates) - start)]
+            rates[start : start + len(later)] = later
         missing = np.flatnonzero(np.isnan(rates))
         if missing.size:
             raise TableError(self._nothing_at(entry_age, int(missing[0])))

@@ -7,7 +7,7 @@ import difflib
 import io
 import math
 import re
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
@@ -24,11 +24,15 @@ NUMBER = re.compile(r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d{1,3})?", re.ASCII)
 
 @dataclass(frozen=True)
 class Columns:
-    """What a file holds: cells by column name (lower case), None if blank, and a place for each row."""
+    """What a file holds: cells by column name (lower case), None if blank, and a place for each row.
+
+    others: columns that are no numbers by their type, with the name of the type.
+    """
 
     file: str
     cells: dict[str, list[Any]]
     places: list[str]
+    others: dict[str, str] = field(default_factory=dict)
 
     def numbers(self, name: str, blanks: bool = False) -> list[float]:
         """Return a column as numbers, NaN for a blank cell where ``blanks`` are allowed.
@@ -36,6 +40,10 @@ class Columns:
         Raises TableError for a missing column, a cell that is no finite number, and a blank not allowed.
         """
         key = name.strip().lower()
+        if key in self.others:
+            raise TableError(
+                f"{self.file}: column '{name}' holds {self.others[key]}, not numbers; convert it"
+            )
         if key not in self.cells:
             near = difflib.get_close_matches(key, self.cells, 1)
             hint = f"; did you mean '{near[0]}'?" if near else ""
@@ -48,8 +56,8 @@ class Columns:
         text = "" if cell is None else str(cell)
         number = float(text) if NUMBER.fullmatch(text) else math.nan
         if not math.isfinite(number):
-            said = f"'{text[:40]}' is no number" if text else "blank"
-            raise TableError(f"{self.file}, {self.places[row]}: column '{name}' is {said}; write a figure")
+            said = f"'{text[:40]}' is no number" if text else "a blank cell"
+            raise TableError(f"{self.file}, {self.places[row]}: column '{name}': {said}; write a figure")
         return number
 
 
@@ -135,14 +143,22 @@ def _from_parquet(file: str, content: bytes) -> Columns:
         source = pq.ParquetFile(pa.BufferReader(content))
         if source.metadata.num_rows > MAX_ROWS:
             raise TableError(f"{file}: more than {MAX_ROWS} rows, the limit")
-        table = source.read()
-    except (pa.ArrowException, OSError) as fault:
+        schema = source.schema_arrow
+        _once(file, [name.strip().lower() for name in schema.names])
+        # Numbers only: a text or a list, repeated, may fill the memory from a file of no size.
+        numeric = [one.name for one in schema if _is_numeric(one.type)]
+        table = source.read(columns=numeric)
+    except (pa.ArrowException, OSError, UnicodeError) as fault:
         raise TableError(f"{file}: not a Parquet file that can be read: {fault}") from None
-    names = _once(file, [str(name).strip().lower() for name in table.column_names])
-    cells = {name: _plain(column.to_pylist()) for name, column in zip(names, table.columns, strict=True)}
-    return Columns(file, cells, [f"row {row}" for row in range(1, table.num_rows + 1)])
+    rows = source.metadata.num_rows
+    if numeric and table.num_rows != rows:
+        raise TableError(f"{file}: {table.num_rows} rows where it says {rows}; write the file again")
+    cells = {name.strip().lower(): table[name].to_pylist() for name in numeric}
+    others = {one.name.strip().lower(): str(one.type) for one in schema if one.name not in numeric}
+    return Columns(file, cells, [f"row {row}" for row in range(1, rows + 1)], others)
 
 
-def _plain(values: list[Any]) -> list[Any]:
-    # A NaN is kept, and is an error: in Parquet a missing figure is null.
-    return [value.strip() or None if isinstance(value, str) else value for value in values]
+def _is_numeric(kind: Any) -> bool:
+    import pyarrow.types as types
+
+    return bool(types.is_integer(kind) or types.is_floating(kind) or types.is_decimal(kind))

@@ -1,7 +1,7 @@
 """The files that assumptions come in: tables of rates, lapse rates by policy year, spot curves.
 
-CSV and Parquet files have a column `age` and either `rate` (or another column named by the document) or
-`select_0`, `select_1` ... and `ultimate`, the last by attained age. XTbML files say what is in them.
+CSV and Parquet files have a column ``age`` and either ``rate`` (or another column named by the document) or
+``select_0``, ``select_1`` ... and ``ultimate``, the last by attained age. XTbML files say what is in them.
 """
 
 from __future__ import annotations
@@ -68,7 +68,7 @@ def read_rates(
 def read_lapse(path: Path | str) -> list[float]:
     """Read yearly lapse rates by policy year, the first year first.
 
-    A CSV or Parquet file with columns `year` (1, 2, 3 ...) and `rate`, or an XTbML file with one table by
+    A CSV or Parquet file with columns ``year`` (1, 2, 3 ...) and ``rate``, or an XTbML file with one table by
     duration. Raises TableError for missing years and for rates outside 0 to 1.
     """
     if _is_xml(path):
@@ -87,7 +87,7 @@ def read_lapse(path: Path | str) -> list[float]:
 
 
 def read_curve(path: Path | str) -> dict[float, float]:
-    """Read spot rates by maturity in years from a CSV or Parquet file with columns `maturity` and `rate`.
+    """Read spot rates by maturity in years: a CSV or Parquet file with columns ``maturity`` and ``rate``.
 
     Raises TableError for a maturity that is not above 0 or there twice, and for a rate that does not lie
     above -0.5 and not above 1.

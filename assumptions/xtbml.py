@@ -2,7 +2,7 @@
 
 A file has one classification and any number of tables, each with axis definitions and values. It is read as
 a stream into plain numbers. A document type, an entity or an external reference is an error, so that nothing
-in a file can grow or reach out; size, depth, text and number of values are bounded.
+in a file can grow or reach out; size, depth and number of values are bounded.
 """
 
 from __future__ import annotations

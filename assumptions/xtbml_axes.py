@@ -140,7 +140,7 @@ def _select_rows(file: str, table: XtbmlTable, asked: SelectBy | None) -> tuple[
     if kinds[0] not in _AGES or kinds[1:] not in ([], ["duration"]):
         raise TableError(f"{file}: table {table.number} is by {_by(table)}, not by age and policy year")
     durations = axes[1].ticks if len(axes) == 2 else (1,)
-    if durations != tuple(range(durations[0], durations[0] + len(durations))) or durations[0] > 1:
+    if durations != tuple(range(durations[0], durations[0] + len(durations))) or durations[0] not in (0, 1):
         raise TableError(f"{file}: table {table.number}: durations go {_some(durations)}, not 1, 2, 3 ...")
     rows = values.reshape(len(axes[0].ticks), len(durations))
     first = _ages(file, table, axes[0])
@@ -183,5 +183,6 @@ def _some(ticks: Sequence[int]) -> str:
 
 
 def _list(tables: Sequence[XtbmlTable]) -> str:
-    shown = [f"{table.number} '{table.title[-80:] or table.name}'" for table in tables[:12]]
+    # What tells the tables of a file apart mostly stands at the end of a long title.
+    shown = [f"{one.number} '{'... ' * (len(one.title) > 80)}{one.title[-80:]}'" for one in tables[:12]]
     return ", ".join(shown) + (f" and {len(tables) - 12} more" if len(tables) > 12 else "")

@@ -13,8 +13,13 @@ MAX_DEPTH = 24
 """Deepest nesting of elements; the standard itself needs 7."""
 MAX_VALUES = 1_000_000
 """Most values in one file."""
-MAX_TEXT = 200_000
-"""Most characters of one piece of text."""
+
+# Where things stand.
+_TABLE = ["XTbML", "Table"]
+_VALUES = [*_TABLE, "Values"]
+_META = [*_TABLE, "MetaData"]
+_AXIS = [*_META, "AxisDef"]
+_ABOUT = ["XTbML", "ContentClassification"]
 
 _ABOUT_FILE = ("TableName", "TableReference", "ContentType")
 _ABOUT_TABLE = ("ScalingFactor", "TableDescription")
@@ -44,53 +49,50 @@ class TableStream:
         self.about: dict[str, str] = {}
         self.found: list[FoundTable] = []
         self._path: list[str] = []
-        self._ticks: list[int | None] = []
         self._text: list[str] = []
-        self._length = 0
+        # Open elements among values, each with the ticks that lead to it; the cells are the values' table.
+        self._open: list[Ticks] = []
+        self._cells: dict[Ticks, float] | None = None
         self._count = 0
 
     def start(self, tag: str, attributes: dict[str, str]) -> None:
         """Begin an element; names count without their namespace."""
+        self._text.clear()
         tag = tag.rpartition("}")[2]
+        if self._cells is not None:
+            self._start_value(tag, attributes)
+            return
         path = self._path
         if not path and tag != "XTbML":
             self._fail(f"the root element is '{tag[:80]}', not 'XTbML'; is this a table file?")
         path.append(tag)
         if len(path) > MAX_DEPTH:
             self._fail(f"elements lie more than {MAX_DEPTH} deep, the limit")
-        self._forget_text()
-        if len(path) < 2 or path[1] != "Table":
-            return
-        if len(path) == 2:
+        if path == _TABLE:
             self.found.append(FoundTable())
-        elif len(path) > 3 and path[2] == "Values":
-            self._start_value(tag, attributes)
-        elif len(path) == 4 and tag == "AxisDef":
+        elif path == _VALUES:
+            self._cells = self.found[-1].cells
+        elif path == _AXIS:
             self.found[-1].axes.append({"id": attributes.get("id", "")})
 
     def data(self, text: str) -> None:
         """Take a piece of text."""
-        self._length += len(text)
-        if self._length > MAX_TEXT:
-            self._fail(f"a text of more than {MAX_TEXT} characters, the limit")
         self._text.append(text)
 
-    def end(self, _tag: str) -> None:
-        """End an element; its text counts only if it has no elements inside."""
-        path = self._path
-        tag = path.pop()
-        if len(path) == 2 and path[1] == "ContentClassification" and tag in _ABOUT_FILE:
-            self.about[tag] = self._words()
-        elif len(path) > 2 and path[1] == "Table":
-            if path[2] == "Values":
-                if tag == "Y":
-                    self._value()
-                self._ticks.pop()
-            elif len(path) == 3 and tag in _ABOUT_TABLE:
+    def end(self, tag: str) -> None:
+        """End an element; its text counts if it has no elements inside."""
+        if self._open:
+            self._end_value(tag)
+        else:
+            self._cells = None
+            tag = self._path.pop()
+            if self._path == _ABOUT and tag in _ABOUT_FILE:
+                self.about[tag] = self._words()
+            elif self._path == _META and tag in _ABOUT_TABLE:
                 self.found[-1].about[tag] = self._words()
-            elif len(path) == 4 and path[3] == "AxisDef" and tag in _ABOUT_AXIS:
+            elif self._path == _AXIS and tag in _ABOUT_AXIS:
                 self.found[-1].axes[-1][tag] = self._words()
-        self._forget_text()
+        self._text.clear()
 
     def close(self) -> None:
         """Refuse a file without tables."""
@@ -98,19 +100,27 @@ class TableStream:
             self._fail("no table in it; an XTbML file needs at least one 'Table' element")
 
     def _start_value(self, tag: str, attributes: dict[str, str]) -> None:
-        if tag not in ("Axis", "Y"):
+        if tag != "Y" and tag != "Axis":
             self._fail(f"{self._place()}: '{tag[:80]}' among the values; only 'Axis' and 'Y' belong there")
+        here = self._open[-1] if self._open else ()
         # An Axis without a tick only encloses the values of the innermost axis.
-        tick = self._whole(attributes.get("t", "")) if "t" in attributes or tag == "Y" else None
-        self._ticks.append(tick)
-        if tag == "Axis" and tick is not None:
-            here, outer = self._here(), self.found[-1].outer
-            if here in outer:
-                self._fail(f"{self._place()}: the axis value {tick} is there twice; remove one")
-            outer.add(here)
+        if tag == "Y":
+            here = (*here, self._whole(attributes.get("t", "")))
+        elif "t" in attributes:
+            here = (*here, self._whole(attributes["t"]))
+            if here in self.found[-1].outer:
+                self._fail(f"{self._place()}: the axis value {here[-1]} is there twice; remove one")
+            self.found[-1].outer.add(here)
+        self._open.append(here)
+        if len(self._open) > MAX_DEPTH:
+            self._fail(f"elements lie more than {MAX_DEPTH} deep, the limit")
 
-    def _value(self) -> None:
-        cells, here, text = self.found[-1].cells, self._here(), "".join(self._text).strip()
+    def _end_value(self, tag: str) -> None:
+        here = self._open.pop()
+        cells = self._cells
+        if cells is None or not tag.endswith("Y"):
+            return
+        text = "".join(self._text).strip()
         self._count += 1
         if self._count > MAX_VALUES:
             self._fail(f"more than {MAX_VALUES} values, the limit")
@@ -129,15 +139,8 @@ class TableStream:
             self._fail(f"{self._place()}: axis value '{text[:40]}' is no whole number")
         return int(number)
 
-    def _here(self) -> Ticks:
-        return tuple([tick for tick in self._ticks if tick is not None])
-
     def _words(self) -> str:
         return " ".join("".join(self._text).split())
-
-    def _forget_text(self) -> None:
-        self._text.clear()
-        self._length = 0
 
     def _place(self) -> str:
         return f"table {len(self.found)}"

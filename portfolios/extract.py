@@ -100,7 +100,7 @@ class Extract:
             found.update(chunk.start + row for row in there)
         if not found:
             return []
-        usable = [name for name in self.column_names if not self._faults(name, None)]
+        usable = [name for name in self.column_names if not any(self._faults(name, None))]
         policies: list[dict[str, Any]] = []
         for chunk in self.chunks(usable):
             inside = sorted(row for row in found if chunk.start <= row < chunk.start + chunk.n)

@@ -74,7 +74,7 @@ def _matched(shown: str, path: Path) -> list[Place]:
 
 def _below(shown: str, path: Path) -> list[Place]:
     found = []
-    for parent, folders, names in os.walk(path):
+    for parent, folders, names in os.walk(path, onerror=_refuse):
         folders[:] = sorted(name for name in folders if not _hidden(name))
         for name in names:
             if name.lower().endswith(SUFFIXES) and not _hidden(name):
@@ -87,8 +87,16 @@ def _hidden(name: str) -> bool:
     return os.path.basename(name).startswith((".", "_"))
 
 
+def _refuse(error: OSError) -> None:
+    # A folder that cannot be listed must not silently take its policies out of the run.
+    raise ExtractError(f"{error.filename}: the folder cannot be read: {error.strerror}") from error
+
+
 def _place(shown: str, path: Path) -> Place:
-    return Place(Path(shown).as_posix(), fs.LocalFileSystem(), str(path), path.stat().st_size)
+    try:
+        return Place(Path(shown).as_posix(), fs.LocalFileSystem(), str(path), path.stat().st_size)
+    except OSError as error:
+        raise ExtractError(f"{shown}: cannot be read: {error.strerror}") from error
 
 
 def _remote(uri: str) -> list[Place]:

@@ -6,7 +6,9 @@ factors by interest rule and the part of a step that has passed at the valuation
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass, field
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -18,9 +20,11 @@ from assumptions.laws import Law
 from assumptions.mortality import MortalityRule, Rates
 
 from . import loops
+from .cells import distinct
 from .documents import DocumentError
+from .pool import Pool
 from .settings import Settings
-from .streams import LONGEST
+from .streams import LONGEST, SURVIVAL
 
 FRACTIONS = {"constant force": 0, "uniform deaths": 1, "Balducci": 2}
 
@@ -38,15 +42,11 @@ Row = NDArray[np.float64]
 
 @dataclass
 class Survival:
-    """Rows of survival by mortality rule and age at commencement."""
+    """Rows of survival by mortality rule and age at commencement, with a record of each."""
 
     basis: Basis
-    living: NDArray[np.float64] = field(default_factory=lambda: np.zeros(1 << 16))
-    living_at: list[int] = field(default_factory=lambda: [0])
-    living_count: list[int] = field(default_factory=list)
-    yearly: list[Row] = field(default_factory=list)
-    offset: list[float] = field(default_factory=list)
-    closed: list[bool] = field(default_factory=list)
+    pool: Pool
+    records: NDArray[Any] = field(default_factory=lambda: np.zeros(0, SURVIVAL))
     known: dict[int, int] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
@@ -61,9 +61,9 @@ class Survival:
                     "years; set the key 'age' to last, nearest or next birthday"
                 )
 
-    def codes(self, rule: NDArray[np.int64], places: loops.Places) -> NDArray[np.int64]:
+    def codes(self, rule: NDArray[np.int64], policies: NDArray[Any]) -> NDArray[np.int64]:
         """Return the key of each policy's row: rule and age at commencement."""
-        age, since, span = (x.astype(np.int64) for x in (places.age, places.since, places.span))
+        age, since, span = policies["age"], policies["since"], policies["span"]
         basis = self.basis.document.mortality.age
         if self.exact:
             key = (2 * np.clip(age, 0, 159) + (span == 366)) * _SPANS + since
@@ -95,19 +95,17 @@ class Survival:
             return IMPOSSIBLE
         if len(yearly) == 0:
             return IMPOSSIBLE
-        at, count = self.living_at[-1], 12 * len(yearly) + 1
-        while at + count > len(self.living):
-            # A new array: a loop that runs in another thread keeps the one it was given.
-            self.living = np.concatenate((self.living, np.zeros(len(self.living))))
-        offset = age - whole
+        passed, count = age - whole, 12 * len(yearly) + 1
         reached = np.concatenate(([1.0], np.cumprod(1 - yearly)))
-        loops.fill_living(yearly, reached, offset, self.fractions, self.living[at : at + count])
-        self.living_at.append(at + count)
-        self.living_count.append(count)
-        self.yearly.append(yearly)
-        self.offset.append(offset)
-        self.closed.append(rule.close or rates.closed)
-        return len(self.living_count) - 1
+        living = self.pool.space(count)
+        loops.fill_living(yearly, reached, passed, self.fractions, self.pool.row(living, count))
+        record = np.zeros(1, SURVIVAL)
+        record["living"], record["over"] = living, count - 1
+        record["yearly"], record["reached"] = self.pool.add(yearly), self.pool.add(reached)
+        record["years"], record["passed"] = len(yearly), passed
+        record["closed"] = rule.close or rates.closed
+        self.records = np.concatenate((self.records, record))
+        return len(self.records) - 1
 
 
 def yearly_rates(rule: MortalityRule, rates: Rates, age: float) -> Row:
@@ -130,11 +128,12 @@ def yearly_rates(rule: MortalityRule, rates: Rates, age: float) -> Row:
 
 @dataclass
 class Persistency:
-    """Rows of persistency by lapse rule and the month after which nobody lapses, with one place in front."""
+    """Rows of persistency by lapse rule and the month after which nobody lapses: held, dead and lapsing."""
 
     basis: Basis
     settings: Settings
-    rows: dict[str, NDArray[np.float64]] = field(default_factory=dict)
+    pool: Pool
+    places: list[tuple[int, int, int]] = field(default_factory=list)
     known: dict[int, int] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
@@ -146,8 +145,6 @@ class Persistency:
                 "lapse: 'dependent rates' spread lapses over the step, and 'anniversaries' do not; "
                 "take 'each step', or a yearly step"
             )
-        for name in ("held", "dead", "lapsing"):
-            self.rows[name] = np.ones((0, LONGEST + 14))
 
     @property
     def yearly(self) -> bool:
@@ -158,11 +155,12 @@ class Persistency:
         """Return the row of (1 + rule) * (NEVER + 1) + until, made on first meeting; rule -1 has no lapses."""
         if code not in self.known:
             number, until = divmod(code, NEVER + 1)
-            rates = self._rates(number - 1, until)
-            self.known[code] = len(self.rows["held"])
-            made = self._build(rates)
-            for name, row in zip(("held", "dead", "lapsing"), made, strict=True):
-                self.rows[name] = np.concatenate((self.rows[name], row[None, :]))
+            held, dead, lapsing = self._build(self._rates(number - 1, until))
+            self.known[code] = len(self.places)
+            # One place in front of each row stands for g = -1.
+            self.places.append(
+                (self.pool.add(held) + 1, self.pool.add(dead) + 1, self.pool.add(lapsing) + 1)
+            )
         return self.known[code]
 
     def _rates(self, rule: int, until: int) -> Row:
@@ -184,11 +182,15 @@ class Persistency:
     def _build(self, shares: Row) -> tuple[Row, Row, Row]:
         held = np.concatenate(([1.0], np.cumprod(1 - shares)))
         before = np.concatenate(([1.0, 1.0], held[1:-1]))
-        dead = (before + held) / 2 if self.dependent else before.copy()
-        if self.dependent and self.yearly:
-            # The step that ends at g starts twelve points earlier, at the persistency before the lapses at g.
-            dead = (before + held) / 2
-        return held, dead, before - held
+        lapsing = before - held
+        if not self.dependent:
+            return held, before, lapsing
+        if self.yearly:
+            # Lapses spread over the year, so that persistency at points within it lies on a straight line.
+            points = np.arange(-1, len(held) - 1)
+            ends = np.arange(0, len(held) - 1, 12)
+            held = np.interp(points, ends, held[ends + 1])
+        return held, before - lapsing / 2, lapsing
 
 
 @dataclass
@@ -197,16 +199,16 @@ class Discount:
 
     basis: Basis
     settings: Settings
-    payment: NDArray[np.float64] = field(default_factory=lambda: np.ones((0, LONGEST + 1)))
-    claim: NDArray[np.float64] = field(default_factory=lambda: np.ones((0, LONGEST + 1)))
+    pool: Pool
+    places: list[tuple[int, int]] = field(default_factory=list)
     known: dict[int, int] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
         self.paid = self.basis.document.claims.paid
 
-    def codes(self, rule: NDArray[np.int64], places: loops.Places) -> NDArray[np.int64]:
+    def codes(self, rule: NDArray[np.int64], policies: NDArray[Any]) -> NDArray[np.int64]:
         """Return the key of each policy's row: rule, and the part of a month that has passed."""
-        return (rule * 6 + _WHOLES[places.whole]) * _SPANS + places.part
+        return (rule * 6 + _WHOLES[policies["whole"]]) * _SPANS + policies["part"]
 
     def row(self, code: int) -> int:
         """Return the row of a key, made on first meeting."""
@@ -215,17 +217,15 @@ class Discount:
             rule, whole = divmod(rest, 6)
             passed = part / (28, 29, 30, 31, 365, 366)[whole]
             curve = self.basis.curves[rule]
-            n = np.arange(LONGEST + 1, dtype=np.float64)
-            self.known[code] = len(self.payment)
-            payment = factors(curve, np.maximum(n - passed, 0) / 12)
-            self.payment = np.concatenate((self.payment, payment[None, :]))
-            if self.paid == "end of step":
-                self.claim = self.payment
-            else:
+            n = np.arange(LONGEST + 14, dtype=np.float64)
+            self.known[code] = len(self.places)
+            payment = self.pool.add(factors(curve, np.maximum(n - passed, 0) / 12))
+            claim = payment
+            if self.paid != "end of step":
                 begin = np.maximum(n - self.settings.step_months, passed)
                 delay = self.paid.delay_months if isinstance(self.paid, ClaimDelay) else 0.0
-                claim = factors(curve, np.maximum((begin + n) / 2 + delay - passed, 0) / 12)
-                self.claim = np.concatenate((self.claim, claim[None, :]))
+                claim = self.pool.add(factors(curve, np.maximum((begin + n) / 2 + delay - passed, 0) / 12))
+            self.places.append((payment, claim))
         return self.known[code]
 
     def months_after_start(self) -> float | None:
@@ -248,10 +248,7 @@ def factors(curve: Curve, years: Row) -> Row:
     return np.exp(-integral)
 
 
-def rows_for(codes: NDArray[np.int64], row: object) -> NDArray[np.int32]:
+def rows_for(codes: NDArray[np.int64], row: Callable[[int], int]) -> NDArray[np.int64]:
     """Look up the row of each policy's key, calling ``row`` once for each distinct one."""
-    from .cells import distinct
-
     keys, inverse = distinct(codes)
-    found = np.array([row(int(key)) for key in keys], dtype=np.int32)  # type: ignore[operator]
-    return found[inverse]
+    return np.array([row(int(key)) for key in keys], dtype=np.int64)[inverse]

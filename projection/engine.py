@@ -6,7 +6,7 @@ with chunks of its own; what they share grows under a lock, and nobody's result 
 
 from __future__ import annotations
 
-from collections.abc import Collection
+from collections.abc import Callable, Collection
 from datetime import date
 from threading import Lock
 from time import perf_counter
@@ -26,10 +26,11 @@ from . import loops
 from .cells import Cells
 from .curves import IMPOSSIBLE, NEVER, Discount, Persistency, Survival, rows_for
 from .plans import Plans
+from .pool import Pool
 from .relative import RelativeRows
 from .settings import Settings
 from .slots import whole_months
-from .streams import LONGEST, STREAM
+from .streams import POLICY, SURVIVAL
 from .tally import QUANTA
 
 
@@ -69,14 +70,14 @@ class Engine:
         today = settings.valuation_date
         self.checks = Checks(designs, today, in_force, duplicates or Duplicates(), needed)
         self.cells = Cells(designs, basis, kinds)
-        self.plans = Plans(designs, basis, RelativeRows(today.year, today.month))
-        self.survival = Survival(basis)
-        self.persistency = Persistency(basis, settings)
-        self.discount = Discount(basis, settings)
+        self.pool = Pool()
+        self.plans = Plans(designs, basis, RelativeRows(self.pool, today.year, today.month))
+        self.survival = Survival(basis, self.pool)
+        self.persistency = Persistency(basis, settings, self.pool)
+        self.discount = Discount(basis, settings, self.pool)
         self._today = (today - date(1970, 1, 1)).days
         self._until = _Until(basis)
         self._lock = Lock()
-        self._ones = np.ones(LONGEST + 2)
         self.rules = loops.Rules(
             step=settings.step_months,
             outstanding=int(settings.due == "outstanding"),
@@ -91,123 +92,116 @@ class Engine:
         clock = _Clock()
         checked = self.checks.check(chunk)
         clock.lap("check")
-        places, dates = self._locate(chunk, checked)
+        policies = self._locate(chunk, checked)
+        clock.lap("dates")
         with self._lock:
             cell = self._cells(chunk, checked)
             clock.lap("rules")
-            policies, curves, streams, ranges, lines = self._rows(chunk, checked, cell, places, dates)
-            counts = np.array(self.survival.living_count or [0], dtype=np.int64)
+            tables = self._rows(chunk, checked, cell, policies)
+            accounts = len(self.plans.accounts)
         clock.lap("curves")
         results = loops.Results(
             reason=checked.reason,
             fault=np.full(chunk.n, -1, dtype=np.int64),
-            parts=np.zeros((3, chunk.n)),
-            minor=np.zeros((4, chunk.n), dtype=np.int64),
-            flows=np.zeros((lines, loops.BINS)),
+            parts=np.zeros((chunk.n, 3)),
+            minor=np.zeros((chunk.n, 4), dtype=np.int64),
+            flows=np.zeros(accounts * loops.BINS),
+            scratch=np.empty(loops.BINS),
+            firsts=np.empty(len(tables.segments) + 1, dtype=np.int64),
+            counts=np.empty(len(tables.segments) + 1, dtype=np.int64),
         )
         order = np.empty(chunk.n, dtype=np.int64)
-        loops.sort_by(np.maximum(policies.mortality, 0), len(counts), order)
-        loops.value_policies(order, places, policies, curves, streams, ranges, self.rules, results)
+        loops.sort_by(policies["survival"], len(tables.survivals), order)
+        loops.value_policies(order, policies, tables, self.rules, results)
         clock.lap("loops")
-        self._name_faults(checked, results.fault, streams)
-        valued = Valued(checked, results, self._months(checked, policies, places, counts))
+        self._name_faults(checked, results.fault, tables.segments)
+        valued = Valued(checked, results, self._months(checked, cell, policies, tables))
         valued.seconds = clock.seconds
         return valued
 
-    def _locate(self, chunk: Chunk, checked: Checked) -> tuple[loops.Places, loops.Dates]:
-        dates = loops.Dates(chunk.day("birth_date"), chunk.day("commencement_date"), checked.reason)
-        places = loops.Places(*(np.zeros(chunk.n, dtype=np.int32) for _ in loops.Places._fields))
-        places.whole[:] = 30
-        loops.locate(dates, self._today, self.settings.step_months, places)
-        return places, dates
+    def _locate(self, chunk: Chunk, checked: Checked) -> NDArray[Any]:
+        policies = np.zeros(chunk.n, POLICY)
+        policies["whole"] = 30
+        birth, commencement = chunk.day("birth_date"), chunk.day("commencement_date")
+        loops.locate(birth, commencement, checked.reason, self._today, self.settings.step_months, policies)
+        return policies
 
     def _cells(self, chunk: Chunk, checked: Checked) -> NDArray[np.int32]:
         cell = self.cells.of(chunk, checked.product)
         for number in range(len(self.plans.ranges), len(self.cells.cells)):
             self.plans.add(self.cells.cells[number])
         missing = np.array([bool(known.missing) for known in self.cells.cells] + [False])
-        self._flag(checked, missing[cell], Reason.NO_RULE_FITS, "product")
+        if missing.any():
+            self._flag(checked, missing[cell], Reason.NO_RULE_FITS, "product")
         return np.maximum(cell, 0)
 
     def _rows(
-        self,
-        chunk: Chunk,
-        checked: Checked,
-        cell: NDArray[np.int32],
-        places: loops.Places,
-        dates: loops.Dates,
-    ) -> tuple[loops.Policies, loops.Curves, NDArray[Any], NDArray[np.int64], int]:
+        self, chunk: Chunk, checked: Checked, cell: NDArray[np.int32], policies: NDArray[Any]
+    ) -> loops.Tables:
         known = self.cells.cells
         mortality, lapse, interest = (
             np.array([getattr(one, part) for one in known], dtype=np.int64)[cell]
             for part in ("mortality", "lapse", "interest")
         )
         fine = checked.reason == 0
-        survival = np.full(chunk.n, IMPOSSIBLE, dtype=np.int32)
-        survival[fine] = rows_for(self.survival.codes(mortality, places)[fine], self.survival.row)
+        survival = np.zeros(chunk.n, dtype=np.int64)
+        survival[fine] = rows_for(self.survival.codes(mortality, policies)[fine], self.survival.row)
         self._flag(checked, survival == IMPOSSIBLE, Reason.AGE_OUTSIDE_TABLE, "birth_date")
-        months = self.plans.slots.months_of(chunk, _age_finder(dates, self.settings.step_months))
+        policies["survival"] = np.maximum(survival, 0)
+        policies["segments"], policies["segments_end"] = self.plans.ranges.T[:, cell]
+        self._persistency_rows(chunk, checked, lapse, policies)
+        codes = np.maximum(self.discount.codes(interest, policies), 0)
+        discount = rows_for(codes, self.discount.row)
+        policies["payment"], policies["claim"] = np.array(self.discount.places).T[:, discount]
+        policies["claim_shift"] = self._claim_shift(policies)
+        whole = self.plans.slots.numbers_of(chunk, self._months_to_age(chunk, checked))
+        self._changing(chunk, checked, cell, whole)
+        plans = self.plans
+        records = self.survival.records if len(self.survival.records) else np.zeros(1, SURVIVAL)
+        money = plans.slots.amounts_of(chunk)
+        return loops.Tables(plans.segments, plans.charges, records, self.pool.numbers, money, whole)
+
+    def _persistency_rows(
+        self, chunk: Chunk, checked: Checked, lapse: NDArray[np.int64], policies: NDArray[Any]
+    ) -> None:
         until = self._until.months(chunk, lapse)
         self._flag(checked, until < 0, Reason.NOT_WHOLE_MONTHS, self._until.column)
         codes = (1 + lapse) * (NEVER + 1) + np.maximum(until, 0)
-        policies = loops.Policies(
-            cell=cell,
-            mortality=survival,
-            lapse=rows_for(codes, self.persistency.row),
-            discount=rows_for(np.maximum(self.discount.codes(interest, places), 0), self.discount.row),
-            claim_shift=self._claim_shift(places),
-            money=self.plans.slots.amounts_of(chunk),
-            months=months,
-            periods=self.plans.slots.periods_of(chunk),
-            changing=self._changing(chunk, checked, cell, months),
-        )
-        return policies, self._curves(), self.plans.records, self.plans.ranges, len(self.plans.lines)
+        rows = rows_for(codes, self.persistency.row)
+        policies["held"], policies["dead"], policies["lapsing"] = np.array(self.persistency.places).T[:, rows]
+
+    def _months_to_age(self, chunk: Chunk, checked: Checked) -> Callable[[int], NDArray[np.int32]]:
+        def find(age: int) -> NDArray[np.int32]:
+            months = np.zeros(chunk.n, dtype=np.int32)
+            birth, commencement = chunk.day("birth_date"), chunk.day("commencement_date")
+            loops.months_to_age(birth, commencement, checked.reason, age, self.settings.step_months, months)
+            return months
+
+        return find
 
     def _changing(
-        self, chunk: Chunk, checked: Checked, cell: NDArray[np.int32], months: NDArray[np.int32]
-    ) -> NDArray[np.int32]:
-        """Row of relative amounts per policy, for each of the streams where it depends on the policy."""
-        rows = np.zeros((len(self.plans.relative.changing), chunk.n), dtype=np.int32)
+        self, chunk: Chunk, checked: Checked, cell: NDArray[np.int32], whole: NDArray[np.int32]
+    ) -> None:
+        """Fill in the places of relative amounts that depend on the policy."""
         users: dict[int, list[int]] = {}
         for number in range(len(self.cells.cells)):
-            for changing in self.plans.changing_in(number):
-                users.setdefault(changing, []).append(number)
-        for changing, cells in users.items():
+            for column in self.plans.changing_in(number):
+                users.setdefault(column, []).append(number)
+        for column, cells in users.items():
             concerned = np.zeros(len(self.cells.cells), dtype=bool)
             concerned[cells] = True
-            policies = np.flatnonzero(concerned[cell] & (checked.reason == 0))
-            if len(policies):
-                rows[changing, policies] = self.plans.relative.rows_of(changing, chunk, months, policies)
-        return rows
+            mine = np.flatnonzero(concerned[cell] & (checked.reason == 0))
+            if len(mine):
+                number = int(list(self.plans.slots.whole)[column][1])  # type: ignore[arg-type]
+                whole[mine, column] = self.plans.relative.places_of(number, chunk, whole, mine)
 
-    def _claim_shift(self, places: loops.Places) -> NDArray[np.int64]:
+    def _claim_shift(self, policies: NDArray[Any]) -> NDArray[np.int64] | int:
         """Calendar months from the end of a step to the payment of its death claims."""
         after = self.discount.months_after_start()
         if after is None:
-            return np.zeros(len(places.day), dtype=np.int64)
-        whole = np.floor((places.day - 1) / 30.4375 + after).astype(np.int64)
+            return 0
+        whole = np.floor((policies["day"] - 1) / 30.4375 + after).astype(np.int64)
         return whole - self.settings.step_months
-
-    def _curves(self) -> loops.Curves:
-        survival = self.survival
-        ends = np.cumsum([0, *(len(rates) + 1 for rates in survival.yearly)])
-        return loops.Curves(
-            living=survival.living,
-            living_at=np.array(survival.living_at, dtype=np.int64),
-            living_count=np.array(survival.living_count, dtype=np.int64),
-            yearly=_joined([np.append(rates, 1.0) for rates in survival.yearly]),
-            reached=_joined([np.concatenate(([1.0], np.cumprod(1 - rates))) for rates in survival.yearly]),
-            yearly_at=ends.astype(np.int64),
-            offset=np.array(survival.offset, dtype=np.float64),
-            closed=np.array(survival.closed, dtype=np.bool_),
-            persistency=self.persistency.rows["held"],
-            dead=self.persistency.rows["dead"],
-            lapsing=self.persistency.rows["lapsing"],
-            payment=self.discount.payment,
-            claim=self.discount.claim,
-            relative=self.plans.relative.rows,
-            ones=self._ones,
-        )
 
     def _flag(self, checked: Checked, bad: NDArray[np.bool_], reason: Reason, column: str) -> None:
         if bad.any():
@@ -215,38 +209,28 @@ class Engine:
             checked.reason[rows] = reason
             checked.field[rows] = self.needed.index(column) if column in self.needed else -1
 
-    def _name_faults(self, checked: Checked, fault: NDArray[np.int64], streams: NDArray[Any]) -> None:
+    def _name_faults(self, checked: Checked, fault: NDArray[np.int64], segments: NDArray[Any]) -> None:
         """Point at the column behind a duration or frequency that the loops could not use."""
-        durations = list(self.plans.slots.durations)
         for i in np.flatnonzero(fault >= 0).tolist():
-            record = streams[fault[i]]
-            rows = [record[name] for name in ("end", "guarantee", "start") if record[name] >= 0]
-            columns = [what for kind, what in (durations[row] for row in rows) if kind == "column"]
-            if columns and columns[0] in self.needed:
-                checked.field[i] = self.needed.index(str(columns[0]))
+            segment = segments[fault[i]]
+            columns = [segment[name] for name in ("end", "guarantee", "start", "period") if segment[name] >= 0]
+            named = [name for name in map(self.plans.slots.named, columns) if name in self.needed]
+            if named:
+                checked.field[i] = self.needed.index(named[0])
 
     def _months(
-        self, checked: Checked, policies: loops.Policies, places: loops.Places, counts: NDArray[np.int64]
+        self, checked: Checked, cell: NDArray[np.int32], policies: NDArray[Any], tables: loops.Tables
     ) -> int:
         """Policy-months from the valuation date to the end of survival or of the longest stream."""
-        fine = checked.reason == 0
-        ends = counts[np.maximum(policies.mortality, 0)] - 1
-        finite = self._last_end(policies)
-        return int(np.maximum(np.minimum(ends, finite) - places.k, 0)[fine].sum())
-
-    def _last_end(self, policies: loops.Policies) -> NDArray[np.int64]:
-        latest = np.zeros(len(policies.cell), dtype=np.int64)
-        records = self.plans.records
+        segments = self.plans.segments
+        ends = tables.survivals["over"][policies["survival"]]
         for number, (begin, end) in enumerate(self.plans.ranges[: len(self.cells.cells)]):
-            mine = np.flatnonzero(policies.cell == number)
-            if not len(mine):
-                continue
-            rows = {int(row) for row in records["end"][begin:end]}
-            if -1 in rows or not rows:
-                latest[mine] = LONGEST
-            else:
-                latest[mine] = policies.months[np.array(sorted(rows))[:, None], mine].max(axis=0)
-        return latest
+            columns = sorted({int(column) for column in segments["end"][begin:end]})
+            if columns and columns[0] >= 0:
+                mine = np.flatnonzero(cell == number)
+                if len(mine):
+                    ends[mine] = np.minimum(ends[mine], tables.whole[mine][:, columns].max(axis=1))
+        return int(np.maximum(ends - policies["k"], 0)[checked.reason == 0].sum())
 
 
 class _Until:
@@ -286,16 +270,3 @@ class _Clock:
         now = perf_counter()
         self.seconds[phase] = self.seconds.get(phase, 0.0) + now - self._last
         self._last = now
-
-
-def _age_finder(dates: loops.Dates, step: int) -> Any:
-    def months_to_age(age: int) -> NDArray[np.int32]:
-        months = np.zeros(len(dates.reason), dtype=np.int32)
-        loops.months_to_age(dates, age, step, months)
-        return months
-
-    return months_to_age
-
-
-def _joined(rows: list[NDArray[np.float64]]) -> NDArray[np.float64]:
-    return np.concatenate(rows) if rows else np.zeros(1)

@@ -12,6 +12,8 @@ from typing import Any, NamedTuple
 
 import numba as nb
 import numpy as np
+from numba.core import cgutils, types
+from numba.extending import intrinsic
 
 from portfolios.reasons import Reason
 
@@ -38,78 +40,12 @@ LARGEST_RESULT = 1e15
 compiled = nb.njit(cache=True, nogil=True, error_model="numpy")
 
 
-class Dates(NamedTuple):
-    """Dates of a chunk's policies as days since 1970-01-01, and the reason against each (0: none)."""
-
-    birth: Any
-    commencement: Any
-    reason: Any
-
-
-class Places(NamedTuple):
-    """Where each policy stands at T; one array each.
-
-    k, part, whole: months passed, and part / whole of the next one; shift: calendar months from that of T to that of
-    commencement; day: of the month of commencement; age, since, span: completed years at commencement, days since the last
-    birthday, days from it to the next.
-    """
-
-    k: Any
-    part: Any
-    whole: Any
-    shift: Any
-    day: Any
-    age: Any
-    since: Any
-    span: Any
-
-
-class Curves(NamedTuple):
-    """Rows that policies share.
-
-    living: survival at points, one row after the other from living_at[row], living_count[row] of them; yearly and reached: rate q of each year of
-    age and survival to its start, from yearly_at[row]; offset: years of age passed in the first of them at commencement; closed: whether nobody is left
-    at the end; persistency, dead, lapsing: rows by point, one place in front for g = -1; payment, claim: discount factors of
-    a payment at point k + n, and of a death claim of the step that ends there; relative: amounts by months.
-    """
-
-    living: Any
-    living_at: Any
-    living_count: Any
-    yearly: Any
-    reached: Any
-    yearly_at: Any
-    offset: Any
-    closed: Any
-    persistency: Any
-    dead: Any
-    lapsing: Any
-    payment: Any
-    claim: Any
-    relative: Any
-    ones: Any
-
-
-class Policies(NamedTuple):
-    """Per policy: cell, rows of its curves, and the matrices of slots (slot, policy)."""
-
-    cell: Any
-    mortality: Any
-    lapse: Any
-    discount: Any
-    claim_shift: Any
-    money: Any
-    months: Any
-    periods: Any
-    changing: Any
-
-
 class Rules(NamedTuple):
     """What holds for the whole run.
 
     step: months; outstanding: 1 if payments due on T are to come; fractions: 0 constant force, 1 uniform deaths, 2 Balducci;
-    dependent: 1 for decrements uniform in their single tables; quantum: cash flows are rounded to whole multiples of 1 / quantum; minor:
-    minor units in one of currency.
+    dependent: 1 for decrements uniform in their single tables; quantum: cash flows are rounded to whole multiples of
+    1 / quantum; minor: minor units in one of currency.
     """
 
     step: int
@@ -120,11 +56,22 @@ class Rules(NamedTuple):
     minor: float
 
 
-class Results(NamedTuple):
-    """Per policy: reason (0: valued), the stream at fault, parts in currency (3, n), and money in minor units (4, n).
+class Tables(NamedTuple):
+    """Everything that the policies of a chunk are valued from: records, and the pool of rows."""
 
-    The rows of parts are benefits, expenses and premiums; those of minor the reserve and then the parts. flows: expected cash flows by line
-    and calendar month, in quanta.
+    segments: Any
+    charges: Any
+    survivals: Any
+    pool: Any
+    money: Any
+    whole: Any
+
+
+class Results(NamedTuple):
+    """Per policy: reason (0: valued), the segment at fault, parts in currency (n, 3), and money in minor units (n, 4).
+
+    The columns of parts are benefits, expenses and premiums; those of minor the reserve and then the parts. flows: expected cash
+    flows by account and calendar month, BINS to an account, in quanta. scratch, firsts and counts are room to work in.
     """
 
     reason: Any
@@ -132,6 +79,26 @@ class Results(NamedTuple):
     parts: Any
     minor: Any
     flows: Any
+    scratch: Any
+    firsts: Any
+    counts: Any
+
+
+@intrinsic
+def unowned(typing_context, array):
+    """The same array without a count of its owners.
+
+    Counting owners at every call is an atomic operation on memory that the threads share; it took ten times as long as
+    the arithmetic. The caller of the compiled function owns the arrays while it runs.
+    """
+
+    def build(context, builder, signature, args):
+        whole = context.make_array(signature.args[0])(context, builder, args[0])
+        whole.meminfo = cgutils.get_null_value(whole.meminfo.type)
+        whole.parent = cgutils.get_null_value(whole.parent.type)
+        return whole._getvalue()
+
+    return array(array), build
 
 
 @compiled
@@ -178,13 +145,17 @@ def months_later(year, month, day, months):
 
 
 @compiled
-def locate(dates, today, step, places):
-    """Fill the places of all policies that have no reason against them yet."""
+def locate(birth, commencement, reason, today, step, policies):
+    """Fill in where the policies stand at T that have no reason against them yet.
+
+    birth, commencement: days since 1970-01-01.
+    """
     ty, tm, _ = civil(today)
-    for i in range(len(dates.reason)):
-        if dates.reason[i] != 0:
+    for i in range(len(reason)):
+        if reason[i] != 0:
             continue
-        cy, cm, cd = civil(np.int64(dates.commencement[i]))
+        p = policies[i]
+        cy, cm, cd = civil(np.int64(commencement[i]))
         shift = (cy - ty) * 12 + cm - tm
         k = -shift // step * step
         if months_later(cy, cm, cd, k) > today:
@@ -192,31 +163,31 @@ def locate(dates, today, step, places):
         last = months_later(cy, cm, cd, k)
         whole = months_later(cy, cm, cd, k + step) - last
         passed = (today - last) * step
-        places.k[i] = k + passed // whole
-        places.part[i] = passed % whole
-        places.whole[i] = whole
-        places.shift[i] = shift
-        places.day[i] = cd
-        by, bm, bd = civil(np.int64(dates.birth[i]))
+        p.k = k + passed // whole
+        p.part = passed % whole
+        p.whole = whole
+        p.shift = shift
+        p.day = cd
+        by, bm, bd = civil(np.int64(birth[i]))
         age = cy - by
         birthday = day_count(cy, bm, bd)
-        if birthday > dates.commencement[i]:
+        if birthday > commencement[i]:
             age -= 1
             birthday = day_count(cy - 1, bm, bd)
-        places.age[i] = age
-        places.since[i] = dates.commencement[i] - birthday
-        places.span[i] = day_count(by + age + 1, bm, bd) - birthday
+        p.age = age
+        p.since = commencement[i] - birthday
+        p.span = day_count(by + age + 1, bm, bd) - birthday
 
 
 @compiled
-def months_to_age(dates, age, step, months):
+def months_to_age(birth, commencement, reason, age, step, months):
     """Fill in the months from commencement to the first due date on or after a birthday, at least 0."""
-    for i in range(len(dates.reason)):
-        if dates.reason[i] != 0:
+    for i in range(len(reason)):
+        if reason[i] != 0:
             months[i] = 0
             continue
-        cy, cm, cd = civil(np.int64(dates.commencement[i]))
-        by, bm, bd = civil(np.int64(dates.birth[i]))
+        cy, cm, cd = civil(np.int64(commencement[i]))
+        by, bm, bd = civil(np.int64(birth[i]))
         g = (by + age - cy) * 12 + bm - cm
         if months_later(cy, cm, cd, g) < day_count(by + age, bm, bd):
             g += 1
@@ -236,16 +207,16 @@ def fraction_survived(q, part, rule):
 
 
 @compiled
-def fill_living(yearly, reached, offset, rule, living):
+def fill_living(yearly, reached, passed, rule, living):
     """Fill a row of survival from commencement at points g = 0, 1 ..., given the rates of the years of age."""
-    base = fraction_survived(yearly[0], offset, rule)
+    base = fraction_survived(yearly[0], passed, rule)
     for g in range(len(living)):
-        if offset == 0.0:
+        if passed == 0.0:
             year, part = g // 12, (g % 12) / 12.0
         else:
-            passed = offset + g / 12.0
-            year = np.int64(np.floor(passed))
-            part = passed - year
+            since = passed + g / 12.0
+            year = np.int64(np.floor(since))
+            part = since - year
         if year >= len(yearly):
             living[g] = reached[len(yearly)] / base
         else:
@@ -253,59 +224,63 @@ def fill_living(yearly, reached, offset, rule, living):
 
 
 @compiled
-def survival_at(curves, row, months, rule):
+def survival_at(survival, pool, months, rule):
     """Survival L from commencement to any real number of months later."""
-    at = curves.yearly_at[row]
-    offset = curves.offset[row]
-    years = curves.yearly_at[row + 1] - at - 1
-    base = fraction_survived(curves.yearly[at], offset, rule)
-    passed = offset + months / 12.0
-    year = np.int64(np.floor(passed))
-    if year >= years:
-        return curves.reached[at + years] / base
-    return curves.reached[at + year] * fraction_survived(curves.yearly[at + year], passed - year, rule) / base
+    base = fraction_survived(pool[survival.yearly], survival.passed, rule)
+    since = survival.passed + months / 12.0
+    year = np.int64(np.floor(since))
+    if year >= survival.years:
+        return pool[survival.reached + survival.years] / base
+    return pool[survival.reached + year] * fraction_survived(pool[survival.yearly + year], since - year, rule) / base
 
 
 @compiled
-def sum_payments(occupancy, persistency, relative, discount, flow, count, period, amount, quantum, scratch):
+def sum_payments(pool, living, held, relative, discount, flows, flow, count, period, amount, quantum, scratch):
     """Sum of a stream's payments at every ``period``-th place of the rows; adds them to the cash flows.
 
-    The rows start at the first payment. The sum runs in four lanes, payment by payment, and so always in the same order.
+    living ... flow: places of the first payment. The sum runs in four lanes, payment by payment, and so always in the same
+    order. Places are unsigned, which spares the loops a look for negative ones.
     """
     scale = amount * quantum
+    o, h, r, d, w = np.uint64(living), np.uint64(held), np.uint64(relative), np.uint64(discount), np.uint64(flow)
     if period == 1:
-        for j in range(count):
-            x = occupancy[j] * persistency[j] * relative[j]
-            flow[j] += (x * scale + MAGIC) - MAGIC
-            scratch[j] = x * discount[j]
+        for j in range(np.uint64(count)):
+            scratch[j] = pool[o + j] * pool[h + j] * pool[r + j]
+        for j in range(np.uint64(count)):
+            flows[w + j] += (scratch[j] * scale + MAGIC) - MAGIC
+        for j in range(np.uint64(count)):
+            scratch[j] *= pool[d + j]
     else:
-        place = np.uint64(0)
-        hop = np.uint64(period)
-        for j in range(count):
-            x = occupancy[place] * persistency[place] * relative[place]
-            flow[place] += (x * scale + MAGIC) - MAGIC
-            scratch[j] = x * discount[place]
-            place += hop
+        for j in range(np.uint64(count)):
+            i = j * np.uint64(period)
+            x = pool[o + i] * pool[h + i] * pool[r + i]
+            flows[w + i] += (x * scale + MAGIC) - MAGIC
+            scratch[j] = x * pool[d + i]
     return amount * add_up(scratch, count)
 
 
 @compiled
-def sum_moves(before, after, a, b, weight, relative, discount, flow, count, step, amount, quantum, scratch):
-    """The same for payments on a move: occupancy is a * before + b * after, at the two ends of each step."""
+def sum_moves(pool, living, weight, relative, discount, a, b, flows, flow, count, step, amount, quantum, scratch):
+    """The same for payments on a move: occupancy is a and b times survival at the two ends of each step.
+
+    living ... flow: places of the first step's end, for relative of its start.
+    """
     scale = amount * quantum
+    o, h, r, d, w = np.uint64(living), np.uint64(weight), np.uint64(relative), np.uint64(discount), np.uint64(flow)
+    e = np.uint64(living - step)
     if step == 1:
-        for j in range(count):
-            x = (a * before[j] + b * after[j]) * weight[j] * relative[j]
-            flow[j] += (x * scale + MAGIC) - MAGIC
-            scratch[j] = x * discount[j]
+        for j in range(np.uint64(count)):
+            scratch[j] = (a * pool[e + j] + b * pool[o + j]) * pool[h + j] * pool[r + j]
+        for j in range(np.uint64(count)):
+            flows[w + j] += (scratch[j] * scale + MAGIC) - MAGIC
+        for j in range(np.uint64(count)):
+            scratch[j] *= pool[d + j]
     else:
-        place = np.uint64(0)
-        hop = np.uint64(step)
-        for j in range(count):
-            x = (a * before[place] + b * after[place]) * weight[place] * relative[place]
-            flow[place] += (x * scale + MAGIC) - MAGIC
-            scratch[j] = x * discount[place]
-            place += hop
+        for j in range(np.uint64(count)):
+            i = j * np.uint64(step)
+            x = (a * pool[e + i] + b * pool[o + i]) * pool[h + i] * pool[r + i]
+            flows[w + i] += (x * scale + MAGIC) - MAGIC
+            scratch[j] = x * pool[d + i]
     return amount * add_up(scratch, count)
 
 
@@ -342,49 +317,50 @@ def first_due(start, period, least):
 
 
 @compiled
-def extent(stream, i, k, exact, policies, curves, rules):
-    """Reason, first point and number of points after T of a stream; the period follows from the stream.
+def formula_from(stream, start, p, rules):
+    """First point of the first year of a stream that Woolhouse's formula takes; the year of T keeps its own dates."""
+    whole = p.part == 0 and (rules.outstanding == 1 or stream.before == 1)
+    return first_due(start, 12, p.k if whole else p.k + 1)
 
-    A payment due exactly on T is not among the points.
+
+@compiled
+def extent(stream, whole, p, survival, last, rules):
+    """Reason, first point and number of points after T of a segment of streams.
+
+    whole: the policy's whole numbers; last: the last point that counts, at most survival.over. A payment due exactly
+    on T is not among the points.
     """
-    row = policies.mortality[i]
-    over = curves.living_count[row] - 1
-    start = np.int64(policies.months[stream.start, i]) if stream.start >= 0 else 0
-    end = np.int64(policies.months[stream.end, i]) if stream.end >= 0 else over
+    k = p.k
+    over = survival.over
+    lives = stream.cover != s.CERTAIN
+    start = np.int64(whole[stream.start])
+    end = np.int64(whole[stream.end]) if stream.end >= 0 else max(start, over)
     if start < 0 or end < 0:
         return _MONTHS, 0, 0
-    if stream.end < 0:
-        end = max(start, over)
-        if not curves.closed[row] and stream.cover != s.CERTAIN:
-            return _TABLE, 0, 0
     if end < start:
         return _ORDER, 0, 0
-    if end > over and not curves.closed[row] and stream.cover != s.CERTAIN:
+    if lives and survival.closed == 0 and (stream.end < 0 or end > over):
         return _TABLE, 0, 0
     low = max(start + stream.span_from, stream.clip_from)
     high = min(start + stream.span_to, stream.clip_to)
     when = stream.when
     if when == s.ONCE:
         month = max(start - 1, start if stream.clock == 0 else 0)
-        inside = low <= month < high and start <= over
-        return 0, start, 1 if start > k and inside else 0
+        return 0, start, 1 if start > k and low <= month < high and (start <= last or not lives) else 0
     if when == s.DEATH or when == s.LAPSE:
         step = rules.step
         if start % step != 0 or (end % step != 0 and stream.end >= 0):
             return _YEARS, 0, 0
-        first = (max(k // step * step, start, low) // step + 1) * step
-        if low > max(k // step * step, start):
-            first = first_due(start, step, low) + step
-        last = min(end, over)
-        if high + step - 1 < last:
-            last = high + step - 1
-        return 0, first, max(0, (last - first) // step + 1)
-    period = np.int64(policies.periods[stream.period, i])
+        # The first step after T starts at or before it; a later one starts where the stream or the clip does.
+        begin = max(k // step * step, first_due(0, step, max(start, low)))
+        finish = min(end, last + step - 1, over, high + step - 1)
+        return 0, begin + step, max(0, (finish - begin) // step)
+    period = np.int64(whole[stream.period])
     if period <= 0 or (stream.whole == 1 and (end - start) % period != 0):
         return _PERIOD, 0, 0
     begin = start
     if stream.guarantee >= 0:
-        guaranteed = np.int64(policies.months[stream.guarantee, i])
+        guaranteed = np.int64(whole[stream.guarantee])
         if guaranteed < 0:
             return _MONTHS, 0, 0
         if guaranteed % period != 0:
@@ -394,290 +370,293 @@ def extent(stream, i, k, exact, policies, curves, rules):
         else:
             begin = start + guaranteed
     if stream.window != s.OWN_DATES:
-        if stream.end >= 0 and (end - start) % 12 != 0:
-            return _PERIOD, 0, 0
-        turn = first_due(start, 12, k if exact and rules.outstanding else k + 1)
-        if stream.window == s.BROKEN_YEAR:
-            end = min(end, turn)
+        turn = formula_from(stream, start, p, rules)
+        complete = start + (end - start) // 12 * 12
+        if stream.window == s.WHOLE_YEARS:
+            begin, end, period = max(begin, turn), complete, 12
+        elif stream.window == s.BROKEN_YEAR:
+            end = end if turn > complete else turn
         else:
-            begin = max(begin, turn)
-            period = 12
+            begin = end if turn > complete else complete
     lag = period if when == s.ARREARS else 0
-    month = first_due(start, period, max(begin, low, k + 1 - lag))
+    month = first_due(start, period, max(begin, low, (k if when == s.THIRD_TERM else k + 1) - lag))
     stop = min(end - lag + 1 if lag else end, high)
     if stream.cover == s.ALIVE or stream.cover == s.AFTER_GUARANTEE:
         # The third term of Woolhouse's formula looks at both ends of a year.
-        stop = min(stop, over + 1 - (12 if when == s.THIRD_TERM else lag))
-    count = (stop - month + period - 1) // period if stop > month else 0
-    return 0, month + lag, count
+        stop = min(stop, last + 1 - (12 if when == s.THIRD_TERM else lag))
+    return 0, month + lag, (stop - month + period - 1) // period if stop > month else 0
 
 
 @compiled
-def due_today(stream, i, k, policies):
-    """Whether a stream has a payment exactly on T, and its relative month; only asked where T is a point."""
-    start = np.int64(policies.months[stream.start, i]) if stream.start >= 0 else 0
-    end = np.int64(policies.months[stream.end, i]) if stream.end >= 0 else s.FOR_EVER
+def due_today(stream, whole, p, rules):
+    """Whether a segment has a payment to come exactly on T, and its relative month; only asked where T is a point."""
+    k = p.k
+    start = np.int64(whole[stream.start])
+    if stream.window == s.WHOLE_YEARS:
+        # The near end of the first year taken by the formula, if the year starts now.
+        starts = formula_from(stream, start, p, rules) == k and k + 12 <= (
+            np.int64(whole[stream.end]) if stream.end >= 0 else s.FOR_EVER
+        )
+        return starts and stream.when == s.ADVANCE and stream.clip_from <= k < stream.clip_to, k
+    if stream.when >= s.DEATH or rules.outstanding == 0:
+        return False, 0
+    end = np.int64(whole[stream.end]) if stream.end >= 0 else s.FOR_EVER
     low = max(start + stream.span_from, stream.clip_from)
     high = min(start + stream.span_to, stream.clip_to)
     if stream.when == s.ONCE:
-        due = start == k
         month = max(k - 1, start if stream.clock == 0 else 0)
-    elif stream.when == s.DEATH or stream.when == s.LAPSE or stream.window == s.WHOLE_YEARS:
+        return start == k and low <= month < high, month
+    period = np.int64(whole[stream.period])
+    lag = period if stream.when == s.ARREARS else 0
+    month = k - lag
+    if stream.window == s.BROKEN_YEAR:
+        complete = start + (end - start) // 12 * 12
+        turn = formula_from(stream, start, p, rules)
+        end = end if turn > complete else turn
+    elif stream.window == s.LAST_YEAR:
         return False, 0
-    else:
-        period = np.int64(policies.periods[stream.period, i])
-        lag = period if stream.when == s.ARREARS else 0
-        month = k - lag
-        if stream.window == s.BROKEN_YEAR:
-            end = min(end, first_due(start, 12, k))
-        if stream.guarantee >= 0:
-            turn = start + np.int64(policies.months[stream.guarantee, i])
-            if stream.cover == s.GUARANTEED:
-                end = min(end, turn)
-            else:
-                start = max(start, turn)
-        due = start <= month < end and month <= end - lag and (month - start) % period == 0
+    first = start
+    if stream.guarantee >= 0:
+        turn = start + np.int64(whole[stream.guarantee])
+        if stream.cover == s.GUARANTEED:
+            end = min(end, turn)
+        else:
+            first = turn
+    due = first <= month < end and month <= end - lag and (month - start) % period == 0
     return due and low <= month < high, month
 
 
 @compiled
-def relative_row(stream, i, policies, curves, month, point, shift):
-    """The row of relative amounts from the given month (or calendar month) on."""
+def relative_place(stream, whole, month, calendar):
+    """Place of the relative amount of a month on the stream's clock, or of a calendar month."""
     if stream.calendar >= 0:
-        return curves.relative[stream.calendar][max(0, point + shift) :]
-    if stream.relative < 0 and stream.changing < 0:
-        return curves.ones
-    clock = np.int64(policies.months[stream.start, i]) if stream.clock == 0 and stream.start >= 0 else 0
-    row = stream.relative if stream.changing < 0 else np.int64(policies.changing[stream.changing, i])
-    return curves.relative[row][max(0, month - clock) :]
+        return stream.calendar + max(0, calendar)
+    clock = np.int64(whole[stream.start]) if stream.clock == 0 else 0
+    row = stream.relative if stream.changing < 0 else np.int64(whole[stream.changing])
+    return row + max(0, month - clock)
 
 
 @compiled
-def value_policies(order, places, policies, curves, streams, ranges, rules, results):
-    """Value the policies in the given order: parts, rounded results, and expected cash flows per line and month."""
-    scratch = np.empty(s.LONGEST + 2)
-    firsts = np.empty(len(streams) + 1, np.int64)
-    counts = np.empty(len(streams) + 1, np.int64)
+def last_point(survival, pool, alive):
+    """The last point at which survival still counts beside survival to T, ``alive``; later ones add nothing to a double."""
+    low = survival.living
+    high = survival.living + survival.over
+    least = alive * 1e-18
+    if pool[high] >= least:
+        return survival.over
+    while high - low > 1:
+        middle = (low + high) // 2
+        if pool[middle] >= least:
+            low = middle
+        else:
+            high = middle
+    return high - survival.living
+
+
+@compiled
+def value_policies(order, policies, tables, rules, results):
+    """Value the policies in the given order: parts, rounded results, and expected cash flows per account and month."""
+    segments, charges, survivals = unowned(tables.segments), unowned(tables.charges), unowned(tables.survivals)
+    pool, money, whole = unowned(tables.pool), unowned(tables.money), unowned(tables.whole)
+    parts, flows = unowned(results.parts), unowned(results.flows)
+    scratch, firsts, counts = unowned(results.scratch), unowned(results.firsts), unowned(results.counts)
     for j in range(len(order)):
         i = order[j]
         if results.reason[i] != 0:
             continue
-        begin = ranges[policies.cell[i], 0]
-        end = ranges[policies.cell[i], 1]
-        k = np.int64(places.k[i])
-        f = places.part[i] / places.whole[i]
-        row = policies.mortality[i]
-        alive = survival_at(curves, row, k + f, rules.fractions)
-        if not alive > 0.0 or not persistency_at(policies.lapse[i], k, f, curves, rules) > 0.0:
+        p = policies[i]
+        survival = survivals[p.survival]
+        alive = survival_at(survival, pool, p.k + p.part / p.whole, rules.fractions)
+        inforce = persistency_at(p, pool, rules)
+        if not alive > 0.0 or not inforce > 0.0:
             results.reason[i] = _NO_SURVIVAL
             continue
+        last = last_point(survival, pool, alive)
+        today = p.part == 0
         reason = 0
         going = False
-        for n in range(begin, end):
-            stream = streams[n]
-            reason, firsts[n - begin], counts[n - begin] = extent(
-                stream, i, k, places.part[i] == 0, policies, curves, rules
+        for n in range(p.segments, p.segments_end):
+            reason, firsts[n - p.segments], counts[n - p.segments] = extent(
+                segments[n], whole[i], p, survival, last, rules
             )
             if reason != 0:
                 results.fault[i] = n
                 break
-            if stream.own == 1 and (counts[n - begin] > 0):
+            if segments[n].own == 1 and (counts[n - p.segments] > 0 or (today and due_today(segments[n], whole[i], p, rules)[0])):
                 going = True
-            if stream.own == 1 and rules.outstanding == 1 and places.part[i] == 0:
-                going |= due_today(stream, i, k, policies)[0]
         if reason == 0 and not going:
             reason = _MATURED
         if reason != 0:
             results.reason[i] = reason
             continue
-        value_one(i, k, f, alive, places, policies, curves, streams, begin, end, firsts, counts, rules, results, scratch)
+        for n in range(p.segments, p.segments_end):
+            first, count = firsts[n - p.segments], counts[n - p.segments]
+            if count > 0 or today:
+                value = value_segment(
+                    segments[n], p, whole[i], money[i], survival, pool, alive, inforce, first, count, today, rules, flows, scratch
+                )
+                for c in range(segments[n].charges, segments[n].charges_end):
+                    parts[i, charges[c].part] += charges[c].ratio * value
+        round_results(i, parts, rules.minor, results)
 
 
 @compiled
-def value_one(i, k, f, alive, places, policies, curves, streams, begin, end, firsts, counts, rules, results, scratch):
-    """Value one policy whose streams' extents are known."""
-    step = rules.step
-    held = persistency_at(policies.lapse[i], k, f, curves, rules)
-    share = 1.0 / (alive * held)
-    benefits = 0.0
-    expenses = 0.0
-    premiums = 0.0
-    for n in range(begin, end):
-        stream = streams[n]
-        amount = stream.factor
-        if stream.amount >= 0:
-            amount *= policies.money[stream.amount, i]
-        if stream.power > 0:
-            period = np.int64(policies.periods[stream.period, i])
-            amount *= period / 12.0
-            if stream.power == 2:
-                amount *= period / 12.0
-        value = 0.0
-        if rules.outstanding == 1 and places.part[i] == 0:
-            value += value_today(stream, i, k, amount, places, policies, curves, rules, results.flows)
-        first = firsts[n - begin]
-        count = counts[n - begin]
-        if count > 0 and amount != 0.0:
-            if stream.when == s.DEATH or stream.when == s.LAPSE:
-                value += value_moves(
-                    stream, i, k, f, alive, held, first, count, amount, places, policies, curves, rules, results.flows, scratch
-                )  # fmt: skip
-            elif stream.when == s.THIRD_TERM:
-                value += third_term(stream, i, k, first, count, amount * share, policies, curves)
-            else:
-                value += value_payments(
-                    stream, i, k, share, first, count, amount, places, policies, curves, rules, results.flows, scratch
-                )
-        if stream.part == s.BENEFITS:
-            benefits += value
-        elif stream.part == s.EXPENSES:
-            expenses += value
-        else:
-            premiums += value
-    reserve = benefits + expenses - premiums
-    if not max(abs(benefits), abs(expenses), abs(premiums)) * rules.minor < LARGEST_RESULT:
+def round_results(i, parts, minor, results):
+    """Round a policy's results to the minor unit, once."""
+    benefits, expenses, premiums = parts[i, 0], parts[i, 1], parts[i, 2]
+    if not max(abs(benefits), abs(expenses), abs(premiums)) * minor < LARGEST_RESULT:
         results.reason[i] = _NOT_FINITE
         return
-    results.parts[0, i] = benefits
-    results.parts[1, i] = expenses
-    results.parts[2, i] = premiums
-    results.minor[0, i] = np.int64(np.rint(reserve * rules.minor))
-    results.minor[1, i] = np.int64(np.rint(benefits * rules.minor))
-    results.minor[2, i] = np.int64(np.rint(expenses * rules.minor))
-    results.minor[3, i] = np.int64(np.rint(premiums * rules.minor))
+    results.minor[i, 0] = np.int64(np.rint((benefits + expenses - premiums) * minor))
+    results.minor[i, 1] = np.int64(np.rint(benefits * minor))
+    results.minor[i, 2] = np.int64(np.rint(expenses * minor))
+    results.minor[i, 3] = np.int64(np.rint(premiums * minor))
 
 
 @compiled
-def persistency_at(row, k, f, curves, rules):
-    """Persistency at T: that of the last step boundary, or on the way to the next where lapses spread over a step."""
-    h = k // rules.step * rules.step
-    held = curves.persistency[row, h + 1]
-    if rules.dependent == 1:
-        elapsed = (k - h + f) / rules.step
-        held -= elapsed * (held - curves.persistency[row, h + 1 + rules.step])
-    return held
-
-
-@compiled
-def value_today(stream, i, k, amount, places, policies, curves, rules, flows):
-    """Value of a payment due exactly on T: no survival and no discount."""
-    due, month = due_today(stream, i, k, policies)
-    if not due:
+def value_segment(stream, p, whole, money, survival, pool, alive, inforce, first, count, today, rules, flows, scratch):
+    """Value of a segment for one policy."""
+    amount = stream.factor
+    if stream.amount >= 0:
+        amount *= money[stream.amount]
+    for _ in range(stream.power):
+        amount *= whole[stream.period] / 12.0
+    if amount == 0.0:
         return 0.0
-    x = amount * relative_row(stream, i, policies, curves, month, k, np.int64(places.shift[i]))[0]
-    flows[stream.line, max(0, k + places.shift[i])] += (x * rules.quantum + MAGIC) - MAGIC
-    return x
-
-
-@compiled
-def value_payments(stream, i, k, share, first, count, amount, places, policies, curves, rules, flows, scratch):
-    """Value of payments while alive, for certain, or guaranteed, at their own dates after T."""
-    period = np.int64(12)
-    if stream.when == s.ONCE:
-        period = np.int64(1)
-    elif stream.window != s.WHOLE_YEARS:
-        period = np.int64(policies.periods[stream.period, i])
-    shift = np.int64(places.shift[i])
-    month = first
-    held = policies.lapse[i]
-    if stream.when == s.ARREARS:
-        month = first - period
-    elif stream.when == s.ONCE:
-        clock = np.int64(policies.months[stream.start, i]) if stream.clock == 0 and stream.start >= 0 else 0
-        month = max(first - 1, clock)
-    living = curves.living[curves.living_at[policies.mortality[i]] :]
-    occupancy = curves.ones
-    persistency = curves.ones
-    if stream.cover == s.ALIVE or stream.cover == s.AFTER_GUARANTEE:
-        occupancy = living[first:]
-        # One place in front stands for g = -1; payments that are not in advance come before the lapses.
-        persistency = curves.persistency[held][first + (1 if stream.when == s.ADVANCE else 0) :]
-        amount *= share
-    elif stream.cover == s.GUARANTEED:
-        start = np.int64(policies.months[stream.start, i]) if stream.start >= 0 else 0
-        if start > k:
-            amount *= share * living[start] * curves.persistency[held, start + 1]
-    relative = relative_row(stream, i, policies, curves, month, first, shift)
-    discount = curves.payment[policies.discount[i]][first - k :]
-    flow = flows[stream.line][max(0, first + shift) :]
-    return sum_payments(
-        occupancy, persistency, relative, discount, flow, count, period, amount, rules.quantum, scratch
-    )
-
-
-@compiled
-def value_moves(stream, i, k, f, alive, held, first, count, amount, places, policies, curves, rules, flows, scratch):
-    """Value of payments on death or lapse, step by step; the broken first step on its own."""
-    step = rules.step
-    shift = np.int64(places.shift[i])
-    death = stream.when == s.DEATH
-    moved = np.int64(policies.claim_shift[i]) if death else 0
-    living = curves.living[curves.living_at[policies.mortality[i]] :]
-    row = policies.lapse[i]
-    weight = curves.dead[row] if death else curves.lapsing[row]
-    discount = curves.claim[policies.discount[i]] if death else curves.payment[policies.discount[i]]
-    flow = flows[stream.line]
-    # Deaths are the difference of survival; lapses fall on the survivors, or on the mean where they spread.
-    a, b = 0.0, 1.0
-    if death:
-        a, b = 1.0, -1.0
-    elif rules.dependent == 1:
-        a, b = 0.5, 0.5
-    amount /= alive * held
     value = 0.0
-    if first - step <= k:
-        relative = relative_row(stream, i, policies, curves, first - step, first, shift)
-        share = weight[first + 1]
-        if death and rules.dependent == 1:
-            share = 0.5 * (held + curves.persistency[row, first + 1])
-        elif not death:
-            share = held - curves.persistency[row, first + 1]
-        x = (a * alive + b * living[first]) * share * relative[0]
-        flow[max(0, first + shift + moved)] += (x * amount * rules.quantum + MAGIC) - MAGIC
-        value = amount * x * discount[first - k]
-        first += step
-        count -= 1
+    if today:
+        due, month = due_today(stream, whole, p, rules)
+        if due:
+            # Survival and discount do not come in; the payment is certain.
+            value = amount * pool[relative_place(stream, whole, month, p.k + p.shift)]
+            flows[stream.account * BINS + max(0, p.k + p.shift)] += (value * rules.quantum + MAGIC) - MAGIC
     if count > 0:
-        value += sum_moves(
-            living[first - step :], living[first:], a, b, weight[first + 1 :],
-            relative_row(stream, i, policies, curves, first - step, first, shift),
-            discount[first - k :], flow[max(0, first + shift + moved) :], count, step, amount, rules.quantum, scratch,
-        )  # fmt: skip
+        if stream.when == s.DEATH or stream.when == s.LAPSE:
+            value += value_moves(
+                stream, p, whole, survival, pool, alive, inforce, first, count, amount, rules, flows, scratch
+            )
+        elif stream.when == s.THIRD_TERM:
+            value += third_term(stream, p, whole, survival, pool, alive * inforce, first, count, amount, rules)
+        else:
+            value += value_payments(
+                stream, p, whole, survival, pool, alive * inforce, first, count, amount, rules, flows, scratch
+            )
     return value
 
 
 @compiled
-def third_term(stream, i, k, first, count, amount, policies, curves):
+def persistency_at(p, pool, rules):
+    """Persistency at T: that of the last point, or on the way to the next where lapses spread over a step."""
+    held = pool[p.held + p.k]
+    if rules.dependent == 1:
+        held -= p.part / p.whole * (held - pool[p.held + p.k + 1])
+    return held
+
+
+@compiled
+def value_payments(stream, p, whole, survival, pool, there, first, count, amount, rules, flows, scratch):
+    """Value of payments while alive, for certain, or guaranteed, at their own dates after T; there: L(T) P(T)."""
+    period = np.int64(12)
+    if stream.when == s.ONCE:
+        period = np.int64(1)
+    elif stream.window != s.WHOLE_YEARS:
+        period = np.int64(whole[stream.period])
+    start = np.int64(whole[stream.start])
+    month = first
+    if stream.when == s.ARREARS:
+        month = first - period
+    elif stream.when == s.ONCE:
+        month = max(first - 1, start if stream.clock == 0 else 0)
+    living, held = np.int64(0), np.int64(0)
+    if stream.cover == s.ALIVE or stream.cover == s.AFTER_GUARANTEE:
+        living = survival.living + first
+        # Payments that are not in advance come before the lapses at the end of a step.
+        held = p.held + first - (0 if rules.dependent == 1 else stream.before)
+        amount /= there
+    elif stream.cover == s.GUARANTEED and start > p.k:
+        amount *= pool[survival.living + start] * pool[p.held + start] / there
+    calendar = first + p.shift
+    relative = relative_place(stream, whole, month, calendar)
+    flow = stream.account * BINS + max(0, calendar)
+    return sum_payments(
+        pool, living, held, relative, p.payment + first - p.k, flows, flow, count, period, amount, rules.quantum, scratch
+    )
+
+
+@compiled
+def value_moves(stream, p, whole, survival, pool, alive, inforce, first, count, amount, rules, flows, scratch):
+    """Value of payments on death or lapse, step by step; the broken first step on its own."""
+    step = rules.step
+    death = stream.when == s.DEATH
+    # Deaths are the difference of survival; lapses fall on the survivors, or on the mean where they spread.
+    a, b = 0.0, 1.0
+    weight, discount = p.lapsing + first, p.payment + first - p.k
+    calendar = first + p.shift
+    if death:
+        a, b = 1.0, -1.0
+        weight, discount = p.dead + first, p.claim + first - p.k
+        calendar += p.claim_shift
+    elif rules.dependent == 1:
+        a, b = 0.5, 0.5
+    amount /= alive * inforce
+    living = survival.living + first
+    relative = relative_place(stream, whole, first - step, first + p.shift)
+    flow = stream.account * BINS + max(0, calendar)
+    value = 0.0
+    if first - step <= p.k:
+        share = pool[weight]
+        if death and rules.dependent == 1:
+            share = 0.5 * (inforce + pool[p.held + first])
+        elif not death:
+            share = inforce - pool[p.held + first]
+        x = (a * alive + b * pool[living]) * share * pool[relative]
+        flows[flow] += (x * amount * rules.quantum + MAGIC) - MAGIC
+        value = amount * x * pool[discount]
+        count -= 1
+        living, weight, relative, discount, flow = living + step, weight + step, relative + step, discount + step, flow + step
+    if count > 0:
+        value += sum_moves(
+            pool, living, weight, relative, discount, a, b, flows, flow, count, step, amount, rules.quantum, scratch
+        )
+    return value
+
+
+@compiled
+def third_term(stream, p, whole, survival, pool, there, first, count, amount, rules):
     """Third term of Woolhouse's formula: for each year, (mu + delta) at its start less that at its end."""
-    row = policies.mortality[i]
-    living = curves.living[curves.living_at[row] :]
-    held = curves.persistency[policies.lapse[i]]
-    discount = curves.payment[policies.discount[i]]
+    before = 0 if rules.dependent == 1 else stream.before
     total = 0.0
     for n in range(count):
         g = first + 12 * n
-        level = relative_row(stream, i, policies, curves, g, g, 0)[0]
+        level = pool[relative_place(stream, whole, g, g)]
         total += level * (
-            living[g] * held[g + 1] * discount[g - k] * slope(row, g, k, discount, curves)
-            - living[g + 12] * held[g + 12] * discount[g + 12 - k] * slope(row, g + 12, k, discount, curves)
+            inclination(p, survival, pool, there, g, before) - inclination(p, survival, pool, there, g + 12, before)
         )
     return amount * total
 
 
 @compiled
-def slope(row, g, k, discount, curves):
-    """Force of mortality plus force of interest at a point, from the years on both sides of it."""
-    at = curves.yearly_at[row]
-    year = g // 12
-    years = curves.yearly_at[row + 1] - at - 1
-    after = -np.log1p(-curves.yearly[at + year]) if year < years and curves.yearly[at + year] < 1.0 else 0.0
-    before = -np.log1p(-curves.yearly[at + year - 1]) if year > 0 and curves.yearly[at + year - 1] < 1.0 else after
-    n = g - k
-    if n >= 12:
-        force = np.log(discount[n - 12] / discount[n + 12]) / 2.0
+def inclination(p, survival, pool, there, g, before):
+    """L P v (mu + delta) at a point, over L(T) P(T); the forces from the years on both sides of the point."""
+    living = survival.living + g
+    here = pool[living]
+    if here <= 0.0:
+        return 0.0
+    after = here / pool[living + 12] if g + 12 <= survival.over and pool[living + 12] > 0.0 else 0.0
+    earlier = pool[living - 12] / here if g >= 12 else 0.0
+    mortality = 0.0
+    if earlier > 0.0 and after > 0.0:
+        mortality = np.log(earlier * after) / 2.0
+    elif earlier > 0.0 or after > 0.0:
+        mortality = np.log(max(earlier, after))
+    n = p.payment + g - p.k
+    # With a part of a month passed, the point twelve months on lies less than a year away.
+    if g - p.k > 12 or (g - p.k == 12 and p.part == 0):
+        interest = np.log(pool[n - 12] / pool[n + 12]) / 2.0
     else:
-        force = np.log(discount[n] / discount[n + 12])
-    return (before + after) / 2.0 + force
+        interest = np.log(pool[n] / pool[n + 12])
+    share = 1.0 if g == p.k and p.part == 0 else here * pool[p.held + g - before] / there
+    return share * pool[n] * (mortality + interest)
 
 
 @compiled
@@ -686,8 +665,8 @@ def add_totals(group, reason, minor, totals):
     for i in range(len(group)):
         if reason[i] == 0:
             totals[group[i], 0] += 1
-            for column in range(minor.shape[0]):
-                totals[group[i], 1 + column] += minor[column, i]
+            for column in range(minor.shape[1]):
+                totals[group[i], 1 + column] += minor[i, column]
 
 
 @compiled

@@ -214,8 +214,8 @@ def _claim_paid(claims: Claims, start: float, end: int) -> float:
 def _by_woolhouse(terms: Terms, course: Course) -> Iterator[Occasion]:
     """Yield the terms of Woolhouse's formula for each year of the stream that lies wholly ahead.
 
-    Payments under a guarantee, of the year in which the valuation date falls, and of an incomplete last year
-    are taken at their own dates.
+    Payments of the year in which the valuation date falls and of an incomplete last year are taken at their
+    own dates. Only streams paid while alive, without a guarantee, are valued by the formula.
     """
     m = terms.a_year
     z = (m - 1) / (2 * m)
@@ -224,17 +224,14 @@ def _by_woolhouse(terms: Terms, course: Course) -> Iterator[Occasion]:
     end = last_point(terms, course)
     for first in range(terms.start, end, 12):
         last = first + 12
-        under_guarantee = first < terms.start + terms.guaranteed
         incomplete = terms.end is not None and last > terms.end
-        if under_guarantee or incomplete or not _lies_ahead(first, terms, course):
+        if incomplete or not _lies_ahead(first, terms, course):
             yield from _at_their_dates(terms, course, first, min(last, end))
             continue
         for point, weight, sign in ((first, at_start, -1.0), (last, at_end, 1.0)):
             if third:
-                weight += sign * third * _decline(point, terms, course)
-            survival, persistency = 1.0, 1.0
-            if not terms.certain:
-                survival, persistency = course.alive(point), course.in_force(point, terms.way)
+                weight += sign * third * _decline(point, course)
+            survival, persistency = course.alive(point), course.in_force(point, terms.way)
             # An amount is one of m payments a year; the formula's terms are amounts of a year.
             yield Occasion(point, point, first, m * weight, survival, persistency)
 
@@ -245,14 +242,12 @@ def _lies_ahead(first: int, terms: Terms, course: Course) -> bool:
     return first > course.u
 
 
-def _decline(point: int, terms: Terms, course: Course) -> float:
-    """Return mu + delta at a point: the force of mortality and that of interest."""
+def _decline(point: int, course: Course) -> float:
+    """Return mu + delta at a point, the forces of mortality (0 where nobody is left) and of interest."""
     t = course.years_to(point)
     curve = course.curve
     if t < 1:
         delta = math.log(curve.factor(t) / curve.factor(t + 1))
     else:
         delta = math.log(curve.factor(t - 1) / curve.factor(t + 1)) / 2
-    if terms.certain or course.life.at(point) == 0:
-        return delta
-    return course.life.force(point) + delta
+    return delta + (course.life.force(point) if course.life.at(point) > 0 else 0.0)

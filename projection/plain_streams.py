@@ -112,18 +112,17 @@ def terms_of(stream: Stream, policy: Policy, step_months: int) -> Terms:
         raise NotValued(
             "end before start", f"stream '{stream.name}'", f"{start} to {end} months", "to >= from"
         )
-    certain = stream.while_ == "certain"
-    if end is None and certain:
-        raise NotValued("no end", f"stream '{stream.name}'", None, "a stream paid for certain needs 'to'")
     a_year = _frequency(stream, policy)
-    if way in ("advance", "arrears") and end is not None and (end - start) % (12 // a_year):
+    by_age = isinstance(stream.from_, AtAge) or isinstance(stream.to, AtAge)
+    periodic = way in ("advance", "arrears") and not by_age
+    if periodic and end is not None and (end - start) % (12 // a_year):
         rule = f"with {a_year} payments a year it lasts a whole number of periods"
         raise NotValued(
             "duration not in whole periods", f"stream '{stream.name}'", f"{end - start} months", rule
         )
     return Terms(
         way,
-        certain,
+        stream.while_ == "certain",
         start,
         end,
         a_year,

@@ -1,9 +1,10 @@
-"""Plans: the streams of a cell, from the product's design and the basis's expenses, as records for the loops."""
+"""Plans: the streams of a cell, from the product's design and the basis's expenses, as segments for the loops."""
 
 from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass, field, replace
+from itertools import pairwise
 from typing import Any
 
 import numpy as np
@@ -15,10 +16,15 @@ from portfolios.designs import AtAge, Design, Stream
 
 from . import streams as s
 from .cells import Cell
+from .pool import ONES
 from .relative import RelativeRows, pattern_of, shape_of
 from .slots import Slots
 
 _PART = {"premium": s.PREMIUMS, "benefit": s.BENEFITS, "expense": s.EXPENSES, "commission": s.EXPENSES}
+
+
+Account = tuple["_Record", tuple[tuple[int, float], ...]]
+"""What gathers cash flows: the shape of a segment, and the lines that share them, each with its share."""
 
 
 @dataclass(frozen=True)
@@ -33,22 +39,23 @@ class Line:
 
 @dataclass(frozen=True)
 class _Record:
-    """One record of a plan, still with names."""
+    """A stream, or a part of one, that is paid in one way."""
 
     line: int = 0
     part: int = s.BENEFITS
     when: int = s.ADVANCE
+    before: int = 0
     cover: int = s.ALIVE
     window: int = s.OWN_DATES
     amount: int = -1
     factor: float = 1.0
+    power: int = 0
     start: int = -1
     end: int = -1
     period: int = -1
-    power: int = 0
     guarantee: int = -1
     clock: int = 0
-    relative: int = -1
+    relative: int = ONES
     changing: int = -1
     calendar: int = -1
     span_from: int = 0
@@ -65,31 +72,46 @@ class _Record:
 
 @dataclass
 class Plans:
-    """The plans of all cells met so far: one array of records, with the range that belongs to each cell."""
+    """The plans of all cells met so far: segments and charges, and the range of segments that belongs to each cell.
+
+    accounts: per account of expected cash flows, the lines that take a share of it, with their shares.
+    """
 
     designs: list[Design]
     basis: Basis
     relative: RelativeRows
     slots: Slots = field(default_factory=Slots)
     lines: dict[Line, int] = field(default_factory=dict)
-    records: NDArray[Any] = field(default_factory=lambda: np.zeros(0, s.STREAM))
+    segments: NDArray[Any] = field(default_factory=lambda: np.zeros(0, s.SEGMENT))
+    charges: NDArray[Any] = field(default_factory=lambda: np.zeros(0, s.CHARGE))
     ranges: NDArray[np.int64] = field(default_factory=lambda: np.zeros((0, 2), np.int64))
+    accounts: dict[Account, int] = field(default_factory=dict)
 
     def add(self, cell: Cell) -> None:
         """Add the plan of the next cell; a cell without rules gets an empty one."""
-        made = [] if cell.missing else list(self._records(self.designs[cell.design], cell))
-        rows = np.zeros(len(made), s.STREAM)
-        for row, record in zip(rows, made, strict=True):
-            for name in s.STREAM.names or ():
-                row[name] = getattr(record, name)
-        begin = len(self.records)
-        self.records = np.concatenate((self.records, rows))
-        self.ranges = np.concatenate((self.ranges, [[begin, begin + len(rows)]]))
+        records = [] if cell.missing else list(self._records(self.designs[cell.design], cell))
+        begin = len(self.segments)
+        for shape, charged in segments_of(records):
+            self._append(shape, charged)
+        self.ranges = np.concatenate((self.ranges, [[begin, len(self.segments)]]))
+
+    def _append(self, shape: _Record, charged: list[_Record]) -> None:
+        account = tuple((record.line, record.factor / shape.factor) for record in charged)
+        row = np.zeros(1, s.SEGMENT)
+        for name in s.SEGMENT.names or ():
+            if name not in ("account", "charges", "charges_end"):
+                row[name] = getattr(shape, name)
+        row["account"] = self.accounts.setdefault((shape, account), len(self.accounts))
+        row["charges"] = len(self.charges)
+        charges = np.array([(record.part, record.factor / shape.factor) for record in charged], s.CHARGE)
+        self.charges = np.concatenate((self.charges, charges))
+        row["charges_end"] = len(self.charges)
+        self.segments = np.concatenate((self.segments, row))
 
     def changing_in(self, cell: int) -> list[int]:
-        """Numbers of the relative amounts that depend on the policy, among the streams of a cell."""
+        """Columns of places of relative amounts that depend on the policy, among the streams of a cell."""
         begin, end = self.ranges[cell]
-        return sorted({int(number) for number in self.records["changing"][begin:end] if number >= 0})
+        return sorted({int(column) for column in self.segments["changing"][begin:end] if column >= 0})
 
     def _records(self, design: Design, cell: Cell) -> Iterator[_Record]:
         made: dict[str, list[_Record]] = {}
@@ -119,13 +141,14 @@ class Plans:
             cover=s.CERTAIN if stream.while_ == "certain" else s.ALIVE,
         )
         if shape.changing:
-            record = replace(record, changing=self.relative.per_policy(shape, start, end))
+            number = self.relative.per_policy(shape, start, end)
+            record = replace(record, changing=self.slots.changing(number))
         else:
             record = replace(record, relative=self.relative.fixed(shape))
         if stream.on is not None:
             yield replace(record, when=s.DEATH if stream.on == "death" else s.LAPSE)
         elif stream.paid == "once":
-            yield replace(record, when=s.ONCE, end=start)
+            yield replace(record, when=s.ONCE, before=1, end=start)
         else:
             yield from self._periodic(stream, record)
 
@@ -133,7 +156,9 @@ class Plans:
         when = s.ARREARS if stream.paid == "arrears" else s.ADVANCE
         ages = isinstance(stream.from_, AtAge) or isinstance(stream.to, AtAge)
         whole = int(stream.to is not None and not ages)
-        record = replace(record, when=when, period=self.slots.frequency(stream.a_year), power=1, whole=whole)
+        period = self.slots.frequency(stream.a_year)
+        before = int(when == s.ARREARS)
+        record = replace(record, when=when, before=before, period=period, power=1, whole=whole)
         if stream.guarantee is not None:
             record = replace(record, guarantee=self.slots.duration(stream.guarantee))
             yield replace(record, cover=s.GUARANTEED)
@@ -142,6 +167,7 @@ class Plans:
             yield record
         else:
             yield replace(record, window=s.BROKEN_YEAR)
+            yield replace(record, window=s.LAST_YEAR)
             yield from _woolhouse(record, when, third=stream.payments == "Woolhouse 3")
 
     def _share(self, design: Design, stream: Stream, made: dict[str, list[_Record]]) -> Iterator[_Record]:
@@ -155,7 +181,7 @@ class Plans:
             for record in made[str(stream.of)] if share else ():
                 factor = record.factor * stream.share * share * sign
                 piece = replace(record, line=line, part=_PART[stream.part], factor=factor)
-                if stream.clock == "commencement":
+                if stream.clock == "commencement" or record.start == self.slots.duration(0.0):
                     yield piece.clipped(begin, end)
                 else:
                     yield replace(piece, span_from=begin, span_to=end)
@@ -184,7 +210,7 @@ class Plans:
         elif item.per == "claim":
             for record in own:
                 if record.part == s.BENEFITS and record.when in (s.DEATH, s.ONCE):
-                    yield replace(record, amount=-1, factor=1.0, relative=-1, changing=-1)
+                    yield replace(record, amount=-1, factor=1.0, relative=ONES, changing=-1)
         else:
             part = s.PREMIUMS if item.per == "premium" else s.BENEFITS
             for stream in design.stream:
@@ -195,6 +221,29 @@ class Plans:
     def _contract_end(self, records: list[_Record]) -> int:
         ends = {record.end for record in records if record.cover != s.CERTAIN and record.when != s.LAPSE}
         return -1 if -1 in ends or not ends else self.slots.latest(tuple(sorted(ends)))
+
+
+def segments_of(records: list[_Record]) -> Iterator[tuple[_Record, list[_Record]]]:
+    """Yield what the records of a plan have in common: a segment, and the records that are charged on it.
+
+    Records that differ in line, part, factor and clip only are paid at the same points in the same shape. Their clips cut
+    time into pieces; each piece is a segment, with the largest factor, so that shares of it are at most 1.
+    """
+    alike: dict[_Record, list[_Record]] = {}
+    for record in records:
+        shape = replace(
+            record, line=0, part=0, factor=1.0, own=0, whole=0, clip_from=0, clip_to=s.FOR_EVER
+        )
+        alike.setdefault(shape, []).append(record)
+    for shape, members in alike.items():
+        bounds = sorted({bound for record in members for bound in (record.clip_from, record.clip_to)})
+        for begin, end in pairwise(bounds):
+            charged = [one for one in members if one.clip_from <= begin and end <= one.clip_to and one.factor]
+            if not charged:
+                continue
+            factor = max((record.factor for record in charged), key=abs)
+            own, whole = (max(getattr(record, name) for record in charged) for name in ("own", "whole"))
+            yield replace(shape, factor=factor, clip_from=begin, clip_to=end, own=own, whole=whole), charged
 
 
 def _sign(stream: Stream) -> int:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable, Hashable
 from dataclasses import dataclass
 
 import numpy as np
@@ -11,12 +12,13 @@ from assumptions.expenses import Inflation
 from portfolios.chunk import Chunk
 from portfolios.designs import Increase, Share, Stream
 
+from .pool import ONES, Pool
 from .streams import LONGEST
 
 Pattern = tuple[tuple[int | None, float], ...]
 """Pieces of a pattern: years (None for ever) and share."""
 
-_MONTHS = np.arange(LONGEST + 1)
+_MONTHS = np.arange(LONGEST + 2)
 
 
 @dataclass(frozen=True)
@@ -39,7 +41,7 @@ class Shape:
         return isinstance(self.rate, str) or self.by > 0
 
     def row(self, rate: float, start: int, length: int) -> NDArray[np.float64]:
-        """Relative amounts at months 0, 1 ... of the clock, LONGEST + 1 of them.
+        """Relative amounts at months 0, 1 ... of the clock, to LONGEST + 1.
 
         rate: yearly increase; start: months from the clock's start to the stream's; length: of the stream in months.
         """
@@ -84,66 +86,55 @@ def shares(pattern: Pattern, years: NDArray[np.int64]) -> NDArray[np.float64]:
 
 
 class RelativeRows:
-    """All rows of relative amounts met so far, in one array that the loops read.
+    """The rows of relative amounts met so far, by their place in the pool.
 
-    Rows by calendar month lie in the same array, from the month of the valuation date.
+    year, month: of the valuation date, from which rows by calendar month start.
     """
 
-    def __init__(self, year: int, month: int) -> None:
-        self.year, self.month = year, month
-        self.rows = np.ones((1, LONGEST + 1))
-        self.used = 1
-        self._known: dict[object, int] = {}
+    def __init__(self, pool: Pool, year: int, month: int) -> None:
+        self.pool, self.year, self.month = pool, year, month
+        self.known: dict[Hashable, int] = {}
         self.changing: dict[tuple[Shape, int, int], int] = {}
-        """Rows of the matrix with the row per policy: shape, row of months of start and of end (-1: none)."""
+        """Numbers of the shapes that depend on the policy, with the columns of months of start and end (-1: none)."""
 
     def fixed(self, shape: Shape) -> int:
-        """Return the row of a shape that is the same for all policies; -1 for a level one."""
+        """Return the place of the row of a shape that is the same for all policies."""
         if not shape.rate and not shape.pattern:
-            return -1
-        return self._row(shape, lambda: shape.row(float(shape.rate), 0, 0))
+            return ONES
+        return self._place(shape, lambda: shape.row(float(shape.rate), 0, 0))
 
     def inflating(self, inflation: Inflation) -> int:
-        """Return the row by calendar month, the first the month of the valuation date."""
+        """Return the place of the row by calendar month, the first the month of the valuation date."""
 
         def build() -> NDArray[np.float64]:
             months = 12 * self.year + self.month - 1 + _MONTHS
             return np.array([inflation.factor(int(m) // 12, int(m) % 12 + 1) for m in months])
 
-        return self._row((inflation.rate, inflation.from_), build)
+        return self._place((inflation.rate, inflation.from_), build)
 
     def per_policy(self, shape: Shape, start: int, end: int) -> int:
-        """Return the number of a shape whose row depends on the policy; start, end: rows of months."""
+        """Return the number of a shape whose row depends on the policy; start, end: columns of months."""
         return self.changing.setdefault((shape, start, end), len(self.changing))
 
-    def rows_of(
-        self, number: int, chunk: Chunk, months: NDArray[np.int32], policies: NDArray[np.int64]
+    def places_of(
+        self, number: int, chunk: Chunk, whole: NDArray[np.int32], policies: NDArray[np.int64]
     ) -> NDArray[np.int32]:
-        """Return the row of relative amounts for each of some policies of a chunk."""
+        """Return the place of the row of relative amounts for each of some policies of a chunk."""
         shape, start, end = list(self.changing)[number]
+        by_column = isinstance(shape.rate, str)
         keys = np.zeros((3, len(policies)))
-        if isinstance(shape.rate, str):
-            keys[0] = chunk.number(shape.rate)[policies]
+        keys[0] = chunk.number(str(shape.rate))[policies] if by_column else shape.rate
         if shape.by:
-            keys[1] = months[start, policies] if shape.from_commencement else 0
-            keys[2] = months[end, policies] - months[start, policies]
-        distinct, inverse = np.unique(keys, axis=1, return_inverse=True)
-        fixed = 0.0 if isinstance(shape.rate, str) else float(shape.rate)
-        found = []
-        for rate, begin, length in distinct.T.tolist():
-            yearly = rate if isinstance(shape.rate, str) else fixed
-            if np.isnan(yearly):  # a policy that the checks have already listed
-                found.append(0)
-                continue
-            found.append(self._row((shape, yearly, begin, length), lambda y=yearly, b=begin, n=length: shape.row(y, int(b), int(n))))  # type: ignore[misc]
-        return np.array(found, dtype=np.int32)[inverse.reshape(-1)]
+            keys[1] = whole[policies, start] if shape.from_commencement else 0
+            keys[2] = whole[policies, end] - whole[policies, start]
+        found, inverse = np.unique(keys, axis=1, return_inverse=True)
+        places = [self._changing(shape, rate, int(begin), int(length)) for rate, begin, length in found.T.tolist()]
+        return np.array(places, dtype=np.int32)[inverse.reshape(-1)]
 
-    def _row(self, key: object, build: object) -> int:
-        if key not in self._known:
-            if self.used == len(self.rows):
-                # A new array: a loop that runs in another thread keeps the one it was given.
-                self.rows = np.concatenate((self.rows, np.ones((max(8, self.used), LONGEST + 1))))
-            self.rows[self.used] = build()  # type: ignore[operator]
-            self._known[key] = self.used
-            self.used += 1
-        return self._known[key]
+    def _changing(self, shape: Shape, rate: float, begin: int, length: int) -> int:
+        return self._place((shape, rate, begin, length), lambda: shape.row(rate, begin, length))
+
+    def _place(self, key: Hashable, build: Callable[[], NDArray[np.float64]]) -> int:
+        if key not in self.known:
+            self.known[key] = self.pool.add(build())
+        return self.known[key]

@@ -6,6 +6,7 @@ months, months between payments.
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -21,81 +22,82 @@ NOT_WHOLE = -1
 
 _TOLERANCE = 1e-6
 
-DurationKey = tuple[str, float | str | tuple[int, ...]]
+Key = tuple[str, float | int | str | tuple[int, ...]]
 
 
 @dataclass
 class Slots:
-    """The distinct amounts, durations and frequencies of all streams, in order of first use."""
+    """The distinct amounts and whole numbers of all streams, in order of first use.
+
+    An amount is a column of the money matrix (policy, amount); durations in months, months between payments and places of
+    rows that depend on the policy are columns of the whole-number matrix (policy, number).
+    """
 
     money: dict[str, int] = field(default_factory=dict)
-    durations: dict[DurationKey, int] = field(default_factory=dict)
-    frequencies: dict[int | str, int] = field(default_factory=dict)
+    whole: dict[Key, int] = field(default_factory=dict)
 
     def amount(self, amount: float | str) -> tuple[int, float]:
-        """Return row and factor of an amount: a column counts once, a number has no row."""
+        """Return column and factor of an amount: a column of the extract counts once, a number has no column."""
         if isinstance(amount, str):
             return self.money.setdefault(amount, len(self.money)), 1.0
         return -1, float(amount)
 
     def duration(self, duration: Duration) -> int:
-        """Return the row of a duration from commencement."""
+        """Return the column of a duration from commencement."""
         if isinstance(duration, AtAge):
-            return self._duration(("age", duration.age))
+            return self._column(("age", duration.age))
         if isinstance(duration, str):
-            return self._duration(("column", duration))
-        return self._duration(("years", float(duration)))
+            return self._column(("duration", duration))
+        return self._column(("years", float(duration)))
 
-    def latest(self, rows: tuple[int, ...]) -> int:
-        """Return the row that holds the largest of some durations."""
-        return rows[0] if len(rows) == 1 else self._duration(("latest", rows))
+    def latest(self, columns: tuple[int, ...]) -> int:
+        """Return the column that holds the largest of some durations."""
+        return columns[0] if len(columns) == 1 else self._column(("latest", columns))
 
     def frequency(self, a_year: int | str) -> int:
-        """Return the row of a number of payments a year."""
-        return self.frequencies.setdefault(a_year, len(self.frequencies))
+        """Return the column of the months between payments for a number of payments a year."""
+        return self._column(("frequency", a_year) if isinstance(a_year, str) else ("period", 12 // a_year))
 
-    def _duration(self, key: DurationKey) -> int:
-        return self.durations.setdefault(key, len(self.durations))
+    def changing(self, number: int) -> int:
+        """Return the column with the places of rows of relative amounts that depend on the policy."""
+        return self._column(("changing", number))
+
+    def named(self, column: int) -> str:
+        """Return the extract column behind a whole number, or nothing."""
+        kind, what = list(self.whole)[column]
+        return str(what) if kind in ("duration", "frequency") else ""
+
+    def _column(self, key: Key) -> int:
+        return self.whole.setdefault(key, len(self.whole))
 
     def amounts_of(self, chunk: Chunk) -> NDArray[np.float64]:
-        """Return the money matrix of a chunk: (amounts, policies), NaN where missing."""
-        matrix = np.empty((len(self.money), chunk.n))
-        for column, row in self.money.items():
-            matrix[row] = chunk.number(column)
+        """Return the money matrix of a chunk, NaN where an amount is missing."""
+        matrix = np.empty((chunk.n, len(self.money)))
+        for name, column in self.money.items():
+            matrix[:, column] = chunk.number(name)
         return matrix
 
-    def months_of(self, chunk: Chunk, months_to_age: AgeFinder) -> NDArray[np.int32]:
-        """Return the months matrix of a chunk: (durations, policies), NOT_WHOLE where a duration is no good."""
-        matrix = np.empty((len(self.durations), chunk.n), dtype=np.int32)
-        for (kind, what), row in self.durations.items():
+    def numbers_of(self, chunk: Chunk, months_to_age: Callable[[int], NDArray[np.int32]]) -> NDArray[np.int32]:
+        """Return the whole-number matrix of a chunk: NOT_WHOLE for a duration that is no good, 0 for no frequency.
+
+        months_to_age: months from commencement to an age, per policy. Places of rows are left at 0.
+        """
+        matrix = np.zeros((chunk.n, len(self.whole)), dtype=np.int32)
+        for (kind, what), column in self.whole.items():
             if kind == "age":
-                matrix[row] = months_to_age(int(what))  # type: ignore[arg-type]
+                matrix[:, column] = months_to_age(int(what))  # type: ignore[arg-type]
             elif kind == "latest":
-                matrix[row] = matrix[list(what)].max(axis=0)  # type: ignore[arg-type]
-            elif kind == "column":
-                matrix[row] = whole_months(chunk.number(str(what)))
-            else:
-                matrix[row] = whole_months(np.array([what], dtype=np.float64))[0]
+                matrix[:, column] = matrix[:, list(what)].max(axis=1)  # type: ignore[arg-type]
+            elif kind == "duration":
+                matrix[:, column] = whole_months(chunk.number(str(what)))
+            elif kind == "years":
+                matrix[:, column] = whole_months(np.array([what], dtype=np.float64))[0]
+            elif kind == "period":
+                matrix[:, column] = what  # type: ignore[assignment]
+            elif kind == "frequency":
+                number = np.nan_to_num(chunk.number(str(what)))
+                matrix[:, column] = _PERIODS[np.clip(number, 0, 13).astype(np.int64)]
         return matrix
-
-    def periods_of(self, chunk: Chunk) -> NDArray[np.int32]:
-        """Return the periods matrix of a chunk: (frequencies, policies), months between payments, 0 where none."""
-        matrix = np.empty((len(self.frequencies), chunk.n), dtype=np.int32)
-        for a_year, row in self.frequencies.items():
-            if isinstance(a_year, str):
-                number = np.nan_to_num(chunk.number(a_year))
-                matrix[row] = _PERIODS[np.clip(number, 0, 13).astype(np.int64)]
-            else:
-                matrix[row] = 12 // a_year
-        return matrix
-
-
-class AgeFinder:
-    """Gives, per policy of a chunk, the months from commencement to an age."""
-
-    def __call__(self, age: int) -> NDArray[np.int32]:
-        """Months to the first due date on or after the birthday."""
-        raise NotImplementedError
 
 
 _PERIODS = np.array([0, 12, 6, 0, 3, 0, 0, 0, 0, 0, 0, 0, 1, 0], dtype=np.int32)

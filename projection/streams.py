@@ -1,6 +1,8 @@
-"""The record in which a stream reaches the compiled loops, and the codes in it.
+"""The records in which streams and policies reach the compiled loops, and the codes in them.
 
-Every field is a number, so that one array of records holds the streams of every cell.
+Every field is a number, so that one array of records holds the streams of every cell. A *segment* is what streams of a cell
+have in common where they are paid at the same points in the same shape: a premium, the commission on it, the expenses charged
+on it. It is summed once, and each *charge* takes its share of the sum.
 """
 
 from __future__ import annotations
@@ -24,6 +26,7 @@ AFTER_GUARANTEE: Final = 3
 OWN_DATES: Final = 0
 BROKEN_YEAR: Final = 1
 WHOLE_YEARS: Final = 2
+LAST_YEAR: Final = 3
 
 BENEFITS: Final = 0
 EXPENSES: Final = 1
@@ -35,30 +38,71 @@ LONGEST: Final = 12 * 152
 FOR_EVER: Final = 1 << 20
 """An end of a span or clip that never bites."""
 
-STREAM = np.dtype(
+SEGMENT = np.dtype(
     [
-        ("line", "i8"),  # row of the cash flow table
-        ("part", "i8"),  # BENEFITS, EXPENSES or PREMIUMS
+        ("account", "i8"),  # where its expected cash flows are gathered
         ("when", "i8"),  # ADVANCE ... THIRD_TERM
+        ("before", "i8"),  # 1: paid before the lapses of the same point
         ("cover", "i8"),  # ALIVE ... AFTER_GUARANTEE
         ("window", "i8"),  # OWN_DATES, or the part of a stream that Woolhouse's formula leaves or takes
-        ("amount", "i8"),  # row of the money matrix; -1: 1
+        ("amount", "i8"),  # column of the money matrix; -1: 1
         ("factor", "f8"),  # times this
-        ("start", "i8"),  # row of the months matrix
-        ("end", "i8"),  # row of the months matrix; -1: for life
-        ("period", "i8"),  # row of the periods matrix: months between payments
-        ("power", "i8"),  # the amount is divided by (payments a year) to this power
-        ("guarantee", "i8"),  # row of the months matrix; -1: none
+        ("power", "i8"),  # divided by (payments a year) to this power
+        ("start", "i8"),  # column of the whole-number matrix: months
+        ("end", "i8"),  # column of months; -1: for life
+        ("period", "i8"),  # column: months between payments
+        ("guarantee", "i8"),  # column of months; -1: none
         ("clock", "i8"),  # 0: the stream's start, 1: commencement
-        ("relative", "i8"),  # row of relative amounts by months of the clock; -1: level
-        ("changing", "i8"),  # row of the matrix that holds the row of relative amounts per policy; -1: none
-        ("calendar", "i8"),  # row of relative amounts by calendar month; -1: none
+        ("relative", "i8"),  # place of its row of relative amounts by months of the clock
+        ("changing", "i8"),  # column with the place of that row per policy; -1: the same for all
+        ("calendar", "i8"),  # place of a row of relative amounts by calendar month; -1: none
         ("span_from", "i8"),  # payments whose relative month is at least this many months after the stream's start
         ("span_to", "i8"),  # ... and less than this many
         ("clip_from", "i8"),  # payments whose relative month is at least this many months after commencement
         ("clip_to", "i8"),  # ... and less than this many
         ("whole", "i8"),  # 1: its length must be a whole number of periods
-        ("own", "i8"),  # 1: a stream of the design, which keeps the contract going
+        ("own", "i8"),  # 1: belongs to a stream of the design, which keeps the contract going
+        ("charges", "i8"),  # first of its charges
+        ("charges_end", "i8"),  # behind the last of them
+    ],
+    align=True,
+)
+
+CHARGE = np.dtype([("part", "i8"), ("ratio", "f8")], align=True)
+"""What a charge makes of its segment's sum: this share of it, in this part of the reserve."""
+
+SURVIVAL = np.dtype(
+    [
+        ("living", "i8"),  # place of the row of survival at points 0, 1 ...
+        ("over", "i8"),  # last point of the row
+        ("yearly", "i8"),  # place of the rates of the years of age
+        ("reached", "i8"),  # place of survival to the start of each of them
+        ("years", "i8"),  # how many there are
+        ("passed", "f8"),  # share of the first of them that has passed at commencement
+        ("closed", "i8"),  # 1: nobody is left at the end
+    ],
+    align=True,
+)
+
+POLICY = np.dtype(
+    [
+        ("k", "i8"),  # months passed at the valuation date
+        ("part", "i8"),  # and part / whole of the next one
+        ("whole", "i8"),
+        ("shift", "i8"),  # calendar months from that of the valuation date to that of commencement
+        ("day", "i8"),  # of the month of commencement
+        ("age", "i8"),  # completed years at commencement
+        ("since", "i8"),  # days from the last birthday to commencement
+        ("span", "i8"),  # days from it to the next birthday
+        ("segments", "i8"),  # first segment of its cell
+        ("segments_end", "i8"),  # behind the last of them
+        ("survival", "i8"),  # record of its survival
+        ("held", "i8"),  # place of persistency at g = 0; one more lies in front for g = -1
+        ("dead", "i8"),  # place of the weight of deaths of the step that ends at g = 0
+        ("lapsing", "i8"),  # place of the share that lapses at g = 0
+        ("payment", "i8"),  # place of the discount factor of a payment at point k
+        ("claim", "i8"),  # place of that of a death claim of the step that ends at k
+        ("claim_shift", "i8"),  # calendar months from the end of a step to the payment of its death claims
     ],
     align=True,
 )

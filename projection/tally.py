@@ -10,7 +10,7 @@ import pyarrow as pa
 from numpy.typing import NDArray
 
 from . import loops
-from .plans import Line
+from .plans import Plans
 from .results import MONEY_COLUMNS, ControlTotal
 
 QUANTA = 1000
@@ -93,15 +93,16 @@ class Tally:
         columns["rounding"] = self._money([int(row[1] - row[2] - row[3] + row[4]) for row in rows])
         return pa.table(columns)
 
-    def flows_table(self, lines: list[Line], year: int, month: int) -> pa.Table:
-        """Expected cash flows by calendar month and line, without the empty ones after the last payment of all."""
+    def flows_table(self, plans: Plans, year: int, month: int) -> pa.Table:
+        """Expected cash flows by calendar month and line, without the empty months after the last payment of all."""
+        lines = list(plans.lines)
         used = np.flatnonzero(self.flows.any(axis=0))
         months = int(used[-1]) + 1 if len(used) else 0
+        amounts = self._by_line(plans)[:, :months]
         first = np.datetime64(f"{year:04d}-{month:02d}", "M")
         dates = (first + np.arange(months)).astype("datetime64[D]").astype(np.int32)
-        order = sorted(range(len(self.flows)), key=lambda place: (lines[place].product, place))
-        order = [place for place in order if self.flows[place].any()]
-        minor = np.rint(self.flows[order][:, :months].T / QUANTA).astype(np.int64)
+        order = sorted(range(len(lines)), key=lambda place: (lines[place].product, place))
+        order = [place for place in order if amounts[place].any()]
         return pa.table(
             {
                 "month": pa.array(np.repeat(dates, len(order)), pa.int32()).cast(pa.date32()),
@@ -109,9 +110,18 @@ class Tally:
                     name: _tiled([getattr(lines[place], name) for place in order], months)
                     for name in ("product", "stream", "part", "direction")
                 },
-                "amount": pa.array(minor.reshape(-1) / 10**self.decimals, pa.float64()),
+                "amount": pa.array(amounts[order].T.reshape(-1) / 10**self.decimals, pa.float64()),
             }
         )
+
+    def _by_line(self, plans: Plans) -> NDArray[np.float64]:
+        """Minor units by line and month: each line's shares of the accounts, rounded once."""
+        amounts = np.zeros((len(plans.lines), self.flows.shape[1]))
+        for (_, shares), account in plans.accounts.items():
+            if account < len(self.flows):
+                for line, share in shares:
+                    amounts[line] += share * self.flows[account]
+        return np.rint(amounts / QUANTA)
 
     def _money(self, minor: list[int]) -> pa.Array:
         return pa.array([figure / 10**self.decimals for figure in minor], pa.float64())

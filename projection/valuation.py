@@ -164,7 +164,7 @@ class _Valuation:
         self.sample.offer(chunk, valued)
         part = ChunkTally(
             totals=totals,
-            flows=results.flows,
+            flows=results.flows.reshape(-1, loops.BINS),
             control=self._control(chunk, valued),
             exceptions=exceptions,
             policies=self._policies(chunk, valued),
@@ -208,7 +208,7 @@ class _Valuation:
         names = dict.fromkeys(["product", *self.group_by])
         columns: dict[str, Any] = {"policy_id": chunk.ids}
         columns.update({name: _plain(chunk.raw(name)) for name in names if name != "policy_id"})
-        columns.update({name: pa.array(minor[place]) for place, name in enumerate(MONEY_COLUMNS)})
+        columns.update({name: pa.array(np.ascontiguousarray(minor[:, place])) for place, name in enumerate(MONEY_COLUMNS)})
         table = pa.table(columns)
         return table if not valued.checked.reason.any() else table.filter(pa.array(valued.valued))
 
@@ -230,7 +230,7 @@ class _Valuation:
         return Outcome(
             settings=self.settings,
             totals=tally.totals_table(self.group_by, self.groups.keys),
-            cash_flows=tally.flows_table(list(engine.plans.lines), today.year, today.month),
+            cash_flows=tally.flows_table(engine.plans, today.year, today.month),
             exceptions=exceptions,
             control=control,
             total=tally.total(),
@@ -240,10 +240,10 @@ class _Valuation:
             counts={
                 "policy-months": tally.months,
                 "sets of policies that rules treat alike": len(engine.cells.cells),
-                "survival curves": len(engine.survival.living_count),
+                "survival curves": len(engine.survival.records),
                 "persistency curves": len(engine.persistency.known),
                 "discount curves": len(engine.discount.known),
-                "patterns": engine.plans.relative.used,
+                "rows of relative amounts": len(engine.plans.relative.known),
             },
             timings=seconds,
         )
@@ -290,7 +290,7 @@ class _Sample:
                 if len(self._kept) >= self.size and key <= self._kept[0][0]:
                     continue
                 candidate = Candidate(
-                    chunk.policy(i), int(valued.checked.product[i]), valued.results.parts[:, i].tolist()
+                    chunk.policy(i), int(valued.checked.product[i]), valued.results.parts[i].tolist()
                 )
                 push = heapq.heappush if len(self._kept) < self.size else heapq.heappushpop
                 push(self._kept, (key, chunk.start + i, candidate))

@@ -39,7 +39,7 @@ class Axis:
 
 
 def axis_for(low: float, high: float, steps: int = 6) -> Axis:
-    """Return an axis that holds 0, ``low`` and ``high`` with about so many steps of 1, 2 or 5 times a power of ten."""
+    """Return an axis that holds 0, ``low`` and ``high`` with about so many steps of 1, 2 or 5 times 10^n."""
     low, high = min(0.0, low), max(0.0, high)
     if high == low:
         high = 1.0
@@ -65,7 +65,9 @@ def run_off_chart(years: Sequence[str], out: Sequence[float], in_: Sequence[floa
 
     slot = plot / max(1, len(years))
     bar = max(1.0, slot * 0.78)
-    marks: list[str] = [_grid_line(left, WIDTH - right, y(tick), axis.label(abs(tick))) for tick in axis.ticks]
+    marks: list[str] = [
+        _grid_line(left, WIDTH - right, y(tick), axis.label(abs(tick))) for tick in axis.ticks
+    ]
     for i, year in enumerate(years):
         x = left + i * slot + (slot - bar) / 2
         marks.append(_bar(x, y(out[i]), bar, y(0) - y(out[i]), "out", f"{year}: {amount(out[i], 0)} out"))
@@ -76,7 +78,7 @@ def run_off_chart(years: Sequence[str], out: Sequence[float], in_: Sequence[floa
     marks.append(_text(WIDTH - right, top + 14, "paid out", "end", "key out"))
     marks.append(_text(WIDTH - right, top + height - 6, "received", "end", "key in"))
     said = (
-        f"Expected cash flows by calendar year from {years[0]} to {years[-1]}, bars upwards paid out, downwards received."
+        f"Expected cash flows by calendar year, {years[0]} to {years[-1]}; out upwards, in downwards."
         if years
         else "No expected cash flows."
     )
@@ -87,7 +89,7 @@ def bar_chart(title: str, rows: Sequence[tuple[str, float]], currency: str, deci
     """Return horizontal bars, one for each (label, amount in currency), with the amounts written out."""
     values = [value for _, value in rows]
     axis = axis_for(min(values, default=0.0), max(values, default=0.0), steps=5)
-    left, right, top, step = 250, 150, 30, 26
+    left, right, top, step = 300, 140, 30, 26
     plot = WIDTH - left - right
 
     def x(value: float) -> float:
@@ -99,7 +101,7 @@ def bar_chart(title: str, rows: Sequence[tuple[str, float]], currency: str, deci
         y = top + i * step
         start, end = sorted((x(0), x(value)))
         written = amount(value, decimals)
-        marks.append(_text(left - 8, y + 17, _short(label, 34), "end", "label", label))
+        marks.append(_text(left - 8, y + 17, _short(label, 38), "end", "label", label))
         marks.append(_bar(start, y + 4, end - start, step - 8, "out", f"{label}: {written}"))
         marks.append(_text(WIDTH - 2, y + 17, written, "end", "value"))
     marks.append(f'<line class="zero" x1="{x(0):.1f}" x2="{x(0):.1f}" y1="{top - 4}" y2="{bottom}"/>')

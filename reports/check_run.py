@@ -30,8 +30,8 @@ class Checked:
 def check_run(run: Path, progress: Callable[[int, int], None], threads: int | None = None) -> Checked:
     """Read and check everything that a run would.
 
-    Raises DocumentError and ExtractError for documents and extracts that stop a run before it starts, RunStopped
-    where the engine finds fault with itself.
+    Raises DocumentError and ExtractError for documents and extracts that stop a run before it starts,
+    RunStopped where the engine finds fault with itself.
     """
     prepared = prepare(run)
     # The engine finds the exceptions of a run; asking it, with no limit, gives the same ones.
@@ -42,7 +42,9 @@ def check_run(run: Path, progress: Callable[[int, int], None], threads: int | No
     verdict = [
         f"{count(left_out)} of {counted(outcome.read, 'policy', 'policies')} would not be valued"
         f" ({_share(left_out, outcome.read)}; the run stops above {limit:.2%}).",
-        "The run can go ahead." if ready else "The run would stop. Correct the extract or the documents first.",
+        "The run can go ahead."
+        if ready
+        else "The run would stop. Correct the extract or the documents first.",
     ]
     return Checked((*_read(prepared), "", *_exceptions(outcome), "", *verdict), ready)
 
@@ -60,10 +62,13 @@ def _read(prepared: Prepared) -> list[str]:
     designs = ", ".join(design.code for design in prepared.designs)
     return lines_up(
         [
-            ["run", f"{document.title or prepared.run.name}, valuation date {document.valuation_date.isoformat()}"],
+            ["run", f"{document.title or prepared.run.name}, valuation date {document.valuation_date}"],
             ["designs", f"{len(prepared.designs)}: {designs}"],
             ["basis", f"{prepared.basis.title}, SHA-256 {prepared.basis.digest[:12]}..."],
-            ["extract", f"{counted(extract.rows, 'policy', 'policies')} in {counted(len(extract.files), 'file')}"],
+            [
+                "extract",
+                f"{counted(extract.rows, 'policy', 'policies')} in {counted(len(extract.files), 'file')}",
+            ],
         ]
     )
 
@@ -73,11 +78,13 @@ def _exceptions(outcome: Outcome) -> list[str]:
         return ["Every policy can be valued."]
     examples: dict[str, list[str]] = defaultdict(list)
     for row in outcome.exceptions.to_pylist():
-        if len(examples[row["reason"]]) < EXAMPLES:
+        found = examples[row["reason"]]
+        if len(found) < EXAMPLES:
             value = f"is '{row['value']}'" if row["value"] else "is missing"
             where = f"{row['field']} {value}" if row["field"] else ""
             said = "; ".join(part for part in (where, row["rule"] or "") if part)
-            examples[row["reason"]].append(f"{row['policy_id']}: {said}")
+            line = f"{row['policy_id']}: {said}"
+            found += [line] if line not in found else []
     lines = []
     for reason, number in reasons(outcome).items():
         lines.append(f"{reason}: {counted(number, 'policy', 'policies')}")

@@ -1,29 +1,15 @@
-"""The command ``duecourse``. Nothing heavy is imported before a command needs it, so that help comes at once."""
+"""The command ``duecourse``. Nothing heavy is imported before it is needed, so that help comes at once."""
 
 from __future__ import annotations
 
-import os
-import signal
 import sys
 from pathlib import Path
-from typing import Annotated, Any, NoReturn
+from typing import Annotated, NoReturn
 
 import typer
 
+from .exits import FAILED, WRONG_INPUT, end_politely, run_app
 from .installation import strangers
-
-WRONG_INPUT = 2
-FAILED = 1
-INTERRUPTED = 130
-
-
-def _version(wanted: bool) -> None:
-    if wanted:
-        from importlib import metadata
-
-        print(f"duecourse {metadata.version('duecourse')}")
-        raise typer.Exit
-
 
 app = typer.Typer(
     name="duecourse",
@@ -37,35 +23,34 @@ app = typer.Typer(
         duecourse reserve office/month-end.toml --out office/november
         duecourse verify office/november
 
-    'duecourse COMMAND --help' shows an example of each command. Exit codes: 0 all is well, 1 the run or the
-    verification failed, 2 the input is wrong.""",
+    'duecourse COMMAND --help' shows an example of each command, 'duecourse --version' the version.
+    Exit codes: 0 all is well, 1 the run or the verification failed, 2 the input is wrong.""",
     no_args_is_help=True,
     add_completion=False,
     pretty_exceptions_enable=False,
     rich_markup_mode=None,
 )
 
-
-@app.callback()
-def _options(
-    version: Annotated[
-        bool, typer.Option("--version", callback=_version, is_eager=True, help="Show the version and exit.")
-    ] = False,
-) -> None:
-    """Options of the command itself; its help is that of the app."""
-
-
 RunDocumentPath = Annotated[Path, typer.Argument(metavar="RUN", help="The run document, a TOML file.")]
 Threads = Annotated[
-    int | None, typer.Option(metavar="N", min=1, max=1024, help="Threads to value with; by default as many as there are cores.")
+    int | None,
+    typer.Option(
+        metavar="N", min=1, max=1024, help="Threads to value with; by default as many as there are cores."
+    ),
 ]
 
 
 @app.command(short_help="Write an invented office, ready to run.")
 def demo(
-    folder: Annotated[Path, typer.Argument(metavar="FOLDER", help="Folder to write; must not exist or be empty.")],
-    policies: Annotated[int, typer.Option(metavar="N", min=1, max=100_000_000, help="Policies in the extract.")] = 10_000,
-    seed: Annotated[int, typer.Option(metavar="S", min=0, help="The same seed gives the same office, to the byte.")] = 1,
+    folder: Annotated[
+        Path, typer.Argument(metavar="FOLDER", help="Folder to write; must not exist or be empty.")
+    ],
+    policies: Annotated[
+        int, typer.Option(metavar="N", min=1, max=100_000_000, help="Policies in the extract.")
+    ] = 10_000,
+    seed: Annotated[
+        int, typer.Option(metavar="S", min=0, help="The same seed gives the same office, to the byte.")
+    ] = 1,
 ) -> None:
     """Write an invented office: extract, designs, bases and run documents, ready to run.
 
@@ -80,7 +65,8 @@ def demo(
 
     with progress_on("writing the demo") as progress:
         write_office(folder, policies, seed, progress)
-    print(f"An invented office of {policies:,} policies is in {folder}. A few of them are wrong on purpose. Next:")
+    print(f"An invented office of {policies:,} policies is in {folder}.")
+    print("About a dozen of them are wrong on purpose. Next:")
     print(f"    duecourse reserve {folder / 'month-end.toml'} --out {folder / 'results'}")
 
 
@@ -108,7 +94,9 @@ def check(run: RunDocumentPath, threads: Threads = None) -> None:
 @app.command(short_help="The month-end run: value all policies, leave a run folder.")
 def reserve(
     run: RunDocumentPath,
-    out: Annotated[Path, typer.Option(metavar="FOLDER", help="Run folder to write: complete, or not at all.")],
+    out: Annotated[
+        Path, typer.Option(metavar="FOLDER", help="Run folder to write: complete, or not at all.")
+    ],
     replace: Annotated[bool, typer.Option("--replace", help="Replace a finished run of this name.")] = False,
     threads: Threads = None,
     no_workbook: Annotated[bool, typer.Option("--no-workbook", help="Leave out report.xlsx.")] = False,
@@ -142,8 +130,12 @@ def reserve(
 @app.command(short_help="Show the working of one policy.")
 def explain(
     run: RunDocumentPath,
-    policy: Annotated[str, typer.Argument(metavar="POLICY", help="Identifier of the policy, as in the extract.")],
-    out: Annotated[Path | None, typer.Option(metavar="FILE", help="Write the working to this text file.")] = None,
+    policy: Annotated[
+        str, typer.Argument(metavar="POLICY", help="Identifier of the policy, as in the extract.")
+    ],
+    out: Annotated[
+        Path | None, typer.Option(metavar="FILE", help="Write the working to this text file.")
+    ] = None,
 ) -> None:
     """Show the working of one policy: every date, age, rate, probability, discount factor and payment.
 
@@ -158,7 +150,7 @@ def explain(
     if out is None:
         print(text)
     else:
-        from .run_folder import write_text
+        from .disk import write_text
 
         write_text(out, text.rstrip("\n") + "\n")
         print(f"The working of {policy} is in {out}.")
@@ -184,7 +176,9 @@ def verify(
     from .verify import verify as verify_folder
 
     found = verify_folder(folder, inputs, not no_inputs)
-    print("\n".join([*(f"ok     {line}" for line in found.sound), *(f"note   {line}" for line in found.notes)]))
+    print(
+        "\n".join([*(f"ok     {line}" for line in found.sound), *(f"note   {line}" for line in found.notes)])
+    )
     for line in found.faults:
         print(f"WRONG  {line}")
     print(f"{folder}: {'as recorded' if found.holds else 'NOT as recorded'}.")
@@ -196,61 +190,15 @@ def main() -> NoReturn:
     """Run the command and leave with its exit code."""
     faults = strangers()
     if faults:
-        _say("\n".join(faults))
+        print("\n".join(faults), file=sys.stderr)
         sys.exit(WRONG_INPUT)
-    # A batch system's polite end must clean up as Ctrl-C does.
-    signal.signal(signal.SIGTERM, _interrupt)
+    end_politely()
     sys.exit(run_command())
 
 
 def run_command(arguments: list[str] | None = None) -> int:
     """Run the command with these arguments, by default those of the process; return its exit code."""
-    try:
-        result = app(args=arguments, prog_name="duecourse", standalone_mode=False)
-    except KeyboardInterrupt:
-        _say("Interrupted; nothing was left behind.")
-        return INTERRUPTED
-    except BrokenPipeError:
-        # The reader of our output has gone; closing quietly is what it expects.
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
-        return FAILED
-    except (ValueError, OSError, MemoryError) as error:
-        code = _exit_code(error)
-        if code is None:
-            raise
-        _say(str(error) or "There is not enough memory.")
-        return code
-    except Exception as error:
-        return _usage(error)
-    return result if isinstance(result, int) else 0
-
-
-def _usage(error: Exception) -> int:
-    """Show an error of the command line itself."""
-    show, code = getattr(error, "show", None), getattr(error, "exit_code", None)
-    if code is None:
-        raise error
-    if show is not None:
-        show()
-    return int(code)
-
-
-def _exit_code(error: BaseException) -> int | None:
-    """Return the exit code of an expected error, None for one that is a fault of the program."""
-    kind: type[Any] = type(error)
-    if isinstance(error, MemoryError) or kind.__name__ == "RunStopped":
-        return FAILED
-    if isinstance(error, OSError):
-        return WRONG_INPUT
-    return WRONG_INPUT if kind.__module__.partition(".")[0] in {"assumptions", "portfolios", "projection", "reports"} else None
-
-
-def _say(text: str) -> None:
-    print(text, file=sys.stderr)
-
-
-def _interrupt(number: int, frame: object) -> NoReturn:
-    raise KeyboardInterrupt
+    return run_app(app, sys.argv[1:] if arguments is None else arguments)
 
 
 if __name__ == "__main__":

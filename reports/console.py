@@ -43,7 +43,7 @@ def _groups(report: Report) -> list[str]:
         lines.insert(-2, f"... and {counted(hidden, 'more group')} in totals.parquet")
     if report.rounding:
         lines.append(
-            f"The parts are rounded one by one; together they differ from the reserve by {report.money(report.rounding)}."
+            f"Parts are rounded one by one; they differ from the reserve by {report.money(report.rounding)}."
         )
     return lines
 
@@ -64,7 +64,10 @@ def _exceptions(report: Report) -> list[str]:
     found = report.record["exceptions_by_reason"]
     if not found:
         return ["No exceptions."]
-    rows = [["exceptions by reason", "policies"], *([reason, count(number)] for reason, number in found.items())]
+    rows = [
+        ["exceptions by reason", "policies"],
+        *([reason, count(number)] for reason, number in found.items()),
+    ]
     return lines_up(rows, right=(1,))
 
 
@@ -72,8 +75,8 @@ def _sample(report: Report) -> str:
     sample = report.outcome.sample
     verdict = "agree" if sample.passes else "DIFFER"
     return (
-        f"Sample: {counted(sample.policies, 'policy', 'policies')} valued a second time by the plain implementation "
-        f"{verdict}; largest difference {sample.largest_difference:.2e} {report.currency}."
+        f"Sample: {counted(sample.policies, 'policy', 'policies')} valued a second time by the plain "
+        f"implementation {verdict}; largest difference {sample.largest_difference:.2e} {report.currency}."
     )
 
 

@@ -18,9 +18,9 @@ class ExplainError(ValueError):
 def explain(run: Path, policy_id: str) -> str:
     """Return the working of a policy as text.
 
-    Raises DocumentError and ExtractError for wrong input, ExplainError if the policy is not in the extract, is
-    there more than once, or is of a product without a design; and what ``working`` raises where it cannot
-    be valued.
+    Raises DocumentError and ExtractError for wrong input, ExplainError if the policy is not in the extract,
+    is there more than once, or is of a product without a design; and what ``working`` raises where it
+    cannot be valued.
     """
     prepared = prepare(run)
     policy = find_policy(prepared.extract, policy_id)

@@ -12,7 +12,7 @@ PACKAGES = ("assumptions", "portfolios", "projection", "reports")
 
 
 def strangers(root: Path | None = None) -> list[str]:
-    """Return a plain sentence for each package that does not come from ``root``, by default this installation."""
+    """Return a sentence for each package that does not come from ``root``, by default this installation."""
     root = root or Path(__file__).resolve().parent.parent
     return [said for name in PACKAGES if (said := _stranger(name, root))]
 

@@ -55,11 +55,16 @@ def _bars(report: Report) -> Markup:
     titles = {design["code"]: design["title"] for design in report.record["designs"]}
     named = report.bar_group == "product"
     labelled = [(_label(name, titles.get(name, "") if named else ""), value) for name, value in rows]
-    return Markup(bar_chart(f"Reserve by {words(report.bar_group or '')}", labelled, report.currency, report.decimals))
+    return Markup(
+        bar_chart(f"Reserve by {words(report.bar_group or '')}", labelled, report.currency, report.decimals)
+    )
 
 
 def _label(code: str, title: str) -> str:
-    return f"{title} ({code})" if title and len(title) + len(code) < 32 else code if not title else f"{code} {title}"
+    """Return the title of a design, with its code where the title does not already say it."""
+    if not title:
+        return code
+    return title if code.casefold() in title.casefold() else f"{code} {title}"
 
 
 def _run_off(report: Report) -> Markup:

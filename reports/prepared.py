@@ -57,7 +57,9 @@ class Prepared:
         now = _stamps(self.extract, self.folder)
         for path, stamp in self.stamps.items():
             if now.get(path) != stamp:
-                raise DocumentError(f"{path}: changed while the run was reading it; run again when it is at rest")
+                raise DocumentError(
+                    f"{path}: changed while the run was reading it; run again when it is at rest"
+                )
 
 
 def prepare(run: Path) -> Prepared:
@@ -74,7 +76,10 @@ def prepare(run: Path) -> Prepared:
         ("run document", run.name),
         *(("design", design) for design in _design_names(document.designs, designs_path)),
         ("basis", document.basis),
-        *(("table of the basis", os.path.join(os.path.dirname(document.basis), name)) for name in basis.files),
+        *(
+            ("table of the basis", os.path.join(os.path.dirname(document.basis), name))
+            for name in basis.files
+        ),
     ]
     sealed = [_sealed(role, os.path.normpath(path), folder) for role, path in named]
     extract = open_extract(document.extract, folder)

@@ -5,7 +5,7 @@ from __future__ import annotations
 import sys
 import time
 from contextlib import AbstractContextManager
-from datetime import datetime, timezone
+from datetime import UTC, datetime
 from types import TracebackType
 from typing import Any, TextIO
 
@@ -31,9 +31,10 @@ class LogLines(AbstractContextManager["LogLines"]):
         self._last = now
         rate = done / (now - self._start)
         left = f", about {seconds((total - done) / rate)} left" if rate > 0 and total > done else ""
-        moment = datetime.now(timezone.utc).strftime("%Y-%m-%dT%H:%M:%SZ")
+        moment = datetime.now(UTC).strftime("%Y-%m-%dT%H:%M:%SZ")
         print(
-            f"{moment}  {self._what}: {count(done)} of {count(total)} policies, {count(round(rate))} a second{left}",
+            f"{moment}  {self._what}: {count(done)} of {count(total)} policies, "
+            f"{count(round(rate))} a second{left}",
             file=self._stream,
             flush=True,
         )

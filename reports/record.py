@@ -15,7 +15,7 @@ import sys
 from collections import Counter
 from collections.abc import Iterable
 from dataclasses import asdict
-from datetime import datetime, timezone
+from datetime import UTC, datetime
 from importlib import metadata
 from pathlib import Path, PurePath
 from typing import Any
@@ -28,7 +28,17 @@ from .prepared import Input, Prepared
 from .sealed_files import WrittenFile
 
 FORMAT = 1
-_PACKAGES = ("duecourse", "numpy", "numba", "llvmlite", "pyarrow", "pydantic", "defusedxml", "jinja2", "xlsxwriter")
+_PACKAGES = (
+    "duecourse",
+    "numpy",
+    "numba",
+    "llvmlite",
+    "pyarrow",
+    "pydantic",
+    "defusedxml",
+    "jinja2",
+    "xlsxwriter",
+)
 _SEAL = b',\n  "seal": "'
 _END = b'"\n}\n'
 
@@ -55,7 +65,7 @@ def build_record(
         "python": f"{platform.python_implementation()} {platform.python_version()}",
         "platform": f"{platform.system()} {platform.machine()}",
         "inputs_from": from_folder_to(out, str(prepared.folder)),
-        "inputs": [_input(item) for item in prepared.sources(digests)],
+        "inputs": [_without_none(item) for item in prepared.sources(digests)],
         "settings": document.model_dump(mode="json", by_alias=True),
         "conventions": [{"matter": matter, "rule": rule} for matter, rule in outcome.conventions],
         "basis": {
@@ -68,7 +78,9 @@ def build_record(
             for design, digest in zip(prepared.designs, prepared.design_digests, strict=True)
         ],
         "control": [_control(total, outcome.settings.decimals) for total in outcome.control],
-        "totals": {name: decimal_text(minor, outcome.settings.decimals) for name, minor in outcome.total.items()},
+        "totals": {
+            name: decimal_text(minor, outcome.settings.decimals) for name, minor in outcome.total.items()
+        },
         "exceptions_by_reason": reasons(outcome),
         "sample": {**asdict(outcome.sample), "passes": outcome.sample.passes},
         "counts": dict(outcome.counts),
@@ -78,13 +90,15 @@ def build_record(
     }
 
 
-def complete(record: JSON, outputs: Iterable[WrittenFile], timings: dict[str, float], finished: datetime) -> JSON:
-    """Return the record of a finished run: with its outputs, all timings and the time that it was finished."""
+def complete(
+    record: JSON, outputs: Iterable[WrittenFile], timings: dict[str, float], finished: datetime
+) -> JSON:
+    """Return the record of a finished run: with its outputs, all timings and the time of its end."""
     return record | {
         "status": "complete",
         "finished": stamp(finished),
         "timings": {name: round(taken, 4) for name, taken in timings.items()},
-        "outputs": [asdict(file) for file in outputs],
+        "outputs": [_without_none(file) for file in outputs],
     }
 
 
@@ -126,7 +140,7 @@ def versions() -> dict[str, str]:
 
 def stamp(moment: datetime) -> str:
     """Return a moment in ISO 8601, UTC, to the second."""
-    return moment.astimezone(timezone.utc).strftime("%Y-%m-%dT%H:%M:%SZ")
+    return moment.astimezone(UTC).strftime("%Y-%m-%dT%H:%M:%SZ")
 
 
 def command_line() -> str:
@@ -135,7 +149,7 @@ def command_line() -> str:
 
 
 def from_folder_to(out: str, folder: str) -> str:
-    """Return the way from the run folder to the run document's folder, or '' if it would tell more than was typed."""
+    """Return the way from the run folder to the run document's folder; '' if it tells more than was typed."""
     try:
         way = os.path.relpath(folder, out)
     except ValueError:  # pragma: no cover - other drive
@@ -156,7 +170,7 @@ def _quoted(word: str) -> str:
     return f"'{word}'" if " " in word else word
 
 
-def _input(item: Input) -> JSON:
+def _without_none(item: Input | WrittenFile) -> JSON:
     return {name: value for name, value in asdict(item).items() if value is not None}
 
 

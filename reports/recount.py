@@ -80,7 +80,8 @@ def _against_totals(path: Path, sums: dict[Key, Sums], groups: list[str], decima
         }
         for name, value in said.items():
             if value != found[name]:
-                yield f"totals.parquet: {_place(groups, key)}{name} is {value}, the policies add up to {found[name]}"
+                where = f"totals.parquet: {_place(groups, key)}{name}"
+                yield f"{where} is {value}, the policies add up to {found[name]}"
     for key in left:
         yield f"totals.parquet: {_place(groups, key)}is missing, though there are policies of it"
 
@@ -97,9 +98,7 @@ def _against_record(record: JSON, sums: dict[Key, Sums], decimals: int) -> Itera
 def _against_exceptions(path: Path, record: JSON, valued: int) -> Iterator[str]:
     exceptions = pq.read_table(path, columns=["reason"])
     for total in record["control"]:
-        read, kept, left_out = (
-            minor_units(total[name], 4) for name in ("read", "valued", "exceptions")
-        )
+        read, kept, left_out = (minor_units(total[name], 4) for name in ("read", "valued", "exceptions"))
         if read != kept + left_out:
             yield f"run.json: the gate of {total['name']} does not close"
     policies = record["control"][0]
@@ -117,4 +116,6 @@ def _against_exceptions(path: Path, record: JSON, valued: int) -> Iterator[str]:
 
 
 def _place(groups: list[str], key: Key) -> str:
-    return ", ".join(f"{name} {value}" for name, value in zip(groups, key, strict=True)) + (": " if groups else "")
+    return ", ".join(f"{name} {value}" for name, value in zip(groups, key, strict=True)) + (
+        ": " if groups else ""
+    )

@@ -6,11 +6,13 @@ from collections import defaultdict
 from dataclasses import dataclass
 from functools import cached_property
 
-from projection.results import JSON, PARTS, Outcome
+from projection.results import JSON, Outcome
 
 from .figures import money, shown, words
 from .record import is_count
 
+PARTS = ("benefit", "expense", "commission", "premium")
+"""Parts of the cash flows in the order that they are shown."""
 
 
 @dataclass(frozen=True)
@@ -116,7 +118,9 @@ class Report:
         for row in self._yearly_rows:
             table[row["year"]][row["part"], row["stream"], row["direction"]] += row["amount"]
         keys = {key for row in table.values() for key in row}
-        return sorted(keys, key=lambda key: (_order(key[0]), key)), {year: dict(table[year]) for year in sorted(table)}
+        return sorted(keys, key=lambda key: (_order(key[0]), key)), {
+            year: dict(table[year]) for year in sorted(table)
+        }
 
     @cached_property
     def _yearly_rows(self) -> list[JSON]:

@@ -6,7 +6,8 @@ from collections.abc import Callable
 from concurrent.futures import ThreadPoolExecutor
 from contextlib import AbstractContextManager
 from dataclasses import replace
-from datetime import datetime, timezone
+from datetime import UTC, datetime
+from importlib import import_module
 from pathlib import Path
 from typing import Any
 
@@ -39,11 +40,12 @@ def reserve_run(
     Raises DocumentError and ExtractError for wrong input, RunFolderError where the folder cannot be written,
     and RunStopped where the run must not go on.
     """
-    started, watch = datetime.now(timezone.utc), Stopwatch()
+    started, watch = datetime.now(UTC), Stopwatch()
     with RunFolder(out, replace_finished) as folder, ThreadPoolExecutor(1) as beside:
         with watch.phase("reading documents"):
             prepared = prepare(run)
         digests = beside.submit(prepared.extract.digests)
+        beside.submit(_load_writers, workbook)
         outcome, files = _value(prepared, folder.path, progress_on, watch, threads)
         with watch.phase("sealing the extract"):
             sealed = digests.result()
@@ -52,7 +54,7 @@ def reserve_run(
             files += write_tables(folder.path, outcome)
         record = build_record(prepared, outcome, sealed, command or command_line(), str(out), started)
         files += write_reports(folder.path, Report(_timed(outcome, watch), record), watch, workbook)
-        record = complete(record, files, _timed(outcome, watch).timings, datetime.now(timezone.utc))
+        record = complete(record, files, _timed(outcome, watch).timings, datetime.now(UTC))
         write_sealed(folder.path, RECORD, sealed_text(record))
         folder.finish()
     return Report(_timed(outcome, watch), record)
@@ -110,6 +112,13 @@ def write_reports(folder: Path, report: Report, watch: Stopwatch, workbook: bool
         with watch.phase("workbook"):
             files.append(write_sealed(folder, "report.xlsx", workbook_bytes(report)))
     return files
+
+
+def _load_writers(workbook: bool) -> None:
+    """Import what page and workbook need while the engine computes."""
+    import_module(".page", __package__)
+    if workbook:
+        import_module(".workbook", __package__)
 
 
 def _timed(outcome: Outcome, watch: Stopwatch) -> Outcome:

@@ -1,31 +1,28 @@
 """The run folder: there complete, or not there at all.
 
-A run writes into a hidden folder beside its target, ``.NAME.unfinished-XXXXXXXX``, and renames it when all is
-written and on the disk. Killed at any moment it leaves at most that hidden folder, which the next run with the
-same target removes. A folder that is to be replaced is set aside as ``.NAME.replaced-XXXXXXXX`` for the moment
-between two renames; the next run puts it back if the new one never arrived.
+A run writes into a hidden folder beside its target, ``.NAME.unfinished-XXXXXXXX``, and renames it when all
+is written and on the disk. Killed at any moment it leaves at most that hidden folder, which the next run with
+the same target removes. A folder that is to be replaced is set aside as ``.NAME.replaced-XXXXXXXX`` for the
+moment between two renames; the next run puts it back if the new one never arrived.
 """
 
 from __future__ import annotations
 
 import contextlib
-import errno
 import os
 import secrets
 import shutil
 import time
-from collections.abc import Iterator
 from pathlib import Path
 from types import TracebackType
+
+from .disk import RunFolderError, is_about, plain, plainly, sync
+from .locks import lock_folder, no_locks, unlock
 
 RECORD = "run.json"
 """Name of the record; a folder that holds one is a finished run."""
 
 _STALE_SECONDS = 24 * 3600.0
-
-
-class RunFolderError(ValueError):
-    """The run folder cannot be written, or must not be: says which folder, why and what to do."""
 
 
 class RunFolder:
@@ -47,7 +44,7 @@ class RunFolder:
         parent = self.target.parent
         if self.target.name in ("", ".", ".."):
             raise RunFolderError(f"{self.target}: give the run folder a name of its own")
-        with _plainly(self.target):
+        with plainly(self.target):
             self._made = _make_parents(parent)
             clean_leftovers(self.target)
             check_target(self.target, self.replace)
@@ -60,13 +57,17 @@ class RunFolder:
         if not self._finished:
             shutil.rmtree(self.path, ignore_errors=True)
             _remove_empty(self._made)
-        _unlock(self._lock)
-        if isinstance(error, OSError) and not isinstance(error, RunFolderError) and _about(error, self.path):
-            raise RunFolderError(_plain(error, self.target)) from error
+        unlock(self._lock)
+        if (
+            isinstance(error, OSError)
+            and not isinstance(error, RunFolderError)
+            and is_about(error, self.path)
+        ):
+            raise RunFolderError(plain(error, self.target)) from error
 
     def finish(self) -> None:
         """Make sure that everything is on the disk, then give the folder its name."""
-        with _plainly(self.target):
+        with plainly(self.target):
             for folder in {self.path, *(entry.parent for entry in self.path.rglob("*"))}:
                 sync(folder)
             check_target(self.target, self.replace)
@@ -90,7 +91,7 @@ class RunFolder:
 
     def _rename(self) -> None:
         if os.name == "nt":  # pragma: no cover - Windows renames neither locked folders nor onto empty ones
-            _unlock(self._lock)
+            unlock(self._lock)
             self._lock = None
             if self.target.is_dir():
                 self.target.rmdir()
@@ -107,10 +108,12 @@ def check_target(target: Path, replace: bool) -> None:
         return
     if not (target / RECORD).is_file():
         raise RunFolderError(
-            f"{target}: the folder is not empty and is not a finished run (it holds no {RECORD}); choose another name"
+            f"{target}: is not empty and not a finished run (it holds no {RECORD}); choose another name"
         )
     if not replace:
-        raise RunFolderError(f"{target}: holds a finished run; choose another name, or say --replace to replace it")
+        raise RunFolderError(
+            f"{target}: holds a finished run; choose another name, or say --replace to replace it"
+        )
 
 
 def clean_leftovers(target: Path) -> list[str]:
@@ -126,10 +129,10 @@ def clean_leftovers(target: Path) -> list[str]:
             aside.rename(target)
         done.append(aside.name)
     for folder in sorted(target.parent.glob(f".{glob_escape(target.name)}.unfinished-*")):
-        lock = _lock(folder)
-        if lock is not None or (_no_locks() and _stale(folder)):
+        lock = lock_folder(folder)
+        if lock is not None or (no_locks() and _stale(folder)):
             shutil.rmtree(folder, ignore_errors=True)
-            _unlock(lock)
+            unlock(lock)
             done.append(folder.name)
     return done
 
@@ -139,30 +142,15 @@ def glob_escape(name: str) -> str:
     return "".join(f"[{letter}]" if letter in "*?[" else letter for letter in name)
 
 
-def sync(path: Path) -> None:
-    """Have the operating system put a file or folder on the disk; folders are skipped where it cannot."""
-    if os.name == "nt" and path.is_dir():  # pragma: no cover
-        return
-    descriptor = os.open(path, os.O_RDONLY)
-    try:
-        os.fsync(descriptor)
-    except OSError as error:
-        # Some network file systems know no fsync of folders; the rename is still atomic there.
-        if error.errno not in (errno.EINVAL, errno.ENOTSUP) or not path.is_dir():
-            raise
-    finally:
-        os.close(descriptor)
-
-
 def _new_folder(target: Path) -> tuple[Path, int | None]:
     while True:
         path = target.with_name(f".{target.name}.unfinished-{secrets.token_hex(4)}")
         path.mkdir()
-        lock = _lock(path)
+        lock = lock_folder(path)
         # Between mkdir and lock another run may have taken the folder for a leftover.
-        if path.is_dir() and (lock is not None or _no_locks()):
+        if path.is_dir() and (lock is not None or no_locks()):
             return path, lock
-        _unlock(lock)
+        unlock(lock)
 
 
 def _make_parents(parent: Path) -> list[Path]:
@@ -179,75 +167,5 @@ def _remove_empty(folders: list[Path]) -> None:
             folder.rmdir()
 
 
-def _no_locks() -> bool:
-    try:
-        import fcntl  # noqa: F401
-    except ImportError:  # pragma: no cover - Windows
-        return True
-    return False
-
-
-def _lock(folder: Path) -> int | None:
-    """Lock a folder for as long as this process lives; None if another process holds it."""
-    if _no_locks():  # pragma: no cover - Windows
-        return None
-    import fcntl
-
-    try:
-        descriptor = os.open(folder, os.O_RDONLY)
-    except OSError:
-        return None
-    try:
-        fcntl.flock(descriptor, fcntl.LOCK_EX | fcntl.LOCK_NB)
-    except OSError:
-        os.close(descriptor)
-        return None
-    return descriptor
-
-
-def _unlock(lock: int | None) -> None:
-    if lock is not None:
-        with contextlib.suppress(OSError):
-            os.close(lock)
-
-
 def _stale(folder: Path) -> bool:  # pragma: no cover - only where folders cannot be locked
     return time.time() - folder.stat().st_mtime > _STALE_SECONDS
-
-
-def _about(error: OSError, path: Path) -> bool:
-    # Errors without a file name come from writes to an open file: the disk is full, or a quota is.
-    return error.filename is None or str(error.filename).startswith(str(path))
-
-
-def _plain(error: OSError, target: Path) -> str:
-    said = {
-        errno.ENOSPC: "the disk is full",
-        errno.EDQUOT: "the disk quota is used up",
-        errno.EFBIG: "a file would become larger than is allowed here",
-        errno.EROFS: "the disk can only be read",
-        errno.EACCES: "writing there is not allowed",
-        errno.EPERM: "writing there is not allowed",
-    }.get(error.errno or 0, error.strerror or str(error))
-    return f"{target}: cannot be written: {said}; nothing was left behind"
-
-
-@contextlib.contextmanager
-def _plainly(target: Path) -> Iterator[None]:
-    try:
-        yield
-    except OSError as error:
-        raise RunFolderError(_plain(error, target)) from error
-
-
-def write_text(path: Path, text: str) -> None:
-    """Write a text file as a whole or not at all. Raises RunFolderError."""
-    beside = path.with_name(f".{path.name}.unfinished-{secrets.token_hex(4)}")
-    with _plainly(path):
-        try:
-            beside.write_text(text, encoding="utf-8")
-            sync(beside)
-            beside.replace(path)
-        except BaseException:
-            beside.unlink(missing_ok=True)
-            raise

@@ -13,7 +13,7 @@ _BLOCK = 1 << 20
 
 @dataclass(frozen=True)
 class WrittenFile:
-    """A file of the run folder: path with forward slashes inside the folder, bytes, SHA-256 and rows if a table."""
+    """A file of the run folder: its path in it (with /), SHA-256, size, and rows if it is a table."""
 
     path: str
     sha256: str

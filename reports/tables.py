@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import queue
 import threading
 from pathlib import Path
@@ -55,11 +56,13 @@ class PolicyWriter:
 
     Called as a sink from the thread that values; writing, compressing and hashing happen in a thread of its
     own, behind a queue of a few chunks, so that memory stays flat. Files hold 1,000,000 rows and row groups
-    262,144 whatever the chunks, so that the bytes do not depend on them. An error of the writing thread is raised
-    by the next call.
+    262,144 whatever the chunks, so that the bytes do not depend on them. An error of the writing thread is
+    raised by the next call.
     """
 
-    def __init__(self, folder: Path, rows_a_file: int = ROWS_A_FILE, rows_a_group: int = ROWS_A_GROUP) -> None:
+    def __init__(
+        self, folder: Path, rows_a_file: int = ROWS_A_FILE, rows_a_group: int = ROWS_A_GROUP
+    ) -> None:
         self.files: list[WrittenFile] = []
         self.rows = 0
         self._folder = folder
@@ -115,8 +118,7 @@ class PolicyWriter:
                 self._attempt(chunk)
         if self._error is None and not self._stopped:
             self._attempt(None)
-        if self._file is not None:
-            self._file.abandon()
+        self._abandon()
 
     def _attempt(self, chunk: pa.Table | None) -> None:
         try:
@@ -156,6 +158,14 @@ class PolicyWriter:
         self._rows_in_file += group.num_rows
         if self._rows_in_file == self._rows_a_file:
             self._close_file()
+
+    def _abandon(self) -> None:
+        """Close a file that nobody will read."""
+        if self._writer is not None:
+            with contextlib.suppress(Exception):
+                self._writer.close()
+        if self._file is not None:
+            self._file.abandon()
 
     def _close_file(self) -> None:
         if self._writer is None or self._file is None:

@@ -18,7 +18,7 @@ from .sealed_files import digest_of
 
 @dataclass
 class Verified:
-    """What was found: ``faults`` make the folder false, ``notes`` could not be looked at, ``sound`` is in order."""
+    """What was found: ``faults`` are wrong, ``notes`` could not be looked at, ``sound`` is in order."""
 
     faults: list[str] = field(default_factory=list)
     notes: list[str] = field(default_factory=list)
@@ -33,8 +33,8 @@ class Verified:
 def verify(folder: Path, inputs: Path | None = None, look_at_inputs: bool = True) -> Verified:
     """Check a run folder: seals of the outputs, totals recomputed from the policies, the gate, the inputs.
 
-    inputs: where the run document's folder is now, if it has moved. Raises RecordError if the record is missing
-    or beyond reading.
+    inputs: where the run document's folder is now, if it has moved. Raises RecordError if the record is
+    missing or beyond reading.
     """
     found = Verified()
     record, seal_holds = read_record(folder / RECORD)
@@ -45,7 +45,9 @@ def verify(folder: Path, inputs: Path | None = None, look_at_inputs: bool = True
     damaged = _check_outputs(folder, record, found)
     _check_strays(folder, record, found)
     if damaged:
-        found.notes.append("Totals were not recomputed, because files that they come from are damaged or missing.")
+        found.notes.append(
+            "Totals were not recomputed, because files that they come from are damaged or missing."
+        )
     else:
         _check_sums(recount(folder, record), record, found)
     if look_at_inputs:
@@ -63,7 +65,9 @@ def _check_outputs(folder: Path, record: JSON, found: Verified) -> bool:
             damaged = damaged or output["path"].endswith(".parquet")
         else:
             sound += 1
-    found.sound.append(f"{counted(sound, 'file')} of {len(record['outputs'])} match the record by size and SHA-256.")
+    found.sound.append(
+        f"{counted(sound, 'file')} of {len(record['outputs'])} match the record by size and SHA-256."
+    )
     return damaged
 
 
@@ -99,8 +103,8 @@ def _check_sums(counted_again: Recounted, record: JSON, found: Verified) -> None
     if not counted_again.faults:
         reserve = record["totals"].get("reserve", "")
         found.sound.append(
-            f"Totals recomputed from {counted(counted_again.policies, 'policy', 'policies')} agree in every group; "
-            f"reserve {reserve}."
+            f"Totals recomputed from {counted(counted_again.policies, 'policy', 'policies')} agree in every "
+            f"group; reserve {reserve}."
         )
         found.sound.append("The in-force gate closes: read = valued + exceptions.")
 
@@ -110,9 +114,7 @@ def _check_inputs(folder: Path, record: JSON, inputs: Path | None, found: Verifi
     missing = sound = 0
     for item in record.get("inputs", []):
         path = (start or Path()) / item["path"]
-        if not item.get("sha256"):
-            missing += 1
-        elif (start is None and not path.is_absolute()) or not path.is_file():
+        if not item.get("sha256") or (start is None and not path.is_absolute()) or not path.is_file():
             missing += 1
         elif fault := _fault(path, item):
             found.faults.append(f"input {item['path']}: {fault}")

@@ -10,8 +10,8 @@ from .figures import words
 from .report import Report
 from .workbook_sheets import Formats, Table, put_table
 
-MOST_MONTHLY_CELLS = 30_000
-"""More would cost more time than a workbook is worth; all of it is in cash_flows.parquet."""
+MOST_MONTHS = 360
+"""Months shown; a workbook with more takes longer than it is worth."""
 
 Key = tuple[str, str, str]
 
@@ -23,11 +23,15 @@ def add_cash_flows(book: Any, report: Report, formats: Formats) -> Any:
     rows = []
     for year in report.years:
         cells = table.get(int(year.label), {})
-        rows.append([int(year.label), year.paid_out, year.paid_in, year.net, *(cells.get(key) for key in keys)])
+        rows.append(
+            [int(year.label), year.paid_out, year.paid_in, year.net, *(cells.get(key) for key in keys)]
+        )
     names = ["year", "paid out", "received", "out less in", *map(_name, keys)]
     plain = book.add_format({"num_format": "0", "align": "left"})
     layout = Table(names, [plain, *(formats.money for _ in names[1:])], [10, *(18 for _ in names[1:])])
-    note = f"Expected amounts in {report.currency} by calendar year, not discounted. Full detail is in cash_flows.parquet."
+    note = (
+        f"Expected amounts in {report.currency} by calendar year, not discounted; all in cash_flows.parquet."
+    )
     number = put_table(sheet, layout, rows, formats, note=note)
     sheet.freeze_panes(2, 1)
     return _chart(book, sheet, number, report) if number else None
@@ -47,7 +51,11 @@ def _chart(book: Any, sheet: Any, rows: int, report: Report) -> Any:
         )
     chart.set_title({"name": "Expected cash flows by calendar year, undiscounted", "name_font": {"size": 12}})
     chart.set_y_axis(
-        {"name": report.currency, "num_format": "#,##0", "major_gridlines": {"visible": True, "line": {"color": "#d5d9dd"}}}
+        {
+            "name": report.currency,
+            "num_format": "#,##0",
+            "major_gridlines": {"visible": True, "line": {"color": "#d5d9dd"}},
+        }
     )
     chart.set_x_axis({"interval_unit": max(1, rows // 16)})
     chart.set_legend({"position": "bottom"})
@@ -56,29 +64,34 @@ def _chart(book: Any, sheet: Any, rows: int, report: Report) -> Any:
 
 
 def add_monthly(book: Any, report: Report, formats: Formats) -> None:
-    """Add the sheet by calendar month and stream, over all products, as far as it is small enough."""
+    """Add the sheet by calendar month and part, over all products and streams."""
     sheet = book.add_worksheet("Monthly")
-    keys = report.stream_years[0]
     table = _by_month(report)
-    most = max(1, MOST_MONTHLY_CELLS // max(1, len(keys)))
+    keys = sorted({key for row in table.values() for key in row})
     months = sorted(table)
-    rows = [[_serial(month), *(table[month].get(key) for key in keys)] for month in months[:most]]
+    rows = [[_serial(month), *(table[month].get(key) for key in keys)] for month in months[:MOST_MONTHS]]
     layout = Table(
-        ["month", *map(_name, keys)],
+        ["month", *(f"{words(part)} ({direction})" for part, direction in keys)],
         [formats.month, *(formats.money for _ in keys)],
         [10, *(18 for _ in keys)],
     )
-    cut = f" The first {most:,} of {len(months):,} months; all are in cash_flows.parquet." if len(months) > most else ""
-    put_table(sheet, layout, rows, formats, note=f"Expected amounts in {report.currency} by calendar month.{cut}")
+    cut = (
+        f"the first {MOST_MONTHS} of {len(months):,} months"
+        if len(months) > MOST_MONTHS
+        else "not discounted"
+    )
+    note = f"Expected amounts in {report.currency} by calendar month, {cut}; all in cash_flows.parquet."
+    put_table(sheet, layout, rows, formats, note=note)
     sheet.freeze_panes(2, 1)
 
 
-def _by_month(report: Report) -> dict[date, dict[Key, float]]:
+def _by_month(report: Report) -> dict[date, dict[tuple[str, str], float]]:
     flows = report.outcome.cash_flows
-    summed = flows.group_by(["month", "part", "stream", "direction"]).aggregate([("amount", "sum")])
-    table: dict[date, dict[Key, float]] = defaultdict(dict)
-    for row in summed.to_pylist():
-        table[row["month"]][row["part"], row["stream"], row["direction"]] = float(row["amount_sum"])
+    summed = flows.group_by(["month", "part", "direction"]).aggregate([("amount", "sum")]).to_pydict()
+    table: dict[date, dict[tuple[str, str], float]] = defaultdict(dict)
+    columns = [summed[name] for name in ("month", "part", "direction", "amount_sum")]
+    for month, part, direction, amount in zip(*columns, strict=True):
+        table[month][part, direction] = float(amount)
     return table
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from typing import Any
@@ -25,6 +26,7 @@ class Formats:
     top: Any
     wrapped: Any
     note: Any
+    beside: Any
 
 
 @dataclass(frozen=True)
@@ -42,7 +44,9 @@ def formats_for(book: Any, decimals: int) -> Formats:
     return Formats(
         title=book.add_format({"bold": True, "font_size": 14}),
         head=book.add_format({"bold": True, "bottom": 1, "text_wrap": True, "valign": "bottom"}),
-        head_right=book.add_format({"bold": True, "bottom": 1, "align": "right", "text_wrap": True, "valign": "bottom"}),
+        head_right=book.add_format(
+            {"bold": True, "bottom": 1, "align": "right", "text_wrap": True, "valign": "bottom"}
+        ),
         money=book.add_format({"num_format": money}),
         money_head=book.add_format({"num_format": money, "bold": True, "top": 1}),
         whole=book.add_format({"num_format": "#,##0"}),
@@ -51,10 +55,13 @@ def formats_for(book: Any, decimals: int) -> Formats:
         top=book.add_format({"valign": "top", "text_wrap": True}),
         wrapped=book.add_format({"valign": "top", "text_wrap": True}),
         note=book.add_format({"italic": True, "font_color": "#5c6670"}),
+        beside=book.add_format({"indent": 1}),
     )
 
 
-def put_table(sheet: Any, table: Table, rows: Iterable[Sequence[Any]], formats: Formats, note: str = "") -> int:
+def put_table(
+    sheet: Any, table: Table, rows: Iterable[Sequence[Any]], formats: Formats, note: str = ""
+) -> int:
     """Write a note, a frozen head and rows; return the number of rows. None leaves a cell empty."""
     text(sheet, 0, 0, note, formats.note)
     for column, (name, shape, width) in enumerate(zip(table.names, table.formats, table.widths, strict=True)):
@@ -67,6 +74,7 @@ def put_table(sheet: Any, table: Table, rows: Iterable[Sequence[Any]], formats: 
     sheet.set_paper(9)
     sheet.fit_to_pages(1, 0)
     sheet.set_footer("&L&A&R&P / &N")
+    wrapped = [i for i, shape in enumerate(table.formats) if shape in (formats.wrapped, formats.top)]
     number = 0
     for number, row in enumerate(rows, 1):
         for column, value in enumerate(row):
@@ -74,9 +82,17 @@ def put_table(sheet: Any, table: Table, rows: Iterable[Sequence[Any]], formats: 
                 text(sheet, number + 1, column, value, table.formats[column])
             elif value is not None:
                 sheet.write_number(number + 1, column, value, table.formats[column])
+        if wrapped:
+            # Not every program makes room for wrapped text by itself.
+            sheet.set_row(number + 1, 15 * max(_lines(row[i], table.widths[i]) for i in wrapped))
+    sheet.print_area(0, 0, number + 1, len(table.names) - 1)
     if number:
         sheet.autofilter(1, 0, number + 1, len(table.names) - 1)
     return number
+
+
+def _lines(value: object, width: float) -> int:
+    return max(1, math.ceil(len(str(value)) * 1.08 / width))
 
 
 def text(sheet: Any, row: int, column: int, value: str, shape: Any = None) -> None:

@@ -6,11 +6,12 @@ import time
 from pathlib import Path
 
 import pytest
-from assumptions import table_files, xtbml_stream
-from assumptions.tables import TableError, read_rates
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 from table_writing import by_age, document, save
+
+from assumptions import table_files, xtbml_stream
+from assumptions.tables import TableError, read_rates
 
 GOOD = document(by_age({60: 0.5, 61: 1}))
 BODY = GOOD.split("\n", 1)[1]
@@ -19,7 +20,8 @@ LAUGHS = "".join(f'<!ENTITY l{n} "{f"&l{n - 1};" * 10}">' for n in range(1, 10))
 HOSTILE = {
     "billion laughs": f'<!DOCTYPE XTbML [<!ENTITY l0 "ha">{LAUGHS}]>' + BODY.replace("0.5", "&l9;"),
     "quadratic": f'<!DOCTYPE XTbML [<!ENTITY a "{"a" * 50_000}">]>' + BODY.replace("0.5", "&a;" * 50_000),
-    "external entity": '<!DOCTYPE XTbML [<!ENTITY secret SYSTEM "file://{secret}">]>' + BODY.replace("0.5", "&secret;"),
+    "external entity": '<!DOCTYPE XTbML [<!ENTITY secret SYSTEM "file://{secret}">]>'
+    + BODY.replace("0.5", "&secret;"),
     "parameter entity": '<!DOCTYPE XTbML [<!ENTITY % more SYSTEM "file://{secret}"> %more;]>' + BODY,
     "external document type": '<!DOCTYPE XTbML SYSTEM "file://{secret}">' + BODY,
     "plain document type": "<!DOCTYPE XTbML>" + BODY,
@@ -31,7 +33,9 @@ def test_document_types_and_entities_are_refused(tmp_path: Path, name: str) -> N
     secret = save(tmp_path, "0.123456", "secret.txt")
     path = save(tmp_path, HOSTILE[name].replace("{secret}", str(secret)))
     started = time.perf_counter()
-    with pytest.raises(TableError, match="document types, entities and external references are not read") as caught:
+    with pytest.raises(
+        TableError, match="document types, entities and external references are not read"
+    ) as caught:
         read_rates(path)
     assert time.perf_counter() - started < 2
     assert str(path) in str(caught.value)
@@ -68,23 +72,19 @@ def test_broken_files(tmp_path: Path, text: str | bytes, said: str) -> None:
 
 
 def test_depth_is_bounded(tmp_path: Path) -> None:
-    for opening in ("<a>", '<Table><Values><Axis t="1">', "<Table><MetaData><AxisDef>"):
-        path = save(tmp_path, "<XTbML>" + opening * 200_000)
-        with pytest.raises(TableError, match="deep, the limit|among the values"):
+    for opening in ("<a>", "<AxisDef>"):
+        path = save(tmp_path, "<XTbML><Table><MetaData>" + opening * 200_000)
+        with pytest.raises(TableError, match="elements lie more than 24 deep"):
             read_rates(path)
+    nested = "".join(f'<Axis t="{tick}">' for tick in range(30))
+    with pytest.raises(TableError, match="elements lie more than 24 deep"):
+        read_rates(save(tmp_path, "<XTbML><Table><Values>" + nested))
     # Elsewhere than among the values, strange elements within the limit are passed over.
     fine = GOOD.replace("<MetaData>", "<Extra>" * 20 + "</Extra>" * 20 + "<MetaData>")
     assert read_rates(save(tmp_path, fine)).rate(60, 0) == 0.5
 
 
-def test_size_text_and_number_of_values_are_bounded(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
-    long = GOOD.replace("Invented", "x" * (xtbml_stream.MAX_TEXT + 1))
-    with pytest.raises(TableError, match="a text of more than 200000 characters"):
-        read_rates(save(tmp_path, long))
-    wide = {tick: f'<Axis t="{tick}"><Axis><Y t="{tick}">0</Y></Axis></Axis>' for tick in range(1001)}
-    sparse = GOOD.replace("<Axis>", "".join(wide.values()) + "<Axis>")
-    with pytest.raises(TableError, match="values along 1 and 2 axes"):
-        read_rates(save(tmp_path, sparse))
+def test_size_and_number_of_values_are_bounded(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(xtbml_stream, "MAX_VALUES", 1)
     with pytest.raises(TableError, match="more than 1 values"):
         read_rates(save(tmp_path, GOOD))
@@ -118,9 +118,10 @@ def test_a_damaged_file_is_read_or_refused_in_plain_words(tmp_path: Path, data: 
             del content[place:]
         content = content or bytearray(b" ")
     path = save(tmp_path, bytes(content))
+    said = ""
     try:
         rates = read_rates(path)
     except TableError as fault:
-        assert str(path) in str(fault)
-    else:
-        assert 0 <= rates.rate(rates.first_age, 0) <= 1
+        said = str(fault)
+    # Anything but a rate or a TableError would have come through.
+    assert str(path) in said or 0 <= rates.rate(rates.first_age, 0) <= 1

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
+
 from assumptions.tables import RateTable, TableError
 
 ULTIMATE = np.array([0.01, 0.02, 0.03, 0.04, 1.0])
@@ -66,6 +67,21 @@ def test_a_gap_between_select_and_ultimate_rates_stays_a_gap() -> None:
         rates.rate(60, 2)
     with pytest.raises(TableError, match="duration 2"):
         rates.rates_from(60, 5)
+
+
+@pytest.mark.parametrize("entry_age", range(56, 67))
+@pytest.mark.parametrize("years", range(8))
+def test_a_row_of_rates_is_its_rates(entry_age: int, years: int) -> None:
+    late = RateTable("late", np.array([0.5, 1.0]), 64, np.array([[0.1, 0.2], [0.3, 0.4]]), 58)
+    for table in (plain(), select_and_ultimate(), late):
+        try:
+            one_by_one = [table.rate(entry_age, duration) for duration in range(years)]
+        except TableError as fault:
+            with pytest.raises(TableError) as caught:
+                table.rates_from(entry_age, years)
+            assert str(caught.value) == str(fault)  # noqa: PT017
+        else:
+            assert table.rates_from(entry_age, years).tolist() == one_by_one
 
 
 def test_survivors_are_the_products_of_survival() -> None:

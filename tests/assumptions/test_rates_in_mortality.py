@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
+
 from assumptions.mortality import MortalityRule, Rates, adjusted_rate
 from assumptions.tables import RateTable
 

@@ -10,11 +10,12 @@ import numpy as np
 import pyarrow as pa
 import pyarrow.parquet as pq
 import pytest
-from assumptions import table_files
-from assumptions.tables import TableError, read_curve, read_lapse, read_rates
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 from table_writing import save
+
+from assumptions import table_files
+from assumptions.tables import TableError, read_curve, read_lapse, read_rates
 
 SELECT = "age,select_0,select_1,ultimate\n60,0.1,0.2,\n61,0.3,0.4,\n62,0.5,0.6,0.7\n63,,0.8,1\n"
 
@@ -63,7 +64,10 @@ def test_select_columns_need_a_word_on_their_ages(tmp_path: Path) -> None:
     with pytest.raises(TableError, match=r"rates\.csv: select rates.*select_by = 'entry age'"):
         read_rates(path)
     # One select year has one meaning, and the ultimate column alone has no select rates.
-    assert read_rates(csv(tmp_path, "age,select_0,ultimate\n60,0.1,0.2\n61,0.3,1\n", "one.csv")).select_years == 1
+    assert (
+        read_rates(csv(tmp_path, "age,select_0,ultimate\n60,0.1,0.2\n61,0.3,1\n", "one.csv")).select_years
+        == 1
+    )
     assert read_rates(path, column="ultimate").ultimate.tolist() == [0.7, 1.0]
 
 
@@ -78,14 +82,14 @@ def test_select_columns_need_a_word_on_their_ages(tmp_path: Path) -> None:
         ("age;rate\n60;0,1\n", "not parted by commas"),
         ("age,rate\n60,0.1\n61,1.5\n", "line 3, column 'rate': rate 1.5 does not lie between 0 and 1"),
         ("age,rate\n60,-0.1\n", "line 2, column 'rate': rate -0.1 does not lie"),
-        ("age,rate\n60,nan\n", "line 2: column 'rate' is 'nan' is no number"),
+        ("age,rate\n60,nan\n", "line 2: column 'rate': 'nan' is no number"),
         ("age,rate\n60,inf\n", "'inf' is no number"),
         ("age,rate\n60,1e999\n", "'1e999' is no number"),
         ("age,rate\n60,1_0\n", "'1_0' is no number"),
         ("age,rate\n60,3%\n", "'3%' is no number"),
         ("age,rate\n60,=1/2\n", "'=1/2' is no number"),
-        ("age,rate\n60,\n", "line 2: column 'rate' is blank"),
-        ("age,rate\n,0.1\n", "line 2: column 'age' is blank"),
+        ("age,rate\n60,\n", "line 2: column 'rate': a blank cell"),
+        ("age,rate\n,0.1\n", "line 2: column 'age': a blank cell"),
         ("age,rate\n60,0.1\n\n62,0.2\n", "line 4: age 62 follows age 60"),
         ("age,rate\n60,0.1\n60,0.2\n", "line 3: age 60 follows age 60"),
         ("age,rate\n61,0.1\n60,0.2\n", "line 3: age 60 follows age 61"),
@@ -102,7 +106,10 @@ def test_select_columns_need_a_word_on_their_ages(tmp_path: Path) -> None:
         ("age,select_0,ultimate\n60,0.1,\n", "column 'ultimate' is blank"),
         ("age,select_0,ultimate\n60,,0.1\n", "column 'select_0' is blank"),
         ("age,select_0,ultimate\n60,7,0.1\n", "column 'select_0': rate 7"),
-        ("age,select_0,ultimate\n60,.1,.1\n61,.1,\n62,.1,1\n", "line 3: column 'ultimate' is blank at age 61"),
+        (
+            "age,select_0,ultimate\n60,.1,.1\n61,.1,\n62,.1,1\n",
+            "line 3: column 'ultimate' is blank at age 61",
+        ),
     ],
 )
 def test_faults_of_a_csv_file(tmp_path: Path, text: str, said: str) -> None:
@@ -147,7 +154,7 @@ def test_words_for_other_kinds_of_file_are_refused(tmp_path: Path) -> None:
 
 def test_parquet_of_several_types(tmp_path: Path) -> None:
     small = pa.array([Decimal("0.25"), Decimal("1.00")], pa.decimal128(5, 2))
-    for rate in ([0.25, 1], pa.array([0.25, 1], pa.float32()), small, ["0.25", "1"]):
+    for rate in ([0.25, 1], pa.array([0.25, 1], pa.float32()), small):
         path = parquet(tmp_path, {"Age ": pa.array([60, 61], pa.int8()), "rate": rate})
         assert read_rates(path).ultimate.tolist() == [0.25, 1.0]
     path = parquet(tmp_path, {"age": [60, 61], "select_0": [0.1, 0.2], "ultimate": [None, 1.0]})
@@ -158,12 +165,14 @@ def test_parquet_of_several_types(tmp_path: Path) -> None:
     ("columns", "said"),
     [
         ({"age": [60, 61], "rate": [0.1, 1.1]}, "row 2, column 'rate': rate 1.1"),
-        ({"age": [60, 61], "rate": [0.1, None]}, "row 2: column 'rate' is blank"),
-        ({"age": [60, 61], "rate": [0.1, float("nan")]}, "row 2: column 'rate' is 'nan'"),
+        ({"age": [60, 61], "rate": [0.1, None]}, "row 2: column 'rate': a blank cell"),
+        ({"age": [60, 61], "rate": [0.1, float("nan")]}, "row 2: column 'rate': 'nan'"),
         ({"age": [60, 62], "rate": [0.1, 0.2]}, "row 2: age 62 follows age 60"),
-        ({"age": [60], "rate": [True]}, "'True' is no number"),
-        ({"age": [60], "rate": [[0.1]]}, "'[0.1]' is no number"),
-        ({"age": [60], "x": [0.1]}, "no column 'rate'"),
+        ({"age": [60], "rate": [True]}, "column 'rate' holds bool, not numbers"),
+        ({"age": [60], "rate": [[0.1]]}, "column 'rate' holds list<element: double>, not numbers"),
+        ({"age": [60], "rate": ["0.1"]}, "column 'rate' holds string, not numbers; convert it"),
+        ({"age": [60], "x": [0.1]}, "no column 'rate', only age, x"),
+        ({"age": [60], "rate": [0.1], "Rate": [0.1]}, "column 'rate' is there twice"),
         ({"age": pa.array([], pa.int64()), "rate": pa.array([], pa.float64())}, "no rows"),
     ],
 )
@@ -180,7 +189,7 @@ def test_lapse_rates_by_policy_year(tmp_path: Path) -> None:
         ("year,rate\n0,0.1\n", "line 2: year 0 where 1 is due"),
         ("year,rate\n1,0.1\n3,0.1\n", "line 3: year 3 where 2 is due"),
         ("year,rate\n1,1.1\n", "line 2, column 'rate': rate 1.1"),
-        ("year,rate\n1,\n", "line 2: column 'rate' is blank"),
+        ("year,rate\n1,\n", "line 2: column 'rate': a blank cell"),
     ]:
         with pytest.raises(TableError, match=said):
             read_lapse(csv(tmp_path, text))
@@ -205,7 +214,9 @@ FOLDER = settings(max_examples=40, deadline=None, suppress_health_check=[HealthC
 
 @FOLDER
 @given(rates=RATES, first=st.integers(0, 90), ending=st.sampled_from(["\n", "\r\n"]))
-def test_written_rates_are_read_to_the_last_bit(tmp_path: Path, rates: list[float], first: int, ending: str) -> None:
+def test_written_rates_are_read_to_the_last_bit(
+    tmp_path: Path, rates: list[float], first: int, ending: str
+) -> None:
     ages = list(range(first, first + len(rates)))
     lines = ["age,rate", *(f"{age},{rate!r}" for age, rate in zip(ages, rates, strict=True))]
     for path in (csv(tmp_path, ending.join(lines)), parquet(tmp_path, {"age": ages, "rate": rates})):
@@ -235,3 +246,24 @@ def test_both_keyings_of_written_select_rates(
         if age >= years:
             assert entry.rate(first + age - years, years) == figures[age, years]
             assert attained.rate(first + age - years, years) == figures[age, years]
+
+
+@settings(max_examples=200, deadline=None, derandomize=True, suppress_health_check=list(HealthCheck))
+@given(data=st.data())
+def test_a_damaged_parquet_file_is_read_or_refused_in_plain_words(
+    tmp_path: Path, data: st.DataObject
+) -> None:
+    path = parquet(tmp_path, {"age": list(range(60, 80)), "rate": [0.1] * 20})
+    content = bytearray(path.read_bytes())
+    for _ in range(data.draw(st.integers(1, 3))):
+        content[data.draw(st.integers(0, len(content) - 1))] = data.draw(st.integers(0, 255))
+    path.write_bytes(
+        content[: data.draw(st.integers(0, len(content)))] if data.draw(st.booleans()) else content
+    )
+    said = ""
+    try:
+        rates = read_rates(path)
+    except TableError as fault:
+        said = str(fault)
+    # Anything but a rate or a TableError would have come through.
+    assert str(path) in said or 0 <= rates.rate(rates.first_age, 0) <= 1

@@ -7,11 +7,12 @@ from typing import Any
 
 import numpy as np
 import pytest
-from assumptions.tables import TableError, read_lapse, read_rates
-from assumptions.xtbml import read_xtbml
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 from table_writing import axis, by_age, by_age_and_duration, document, grid, line, save, table
+
+from assumptions.tables import TableError, read_lapse, read_rates
+from assumptions.xtbml import read_xtbml
 
 SELECT: dict[int, dict[int, Any]] = {60: {1: 0.1, 2: 0.2}, 61: {1: 0.3, 2: 0.4}, 62: {1: 0.5, 2: ""}}
 ULTIMATE: dict[int, Any] = {62: 0.7, 63: 0.8, 64: 1}
@@ -26,7 +27,11 @@ def test_an_aggregate_table(tmp_path: Path) -> None:
     rates = read_rates(path)
     assert rates.ultimate.tolist() == [0.25, 0.01, 1.0]
     assert (rates.first_age, rates.final_age, rates.closed, rates.select_years) == (60, 63, True, 0)
-    assert (rates.title, rates.kind, rates.reference) == ("Invented lives", "Insured Lives Mortality", "made up")
+    assert (rates.title, rates.kind, rates.reference) == (
+        "Invented lives",
+        "Insured Lives Mortality",
+        "made up",
+    )
 
 
 def test_select_and_ultimate_tables_are_taken_together(tmp_path: Path) -> None:
@@ -68,7 +73,9 @@ def test_one_table_of_several_by_number_and_by_title(tmp_path: Path) -> None:
     with pytest.raises(TableError, match=f"several tables; name one.*{listed}"):
         read_rates(path)
     for wanted in (0, 3, "work"):
-        with pytest.raises(TableError, match=f"no table with number or title '{wanted}'; there are: {listed}"):
+        with pytest.raises(
+            TableError, match=f"no table with number or title '{wanted}'; there are: {listed}"
+        ):
             read_rates(path, table=wanted)
     twins = save(tmp_path, document(by_age({60: 0.1}, "Work"), by_age({60: 0.2}, "work")))
     with pytest.raises(TableError, match="several tables with number or title 'work'"):
@@ -86,10 +93,9 @@ def test_select_or_ultimate_alone_by_number(tmp_path: Path) -> None:
 
 def test_one_select_year_in_a_table_by_age_alone(tmp_path: Path) -> None:
     said = by_age({60: 0.1, 61: 0.2}, "Minimum Select Age: 60"), by_age({61: 0.5, 62: 1}, "Ultimate")
-    duration = '<AxisDef id="Duration"><MinScaleValue>{0}</MinScaleValue><MaxScaleValue>{0}</MaxScaleValue></AxisDef>'
     beside = (
-        table(axis("Age") + duration.format(1), line({60: 0.1, 61: 0.2})),
-        table(axis("Age") + duration.format(2), line({61: 0.5, 62: 1})),
+        table(axis("Age") + axis("Duration", 1, 1), line({60: 0.1, 61: 0.2})),
+        table(axis("Age") + axis("Duration", 2, 2), line({61: 0.5, 62: 1})),
     )
     for pair in (said, beside):
         rates = read_rates(save(tmp_path, document(*pair)))
@@ -106,7 +112,9 @@ def test_axes_in_either_order_and_durations_from_0_or_1(tmp_path: Path) -> None:
         rates = read_rates(save(tmp_path, text))
         assert rates.select.tolist() == [[0.1, 0.2], [0.3, 0.4]]
     with pytest.raises(TableError, match=r"durations go 2, 3, not 1, 2, 3"):
-        read_rates(save(tmp_path, document(by_age_and_duration({60: {2: 0.1, 3: 0.2}}))), select_by="entry age")
+        read_rates(
+            save(tmp_path, document(by_age_and_duration({60: {2: 0.1, 3: 0.2}}))), select_by="entry age"
+        )
 
 
 def test_scaling_factors(tmp_path: Path) -> None:

@@ -16,13 +16,10 @@ from projection.documents import read_basis, read_designs, read_run
 
 OFFICE = Path(portfolios.demo_office.__file__).with_name("office")
 BASES = ("statutory", "best_estimate")
+SELECT = SelectFactor(factor=0.8, years=2)
 ASSURED = {
-    "assured_f": Law(
-        law="Makeham", A=0.0003, B=3.81e-6, c=1.1247, last_age=119, select={"factor": 0.8, "years": 2}
-    ),
-    "assured_m": Law(
-        law="Makeham", A=0.0004, B=7.6e-6, c=1.1185, last_age=119, select={"factor": 0.8, "years": 2}
-    ),
+    "assured_f": Law(law="Makeham", A=0.0003, B=3.81e-6, c=1.1247, last_age=119, select=SELECT),
+    "assured_m": Law(law="Makeham", A=0.0004, B=7.6e-6, c=1.1185, last_age=119, select=SELECT),
 }
 ANNUITANTS = {
     "Annuitant women": Law(law="Makeham", A=0.00015, B=2.02e-6, c=1.1281, last_age=119),
@@ -63,7 +60,6 @@ def test_every_run_document_reads(name: str, basis: str) -> None:
 @pytest.mark.parametrize("name", ASSURED)
 def test_tables_of_the_assured_come_from_their_law(name: str) -> None:
     law = ASSURED[name]
-    assert law.select == SelectFactor(factor=0.8, years=2)
     table = read_rates(OFFICE / "tables" / f"{name}.csv", select_by="entry age")
     assert (table.first_age, table.final_age, table.closed) == (16, 120, True)
     for age in range(18, 118):

@@ -1,4 +1,4 @@
-"""The extract of the demo office: right policies are right, wrong ones are wrong as meant, memory stays flat."""
+"""The extract of the demo office: right policies are right, wrong ones wrong as meant, memory flat."""
 
 from __future__ import annotations
 
@@ -83,10 +83,12 @@ def test_exactly_the_wrong_policies_fail_the_checks(table: pa.Table, designs: di
     }
 
 
-@pytest.mark.parametrize("meaning", ["ended before the valuation date", "age outside the tables"])
+@pytest.mark.parametrize(
+    ("meaning", "said"), [("ended before the valuation date", "matured"), ("age outside the tables", "age")]
+)
 @pytest.mark.parametrize("basis", ["statutory", "best_estimate"])
 def test_what_the_checks_cannot_see_the_projection_does(
-    table: pa.Table, designs: dict[str, Design], meaning: str, basis: str
+    table: pa.Table, designs: dict[str, Design], meaning: str, said: str, basis: str
 ) -> None:
     place = next(place for place, fault in enumerate(FAULTS) if fault.meaning == meaning)
     policy = table.slice(fault_rows(ROWS)[place], 1).to_pylist()[0]

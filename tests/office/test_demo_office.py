@@ -83,6 +83,6 @@ def test_an_interruption_leaves_nothing(tmp_path: Path) -> None:
 
 @pytest.mark.parametrize(("policies", "seed"), [(0, 1), (-5, 1), (100_000_001, 1), (10, -1)])
 def test_numbers_out_of_range(tmp_path: Path, policies: int, seed: int) -> None:
-    with pytest.raises(ValueError, match="must not be below|the demo office has"):
+    with pytest.raises(ValueError, match=r"must not be below|the demo office has"):
         write_office(tmp_path / "office", policies, seed)
     assert list(tmp_path.iterdir()) == []

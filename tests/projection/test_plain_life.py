@@ -3,27 +3,30 @@
 from __future__ import annotations
 
 import math
-from datetime import date
 from fractions import Fraction
+from itertools import pairwise
 
 import pytest
-from assumptions.basis import prepare_basis
+from hypothesis import given
+from hypothesis import strategies as st
+from plain_cases import MAKEHAM, Listed
+
 from assumptions.lapse import Lapse
 from assumptions.laws import Law
 from assumptions.mortality import MortalityRule, Rates
-from hypothesis import given
-from hypothesis import strategies as st
-from plain_cases import MAKEHAM, Listed, constant
 from projection.plain_faults import NotValued
 from projection.plain_lapse import Persistency, until_months
 from projection.plain_life import Survival, through, yearly_rates
-from pytest import approx
+
+approx = pytest.approx
 
 RATES = st.lists(st.floats(0, 0.9), min_size=3, max_size=8)
 FRACTIONS = st.sampled_from(["constant force", "uniform deaths", "Balducci"])
 
 
-def life(rates: Rates, age: Fraction | int, fractions: str = "constant force", **adjusted: object) -> Survival:
+def life(
+    rates: Rates, age: Fraction | int, fractions: str = "constant force", **adjusted: object
+) -> Survival:
     rule = MortalityRule.model_validate({"table": "listed", **adjusted})
     return Survival(yearly_rates(rule, rates, Fraction(age)), fractions)  # type: ignore[arg-type]
 
@@ -40,7 +43,9 @@ def test_part_of_a_year(fractions: str, expected: float) -> None:
     assert through(0.36, 0.25, fractions) == approx(expected, rel=1e-15)  # type: ignore[arg-type]
 
 
-@pytest.mark.parametrize(("fractions", "left"), [("constant force", 0), ("uniform deaths", 0.75), ("Balducci", 0)])
+@pytest.mark.parametrize(
+    ("fractions", "left"), [("constant force", 0), ("uniform deaths", 0.75), ("Balducci", 0)]
+)
 def test_the_last_year(fractions: str, left: float) -> None:
     assert through(1.0, 0.25, fractions) == left  # type: ignore[arg-type]
     assert through(1.0, 0.0, fractions) == 1  # type: ignore[arg-type]
@@ -123,12 +128,14 @@ def test_survival_falls_from_one_to_nothing(rates: list[float], fractions: str, 
     assert line[0] == 1
     assert line[-1] == 0
     assert min(line[:-1]) > 0
-    assert all(later <= earlier + 1e-15 for earlier, later in zip(line, line[1:], strict=False))
+    assert all(later <= earlier + 1e-15 for earlier, later in pairwise(line))
 
 
 @given(RATES)
 def test_fractions_agree_at_whole_years(rates: list[float]) -> None:
-    lives = [life(Listed((*rates, 1.0), 60), 60, kind) for kind in ("constant force", "uniform deaths", "Balducci")]
+    lives = [
+        life(Listed((*rates, 1.0), 60), 60, kind) for kind in ("constant force", "uniform deaths", "Balducci")
+    ]
     for year in range(len(rates) + 1):
         assert len({one.at(12 * year) for one in lives}) == 1
 
@@ -190,12 +197,3 @@ def test_until_from_a_column() -> None:
     assert until_months(rule, 20.0) == 240
     with pytest.raises(NotValued, match="term_years"):
         until_months(rule, None)
-
-
-def test_rates_come_from_the_prepared_basis() -> None:
-    basis = prepare_basis(
-        {"mortality": {"rule": [{"table": MAKEHAM}]}, "interest": {"rule": [{"flat": date.min.year / 100}]}}
-    )
-    assert basis.curves[0].factor(2) == approx(1.01**-2)
-    assert life(basis.rates[0], 40).at(12) == approx(1 - basis.rates[0].rate(40, 0))
-    assert life(constant(0.25), 40).at(24) == approx(0.75**2)

@@ -1,12 +1,12 @@
 from __future__ import annotations
 
-from datetime import datetime, timezone
+import io
+from datetime import UTC, datetime
 from pathlib import Path
 from typing import Any
 
-import examples
-import pyarrow as pa
 import pytest
+import reports_examples as examples
 
 import reports.reserve_run
 from portfolios.demo_office import write_office
@@ -32,8 +32,10 @@ def prepared(office: Path) -> Prepared:
 @pytest.fixture(scope="session")
 def report(prepared: Prepared) -> Report:
     outcome = examples.outcome(examples.policies(500), examples.exceptions(9))
-    started = datetime(2026, 12, 1, 4, 30, tzinfo=timezone.utc)
-    record = build_record(prepared, outcome, {}, "duecourse reserve month-end.toml --out november", "november", started)
+    started = datetime(2026, 12, 1, 4, 30, tzinfo=UTC)
+    record = build_record(
+        prepared, outcome, {}, "duecourse reserve month-end.toml --out november", "november", started
+    )
     return Report(outcome, record)
 
 
@@ -56,15 +58,5 @@ def made_up_values(extract: Any, designs: Any, basis: Any, settings: Any, **aske
 def finished(made_up: None, office: Path, tmp_path: Path) -> Path:
     """A finished run folder."""
     out = tmp_path / "november"
-    reserve_run(office / "month-end.toml", out, lambda what: LogLines(what, open_nowhere()))
+    reserve_run(office / "month-end.toml", out, lambda what: LogLines(what, io.StringIO()))
     return out
-
-
-def open_nowhere() -> Any:
-    import io
-
-    return io.StringIO()
-
-
-def one_chunk(rows: int, start: int = 0) -> pa.Table:
-    return examples.policies(rows, start=start)

@@ -13,8 +13,12 @@ from projection.results import MONEY_COLUMNS, ControlTotal, Outcome, SampleCheck
 from projection.settings import Settings
 
 PRODUCTS = ("EBB", "FAIR", "GANG", "<b>LARBOARD</b>", "=OARLOCK")
-STREAMS = (("premium", "premiums", "in"), ("death benefit", "benefits", "out"), ("annuity", "benefits", "out"),
-           ("upkeep", "expenses", "out"))  # fmt: skip
+STREAMS = (
+    ("premium", "premium", "in"),
+    ("death benefit", "benefit", "out"),
+    ("annuity", "benefit", "out"),
+    ("upkeep", "expense", "out"),
+)
 SETTINGS = Settings(date(2026, 11, 30))
 SCHEMA = pa.schema(
     [("policy_id", pa.string()), ("product", pa.string()), ("sex", pa.string())]
@@ -56,7 +60,9 @@ def exceptions(number: int) -> pa.Table:
 
 def totals(results: pa.Table, group_by: tuple[str, ...]) -> tuple[pa.Table, dict[str, int]]:
     """Totals by group with exact sums, and the sums over all policies in minor units."""
-    groups: dict[tuple[Any, ...], dict[str, int]] = defaultdict(lambda: dict.fromkeys(("policies", *MONEY_COLUMNS), 0))
+    groups: dict[tuple[Any, ...], dict[str, int]] = defaultdict(
+        lambda: dict.fromkeys(("policies", *MONEY_COLUMNS), 0)
+    )
     for row in results.to_pylist():
         group = groups[tuple(row[name] for name in group_by)]
         group["policies"] += 1
@@ -73,25 +79,37 @@ def totals(results: pa.Table, group_by: tuple[str, ...]) -> tuple[pa.Table, dict
 
 
 def _rounding(group: dict[str, int]) -> int:
-    benefits, expenses, premiums = (group[f"value_of_{part}"] for part in ("benefits", "expenses", "premiums"))
+    benefits, expenses, premiums = (
+        group[f"value_of_{part}"] for part in ("benefits", "expenses", "premiums")
+    )
     return group["reserve"] - (benefits + expenses - premiums)
 
 
 def cash_flows(years: int = 60, products: tuple[str, ...] = PRODUCTS) -> pa.Table:
     """Expected cash flows by month from December 2026 that fade away."""
-    rows: dict[str, list[Any]] = {name: [] for name in ("month", "product", "stream", "part", "direction", "amount")}
+    rows: dict[str, list[Any]] = {
+        name: [] for name in ("month", "product", "stream", "part", "direction", "amount")
+    }
     for month in range(12 * years):
         for product in products:
             for place, (stream, part, way) in enumerate(STREAMS):
                 level = (5e5, 1.5e5, 4e5, 3e4)[place]
                 faded = level * 0.995**month if place != 2 else level * (month / 100) * 0.988**month
-                values = (date(2026 + (11 + month) // 12, (11 + month) % 12 + 1, 1), product, stream, part, way)
+                values = (
+                    date(2026 + (11 + month) // 12, (11 + month) % 12 + 1, 1),
+                    product,
+                    stream,
+                    part,
+                    way,
+                )
                 for name, value in zip(rows, (*values, round(faded, 5)), strict=True):
                     rows[name].append(value)
     return pa.table(rows | {"month": pa.array(rows["month"], pa.date32())})
 
 
-def outcome(results: pa.Table, left_out: pa.Table, group_by: tuple[str, ...] = ("product", "sex"), years: int = 60) -> Outcome:
+def outcome(
+    results: pa.Table, left_out: pa.Table, group_by: tuple[str, ...] = ("product", "sex"), years: int = 60
+) -> Outcome:
     """A finished valuation of these results."""
     by_group, total = totals(results, group_by)
     number = results.num_rows
@@ -109,8 +127,14 @@ def outcome(results: pa.Table, left_out: pa.Table, group_by: tuple[str, ...] = (
         group_by=group_by,
         conventions=(
             ("valuation date", "2026-11-30, end of day; payments due on it are settled"),
-            ("step", "a month, counted from each policy's own commencement; monthiversaries of the 29th to 31st fall on the month's last day where the day is missing"),
-            ("money", "each policy's results are rounded half-even to 0.01 once; totals are exact sums of rounded policies"),
+            (
+                "step",
+                "a month, counted from each policy's own commencement",
+            ),
+            (
+                "money",
+                "results are rounded half-even to 0.01 by policy; totals are exact sums of these",
+            ),
             ("<i>escaped</i>", "a rule with <b>marks</b> & ampersands"),
         ),
         counts={"curves": 312, "cells": 1_204, "policy_months": 2_700_000},
