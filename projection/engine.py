@@ -106,18 +106,26 @@ class Engine:
             parts=np.zeros((chunk.n, 3)),
             minor=np.zeros((chunk.n, 4), dtype=np.int64),
             flows=np.zeros(accounts * loops.BINS),
-            scratch=np.empty(loops.BINS),
+            room=np.ones(loops.ROOM * loops.BINS),
+            filled=np.zeros((loops.ROOM, 2), dtype=np.int64),
             firsts=np.empty(len(tables.segments) + 1, dtype=np.int64),
             counts=np.empty(len(tables.segments) + 1, dtype=np.int64),
         )
-        order = np.empty(chunk.n, dtype=np.int64)
-        loops.sort_by(policies["survival"], len(tables.survivals), order)
+        order = self._order(policies, cell, tables)
         loops.value_policies(order, policies, tables, self.rules, results)
         clock.lap("loops")
         self._name_faults(checked, results.fault, tables.segments)
         valued = Valued(checked, results, self._months(checked, cell, policies, tables))
         valued.seconds = clock.seconds
         return valued
+
+    def _order(self, policies: NDArray[Any], cell: NDArray[np.int32], tables: loops.Tables) -> NDArray[np.int64]:
+        """Order in which policies with the same streams and rows follow one another, to find them in the processor's cache."""
+        order, again = np.arange(len(cell)), np.empty(len(cell), dtype=np.int64)
+        loops.sort_by(policies["lapse"], len(self.persistency.places), order, again)
+        loops.sort_by(policies["survival"], len(tables.survivals), order, again)
+        loops.sort_by(cell.astype(np.int64), len(self.cells.cells), order, again)
+        return order
 
     def _locate(self, chunk: Chunk, checked: Checked) -> NDArray[Any]:
         policies = np.zeros(chunk.n, POLICY)
@@ -168,6 +176,7 @@ class Engine:
         self._flag(checked, until < 0, Reason.NOT_WHOLE_MONTHS, self._until.column)
         codes = (1 + lapse) * (NEVER + 1) + np.maximum(until, 0)
         rows = rows_for(codes, self.persistency.row)
+        policies["lapse"] = rows
         policies["held"], policies["dead"], policies["lapsing"] = np.array(self.persistency.places).T[:, rows]
 
     def _months_to_age(self, chunk: Chunk, checked: Checked) -> Callable[[int], NDArray[np.int32]]:

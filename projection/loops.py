@@ -8,7 +8,7 @@ since commencement, k and f the whole months and the rest of the last one at T.
 
 from __future__ import annotations
 
-from typing import Any, NamedTuple
+from typing import Any, Final, NamedTuple
 
 import numba as nb
 import numpy as np
@@ -18,9 +18,20 @@ from numba.extending import intrinsic
 from portfolios.reasons import Reason
 
 from . import streams as s
+from .pool import ONES
 
 BINS = s.LONGEST + 64
 """Calendar months that cash flows may fall in, from the month of T."""
+
+AFTER: Final = 0
+BEFORE: Final = 1
+DYING: Final = 2
+LAPSING: Final = 3
+SPREAD: Final = 4
+CERTAINLY: Final = 5
+SCRATCH: Final = 6
+ROOM: Final = 7
+"""Rows of room to work in: weights after and before lapses, of deaths, of lapses (from survivors, or spread), ones, products."""
 
 MAGIC = 6755399441055744.0
 """1.5 * 2^52: adding and taking it away rounds a double to the nearest whole number, half to even."""
@@ -38,6 +49,9 @@ LARGEST_RESULT = 1e15
 """Minor units that a policy's results may reach; sums over many millions of policies stay exact."""
 
 compiled = nb.njit(cache=True, nogil=True, error_model="numpy")
+
+inlined = nb.njit(cache=True, nogil=True, error_model="numpy", forceinline=True)
+"""For functions with many arguments that are called once per stream: the call costs as much as what it does."""
 
 
 class Rules(NamedTuple):
@@ -71,7 +85,7 @@ class Results(NamedTuple):
     """Per policy: reason (0: valued), the segment at fault, parts in currency (n, 3), and money in minor units (n, 4).
 
     The columns of parts are benefits, expenses and premiums; those of minor the reserve and then the parts. flows: expected cash
-    flows by account and calendar month, BINS to an account, in quanta. scratch, firsts and counts are room to work in.
+    flows by account and calendar month, BINS to an account, in quanta. room, filled, firsts and counts are to work in.
     """
 
     reason: Any
@@ -79,7 +93,8 @@ class Results(NamedTuple):
     parts: Any
     minor: Any
     flows: Any
-    scratch: Any
+    room: Any
+    filled: Any
     firsts: Any
     counts: Any
 
@@ -235,77 +250,89 @@ def survival_at(survival, pool, months, rule):
 
 
 @compiled
-def sum_payments(pool, living, held, relative, discount, flows, flow, count, period, amount, quantum, scratch):
-    """Sum of a stream's payments at every ``period``-th place of the rows; adds them to the cash flows.
+def sum_monthly(room, weight, pool, relative, discount, flows, flow, count, amount, quantum):
+    """Sum of payments at every point: amount x weight x relative x discount; adds them to the cash flows.
 
-    living ... flow: places of the first payment. The sum runs in four lanes, payment by payment, and so always in the same
-    order. Places are unsigned, which spares the loops a look for negative ones.
+    weight ... flow: places of the first payment. The sum runs in four lanes, payment by payment, and so always in the same
+    order. Places are unsigned, which spares the loops a look for negative ones; three short loops keep the processor's
+    vector units busier than one long one.
     """
+    n, w, f, d = np.uint64(count), np.uint64(weight), np.uint64(flow), np.uint64(discount)
+    if relative != ONES:
+        r, t = np.uint64(relative), np.uint64(SCRATCH * BINS)
+        for j in range(n):
+            room[t + j] = room[w + j] * pool[r + j]
+        w = t
     scale = amount * quantum
-    o, h, r, d, w = np.uint64(living), np.uint64(held), np.uint64(relative), np.uint64(discount), np.uint64(flow)
-    if period == 1:
-        for j in range(np.uint64(count)):
-            scratch[j] = pool[o + j] * pool[h + j] * pool[r + j]
-        for j in range(np.uint64(count)):
-            flows[w + j] += (scratch[j] * scale + MAGIC) - MAGIC
-        for j in range(np.uint64(count)):
-            scratch[j] *= pool[d + j]
-    else:
-        for j in range(np.uint64(count)):
-            i = j * np.uint64(period)
-            x = pool[o + i] * pool[h + i] * pool[r + i]
-            flows[w + i] += (x * scale + MAGIC) - MAGIC
-            scratch[j] = x * pool[d + i]
-    return amount * add_up(scratch, count)
-
-
-@compiled
-def sum_moves(pool, living, weight, relative, discount, a, b, flows, flow, count, step, amount, quantum, scratch):
-    """The same for payments on a move: occupancy is a and b times survival at the two ends of each step.
-
-    living ... flow: places of the first step's end, for relative of its start.
-    """
-    scale = amount * quantum
-    o, h, r, d, w = np.uint64(living), np.uint64(weight), np.uint64(relative), np.uint64(discount), np.uint64(flow)
-    e = np.uint64(living - step)
-    if step == 1:
-        for j in range(np.uint64(count)):
-            scratch[j] = (a * pool[e + j] + b * pool[o + j]) * pool[h + j] * pool[r + j]
-        for j in range(np.uint64(count)):
-            flows[w + j] += (scratch[j] * scale + MAGIC) - MAGIC
-        for j in range(np.uint64(count)):
-            scratch[j] *= pool[d + j]
-    else:
-        for j in range(np.uint64(count)):
-            i = j * np.uint64(step)
-            x = (a * pool[e + i] + b * pool[o + i]) * pool[h + i] * pool[r + i]
-            flows[w + i] += (x * scale + MAGIC) - MAGIC
-            scratch[j] = x * pool[d + i]
-    return amount * add_up(scratch, count)
-
-
-@compiled
-def add_up(values, count):
-    """Sum of the first values in four lanes."""
-    a = 0.0
-    b = 0.0
-    c = 0.0
-    d = 0.0
+    for j in range(n):
+        flows[f + j] += (room[w + j] * scale + MAGIC) - MAGIC
+    one, two, three, four = np.uint64(1), np.uint64(2), np.uint64(3), np.uint64(4)
+    sum0, sum1, sum2, sum3 = 0.0, 0.0, 0.0, 0.0
     i = np.uint64(0)
-    one = np.uint64(1)
-    two = np.uint64(2)
-    three = np.uint64(3)
-    four = np.uint64(4)
-    for _ in range(count // 4):
-        a += values[i]
-        b += values[i + one]
-        c += values[i + two]
-        d += values[i + three]
+    for _ in range(n // four):
+        sum0 += room[w + i] * pool[d + i]
+        sum1 += room[w + i + one] * pool[d + i + one]
+        sum2 += room[w + i + two] * pool[d + i + two]
+        sum3 += room[w + i + three] * pool[d + i + three]
         i += four
-    while i < np.uint64(count):
-        a += values[i]
+    while i < n:
+        sum0 += room[w + i] * pool[d + i]
         i += one
-    return (a + b) + (c + d)
+    return amount * ((sum0 + sum1) + (sum2 + sum3))
+
+
+@compiled
+def sum_apart(pool, living, held, relative, discount, a, b, flows, flow, count, apart, amount, quantum):
+    """The same for payments ``apart`` points from one another, with a and b times survival at both ends as occupancy."""
+    scale = amount * quantum
+    hop = np.uint64(apart)
+    o, h, r, d, f = np.uint64(living), np.uint64(held), np.uint64(relative), np.uint64(discount), np.uint64(flow)
+    e = np.uint64(living - apart) if a != 0.0 else o
+    total = 0.0
+    for _ in range(count):
+        x = (a * pool[e] + b * pool[o]) * pool[h] * pool[r]
+        flows[f] += (x * scale + MAGIC) - MAGIC
+        total += x * pool[d]
+        e, o, h, r, d, f = e + hop, o + hop, h + hop, r + hop, d + hop, f + hop
+    return amount * total
+
+
+@inlined
+def weights(kind, pool, living, held, first, count, filled, room):
+    """Place of the first of some monthly weights, survival x persistency at points or in steps; fills in what is missing.
+
+    kind: AFTER, BEFORE, DYING, LAPSING or SPREAD; living, held: places of g = 0 in the rows that the kind takes; filled:
+    (kind, 2) the points for which the room holds weights, forgotten when another pair of rows comes along.
+    """
+    base = kind * BINS
+    low, high = filled[kind, 0], filled[kind, 1]
+    if low >= high:
+        low, high = first, first
+    fill_weights(kind, pool, living, held, first, low, base, room)
+    fill_weights(kind, pool, living, held, high, first + count, base, room)
+    filled[kind, 0], filled[kind, 1] = min(first, low), max(first + count, high)
+    return base + first
+
+
+@compiled
+def fill_weights(kind, pool, living, held, begin, end, base, room):
+    """Fill in the weights of the points from ``begin`` up to but not including ``end``."""
+    if end <= begin:
+        return
+    n = np.uint64(end - begin)
+    o, h, w = np.uint64(living + begin), np.uint64(held + begin), np.uint64(base + begin)
+    if kind == AFTER or kind == BEFORE:
+        for j in range(n):
+            room[w + j] = pool[o + j] * pool[h + j]
+        return
+    e = np.uint64(living + begin - 1)
+    a, b = 0.0, 1.0
+    if kind == DYING:
+        a, b = 1.0, -1.0
+    elif kind == SPREAD:
+        a, b = 0.5, 0.5
+    for j in range(n):
+        room[w + j] = (a * pool[e + j] + b * pool[o + j]) * pool[h + j]
 
 
 @compiled
@@ -316,14 +343,14 @@ def first_due(start, period, least):
     return start + -(-(least - start) // period) * period
 
 
-@compiled
+@inlined
 def formula_from(stream, start, p, rules):
     """First point of the first year of a stream that Woolhouse's formula takes; the year of T keeps its own dates."""
     whole = p.part == 0 and (rules.outstanding == 1 or stream.before == 1)
     return first_due(start, 12, p.k if whole else p.k + 1)
 
 
-@compiled
+@inlined
 def extent(stream, whole, p, survival, last, rules):
     """Reason, first point and number of points after T of a segment of streams.
 
@@ -331,6 +358,8 @@ def extent(stream, whole, p, survival, last, rules):
     on T is not among the points.
     """
     k = p.k
+    if stream.clip_to <= k - 12:
+        return 0, 0, 0
     over = survival.over
     lives = stream.cover != s.CERTAIN
     start = np.int64(whole[stream.start])
@@ -426,13 +455,15 @@ def due_today(stream, whole, p, rules):
     return due and low <= month < high, month
 
 
-@compiled
+@inlined
 def relative_place(stream, whole, month, calendar):
     """Place of the relative amount of a month on the stream's clock, or of a calendar month."""
     if stream.calendar >= 0:
         return stream.calendar + max(0, calendar)
-    clock = np.int64(whole[stream.start]) if stream.clock == 0 else 0
     row = stream.relative if stream.changing < 0 else np.int64(whole[stream.changing])
+    if row == ONES:
+        return ONES
+    clock = np.int64(whole[stream.start]) if stream.clock == 0 else 0
     return row + max(0, month - clock)
 
 
@@ -459,7 +490,9 @@ def value_policies(order, policies, tables, rules, results):
     segments, charges, survivals = unowned(tables.segments), unowned(tables.charges), unowned(tables.survivals)
     pool, money, whole = unowned(tables.pool), unowned(tables.money), unowned(tables.whole)
     parts, flows = unowned(results.parts), unowned(results.flows)
-    scratch, firsts, counts = unowned(results.scratch), unowned(results.firsts), unowned(results.counts)
+    room, filled = unowned(results.room), unowned(results.filled)
+    firsts, counts = unowned(results.firsts), unowned(results.counts)
+    survived, persisting = np.int64(-1), np.int64(-1)
     for j in range(len(order)):
         i = order[j]
         if results.reason[i] != 0:
@@ -489,18 +522,21 @@ def value_policies(order, policies, tables, rules, results):
         if reason != 0:
             results.reason[i] = reason
             continue
+        if p.survival != survived or p.held != persisting:
+            survived, persisting = p.survival, p.held
+            filled[:] = 0
         for n in range(p.segments, p.segments_end):
             first, count = firsts[n - p.segments], counts[n - p.segments]
             if count > 0 or today:
                 value = value_segment(
-                    segments[n], p, whole[i], money[i], survival, pool, alive, inforce, first, count, today, rules, flows, scratch
+                    segments[n], p, whole[i], money[i], survival, pool, alive, inforce, first, count, today, rules, flows, room, filled
                 )
                 for c in range(segments[n].charges, segments[n].charges_end):
                     parts[i, charges[c].part] += charges[c].ratio * value
         round_results(i, parts, rules.minor, results)
 
 
-@compiled
+@inlined
 def round_results(i, parts, minor, results):
     """Round a policy's results to the minor unit, once."""
     benefits, expenses, premiums = parts[i, 0], parts[i, 1], parts[i, 2]
@@ -513,8 +549,8 @@ def round_results(i, parts, minor, results):
     results.minor[i, 3] = np.int64(np.rint(premiums * minor))
 
 
-@compiled
-def value_segment(stream, p, whole, money, survival, pool, alive, inforce, first, count, today, rules, flows, scratch):
+@inlined
+def value_segment(stream, p, whole, money, survival, pool, alive, inforce, first, count, today, rules, flows, room, filled):
     """Value of a segment for one policy."""
     amount = stream.factor
     if stream.amount >= 0:
@@ -533,18 +569,18 @@ def value_segment(stream, p, whole, money, survival, pool, alive, inforce, first
     if count > 0:
         if stream.when == s.DEATH or stream.when == s.LAPSE:
             value += value_moves(
-                stream, p, whole, survival, pool, alive, inforce, first, count, amount, rules, flows, scratch
+                stream, p, whole, survival, pool, alive, inforce, first, count, amount, rules, flows, room, filled
             )
         elif stream.when == s.THIRD_TERM:
             value += third_term(stream, p, whole, survival, pool, alive * inforce, first, count, amount, rules)
         else:
             value += value_payments(
-                stream, p, whole, survival, pool, alive * inforce, first, count, amount, rules, flows, scratch
+                stream, p, whole, survival, pool, alive * inforce, first, count, amount, rules, flows, room, filled
             )
     return value
 
 
-@compiled
+@inlined
 def persistency_at(p, pool, rules):
     """Persistency at T: that of the last point, or on the way to the next where lapses spread over a step."""
     held = pool[p.held + p.k]
@@ -553,8 +589,8 @@ def persistency_at(p, pool, rules):
     return held
 
 
-@compiled
-def value_payments(stream, p, whole, survival, pool, there, first, count, amount, rules, flows, scratch):
+@inlined
+def value_payments(stream, p, whole, survival, pool, there, first, count, amount, rules, flows, room, filled):
     """Value of payments while alive, for certain, or guaranteed, at their own dates after T; there: L(T) P(T)."""
     period = np.int64(12)
     if stream.when == s.ONCE:
@@ -567,58 +603,67 @@ def value_payments(stream, p, whole, survival, pool, there, first, count, amount
         month = first - period
     elif stream.when == s.ONCE:
         month = max(first - 1, start if stream.clock == 0 else 0)
-    living, held = np.int64(0), np.int64(0)
-    if stream.cover == s.ALIVE or stream.cover == s.AFTER_GUARANTEE:
-        living = survival.living + first
-        # Payments that are not in advance come before the lapses at the end of a step.
-        held = p.held + first - (0 if rules.dependent == 1 else stream.before)
-        amount /= there
-    elif stream.cover == s.GUARANTEED and start > p.k:
-        amount *= pool[survival.living + start] * pool[p.held + start] / there
     calendar = first + p.shift
     relative = relative_place(stream, whole, month, calendar)
+    discount = p.payment + first - p.k
     flow = stream.account * BINS + max(0, calendar)
-    return sum_payments(
-        pool, living, held, relative, p.payment + first - p.k, flows, flow, count, period, amount, rules.quantum, scratch
-    )
+    lives = stream.cover == s.ALIVE or stream.cover == s.AFTER_GUARANTEE
+    # Payments that are not in advance come before the lapses at the end of a step.
+    before = 0 if rules.dependent == 1 else stream.before
+    if lives:
+        amount /= there
+    elif stream.cover == s.GUARANTEED and start > p.k:
+        amount *= pool[survival.living + start] * pool[p.held + start - before] / there
+    if period > 1 or count < 4:
+        living, held = (survival.living + first, p.held + first - before) if lives else (ONES, ONES)
+        return sum_apart(
+            pool, living, held, relative, discount, 0.0, 1.0, flows, flow, count, period, amount, rules.quantum
+        )
+    weight = CERTAINLY * BINS
+    if lives:
+        kind = AFTER if before == 0 else BEFORE
+        weight = weights(kind, pool, survival.living, p.held - before, first, count, filled, room)
+    return sum_monthly(room, weight, pool, relative, discount, flows, flow, count, amount, rules.quantum)
 
 
-@compiled
-def value_moves(stream, p, whole, survival, pool, alive, inforce, first, count, amount, rules, flows, scratch):
+@inlined
+def value_moves(stream, p, whole, survival, pool, alive, inforce, first, count, amount, rules, flows, room, filled):
     """Value of payments on death or lapse, step by step; the broken first step on its own."""
     step = rules.step
     death = stream.when == s.DEATH
     # Deaths are the difference of survival; lapses fall on the survivors, or on the mean where they spread.
-    a, b = 0.0, 1.0
-    weight, discount = p.lapsing + first, p.payment + first - p.k
+    a, b, kind = 0.0, 1.0, LAPSING
+    held, discount = p.lapsing, p.payment + first - p.k
     calendar = first + p.shift
     if death:
-        a, b = 1.0, -1.0
-        weight, discount = p.dead + first, p.claim + first - p.k
+        a, b, kind = 1.0, -1.0, DYING
+        held, discount = p.dead, p.claim + first - p.k
         calendar += p.claim_shift
     elif rules.dependent == 1:
-        a, b = 0.5, 0.5
+        a, b, kind = 0.5, 0.5, SPREAD
     amount /= alive * inforce
-    living = survival.living + first
     relative = relative_place(stream, whole, first - step, first + p.shift)
     flow = stream.account * BINS + max(0, calendar)
     value = 0.0
     if first - step <= p.k:
-        share = pool[weight]
+        share = pool[held + first]
         if death and rules.dependent == 1:
             share = 0.5 * (inforce + pool[p.held + first])
         elif not death:
             share = inforce - pool[p.held + first]
-        x = (a * alive + b * pool[living]) * share * pool[relative]
+        x = (a * alive + b * pool[survival.living + first]) * share * pool[relative]
         flows[flow] += (x * amount * rules.quantum + MAGIC) - MAGIC
         value = amount * x * pool[discount]
         count -= 1
-        living, weight, relative, discount, flow = living + step, weight + step, relative + step, discount + step, flow + step
-    if count > 0:
-        value += sum_moves(
-            pool, living, weight, relative, discount, a, b, flows, flow, count, step, amount, rules.quantum, scratch
+        first, relative, discount, flow = first + step, relative + (step if relative != ONES else 0), discount + step, flow + step
+    if count <= 0:
+        return value
+    if step > 1 or count < 4:
+        return value + sum_apart(
+            pool, survival.living + first, held + first, relative, discount, a, b, flows, flow, count, step, amount, rules.quantum
         )
-    return value
+    weight = weights(kind, pool, survival.living, held, first, count, filled, room)
+    return value + sum_monthly(room, weight, pool, relative, discount, flows, flow, count, amount, rules.quantum)
 
 
 @compiled
@@ -670,13 +715,14 @@ def add_totals(group, reason, minor, totals):
 
 
 @compiled
-def sort_by(keys, size, order):
-    """Fill ``order`` with the places of the keys, 0 to size - 1, in order of key; equal keys keep their order."""
+def sort_by(keys, size, order, again):
+    """Put ``order`` in order of the keys of its policies, 0 to size - 1; equal keys keep their order. again: room for it."""
     starts = np.zeros(size + 1, np.int64)
     for key in keys:
         starts[key + 1] += 1
     for key in range(size):
         starts[key + 1] += starts[key]
-    for i in range(len(keys)):
-        order[starts[keys[i]]] = i
+    for i in order:
+        again[starts[keys[i]]] = i
         starts[keys[i]] += 1
+    order[:] = again

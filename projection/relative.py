@@ -12,6 +12,7 @@ from assumptions.expenses import Inflation
 from portfolios.chunk import Chunk
 from portfolios.designs import Increase, Share, Stream
 
+from .cells import distinct
 from .pool import ONES, Pool
 from .streams import LONGEST
 
@@ -19,6 +20,7 @@ Pattern = tuple[tuple[int | None, float], ...]
 """Pieces of a pattern: years (None for ever) and share."""
 
 _MONTHS = np.arange(LONGEST + 2)
+_WIDE = LONGEST + 1
 
 
 @dataclass(frozen=True)
@@ -121,15 +123,23 @@ class RelativeRows:
     ) -> NDArray[np.int32]:
         """Return the place of the row of relative amounts for each of some policies of a chunk."""
         shape, start, end = list(self.changing)[number]
-        by_column = isinstance(shape.rate, str)
-        keys = np.zeros((3, len(policies)))
-        keys[0] = chunk.number(str(shape.rate))[policies] if by_column else shape.rate
+        rates: list[float] = [0.0 if isinstance(shape.rate, str) else shape.rate]
+        codes = np.zeros(len(policies), dtype=np.int64)
+        if isinstance(shape.rate, str):
+            found, codes = np.unique(chunk.number(shape.rate)[policies], return_inverse=True)
+            rates = found.tolist()
         if shape.by:
-            keys[1] = whole[policies, start] if shape.from_commencement else 0
-            keys[2] = whole[policies, end] - whole[policies, start]
-        found, inverse = np.unique(keys, axis=1, return_inverse=True)
-        places = [self._changing(shape, rate, int(begin), int(length)) for rate, begin, length in found.T.tolist()]
-        return np.array(places, dtype=np.int32)[inverse.reshape(-1)]
+            begin = whole[policies, start].astype(np.int64)
+            length = np.maximum(whole[policies, end] - begin, 0)
+            begin = np.maximum(begin, 0) if shape.from_commencement else np.zeros_like(begin)
+            codes = (codes * _WIDE + begin) * _WIDE + length
+        keys, inverse = distinct(codes)
+        places = []
+        for code in keys.tolist():
+            rest, span = divmod(code, _WIDE) if shape.by else (code, 0)
+            rate, first = divmod(rest, _WIDE) if shape.by else (rest, 0)
+            places.append(self._changing(shape, rates[rate], first, span))
+        return np.array(places, dtype=np.int32)[inverse]
 
     def _changing(self, shape: Shape, rate: float, begin: int, length: int) -> int:
         return self._place((shape, rate, begin, length), lambda: shape.row(rate, begin, length))

@@ -97,6 +97,7 @@ POLICY = np.dtype(
         ("segments", "i8"),  # first segment of its cell
         ("segments_end", "i8"),  # behind the last of them
         ("survival", "i8"),  # record of its survival
+        ("lapse", "i8"),  # number of its rows of persistency
         ("held", "i8"),  # place of persistency at g = 0; one more lies in front for g = -1
         ("dead", "i8"),  # place of the weight of deaths of the step that ends at g = 0
         ("lapsing", "i8"),  # place of the share that lapses at g = 0

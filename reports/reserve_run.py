@@ -46,29 +46,22 @@ def reserve_run(
             prepared = prepare(run)
         digests = beside.submit(prepared.extract.digests)
         beside.submit(_load_writers, workbook)
-        outcome, files = _value(prepared, folder.path, progress_on, watch, threads)
-        with watch.phase("sealing the extract"):
-            sealed = digests.result()
-            prepared.check_unchanged()
-        with watch.phase("writing tables"):
-            files += write_tables(folder.path, outcome)
-        record = build_record(prepared, outcome, sealed, command or command_line(), str(out), started)
-        files += write_reports(folder.path, Report(_timed(outcome, watch), record), watch, workbook)
+        with PolicyWriter(folder.path) as writer:
+            with watch.phase("valuing"), progress_on("valuing") as progress:
+                outcome = value_prepared(prepared, writer, progress, threads)
+            writer.no_more()
+            with watch.phase("sealing the extract"):
+                sealed = digests.result()
+                prepared.check_unchanged()
+            record = build_record(prepared, outcome, sealed, command or command_line(), str(out), started)
+            # The last policies are still being written while the reports are made.
+            files = write_reports(folder.path, Report(_timed(outcome, watch), record), watch, workbook)
+            with watch.phase("writing tables"):
+                files = [*writer.finish(), *write_tables(folder.path, outcome), *files]
         record = complete(record, files, _timed(outcome, watch).timings, datetime.now(UTC))
         write_sealed(folder.path, RECORD, sealed_text(record))
         folder.finish()
     return Report(_timed(outcome, watch), record)
-
-
-def _value(
-    prepared: Prepared, folder: Path, progress_on: ProgressOn, watch: Stopwatch, threads: int | None
-) -> tuple[Outcome, list[WrittenFile]]:
-    with PolicyWriter(folder) as writer, progress_on("valuing") as progress:
-        with watch.phase("valuing"):
-            outcome = value_prepared(prepared, writer, progress, threads)
-        with watch.phase("waiting for the policies to be written"):
-            files = writer.finish()
-    return outcome, files
 
 
 def value_prepared(

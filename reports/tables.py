@@ -71,6 +71,7 @@ class PolicyWriter:
         self._queue: queue.Queue[pa.Table | None] = queue.Queue(_WAITING_CHUNKS)
         self._error: BaseException | None = None
         self._stopped = False
+        self._complete = False
         self._waiting: list[pa.Table] = []
         self._waiting_rows = 0
         self._file: SealedFile | None = None
@@ -96,6 +97,12 @@ class PolicyWriter:
         self._stopped = kind is not None
         self._end()
 
+    def no_more(self) -> None:
+        """Say that every chunk has come, without waiting; what is left is written meanwhile."""
+        if not self._complete:
+            self._complete = True
+            self._queue.put(None)
+
     def finish(self) -> list[WrittenFile]:
         """Wait until everything is written; return the files. Raises what the writing thread met."""
         self._end()
@@ -103,9 +110,8 @@ class PolicyWriter:
         return self.files
 
     def _end(self) -> None:
-        if self._thread.is_alive():
-            self._queue.put(None)
-            self._thread.join()
+        self.no_more()
+        self._thread.join()
 
     def _raise(self) -> None:
         if self._error is not None:
