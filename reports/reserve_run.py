@@ -20,7 +20,7 @@ from .report import Report
 from .run_folder import RECORD, RunFolder
 from .sealed_files import WrittenFile, write_sealed
 from .stopwatch import Stopwatch
-from .tables import PolicyWriter, write_table
+from .tables import PolicyWriter, check_rows, write_table
 
 ProgressOn = Callable[[str], AbstractContextManager[Callable[[int, int], None]]]
 
@@ -57,8 +57,9 @@ def reserve_run(
             # The last policies are still being written while the reports are made.
             files = write_reports(folder.path, Report(_timed(outcome, watch), record), watch, workbook)
             with watch.phase("writing tables"):
-                files = [*writer.finish(), *write_tables(folder.path, outcome), *files]
-        record = complete(record, files, _timed(outcome, watch).timings, datetime.now(UTC))
+                tables = [*writer.finish(), *write_tables(folder.path, outcome)]
+                check_rows(folder.path, tables, outcome.valued)
+        record = complete(record, [*tables, *files], _timed(outcome, watch).timings, datetime.now(UTC))
         write_sealed(folder.path, RECORD, sealed_text(record))
         folder.finish()
     return Report(_timed(outcome, watch), record)

@@ -5,6 +5,7 @@ from __future__ import annotations
 import contextlib
 import queue
 import threading
+from collections.abc import Iterable
 from pathlib import Path
 from types import TracebackType
 from typing import Any
@@ -14,11 +15,13 @@ import pyarrow.parquet as pq
 
 from projection.results import MONEY_COLUMNS
 
+from .disk import RunFolderError
 from .sealed_files import SealedFile, WrittenFile
 
 ROWS_A_FILE = 1_000_000
 ROWS_A_GROUP = 1 << 18
 _WAITING_CHUNKS = 8
+_BUFFER = 8 << 20
 _BARE_SCHEMA = pa.schema(
     [("policy_id", pa.string()), ("product", pa.string()), *((name, pa.float64()) for name in MONEY_COLUMNS)]
 )
@@ -75,6 +78,7 @@ class PolicyWriter:
         self._waiting: list[pa.Table] = []
         self._waiting_rows = 0
         self._file: SealedFile | None = None
+        self._buffer: Any = None
         self._writer: pq.ParquetWriter | None = None
         self._rows_in_file = 0
         self._schema = _BARE_SCHEMA
@@ -159,7 +163,9 @@ class PolicyWriter:
     def _write(self, group: pa.Table) -> None:
         if self._writer is None:
             self._file = SealedFile(self._folder / _part(len(self.files)))
-            self._writer = pq.ParquetWriter(self._file, group.schema, **parquet_options(group.schema))
+            # Arrow writes page by page; each time it would have to wait for Python.
+            self._buffer = pa.output_stream(self._file, buffer_size=_BUFFER)
+            self._writer = pq.ParquetWriter(self._buffer, group.schema, **parquet_options(group.schema))
         self._writer.write_table(group, row_group_size=self._rows_a_group)
         self._rows_in_file += group.num_rows
         if self._rows_in_file == self._rows_a_file:
@@ -167,9 +173,10 @@ class PolicyWriter:
 
     def _abandon(self) -> None:
         """Close a file that nobody will read."""
-        if self._writer is not None:
-            with contextlib.suppress(Exception):
-                self._writer.close()
+        for part in (self._writer, self._buffer):
+            if part is not None:
+                with contextlib.suppress(Exception):
+                    part.close()
         if self._file is not None:
             self._file.abandon()
 
@@ -177,9 +184,28 @@ class PolicyWriter:
         if self._writer is None or self._file is None:
             return
         self._writer.close()
+        self._buffer.close()
         self._file.close()
         self.files.append(self._file.sealed(_part(len(self.files)), self._rows_in_file))
-        self._writer, self._file, self._rows_in_file = None, None, 0
+        self._writer, self._buffer, self._file, self._rows_in_file = None, None, None, 0
+
+
+def check_rows(folder: Path, files: Iterable[WrittenFile], policies: int) -> None:
+    """Raise RunFolderError unless the tables can be opened and hold the rows that were written.
+
+    policies: how many rows the policies' files must hold together.
+    """
+    written = 0
+    for file in files:
+        try:
+            rows = pq.read_metadata(folder / file.path).num_rows
+        except (pa.ArrowException, OSError) as error:
+            raise RunFolderError(f"{file.path}: was written but cannot be read back: {error}") from error
+        if rows != file.rows:
+            raise RunFolderError(f"{file.path}: holds {rows:,} rows, {file.rows:,} were written")
+        written += rows if file.path.startswith("policies/") else 0
+    if written != policies:
+        raise RunFolderError(f"policies: {written:,} rows were written for {policies:,} policies valued")
 
 
 def _part(number: int) -> str:

@@ -7,6 +7,8 @@ from collections.abc import Iterator
 from dataclasses import dataclass, field
 from pathlib import Path, PurePosixPath
 
+import pyarrow as pa
+
 from projection.results import JSON
 
 from .figures import counted
@@ -49,7 +51,10 @@ def verify(folder: Path, inputs: Path | None = None, look_at_inputs: bool = True
             "Totals were not recomputed, because files that they come from are damaged or missing."
         )
     else:
-        _check_sums(recount(folder, record), record, found)
+        try:
+            _check_sums(recount(folder, record), record, found)
+        except (pa.ArrowException, KeyError, TypeError, ValueError) as error:
+            found.faults.append(f"The totals cannot be recomputed from the folder's tables: {error}")
     if look_at_inputs:
         _check_inputs(folder, record, inputs, found)
     return found

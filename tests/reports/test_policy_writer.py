@@ -11,8 +11,9 @@ import reports_examples as examples
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
+from reports.disk import RunFolderError
 from reports.sealed_files import SealedFile, WrittenFile, digest_of
-from reports.tables import PolicyWriter, write_table
+from reports.tables import PolicyWriter, check_rows, write_table
 
 RESULTS = examples.policies(2_500)
 
@@ -91,3 +92,13 @@ def test_a_sealed_file_counts_what_it_wrote(tmp_path: Path) -> None:
     file.close()
     assert file.closed
     assert digest_of(tmp_path / "file") == (file.sealed("file").sha256, 5)
+
+
+def test_what_was_written_is_read_back_before_the_run_counts(tmp_path: Path) -> None:
+    files = written(tmp_path, [])
+    check_rows(tmp_path, files, RESULTS.num_rows)
+    with pytest.raises(RunFolderError, match=r"2,500 rows were written for 2,501 policies"):
+        check_rows(tmp_path, files, RESULTS.num_rows + 1)
+    (tmp_path / files[1].path).write_bytes(b"PAR1")
+    with pytest.raises(RunFolderError, match="cannot be read back"):
+        check_rows(tmp_path, files, RESULTS.num_rows)

@@ -127,6 +127,12 @@ def test_a_lost_exception_opens_the_gate(finished: Path) -> None:
     assert any("5 exceptions, but 4 rows" in fault for fault in verify(finished).faults)
 
 
+def test_a_table_that_was_never_readable_is_a_fault_and_no_traceback(finished: Path) -> None:
+    (finished / "policies" / "part-00000.parquet").write_bytes(b"PAR1 but no more")
+    reseal(finished)
+    assert any("cannot be recomputed" in fault for fault in verify(finished).faults)
+
+
 def test_changed_and_missing_inputs(finished: Path, office: Path, tmp_path: Path) -> None:
     copy = tmp_path / "copy"
     shutil.copytree(office, copy)
