@@ -20,7 +20,6 @@ from assumptions.laws import Law
 from assumptions.mortality import MortalityRule, Rates
 
 from . import loops
-from .cells import distinct
 from .documents import DocumentError
 from .pool import Pool
 from .settings import Settings
@@ -38,6 +37,9 @@ NEVER = LONGEST + 1
 """Months until lapses stop where they never do."""
 
 Row = NDArray[np.float64]
+
+_NEW = -2
+"""Stands in a finder for the row of a key not met before."""
 
 
 @dataclass
@@ -248,7 +250,21 @@ def factors(curve: Curve, years: Row) -> Row:
     return np.exp(-integral)
 
 
-def rows_for(codes: NDArray[np.int64], row: Callable[[int], int]) -> NDArray[np.int64]:
-    """Look up the row of each policy's key, calling ``row`` once for each distinct one."""
-    keys, inverse = distinct(codes)
-    return np.array([row(int(key)) for key in keys], dtype=np.int64)[inverse]
+class Finder:
+    """Finds the row of each policy's key in a table of all keys; asks ``row`` for the rows of new ones."""
+
+    def __init__(self, row: Callable[[int], int]) -> None:
+        self._row = row
+        self._rows = np.zeros(0, dtype=np.int64)
+
+    def rows_for(self, codes: NDArray[np.int64]) -> NDArray[np.int64]:
+        """Return the row of each key, a number from 0."""
+        highest = int(codes.max(initial=0))
+        if highest >= len(self._rows):
+            self._rows = np.concatenate((self._rows, np.full(highest + 1 - len(self._rows), _NEW)))
+        rows = self._rows[codes]
+        if (rows == _NEW).any():
+            for code in np.unique(codes[rows == _NEW]).tolist():
+                self._rows[code] = self._row(code)
+            rows = self._rows[codes]
+        return rows

@@ -24,7 +24,7 @@ from portfolios.reasons import Reason
 
 from . import loops
 from .cells import Cells
-from .curves import IMPOSSIBLE, NEVER, Discount, Persistency, Survival, rows_for
+from .curves import IMPOSSIBLE, NEVER, Discount, Finder, Persistency, Survival
 from .plans import Plans
 from .pool import Pool
 from .relative import RelativeRows
@@ -75,6 +75,9 @@ class Engine:
         self.survival = Survival(basis, self.pool)
         self.persistency = Persistency(basis, settings, self.pool)
         self.discount = Discount(basis, settings, self.pool)
+        self._survivals = Finder(self.survival.row)
+        self._persistencies = Finder(self.persistency.row)
+        self._discounts = Finder(self.discount.row)
         self._today = (today - date(1970, 1, 1)).days
         self._until = _Until(basis)
         self._lock = Lock()
@@ -105,7 +108,8 @@ class Engine:
             fault=np.full(chunk.n, -1, dtype=np.int64),
             parts=np.zeros((chunk.n, 3)),
             minor=np.zeros((chunk.n, 4), dtype=np.int64),
-            flows=np.zeros(accounts * loops.BINS),
+            flows=np.zeros(accounts * loops.BINS, dtype=np.int64),
+            months=np.zeros(1, dtype=np.int64),
             room=np.ones(loops.ROOM * loops.BINS),
             filled=np.zeros((loops.ROOM, 2), dtype=np.int64),
             firsts=np.empty(len(tables.segments) + 1, dtype=np.int64),
@@ -115,7 +119,7 @@ class Engine:
         loops.value_policies(order, policies, tables, self.rules, results)
         clock.lap("loops")
         self._name_faults(checked, results.fault, tables.segments)
-        valued = Valued(checked, results, self._months(checked, cell, policies, tables))
+        valued = Valued(checked, results, int(results.months[0]))
         valued.seconds = clock.seconds
         return valued
 
@@ -153,16 +157,16 @@ class Engine:
         )
         fine = checked.reason == 0
         survival = np.zeros(chunk.n, dtype=np.int64)
-        survival[fine] = rows_for(self.survival.codes(mortality, policies)[fine], self.survival.row)
+        survival[fine] = self._survivals.rows_for(self.survival.codes(mortality, policies)[fine])
         self._flag(checked, survival == IMPOSSIBLE, Reason.AGE_OUTSIDE_TABLE, "birth_date")
         policies["survival"] = np.maximum(survival, 0)
         policies["segments"], policies["segments_end"] = self.plans.ranges.T[:, cell]
         self._persistency_rows(chunk, checked, lapse, policies)
         codes = np.maximum(self.discount.codes(interest, policies), 0)
-        discount = rows_for(codes, self.discount.row)
+        discount = self._discounts.rows_for(codes)
         policies["payment"], policies["claim"] = np.array(self.discount.places).T[:, discount]
         policies["claim_shift"] = self._claim_shift(policies)
-        whole = self.plans.slots.numbers_of(chunk, self._months_to_age(chunk, checked))
+        whole = self.plans.slots.numbers_of(chunk, self._months_to_age(chunk, checked, cell))
         self._changing(chunk, checked, cell, whole)
         plans = self.plans
         records = self.survival.records if len(self.survival.records) else np.zeros(1, SURVIVAL)
@@ -175,15 +179,18 @@ class Engine:
         until = self._until.months(chunk, lapse)
         self._flag(checked, until < 0, Reason.NOT_WHOLE_MONTHS, self._until.column)
         codes = (1 + lapse) * (NEVER + 1) + np.maximum(until, 0)
-        rows = rows_for(codes, self.persistency.row)
+        rows = self._persistencies.rows_for(codes)
         policies["lapse"] = rows
         policies["held"], policies["dead"], policies["lapsing"] = np.array(self.persistency.places).T[:, rows]
 
-    def _months_to_age(self, chunk: Chunk, checked: Checked) -> Callable[[int], NDArray[np.int32]]:
-        def find(age: int) -> NDArray[np.int32]:
+    def _months_to_age(
+        self, chunk: Chunk, checked: Checked, cell: NDArray[np.int32]
+    ) -> Callable[[int, int], NDArray[np.int32]]:
+        def find(age: int, column: int) -> NDArray[np.int32]:
             months = np.zeros(chunk.n, dtype=np.int32)
+            concerned = self.plans.using(column)[cell] & (checked.reason == 0)
             birth, commencement = chunk.day("birth_date"), chunk.day("commencement_date")
-            loops.months_to_age(birth, commencement, checked.reason, age, self.settings.step_months, months)
+            loops.months_to_age(birth, commencement, concerned, age, self.settings.step_months, months)
             return months
 
         return find
@@ -192,16 +199,10 @@ class Engine:
         self, chunk: Chunk, checked: Checked, cell: NDArray[np.int32], whole: NDArray[np.int32]
     ) -> None:
         """Fill in the places of relative amounts that depend on the policy."""
-        users: dict[int, list[int]] = {}
-        for number in range(len(self.cells.cells)):
-            for column in self.plans.changing_in(number):
-                users.setdefault(column, []).append(number)
-        for column, cells in users.items():
-            concerned = np.zeros(len(self.cells.cells), dtype=bool)
-            concerned[cells] = True
-            mine = np.flatnonzero(concerned[cell] & (checked.reason == 0))
+        for number in range(len(self.plans.relative.changing)):
+            column = self.plans.slots.changing(number)
+            mine = np.flatnonzero(self.plans.using(column)[cell] & (checked.reason == 0))
             if len(mine):
-                number = int(list(self.plans.slots.whole)[column][1])  # type: ignore[arg-type]
                 whole[mine, column] = self.plans.relative.places_of(number, chunk, whole, mine)
 
     def _claim_shift(self, policies: NDArray[Any]) -> NDArray[np.int64] | int:
@@ -227,20 +228,6 @@ class Engine:
             if named:
                 checked.field[i] = self.needed.index(named[0])
 
-    def _months(
-        self, checked: Checked, cell: NDArray[np.int32], policies: NDArray[Any], tables: loops.Tables
-    ) -> int:
-        """Policy-months from the valuation date to the end of survival or of the longest stream."""
-        segments = self.plans.segments
-        ends = tables.survivals["over"][policies["survival"]]
-        for number, (begin, end) in enumerate(self.plans.ranges[: len(self.cells.cells)]):
-            columns = sorted({int(column) for column in segments["end"][begin:end]})
-            if columns and columns[0] >= 0:
-                mine = np.flatnonzero(cell == number)
-                if len(mine):
-                    ends[mine] = np.minimum(ends[mine], tables.whole[mine][:, columns].max(axis=1))
-        return int(np.maximum(ends - policies["k"], 0)[checked.reason == 0].sum())
-
 
 class _Until:
     """Months after which lapses stop, by lapse rule and perhaps a column of the policy."""
@@ -251,7 +238,8 @@ class _Until:
         fixed = [rule.until if isinstance(rule.until, float | int) else None for rule in rules]
         # The last place answers for rule -1, a basis without lapses.
         self.fixed = np.array(
-            [NEVER if years is None else int(np.floor(12 * years + 1e-6)) for years in fixed] + [NEVER]
+            [NEVER if years is None else min(NEVER, int(np.floor(12 * years + 1e-6))) for years in fixed] + [NEVER],
+            dtype=np.int64,
         )
 
     @property
@@ -260,11 +248,12 @@ class _Until:
         return next((column for column in self.columns if column), "")
 
     def months(self, chunk: Chunk, lapse: NDArray[np.int64]) -> NDArray[np.int64]:
-        months = np.minimum(self.fixed, NEVER)[lapse].astype(np.int64)
-        for rule, column in enumerate(self.columns):
-            if column:
-                mine = lapse == rule
-                months[mine] = whole_months(chunk.number(column)[mine])
+        """Months after which lapses stop, per policy; negative where a column's value is no good."""
+        months = self.fixed[lapse]
+        for column in sorted({column for column in self.columns if column}):
+            asks = np.array([one == column for one in self.columns] + [False])[lapse]
+            if asks.any():
+                np.copyto(months, whole_months(chunk.number(column)), where=asks)
         return months
 
 

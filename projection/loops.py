@@ -12,6 +12,7 @@ from typing import Any, Final, NamedTuple
 
 import numba as nb
 import numpy as np
+from llvmlite import ir
 from numba.core import cgutils, types
 from numba.extending import intrinsic
 
@@ -34,7 +35,9 @@ ROOM: Final = 7
 """Rows of room to work in: weights after and before lapses, of deaths, of lapses (from survivors, or spread), ones, products."""
 
 MAGIC = 6755399441055744.0
-"""1.5 * 2^52: adding and taking it away rounds a double to the nearest whole number, half to even."""
+"""1.5 * 2^52: a number added to it is rounded to a whole one, half to even, which then stands in its last bits."""
+
+MAGIC_BITS = int(np.float64(MAGIC).view(np.int64))
 
 _NO_SURVIVAL = int(Reason.NO_SURVIVAL)
 _MONTHS = int(Reason.NOT_WHOLE_MONTHS)
@@ -85,7 +88,8 @@ class Results(NamedTuple):
     """Per policy: reason (0: valued), the segment at fault, parts in currency (n, 3), and money in minor units (n, 4).
 
     The columns of parts are benefits, expenses and premiums; those of minor the reserve and then the parts. flows: expected cash
-    flows by account and calendar month, BINS to an account, in quanta. room, filled, firsts and counts are to work in.
+    flows by account and calendar month, BINS to an account, in whole quanta. months: policy-months projected, one number. room, filled,
+    firsts and counts are to work in.
     """
 
     reason: Any
@@ -93,6 +97,7 @@ class Results(NamedTuple):
     parts: Any
     minor: Any
     flows: Any
+    months: Any
     room: Any
     filled: Any
     firsts: Any
@@ -114,6 +119,22 @@ def unowned(typing_context, array):
         return whole._getvalue()
 
     return array(array), build
+
+
+@intrinsic
+def bits(typing_context, number):
+    """The 64 bits of a double as a whole number."""
+
+    def build(context, builder, signature, args):
+        return builder.bitcast(args[0], ir.IntType(64))
+
+    return types.int64(types.float64), build
+
+
+@compiled
+def quanta(amount):
+    """An amount rounded to a whole number, half to even; below 2^51 in absolute value."""
+    return bits(amount + MAGIC) - MAGIC_BITS
 
 
 @compiled
@@ -195,11 +216,11 @@ def locate(birth, commencement, reason, today, step, policies):
 
 
 @compiled
-def months_to_age(birth, commencement, reason, age, step, months):
-    """Fill in the months from commencement to the first due date on or after a birthday, at least 0."""
-    for i in range(len(reason)):
-        if reason[i] != 0:
-            months[i] = 0
+def months_to_age(birth, commencement, concerned, age, step, months):
+    """Fill in the months from commencement to the first due date on or after a birthday, at least 0; 0 for the others."""
+    for i in range(len(concerned)):
+        months[i] = 0
+        if not concerned[i]:
             continue
         cy, cm, cd = civil(np.int64(commencement[i]))
         by, bm, bd = civil(np.int64(birth[i]))
@@ -207,6 +228,16 @@ def months_to_age(birth, commencement, reason, age, step, months):
         if months_later(cy, cm, cd, g) < day_count(by + age, bm, bd):
             g += 1
         months[i] = max(0, -(-g // step) * step)
+
+
+@compiled
+def whole_months(years, longest, months):
+    """Fill in durations in years as whole months; -1 where one is missing, negative, too long, or not whole to 1e-6."""
+    for i in range(len(years)):
+        exact = 12.0 * years[i]
+        nearest = np.rint(exact)
+        good = abs(exact - nearest) <= 1e-6 and 0.0 <= nearest <= longest
+        months[i] = np.int32(nearest) if good else -1
 
 
 @compiled
@@ -265,7 +296,7 @@ def sum_monthly(room, weight, pool, relative, discount, flows, flow, count, amou
         w = t
     scale = amount * quantum
     for j in range(n):
-        flows[f + j] += (room[w + j] * scale + MAGIC) - MAGIC
+        flows[f + j] += bits(room[w + j] * scale + MAGIC) - MAGIC_BITS
     one, two, three, four = np.uint64(1), np.uint64(2), np.uint64(3), np.uint64(4)
     sum0, sum1, sum2, sum3 = 0.0, 0.0, 0.0, 0.0
     i = np.uint64(0)
@@ -282,16 +313,16 @@ def sum_monthly(room, weight, pool, relative, discount, flows, flow, count, amou
 
 
 @compiled
-def sum_apart(pool, living, held, relative, discount, a, b, flows, flow, count, apart, amount, quantum):
-    """The same for payments ``apart`` points from one another, with a and b times survival at both ends as occupancy."""
+def sum_apart(pool, living, held, relative, discount, a, b, flows, flow, count, hop, amount, quantum):
+    """The same for payments ``hop`` points from one another, with a and b times survival at both ends as occupancy."""
     scale = amount * quantum
-    hop = np.uint64(apart)
     o, h, r, d, f = np.uint64(living), np.uint64(held), np.uint64(relative), np.uint64(discount), np.uint64(flow)
-    e = np.uint64(living - apart) if a != 0.0 else o
+    e = np.uint64(living - hop) if a != 0.0 else o
+    hop = np.uint64(hop)
     total = 0.0
     for _ in range(count):
         x = (a * pool[e] + b * pool[o]) * pool[h] * pool[r]
-        flows[f] += (x * scale + MAGIC) - MAGIC
+        flows[f] += quanta(x * scale)
         total += x * pool[d]
         e, o, h, r, d, f = e + hop, o + hop, h + hop, r + hop, d + hop, f + hop
     return amount * total
@@ -340,6 +371,8 @@ def first_due(start, period, least):
     """The first of start, start + period ... that is at least ``least``."""
     if start >= least:
         return start
+    if period == 1:  # a division takes as long as everything else here
+        return least
     return start + -(-(least - start) // period) * period
 
 
@@ -378,6 +411,9 @@ def extent(stream, whole, p, survival, last, rules):
         return 0, start, 1 if start > k and low <= month < high and (start <= last or not lives) else 0
     if when == s.DEATH or when == s.LAPSE:
         step = rules.step
+        if step == 1:
+            begin = max(k, start, low)
+            return 0, begin + 1, max(0, min(end, last, high) - begin)
         if start % step != 0 or (end % step != 0 and stream.end >= 0):
             return _YEARS, 0, 0
         # The first step after T starts at or before it; a later one starts where the stream or the clip does.
@@ -385,14 +421,14 @@ def extent(stream, whole, p, survival, last, rules):
         finish = min(end, last + step - 1, over, high + step - 1)
         return 0, begin + step, max(0, (finish - begin) // step)
     period = np.int64(whole[stream.period])
-    if period <= 0 or (stream.whole == 1 and (end - start) % period != 0):
+    if period <= 0 or (period > 1 and stream.whole == 1 and (end - start) % period != 0):
         return _PERIOD, 0, 0
     begin = start
     if stream.guarantee >= 0:
         guaranteed = np.int64(whole[stream.guarantee])
         if guaranteed < 0:
             return _MONTHS, 0, 0
-        if guaranteed % period != 0:
+        if period > 1 and guaranteed % period != 0:
             return _PERIOD, 0, 0
         if stream.cover == s.GUARANTEED:
             end = min(end, start + guaranteed)
@@ -413,7 +449,9 @@ def extent(stream, whole, p, survival, last, rules):
     if stream.cover == s.ALIVE or stream.cover == s.AFTER_GUARANTEE:
         # The third term of Woolhouse's formula looks at both ends of a year.
         stop = min(stop, last + 1 - (12 if when == s.THIRD_TERM else lag))
-    return 0, month + lag, (stop - month + period - 1) // period if stop > month else 0
+    if stop <= month:
+        return 0, month + lag, 0
+    return 0, month + lag, stop - month if period == 1 else (stop - month + period - 1) // period
 
 
 @compiled
@@ -525,14 +563,18 @@ def value_policies(order, policies, tables, rules, results):
         if p.survival != survived or p.held != persisting:
             survived, persisting = p.survival, p.held
             filled[:] = 0
+        furthest = p.k
         for n in range(p.segments, p.segments_end):
             first, count = firsts[n - p.segments], counts[n - p.segments]
+            if count > 0:
+                furthest = max(furthest, first + (count - 1) * apart(segments[n], whole[i], rules))
             if count > 0 or today:
                 value = value_segment(
                     segments[n], p, whole[i], money[i], survival, pool, alive, inforce, first, count, today, rules, flows, room, filled
                 )
                 for c in range(segments[n].charges, segments[n].charges_end):
                     parts[i, charges[c].part] += charges[c].ratio * value
+        results.months[0] += furthest - p.k
         round_results(i, parts, rules.minor, results)
 
 
@@ -565,7 +607,7 @@ def value_segment(stream, p, whole, money, survival, pool, alive, inforce, first
         if due:
             # Survival and discount do not come in; the payment is certain.
             value = amount * pool[relative_place(stream, whole, month, p.k + p.shift)]
-            flows[stream.account * BINS + max(0, p.k + p.shift)] += (value * rules.quantum + MAGIC) - MAGIC
+            flows[stream.account * BINS + max(0, p.k + p.shift)] += quanta(value * rules.quantum)
     if count > 0:
         if stream.when == s.DEATH or stream.when == s.LAPSE:
             value += value_moves(
@@ -589,14 +631,22 @@ def persistency_at(p, pool, rules):
     return held
 
 
+@compiled
+def apart(stream, whole, rules):
+    """Months between the points of a segment."""
+    if stream.when == s.ONCE:
+        return np.int64(1)
+    if stream.when == s.DEATH or stream.when == s.LAPSE:
+        return np.int64(rules.step)
+    if stream.window == s.WHOLE_YEARS:
+        return np.int64(12)
+    return np.int64(whole[stream.period])
+
+
 @inlined
 def value_payments(stream, p, whole, survival, pool, there, first, count, amount, rules, flows, room, filled):
     """Value of payments while alive, for certain, or guaranteed, at their own dates after T; there: L(T) P(T)."""
-    period = np.int64(12)
-    if stream.when == s.ONCE:
-        period = np.int64(1)
-    elif stream.window != s.WHOLE_YEARS:
-        period = np.int64(whole[stream.period])
+    period = apart(stream, whole, rules)
     start = np.int64(whole[stream.start])
     month = first
     if stream.when == s.ARREARS:
@@ -652,7 +702,7 @@ def value_moves(stream, p, whole, survival, pool, alive, inforce, first, count, 
         elif not death:
             share = inforce - pool[p.held + first]
         x = (a * alive + b * pool[survival.living + first]) * share * pool[relative]
-        flows[flow] += (x * amount * rules.quantum + MAGIC) - MAGIC
+        flows[flow] += quanta(x * amount * rules.quantum)
         value = amount * x * pool[discount]
         count -= 1
         first, relative, discount, flow = first + step, relative + (step if relative != ONES else 0), discount + step, flow + step
@@ -712,6 +762,16 @@ def add_totals(group, reason, minor, totals):
             totals[group[i], 0] += 1
             for column in range(minor.shape[1]):
                 totals[group[i], 1 + column] += minor[i, column]
+
+
+@compiled
+def control_sums(amounts, reason, minor, sums):
+    """Add amounts in minor units to sums: of all, of those valued, of the exceptions. What nobody could mean counts as 0."""
+    for i in range(len(amounts)):
+        if abs(amounts[i]) <= 1e12:
+            whole = np.int64(np.rint(amounts[i] * minor))
+            sums[0] += whole
+            sums[1 if reason[i] == 0 else 2] += whole
 
 
 @compiled

@@ -70,6 +70,10 @@ class _Record:
         return replace(self, clip_from=max(self.clip_from, begin), clip_to=min(self.clip_to, end))
 
 
+_SHARED = [name for name in s.SEGMENT.names or () if name not in ("account", "charges", "charges_end")]
+"""Fields that a segment takes from its records."""
+
+
 @dataclass
 class Plans:
     """The plans of all cells met so far: segments and charges, and the range of segments that belongs to each cell.
@@ -86,32 +90,48 @@ class Plans:
     charges: NDArray[Any] = field(default_factory=lambda: np.zeros(0, s.CHARGE))
     ranges: NDArray[np.int64] = field(default_factory=lambda: np.zeros((0, 2), np.int64))
     accounts: dict[Account, int] = field(default_factory=dict)
+    _known: dict[tuple[int, tuple[int, ...], str], tuple[int, int]] = field(default_factory=dict)
 
     def add(self, cell: Cell) -> None:
-        """Add the plan of the next cell; a cell without rules gets an empty one."""
-        records = [] if cell.missing else list(self._records(self.designs[cell.design], cell))
-        begin = len(self.segments)
-        for shape, charged in segments_of(records):
-            self._append(shape, charged)
-        self.ranges = np.concatenate((self.ranges, [[begin, len(self.segments)]]))
+        """Add the plan of the next cell; a cell without rules gets an empty one.
 
-    def _append(self, shape: _Record, charged: list[_Record]) -> None:
-        account = tuple((record.line, record.factor / shape.factor) for record in charged)
-        row = np.zeros(1, s.SEGMENT)
-        for name in s.SEGMENT.names or ():
-            if name not in ("account", "charges", "charges_end"):
-                row[name] = getattr(shape, name)
-        row["account"] = self.accounts.setdefault((shape, account), len(self.accounts))
-        row["charges"] = len(self.charges)
-        charges = np.array([(record.part, record.factor / shape.factor) for record in charged], s.CHARGE)
-        self.charges = np.concatenate((self.charges, charges))
-        row["charges_end"] = len(self.charges)
-        self.segments = np.concatenate((self.segments, row))
+        Cells that differ only in rates share their plan.
+        """
+        key = (cell.design, cell.expenses, cell.missing)
+        if key not in self._known:
+            records = [] if cell.missing else list(self._records(self.designs[cell.design], cell))
+            begin = len(self.segments)
+            made = list(segments_of(records))
+            rows = np.zeros(len(made), s.SEGMENT)
+            charges: list[tuple[int, float]] = []
+            for row, (shape, charged) in zip(rows, made, strict=True):
+                self._fill(row, shape, charged, len(self.charges) + len(charges))
+                charges += [(record.part, record.factor / shape.factor) for record in charged]
+            self.segments = np.concatenate((self.segments, rows))
+            self.charges = np.concatenate((self.charges, np.array(charges, s.CHARGE)))
+            self._known[key] = (begin, len(self.segments))
+        self.ranges = np.concatenate((self.ranges, [self._known[key]]))
 
-    def changing_in(self, cell: int) -> list[int]:
-        """Columns of places of relative amounts that depend on the policy, among the streams of a cell."""
-        begin, end = self.ranges[cell]
-        return sorted({int(column) for column in self.segments["changing"][begin:end] if column >= 0})
+    def _fill(self, row: Any, shape: _Record, charged: list[_Record], charges: int) -> None:
+        for name in _SHARED:
+            row[name] = getattr(shape, name)
+        shares = tuple((record.line, record.factor / shape.factor) for record in charged)
+        row["account"] = self.accounts.setdefault((shape, shares), len(self.accounts))
+        row["charges"], row["charges_end"] = charges, charges + len(charged)
+
+    def using(self, column: int) -> NDArray[np.bool_]:
+        """Say of each cell whether some stream of it looks at a column of the whole-number matrix."""
+        uses = np.zeros(len(self.ranges), dtype=bool)
+        looked = np.zeros(len(self.segments) + 1, dtype=np.int64)
+        for name in ("start", "end", "guarantee", "period", "changing"):
+            looked[1:] |= self.segments[name] == column
+        # The largest of some durations looks at each of them.
+        for (kind, parts), latest in self.slots.whole.items():
+            if kind == "latest" and column in parts:  # type: ignore[operator]
+                looked[1:] |= self.segments["end"] == latest
+        until = np.cumsum(looked)
+        uses[:] = until[self.ranges[:, 1]] > until[self.ranges[:, 0]]
+        return uses
 
     def _records(self, design: Design, cell: Cell) -> Iterator[_Record]:
         made: dict[str, list[_Record]] = {}

@@ -15,12 +15,11 @@ from numpy.typing import NDArray
 from portfolios.chunk import Chunk
 from portfolios.designs import AtAge, Duration
 
+from . import loops
 from .streams import LONGEST
 
 NOT_WHOLE = -1
 """Stands in the months matrix for a duration that is missing, negative, or not in whole months."""
-
-_TOLERANCE = 1e-6
 
 Key = tuple[str, float | int | str | tuple[int, ...]]
 
@@ -77,15 +76,15 @@ class Slots:
             matrix[:, column] = chunk.number(name)
         return matrix
 
-    def numbers_of(self, chunk: Chunk, months_to_age: Callable[[int], NDArray[np.int32]]) -> NDArray[np.int32]:
+    def numbers_of(self, chunk: Chunk, months_to_age: Callable[[int, int], NDArray[np.int32]]) -> NDArray[np.int32]:
         """Return the whole-number matrix of a chunk: NOT_WHOLE for a duration that is no good, 0 for no frequency.
 
-        months_to_age: months from commencement to an age, per policy. Places of rows are left at 0.
+        months_to_age: gives the months from commencement to an age per policy, told age and column. Places of rows are left at 0.
         """
         matrix = np.zeros((chunk.n, len(self.whole)), dtype=np.int32)
         for (kind, what), column in self.whole.items():
             if kind == "age":
-                matrix[:, column] = months_to_age(int(what))  # type: ignore[arg-type]
+                matrix[:, column] = months_to_age(int(what), column)  # type: ignore[arg-type]
             elif kind == "latest":
                 matrix[:, column] = matrix[:, list(what)].max(axis=1)  # type: ignore[arg-type]
             elif kind == "duration":
@@ -105,8 +104,6 @@ _PERIODS = np.array([0, 12, 6, 0, 3, 0, 0, 0, 0, 0, 0, 0, 1, 0], dtype=np.int32)
 
 def whole_months(years: NDArray[np.float64]) -> NDArray[np.int32]:
     """Return durations in years as whole months; NOT_WHOLE where that cannot be."""
-    months = 12 * years
-    nearest = np.rint(months)
-    with np.errstate(invalid="ignore"):
-        good = (np.abs(months - nearest) <= _TOLERANCE) & (nearest >= 0) & (nearest <= LONGEST)
-    return np.where(good, nearest, NOT_WHOLE).astype(np.int32)
+    months = np.empty(len(years), dtype=np.int32)
+    loops.whole_months(years, float(LONGEST), months)
+    return months

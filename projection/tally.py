@@ -16,19 +16,12 @@ from .results import MONEY_COLUMNS, ControlTotal
 QUANTA = 1000
 """Cash flows are added in whole thousandths of a minor unit."""
 
-_EXACT = float(1 << 52)
-
-
-class FlowsTooLarge(ValueError):
-    """Expected cash flows of one chunk too large to be added exactly."""
-
-
 @dataclass
 class ChunkTally:
     """What one chunk adds: money by group, cash flows by line and month, control totals, curiosities."""
 
     totals: NDArray[np.int64]
-    flows: NDArray[np.float64]
+    flows: NDArray[np.int64]
     control: dict[str, tuple[int, int, int]]
     exceptions: pa.Table
     policies: pa.Table
@@ -50,16 +43,11 @@ class Tally:
     seconds: dict[str, float] = field(default_factory=dict)
 
     def add(self, part: ChunkTally) -> None:
-        """Add a chunk. Raises FlowsTooLarge where its cash flows are no longer whole numbers in a double."""
+        """Add a chunk."""
         self.totals = _grown(self.totals, len(part.totals))
         self.totals[: len(part.totals)] += part.totals
-        if part.flows.size and max(part.flows.max(), -part.flows.min()) >= _EXACT:
-            raise FlowsTooLarge(
-                "the expected cash flows of one month are too large to be added exactly to a thousandth of the minor "
-                "unit; state the amounts in a larger unit of currency, or use smaller chunks"
-            )
         self.flows = _grown(self.flows, len(part.flows))
-        self.flows[: len(part.flows)] += part.flows.astype(np.int64)
+        self.flows[: len(part.flows)] += part.flows
         for name, figures in part.control.items():
             sums = self.control.setdefault(name, [0, 0, 0])
             for place, figure in enumerate(figures):

@@ -32,7 +32,7 @@ from .plain_check import Candidate, check_sample
 from .results import MONEY_COLUMNS, Outcome, PolicySink, Progress, no_progress
 from .settings import Settings
 from .sheet import convention_sheet
-from .tally import ChunkTally, FlowsTooLarge, Tally
+from .tally import ChunkTally, Tally
 
 
 class RunStopped(ValueError):
@@ -114,10 +114,7 @@ class _Valuation:
         )
         tally = Tally(self.settings.decimals)
         for part in self._parts():
-            try:
-                tally.add(part)
-            except FlowsTooLarge as error:
-                raise RunStopped(str(error)) from error
+            tally.add(part)
             if sink is not None and part.policies.num_rows:
                 sink(part.policies)
             self.read += part.totals_read
@@ -194,13 +191,9 @@ class _Valuation:
         good = valued.valued
         control = {"policies": (chunk.n, int(good.sum()), int((~good).sum()))}
         for name in self.amounts:
-            amounts = np.rint(np.nan_to_num(chunk.number(name), posinf=0.0, neginf=0.0) * self.engine.rules.minor)
-            # What nobody could mean, and no whole number could hold, counts as nothing on all three sides.
-            amounts[np.abs(amounts) > 1e16] = 0.0
-            whole = amounts.astype(np.int64)
-            control[name] = (
-                _exact_sum(whole), _exact_sum(whole[good]), _exact_sum(whole[~good])
-            )  # fmt: skip
+            sums = np.zeros(3, dtype=np.int64)
+            loops.control_sums(chunk.number(name), valued.checked.reason, self.engine.rules.minor, sums)
+            control[name] = (int(sums[0]), int(sums[1]), int(sums[2]))
         return control
 
     def _policies(self, chunk: Chunk, valued: Valued) -> pa.Table:
@@ -297,12 +290,6 @@ class _Sample:
 
     def chosen(self) -> list[Candidate]:
         return [candidate for _, _, candidate in sorted(self._kept, key=lambda kept: -kept[0])]
-
-
-def _exact_sum(whole: Any) -> int:
-    """Sum of whole numbers of up to 1e16, which 64 bits hold for a few hundred of them at least."""
-    high, low = whole >> 32, whole & 0xFFFFFFFF
-    return (int(high.sum()) << 32) + int(low.sum())
 
 
 def _plain(column: pa.Array) -> pa.Array:
