@@ -116,7 +116,8 @@ class Engine:
             counts=np.empty(len(tables.segments) + 1, dtype=np.int64),
         )
         order = self._order(policies, cell, tables)
-        loops.value_policies(order, policies, tables, self.rules, results)
+        tables = tables._replace(money=_taken(tables.money, order), whole=_taken(tables.whole, order))
+        loops.value_policies(order, _records_taken(policies, order), tables, self.rules, results)
         clock.lap("loops")
         self._name_faults(checked, results.fault, tables.segments)
         valued = Valued(checked, results, int(results.months[0]))
@@ -227,6 +228,16 @@ class Engine:
             named = [name for name in map(self.plans.slots.named, columns) if name in self.needed]
             if named:
                 checked.field[i] = self.needed.index(named[0])
+
+
+def _taken(rows: NDArray[Any], order: NDArray[np.int64]) -> NDArray[Any]:
+    """Rows in another order, so that the loops walk through memory and do not jump about in it."""
+    return np.take(rows, order, axis=0, mode="clip")
+
+
+def _records_taken(records: NDArray[Any], order: NDArray[np.int64]) -> NDArray[Any]:
+    # As rows of whole numbers: numpy moves records one by one.
+    return _taken(records.view(np.int64).reshape(len(records), -1), order).view(POLICY).reshape(-1)
 
 
 class _Until:

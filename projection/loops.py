@@ -51,6 +51,8 @@ _NOT_FINITE = int(Reason.RESULT_NOT_FINITE)
 LARGEST_RESULT = 1e15
 """Minor units that a policy's results may reach; sums over many millions of policies stay exact."""
 
+_SHARES = np.array([0] + [(1 << 32) // period + 1 for period in range(1, 13)], dtype=np.int64)
+
 compiled = nb.njit(cache=True, nogil=True, error_model="numpy")
 
 inlined = nb.njit(cache=True, nogil=True, error_model="numpy", forceinline=True)
@@ -367,13 +369,28 @@ def fill_weights(kind, pool, living, held, begin, end, base, room):
 
 
 @compiled
+def periods_in(months, period):
+    """Whole periods of 1, 3, 6 or 12 months in a number of months from 0 to 2^20.
+
+    By multiplication with 2^32 / period, rounded up; the processor's division takes ten times as long.
+    """
+    if period == 1:
+        return months
+    return (months * _SHARES[period]) >> 32
+
+
+@compiled
+def leftover(months, period):
+    """What whole periods leave of a number of months."""
+    return months - periods_in(months, period) * period
+
+
+@compiled
 def first_due(start, period, least):
     """The first of start, start + period ... that is at least ``least``."""
     if start >= least:
         return start
-    if period == 1:  # a division takes as long as everything else here
-        return least
-    return start + -(-(least - start) // period) * period
+    return start + periods_in(least - start + period - 1, period) * period
 
 
 @inlined
@@ -414,21 +431,21 @@ def extent(stream, whole, p, survival, last, rules):
         if step == 1:
             begin = max(k, start, low)
             return 0, begin + 1, max(0, min(end, last, high) - begin)
-        if start % step != 0 or (end % step != 0 and stream.end >= 0):
+        if leftover(start, step) != 0 or (stream.end >= 0 and leftover(end, step) != 0):
             return _YEARS, 0, 0
         # The first step after T starts at or before it; a later one starts where the stream or the clip does.
-        begin = max(k // step * step, first_due(0, step, max(start, low)))
+        begin = max(k - leftover(k, step), first_due(0, step, max(start, low)))
         finish = min(end, last + step - 1, over, high + step - 1)
-        return 0, begin + step, max(0, (finish - begin) // step)
+        return 0, begin + step, periods_in(max(0, finish - begin), step)
     period = np.int64(whole[stream.period])
-    if period <= 0 or (period > 1 and stream.whole == 1 and (end - start) % period != 0):
+    if period <= 0 or (stream.whole == 1 and leftover(end - start, period) != 0):
         return _PERIOD, 0, 0
     begin = start
     if stream.guarantee >= 0:
         guaranteed = np.int64(whole[stream.guarantee])
         if guaranteed < 0:
             return _MONTHS, 0, 0
-        if period > 1 and guaranteed % period != 0:
+        if leftover(guaranteed, period) != 0:
             return _PERIOD, 0, 0
         if stream.cover == s.GUARANTEED:
             end = min(end, start + guaranteed)
@@ -449,9 +466,7 @@ def extent(stream, whole, p, survival, last, rules):
     if stream.cover == s.ALIVE or stream.cover == s.AFTER_GUARANTEE:
         # The third term of Woolhouse's formula looks at both ends of a year.
         stop = min(stop, last + 1 - (12 if when == s.THIRD_TERM else lag))
-    if stop <= month:
-        return 0, month + lag, 0
-    return 0, month + lag, stop - month if period == 1 else (stop - month + period - 1) // period
+    return 0, month + lag, periods_in(max(0, stop - month + period - 1), period)
 
 
 @compiled
@@ -524,7 +539,10 @@ def last_point(survival, pool, alive):
 
 @compiled
 def value_policies(order, policies, tables, rules, results):
-    """Value the policies in the given order: parts, rounded results, and expected cash flows per account and month."""
+    """Value the policies: parts, rounded results, and expected cash flows per account and month.
+
+    policies and the tables' matrices are in the order of calculation; order: the place of each policy in the results.
+    """
     segments, charges, survivals = unowned(tables.segments), unowned(tables.charges), unowned(tables.survivals)
     pool, money, whole = unowned(tables.pool), unowned(tables.money), unowned(tables.whole)
     parts, flows = unowned(results.parts), unowned(results.flows)
@@ -535,7 +553,7 @@ def value_policies(order, policies, tables, rules, results):
         i = order[j]
         if results.reason[i] != 0:
             continue
-        p = policies[i]
+        p = policies[j]
         survival = survivals[p.survival]
         alive = survival_at(survival, pool, p.k + p.part / p.whole, rules.fractions)
         inforce = persistency_at(p, pool, rules)
@@ -548,12 +566,12 @@ def value_policies(order, policies, tables, rules, results):
         going = False
         for n in range(p.segments, p.segments_end):
             reason, firsts[n - p.segments], counts[n - p.segments] = extent(
-                segments[n], whole[i], p, survival, last, rules
+                segments[n], whole[j], p, survival, last, rules
             )
             if reason != 0:
                 results.fault[i] = n
                 break
-            if segments[n].own == 1 and (counts[n - p.segments] > 0 or (today and due_today(segments[n], whole[i], p, rules)[0])):
+            if segments[n].own == 1 and (counts[n - p.segments] > 0 or (today and due_today(segments[n], whole[j], p, rules)[0])):
                 going = True
         if reason == 0 and not going:
             reason = _MATURED
@@ -567,10 +585,10 @@ def value_policies(order, policies, tables, rules, results):
         for n in range(p.segments, p.segments_end):
             first, count = firsts[n - p.segments], counts[n - p.segments]
             if count > 0:
-                furthest = max(furthest, first + (count - 1) * apart(segments[n], whole[i], rules))
+                furthest = max(furthest, first + (count - 1) * apart(segments[n], whole[j], rules))
             if count > 0 or today:
                 value = value_segment(
-                    segments[n], p, whole[i], money[i], survival, pool, alive, inforce, first, count, today, rules, flows, room, filled
+                    segments[n], p, whole[j], money[j], survival, pool, alive, inforce, first, count, today, rules, flows, room, filled
                 )
                 for c in range(segments[n].charges, segments[n].charges_end):
                     parts[i, charges[c].part] += charges[c].ratio * value
