@@ -48,9 +48,7 @@ class Lapse(Item):
         description="deaths through the step and lapses at its end from the survivors; or dependent rates from "
         "independent ones, each decrement uniform in its single table",
     )
-    rule: list[LapseRule] = Field(
-        min_length=1, description="read top to bottom, the first that fits wins"
-    )
+    rule: list[LapseRule] = Field(min_length=1, description="read top to bottom, the first that fits wins")
 
 
 def yearly_lapse(rule: LapseRule, rates: list[float], policy_year: int) -> float:

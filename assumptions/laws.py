@@ -79,10 +79,10 @@ class Law(Sourced):
         """Force of mortality at an exact age, and at a duration since selection if one is given."""
         if self.omega is not None:
             return math.inf if age >= self.omega else 1 / (self.omega - age)
-        ultimate = self.A + self.B * self.c**age
+        ultimate: float = self.A + self.B * self.c**age
         if self.select is None or duration is None or duration >= self.select.years:
             return ultimate
-        return self.select.factor ** (self.select.years - duration) * ultimate
+        return float(self.select.factor ** (self.select.years - duration) * ultimate)
 
     def rate(self, entry_age: float, duration: int) -> float:
         """Rate q_[x]+t of the year that starts ``duration`` whole years after entry at exact age x.

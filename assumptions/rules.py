@@ -47,8 +47,7 @@ class Rule(Sourced):
     for_: dict[str, Condition] = Field(
         default_factory=dict,
         alias="for",
-        description="extract columns and the values that fit: a value, a list, or { from, to }; "
-        "absent: every policy",
+        description="extract columns and the values that fit: a value, a list, or { from, to }; absent: every policy",
     )
 
     def fits(self, policy: Mapping[str, Any]) -> bool:

@@ -46,7 +46,8 @@ class Stream(_Part):
 
     name: str = Field(min_length=1, description="name in cash flows and reports")
     kind: Kind | None = Field(
-        None, description="part of the reserve that it belongs to; absent: 'premium' where the direction is in, else 'benefit'"
+        None,
+        description="part of the reserve that it belongs to; absent: 'premium' if the direction is in, else 'benefit'",
     )
     direction: Literal["in", "out"] | None = Field(None, description="whether the office receives or pays it")
     amount: float | str | None = Field(
@@ -54,7 +55,8 @@ class Stream(_Part):
     )
     share: float = Field(1.0, ge=0, le=1000, description="factor on the amount")
     of: str | None = Field(
-        None, description="name of another stream: paid whenever that one pays, as a share of it; replaces 'amount' and dates"
+        None,
+        description="name of another stream: paid whenever that one pays, as a share of it; replaces amount and dates",
     )
     while_: Literal["alive", "certain"] | None = Field(
         None, alias="while", description="paid as long as the life lives and the policy is in force, or for certain"
@@ -71,7 +73,9 @@ class Stream(_Part):
     guarantee: float | str | None = Field(
         None, description="years from its start for which it is paid for certain if the life lives at its start"
     )
-    pattern: list[Share] | None = Field(None, min_length=1, description="relative amounts by years of the stream's clock")
+    pattern: list[Share] | None = Field(
+        None, min_length=1, description="relative amounts by years of the stream's clock"
+    )
     increase: Increase | None = Field(None, description="yearly increase")
     decrease: Literal["yearly", "monthly"] | None = Field(
         None, description="falls in equal steps from 1 at its start to nothing at its end"

@@ -13,15 +13,16 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from .documents import DocumentError, read_basis, read_designs, read_run
+    from .gate import RunStopped
     from .notebook import Valuation, value
     from .plain import plain_value
     from .settings import Settings
-    from .valuation import RunStopped, value_extract
+    from .valuation import value_extract
     from .working import working
 
 _HOMES = {
     "DocumentError": "documents",
-    "RunStopped": "valuation",
+    "RunStopped": "gate",
     "Settings": "settings",
     "Valuation": "notebook",
     "plain_value": "plain",

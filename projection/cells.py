@@ -1,7 +1,7 @@
 """Cells: sets of policies that every rule of the basis treats alike.
 
-Rules look at a few columns and tell few values apart. Each such column becomes a small code per policy, the codes
-together a signature, and each distinct signature is looked up in the rules once, not once per policy.
+Rules look at a few columns and tell few values apart. Each such column becomes a small code per policy, the
+codes together a signature, and each distinct signature is looked up in the rules once, not once per policy.
 """
 
 from __future__ import annotations
@@ -99,8 +99,8 @@ class _Measured:
 class Cells:
     """Finds the cell of every policy of a chunk; cells are numbered as they are met.
 
-    kinds: per rule column its kind in the extract (text, number, day, flag). Raises DocumentError where a rule compares a
-    column with a value of another kind.
+    kinds: per rule column its kind in the extract (text, number, day, flag). Raises DocumentError where a
+    rule compares a column with a value of another kind.
     """
 
     def __init__(self, designs: list[Design], basis: Basis, kinds: dict[str, str]) -> None:
@@ -173,7 +173,7 @@ def _coder(column: str, kind: str, rules: list[Rule]) -> _Coder:
             values += [bound for bound in (condition.from_, condition.to) if bound is not None]
         else:
             values += condition if isinstance(condition, list) else [condition]
-    fitting = {"text": str, "flag": bool, "number": (int, float), "day": date}[kind]
+    fitting: Any = {"text": str, "flag": bool, "number": (int, float), "day": date}[kind]
     for value in values:
         if not isinstance(value, fitting) or (kind == "number" and isinstance(value, bool)):
             raise DocumentError(f"a rule compares column '{column}', which holds {kind}, with {value!r}")

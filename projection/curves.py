@@ -1,7 +1,7 @@
 """Curves: one row per distinct key met in the portfolio, shared by every policy that has the key.
 
-Survival by mortality rule and age at commencement; persistency by lapse rule and the time at which lapses stop; discount
-factors by interest rule and the part of a step that has passed at the valuation date.
+Survival by mortality rule and age at commencement; persistency by lapse rule and the time at which lapses
+stop; discount factors by interest rule and the part of a step that has passed at the valuation date.
 """
 
 from __future__ import annotations
@@ -37,6 +37,7 @@ NEVER = LONGEST + 1
 """Months until lapses stop where they never do."""
 
 Row = NDArray[np.float64]
+Keys = NDArray[np.int64]
 
 _NEW = -2
 """Stands in a finder for the row of a key not met before."""
@@ -57,7 +58,7 @@ class Survival:
         self.keys = 2 * _SPANS * 160 if self.exact else 256
         self.fractions = FRACTIONS[mortality.fractions]
         for number, (rule, rates) in enumerate(zip(mortality.rule, self.basis.rates, strict=True), 1):
-            if self.exact and getattr(rates, "select_years", 0):
+            if self.exact and getattr(rates, "select_years", False):
                 raise DocumentError(
                     f"mortality, rule {number}: select rates of {rule.table} need an age at commencement in whole "
                     "years; set the key 'age' to last, nearest or next birthday"
@@ -65,7 +66,9 @@ class Survival:
 
     def codes(self, rule: NDArray[np.int64], policies: NDArray[Any]) -> NDArray[np.int64]:
         """Return the key of each policy's row: rule and age at commencement."""
-        age, since, span = policies["age"], policies["since"], policies["span"]
+        age: Keys = policies["age"]
+        since: Keys = policies["since"]
+        span: Keys = policies["span"]
         basis = self.basis.document.mortality.age
         if self.exact:
             key = (2 * np.clip(age, 0, 159) + (span == 366)) * _SPANS + since
@@ -75,7 +78,8 @@ class Survival:
             key = age + 1
         else:
             key = age + (since > span - since)
-        return rule * self.keys + np.clip(key, 0, self.keys - 1)
+        codes: Keys = rule * self.keys + np.clip(key, 0, self.keys - 1)
+        return codes
 
     def row(self, code: int) -> int:
         """Return the row of a key, made on first meeting; IMPOSSIBLE where the rates do not cover the age."""
@@ -125,7 +129,7 @@ def yearly_rates(rule: MortalityRule, rates: Rates, age: float) -> Row:
     adjusted = np.minimum(1.0, rule.multiple * source + rule.extra)
     if rule.close or rates.closed:
         adjusted[-1] = 1.0
-    return adjusted
+    return np.asarray(adjusted)
 
 
 @dataclass
@@ -160,9 +164,7 @@ class Persistency:
             held, dead, lapsing = self._build(self._rates(number - 1, until))
             self.known[code] = len(self.places)
             # One place in front of each row stands for g = -1.
-            self.places.append(
-                (self.pool.add(held) + 1, self.pool.add(dead) + 1, self.pool.add(lapsing) + 1)
-            )
+            self.places.append((self.pool.add(held) + 1, self.pool.add(dead) + 1, self.pool.add(lapsing) + 1))
         return self.known[code]
 
     def _rates(self, rule: int, until: int) -> Row:
@@ -179,7 +181,7 @@ class Persistency:
             shares = np.where(points % 12 == 0, yearly[np.maximum(points // 12 - 1, 0)], 0.0)
         shares[0] = 0.0
         shares[points > until] = 0.0
-        return shares
+        return np.asarray(shares)
 
     def _build(self, shares: Row) -> tuple[Row, Row, Row]:
         held = np.concatenate(([1.0], np.cumprod(1 - shares)))
@@ -210,7 +212,9 @@ class Discount:
 
     def codes(self, rule: NDArray[np.int64], policies: NDArray[Any]) -> NDArray[np.int64]:
         """Return the key of each policy's row: rule, and the part of a month that has passed."""
-        return (rule * 6 + _WHOLES[policies["whole"]]) * _SPANS + policies["part"]
+        part: Keys = policies["part"]
+        whole: Keys = policies["whole"]
+        return (rule * 6 + _WHOLES[whole]) * _SPANS + part
 
     def row(self, code: int) -> int:
         """Return the row of a key, made on first meeting."""
@@ -247,7 +251,7 @@ def factors(curve: Curve, years: Row) -> Row:
     times, integrals = np.array(curve.times), np.array(curve.integrals)
     beyond = np.maximum(years - times[-1], 0)
     integral = np.interp(years, times, integrals) + curve.final_force * beyond
-    return np.exp(-integral)
+    return np.asarray(np.exp(-integral))
 
 
 class Finder:

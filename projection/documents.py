@@ -96,10 +96,12 @@ def _sentence(fault: Any, model: type[BaseModel], content: dict[str, Any]) -> st
     return f"{place}{shown}; it should be {message}"
 
 
+_MEMBERS = {"str", "float", "int", "bool", "date", "AtAge", "Law", "TableFile", "ClaimDelay", "Band"}
+
+
 def _is_place(part: Any) -> bool:
     # The names of union members in a location mean nothing to the author of a document.
-    return isinstance(part, int) or (part.islower() or part.isidentifier()) and "[" not in part and part not in {
-        "str", "float", "int", "bool", "date", "AtAge", "Law", "TableFile", "ClaimDelay", "Band"}  # fmt: skip
+    return isinstance(part, int) or (part.isidentifier() and part not in _MEMBERS)
 
 
 def _short(value: Any) -> str:
@@ -130,9 +132,7 @@ def _keys_beside(keys: list[Any], model: type[BaseModel]) -> list[str]:
     for key in keys[:-1]:
         if isinstance(key, int):
             continue
-        field = next(
-            (field for name, field in current.model_fields.items() if key in (name, field.alias)), None
-        )
+        field = next((field for name, field in current.model_fields.items() if key in (name, field.alias)), None)
         inner = _model_in(field.annotation) if field is not None else None
         if inner is None:
             break

@@ -1,7 +1,8 @@
 """The engine: everything that a run shares, and the way of one chunk through it.
 
-extract -> checks -> cells -> places -> rows of curves -> loops -> results. The engine may be used by several threads, each
-with chunks of its own; what they share grows under a lock, and nobody's result depends on who came first.
+extract -> checks -> cells -> places -> rows of curves -> loops -> results. The engine may be used by several
+threads, each with chunks of its own; what they share grows under a lock, and nobody's result depends on who
+came first.
 """
 
 from __future__ import annotations
@@ -46,14 +47,15 @@ class Valued:
     @property
     def valued(self) -> NDArray[np.bool_]:
         """Which policies have a reserve."""
-        return self.checked.reason == 0
+        valued: NDArray[np.bool_] = self.checked.reason == 0
+        return valued
 
 
 class Engine:
     """Values chunks of policies on one basis, with one set of designs and settings.
 
-    needed: the columns that chunks hold; kinds: of the columns that rules look at. Raises DocumentError where basis,
-    designs and extract do not fit together.
+    needed: the columns that chunks hold; kinds: of the columns that rules look at. Raises DocumentError where
+    basis, designs and extract do not fit together.
     """
 
     def __init__(
@@ -125,11 +127,15 @@ class Engine:
         return valued
 
     def _order(self, policies: NDArray[Any], cell: NDArray[np.int32], tables: loops.Tables) -> NDArray[np.int64]:
-        """Order in which policies with the same streams and rows follow one another, to find them in the processor's cache."""
+        """Order in which policies with the same streams and rows follow one another, still in the cache."""
         order, again = np.arange(len(cell)), np.empty(len(cell), dtype=np.int64)
-        loops.sort_by(policies["lapse"], len(self.persistency.places), order, again)
-        loops.sort_by(policies["survival"], len(tables.survivals), order, again)
-        loops.sort_by(cell.astype(np.int64), len(self.cells.cells), order, again)
+        keys = (
+            (policies["lapse"], len(self.persistency.places)),
+            (policies["survival"], len(tables.survivals)),
+            (cell, len(self.cells.cells)),
+        )
+        for key, size in keys:
+            loops.sort_by(key.astype(np.int64), size, order, again)
         return order
 
     def _locate(self, chunk: Chunk, checked: Checked) -> NDArray[Any]:
@@ -148,9 +154,7 @@ class Engine:
             self._flag(checked, missing[cell], Reason.NO_RULE_FITS, "product")
         return np.maximum(cell, 0)
 
-    def _rows(
-        self, chunk: Chunk, checked: Checked, cell: NDArray[np.int32], policies: NDArray[Any]
-    ) -> loops.Tables:
+    def _rows(self, chunk: Chunk, checked: Checked, cell: NDArray[np.int32], policies: NDArray[Any]) -> loops.Tables:
         known = self.cells.cells
         mortality, lapse, interest = (
             np.array([getattr(one, part) for one in known], dtype=np.int64)[cell]
@@ -196,9 +200,7 @@ class Engine:
 
         return find
 
-    def _changing(
-        self, chunk: Chunk, checked: Checked, cell: NDArray[np.int32], whole: NDArray[np.int32]
-    ) -> None:
+    def _changing(self, chunk: Chunk, checked: Checked, cell: NDArray[np.int32], whole: NDArray[np.int32]) -> None:
         """Fill in the places of relative amounts that depend on the policy."""
         for number in range(len(self.plans.relative.changing)):
             column = self.plans.slots.changing(number)

@@ -1,9 +1,9 @@
 """The compiled loops: where each policy stands, and what each of its streams is worth.
 
-Everything compiled lives in this one file, because a compiled function is kept on disk by the state of its own file
-alone. Nothing here raises: a policy that cannot be valued gets a reason, and the others go on. Sums are taken in an
-order that depends on the policy only. Letters as in the page of conventions: T valuation date, g a point in months
-since commencement, k and f the whole months and the rest of the last one at T.
+Everything compiled lives in this one file, because a compiled function is kept on disk by the state of its
+own file alone. Nothing here raises: a policy that cannot be valued gets a reason, and the others go on. Sums
+are taken in an order that depends on the policy only. Letters as in the page of conventions: T valuation
+date, g a point in months since commencement, k and f the whole months and the rest of the last one at T.
 """
 
 from __future__ import annotations
@@ -32,7 +32,7 @@ SPREAD: Final = 4
 CERTAINLY: Final = 5
 SCRATCH: Final = 6
 ROOM: Final = 7
-"""Rows of room to work in: weights after and before lapses, of deaths, of lapses (from survivors, or spread), ones, products."""
+"""Rows to work in: weights after and before lapses, of deaths, of lapses (of survivors, or spread), ones, products."""
 
 MAGIC = 6755399441055744.0
 """1.5 * 2^52: a number added to it is rounded to a whole one, half to even, which then stands in its last bits."""
@@ -62,9 +62,9 @@ inlined = nb.njit(cache=True, nogil=True, error_model="numpy", forceinline=True)
 class Rules(NamedTuple):
     """What holds for the whole run.
 
-    step: months; outstanding: 1 if payments due on T are to come; fractions: 0 constant force, 1 uniform deaths, 2 Balducci;
-    dependent: 1 for decrements uniform in their single tables; quantum: cash flows are rounded to whole multiples of
-    1 / quantum; minor: minor units in one of currency.
+    step: months; outstanding: 1 if payments due on T are to come; fractions: 0 constant force, 1 uniform
+    deaths, 2 Balducci; dependent: 1 for decrements uniform in their single tables; quantum: cash flows are
+    rounded to whole multiples of 1 / quantum; minor: minor units in one of currency.
     """
 
     step: int
@@ -89,9 +89,9 @@ class Tables(NamedTuple):
 class Results(NamedTuple):
     """Per policy: reason (0: valued), the segment at fault, parts in currency (n, 3), and money in minor units (n, 4).
 
-    The columns of parts are benefits, expenses and premiums; those of minor the reserve and then the parts. flows: expected cash
-    flows by account and calendar month, BINS to an account, in whole quanta. months: policy-months projected, one number. room, filled,
-    firsts and counts are to work in.
+    The columns of parts are benefits, expenses and premiums; those of minor the reserve and then the parts.
+    flows: expected cash flows by account and calendar month, BINS to an account, in whole quanta. months:
+    policy-months projected, one number. room, filled, firsts and counts are to work in.
     """
 
     reason: Any
@@ -110,8 +110,8 @@ class Results(NamedTuple):
 def unowned(typing_context, array):
     """The same array without a count of its owners.
 
-    Counting owners at every call is an atomic operation on memory that the threads share; it took ten times as long as
-    the arithmetic. The caller of the compiled function owns the arrays while it runs.
+    Counting owners at every call is an atomic operation on memory that the threads share; it took ten times
+    as long as the arithmetic. The caller of the compiled function owns the arrays while it runs.
     """
 
     def build(context, builder, signature, args):
@@ -219,7 +219,7 @@ def locate(birth, commencement, reason, today, step, policies):
 
 @compiled
 def months_to_age(birth, commencement, concerned, age, step, months):
-    """Fill in the months from commencement to the first due date on or after a birthday, at least 0; 0 for the others."""
+    """Fill in the months from commencement to the first due date on or after a birthday, at least 0."""
     for i in range(len(concerned)):
         months[i] = 0
         if not concerned[i]:
@@ -286,9 +286,9 @@ def survival_at(survival, pool, months, rule):
 def sum_monthly(room, weight, pool, relative, discount, flows, flow, count, amount, quantum):
     """Sum of payments at every point: amount x weight x relative x discount; adds them to the cash flows.
 
-    weight ... flow: places of the first payment. The sum runs in four lanes, payment by payment, and so always in the same
-    order. Places are unsigned, which spares the loops a look for negative ones; three short loops keep the processor's
-    vector units busier than one long one.
+    weight ... flow: places of the first payment. The sum runs in four lanes, payment by payment, and so
+    always in the same order. Places are unsigned, which spares the loops a look for negative ones; three
+    short loops keep the processor's vector units busier than one long one.
     """
     n, w, f, d = np.uint64(count), np.uint64(weight), np.uint64(flow), np.uint64(discount)
     if relative != ONES:
@@ -332,10 +332,11 @@ def sum_apart(pool, living, held, relative, discount, a, b, flows, flow, count, 
 
 @inlined
 def weights(kind, pool, living, held, first, count, filled, room):
-    """Place of the first of some monthly weights, survival x persistency at points or in steps; fills in what is missing.
+    """Place of the first of some monthly weights, survival x persistency; fills in what is missing.
 
-    kind: AFTER, BEFORE, DYING, LAPSING or SPREAD; living, held: places of g = 0 in the rows that the kind takes; filled:
-    (kind, 2) the points for which the room holds weights, forgotten when another pair of rows comes along.
+    kind: AFTER, BEFORE, DYING, LAPSING or SPREAD; living, held: places of g = 0 in the rows that the kind
+    takes; filled: (kind, 2) the points for which the room holds weights, forgotten when another pair of rows
+    comes along.
     """
     base = kind * BINS
     low, high = filled[kind, 0], filled[kind, 1]
@@ -354,7 +355,7 @@ def fill_weights(kind, pool, living, held, begin, end, base, room):
         return
     n = np.uint64(end - begin)
     o, h, w = np.uint64(living + begin), np.uint64(held + begin), np.uint64(base + begin)
-    if kind == AFTER or kind == BEFORE:
+    if kind in (AFTER, BEFORE):
         for j in range(n):
             room[w + j] = pool[o + j] * pool[h + j]
         return
@@ -404,8 +405,8 @@ def formula_from(stream, start, p, rules):
 def extent(stream, whole, p, survival, last, rules):
     """Reason, first point and number of points after T of a segment of streams.
 
-    whole: the policy's whole numbers; last: the last point that counts, at most survival.over. A payment due exactly
-    on T is not among the points.
+    whole: the policy's whole numbers; last: the last point that counts, at most survival.over. A payment due
+    exactly on T is not among the points.
     """
     k = p.k
     if stream.clip_to <= k - 12:
@@ -522,7 +523,7 @@ def relative_place(stream, whole, month, calendar):
 
 @compiled
 def last_point(survival, pool, alive):
-    """The last point at which survival still counts beside survival to T, ``alive``; later ones add nothing to a double."""
+    """The last point at which survival still counts beside ``alive``, survival to T, in a double."""
     low = survival.living
     high = survival.living + survival.over
     least = alive * 1e-18
@@ -541,7 +542,8 @@ def last_point(survival, pool, alive):
 def value_policies(order, policies, tables, rules, results):
     """Value the policies: parts, rounded results, and expected cash flows per account and month.
 
-    policies and the tables' matrices are in the order of calculation; order: the place of each policy in the results.
+    policies and the tables' matrices are in the order of calculation; order: the place of each policy in the
+    results.
     """
     segments, charges, survivals = unowned(tables.segments), unowned(tables.charges), unowned(tables.survivals)
     pool, money, whole = unowned(tables.pool), unowned(tables.money), unowned(tables.whole)
@@ -571,7 +573,9 @@ def value_policies(order, policies, tables, rules, results):
             if reason != 0:
                 results.fault[i] = n
                 break
-            if segments[n].own == 1 and (counts[n - p.segments] > 0 or (today and due_today(segments[n], whole[j], p, rules)[0])):
+            if segments[n].own == 1 and (
+                counts[n - p.segments] > 0 or (today and due_today(segments[n], whole[j], p, rules)[0])
+            ):
                 going = True
         if reason == 0 and not going:
             reason = _MATURED
@@ -580,7 +584,8 @@ def value_policies(order, policies, tables, rules, results):
             continue
         if p.survival != survived or p.held != persisting:
             survived, persisting = p.survival, p.held
-            filled[:] = 0
+            for kind in range(ROOM):
+                filled[kind, 0] = filled[kind, 1] = 0
         furthest = p.k
         for n in range(p.segments, p.segments_end):
             first, count = firsts[n - p.segments], counts[n - p.segments]
@@ -588,7 +593,21 @@ def value_policies(order, policies, tables, rules, results):
                 furthest = max(furthest, first + (count - 1) * apart(segments[n], whole[j], rules))
             if count > 0 or today:
                 value = value_segment(
-                    segments[n], p, whole[j], money[j], survival, pool, alive, inforce, first, count, today, rules, flows, room, filled
+                    segments[n],
+                    p,
+                    whole[j],
+                    money[j],
+                    survival,
+                    pool,
+                    alive,
+                    inforce,
+                    first,
+                    count,
+                    today,
+                    rules,
+                    flows,
+                    room,
+                    filled,
                 )
                 for c in range(segments[n].charges, segments[n].charges_end):
                     parts[i, charges[c].part] += charges[c].ratio * value
@@ -610,7 +629,9 @@ def round_results(i, parts, minor, results):
 
 
 @inlined
-def value_segment(stream, p, whole, money, survival, pool, alive, inforce, first, count, today, rules, flows, room, filled):
+def value_segment(
+    stream, p, whole, money, survival, pool, alive, inforce, first, count, today, rules, flows, room, filled
+):
     """Value of a segment for one policy."""
     amount = stream.factor
     if stream.amount >= 0:
@@ -723,12 +744,29 @@ def value_moves(stream, p, whole, survival, pool, alive, inforce, first, count, 
         flows[flow] += quanta(x * amount * rules.quantum)
         value = amount * x * pool[discount]
         count -= 1
-        first, relative, discount, flow = first + step, relative + (step if relative != ONES else 0), discount + step, flow + step
+        first, relative, discount, flow = (
+            first + step,
+            relative + (step if relative != ONES else 0),
+            discount + step,
+            flow + step,
+        )
     if count <= 0:
         return value
     if step > 1 or count < 4:
         return value + sum_apart(
-            pool, survival.living + first, held + first, relative, discount, a, b, flows, flow, count, step, amount, rules.quantum
+            pool,
+            survival.living + first,
+            held + first,
+            relative,
+            discount,
+            a,
+            b,
+            flows,
+            flow,
+            count,
+            step,
+            amount,
+            rules.quantum,
         )
     weight = weights(kind, pool, survival.living, held, first, count, filled, room)
     return value + sum_monthly(room, weight, pool, relative, discount, flows, flow, count, amount, rules.quantum)
@@ -784,7 +822,7 @@ def add_totals(group, reason, minor, totals):
 
 @compiled
 def control_sums(amounts, reason, minor, sums):
-    """Add amounts in minor units to sums: of all, of those valued, of the exceptions. What nobody could mean counts as 0."""
+    """Add amounts in minor units to three sums: all, valued, exceptions. What nobody could mean counts as 0."""
     for i in range(len(amounts)):
         if abs(amounts[i]) <= 1e12:
             whole = np.int64(np.rint(amounts[i] * minor))
@@ -794,7 +832,7 @@ def control_sums(amounts, reason, minor, sums):
 
 @compiled
 def sort_by(keys, size, order, again):
-    """Put ``order`` in order of the keys of its policies, 0 to size - 1; equal keys keep their order. again: room for it."""
+    """Put ``order`` in order of keys from 0 to size - 1; equal keys keep their order. again: room for it."""
     starts = np.zeros(size + 1, np.int64)
     for key in keys:
         starts[key + 1] += 1
@@ -803,4 +841,5 @@ def sort_by(keys, size, order, again):
     for i in order:
         again[starts[keys[i]]] = i
         starts[keys[i]] += 1
-    order[:] = again
+    for i in range(len(order)):
+        order[i] = again[i]

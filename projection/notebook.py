@@ -26,8 +26,9 @@ Designs = str | Path | Design | dict[str, Any] | Sequence[Design | dict[str, Any
 class Valuation:
     """What a valuation found.
 
-    policies: one row per valued policy in the order of the extract, with policy_id, product, the groups, reserve,
-    value_of_benefits, value_of_expenses and value_of_premiums in currency; outcome: everything else, for the record.
+    policies: one row per valued policy in the order of the extract, with policy_id, product, the groups,
+    reserve, value_of_benefits, value_of_expenses and value_of_premiums in currency; outcome: everything else,
+    for the record.
     """
 
     policies: pa.Table
@@ -67,11 +68,13 @@ def value(
     """Value policies: the same run as the command ``duecourse reserve``, with the results in memory.
 
     extract: a Parquet file, folder, pattern or URI, an Arrow table, or a DataFrame, with the columns that
-    ``portfolios.columns`` lists; designs: a folder or document, or designs (objects or dictionaries as in TOML); basis: a
-    document, a dictionary as in TOML, or what ``read_basis`` returned; the rest as in a run document.
-    exceptions_limit: at the default of 1 no share of exceptions stops the run; look at ``.exceptions``.
+    ``portfolios.columns`` lists; designs: a folder or document, or designs (objects or dictionaries as in
+    TOML); basis: a document, a dictionary as in TOML, or what ``read_basis`` returned; the rest as in a run
+    document. exceptions_limit: at the default of 1 no share of exceptions stops the run; look at
+    ``.exceptions``.
 
-    Raises DocumentError, ExtractError (what is given is wrong) and RunStopped (the run must not go on), all ValueErrors.
+    Raises DocumentError, ExtractError (what is given is wrong) and RunStopped (the run must not go on), all
+    ValueErrors.
     """
     pieces: list[pa.Table] = []
     outcome = value_extract(

@@ -2,12 +2,18 @@
 
 from __future__ import annotations
 
+import heapq
 from dataclasses import dataclass
+from threading import Lock
 from typing import Any
 
+import numpy as np
+
 from assumptions.basis import Basis
+from portfolios.chunk import Chunk
 from portfolios.designs import Design
 
+from .engine import Valued
 from .plain import plain_value
 from .results import SampleCheck
 from .settings import Settings
@@ -22,9 +28,7 @@ class Candidate:
     parts: list[float]
 
 
-def check_sample(
-    chosen: list[Candidate], designs: list[Design], basis: Basis, settings: Settings
-) -> SampleCheck:
+def check_sample(chosen: list[Candidate], designs: list[Design], basis: Basis, settings: Settings) -> SampleCheck:
     """Value the chosen policies with the plain twin and return the largest difference.
 
     The difference is that of the parts, relative to the sum of their absolute values. A policy that the twin
@@ -38,9 +42,7 @@ def check_sample(
     return SampleCheck(len(chosen), worst.largest_difference, worst.largest_relative, worst.policy_id)
 
 
-def _difference(
-    candidate: Candidate, designs: list[Design], basis: Basis, settings: Settings
-) -> tuple[float, float]:
+def _difference(candidate: Candidate, designs: list[Design], basis: Basis, settings: Settings) -> tuple[float, float]:
     try:
         plain = plain_value(candidate.policy, designs[candidate.design], basis, settings, payments=False)
     except ValueError:
@@ -49,3 +51,30 @@ def _difference(
     difference = max(abs(one - other) for one, other in zip(candidate.parts, again, strict=True))
     size = sum(abs(part) for part in again)
     return difference, difference / size if size else difference
+
+
+class Sample:
+    """The policies with the smallest hashes among those valued: the same ones in whatever order they come."""
+
+    def __init__(self, size: int) -> None:
+        self.size = size
+        self._kept: list[tuple[int, int, Candidate]] = []
+        self._lock = Lock()
+
+    def offer(self, chunk: Chunk, valued: Valued) -> None:
+        """Take the policies of a chunk into account; may be called from several threads."""
+        good = np.flatnonzero(valued.valued)
+        hashes = chunk.hashes[good]
+        few = good if len(good) <= self.size else good[np.argpartition(hashes, self.size)[: self.size]]
+        with self._lock:
+            for i in few.tolist():
+                key = -int(chunk.hashes[i])
+                if len(self._kept) >= self.size and key <= self._kept[0][0]:
+                    continue
+                candidate = Candidate(chunk.policy(i), int(valued.checked.product[i]), valued.results.parts[i].tolist())
+                push = heapq.heappush if len(self._kept) < self.size else heapq.heappushpop
+                push(self._kept, (key, chunk.start + i, candidate))
+
+    def chosen(self) -> list[Candidate]:
+        """The sample, in order of hash."""
+        return [candidate for _, _, candidate in sorted(self._kept, key=lambda kept: -kept[0])]

@@ -207,9 +207,7 @@ class Plans:
                     yield replace(piece, span_from=begin, span_to=end)
             begin = end
 
-    def _expense(
-        self, design: Design, item: Expense, rule: int, made: dict[str, list[_Record]]
-    ) -> Iterator[_Record]:
+    def _expense(self, design: Design, item: Expense, rule: int, made: dict[str, list[_Record]]) -> Iterator[_Record]:
         line = self._line(design, item.name, "expense", "out")
         figures = item.rule[rule]
         calendar = -1 if item.inflation is None else self.relative.inflating(item.inflation)
@@ -246,14 +244,13 @@ class Plans:
 def segments_of(records: list[_Record]) -> Iterator[tuple[_Record, list[_Record]]]:
     """Yield what the records of a plan have in common: a segment, and the records that are charged on it.
 
-    Records that differ in line, part, factor and clip only are paid at the same points in the same shape. Their clips cut
-    time into pieces; each piece is a segment, with the largest factor, so that shares of it are at most 1.
+    Records that differ in line, part, factor and clip only are paid at the same points in the same shape.
+    Their clips cut time into pieces; each piece is a segment, with the largest factor, so that shares of it
+    are at most 1.
     """
     alike: dict[_Record, list[_Record]] = {}
     for record in records:
-        shape = replace(
-            record, line=0, part=0, factor=1.0, own=0, whole=0, clip_from=0, clip_to=s.FOR_EVER
-        )
+        shape = replace(record, line=0, part=0, factor=1.0, own=0, whole=0, clip_from=0, clip_to=s.FOR_EVER)
         alike.setdefault(shape, []).append(record)
     for shape, members in alike.items():
         bounds = sorted({bound for record in members for bound in (record.clip_from, record.clip_to)})
@@ -274,8 +271,9 @@ def _sign(stream: Stream) -> int:
 def _woolhouse(record: _Record, when: int, third: bool) -> Iterator[_Record]:
     """Yearly records that stand for m payments a year by Woolhouse's formula.
 
-    A year's payments in advance come to (1 - z) at its start and z at its end, z = (m - 1) / (2 m) = 1/2 - 1/(2 m); so
-    each weight is a half, plus or minus a half of one m-th. The third term carries (m^2 - 1) / (12 m^2).
+    A year's payments in advance come to (1 - z) at its start and z at its end, z = (m - 1) / (2 m) = 1/2 -
+    1/(2 m); so each weight is a half, plus or minus a half of one m-th. The third term carries (m^2 - 1) /
+    (12 m^2).
     """
     near, far = (s.ADVANCE, s.ARREARS) if when == s.ADVANCE else (s.ARREARS, s.ADVANCE)
     yearly = replace(record, window=s.WHOLE_YEARS)
@@ -286,4 +284,3 @@ def _woolhouse(record: _Record, when: int, third: bool) -> Iterator[_Record]:
     if third:
         yield replace(yearly, when=s.THIRD_TERM, factor=-record.factor / 12, power=0)
         yield replace(yearly, when=s.THIRD_TERM, factor=record.factor / 12, power=2)
-

@@ -27,8 +27,8 @@ _WIDE = LONGEST + 1
 class Shape:
     """What a row of relative amounts is made of, besides figures of the policy.
 
-    rate: the yearly increase, or the column that holds it; by: step in months of a decrease to nothing, 0 for none; from_commencement:
-    whether the clock of pattern and increase starts at commencement.
+    rate: the yearly increase, or the column that holds it; by: step in months of a decrease to nothing, 0 for
+    none; from_commencement: whether the clock of pattern and increase starts at commencement.
     """
 
     pattern: Pattern = ()
@@ -45,7 +45,8 @@ class Shape:
     def row(self, rate: float, start: int, length: int) -> NDArray[np.float64]:
         """Relative amounts at months 0, 1 ... of the clock, to LONGEST + 1.
 
-        rate: yearly increase; start: months from the clock's start to the stream's; length: of the stream in months.
+        rate: yearly increase; start: months from the clock's start to the stream's; length: of the stream in
+        months.
         """
         years = _MONTHS // 12
         amounts = shares(self.pattern, years)

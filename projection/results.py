@@ -58,10 +58,10 @@ class SampleCheck:
 class Outcome:
     """A finished valuation.
 
-    totals: one row per group with ``policies``, the money columns and ``rounding``, money in currency rounded to the minor unit.
-    cash_flows: month (first day), product, stream, part, direction, amount; undiscounted expected amounts.
-    exceptions: policy_id, product, reason, field, value, rule; one row per policy not valued.
-    total: sums over all policies in minor units, by money column.
+    totals: one row per group with ``policies``, the money columns and ``rounding``, money in currency rounded
+    to the minor unit. cash_flows: month (first day), product, stream, part, direction, amount; undiscounted
+    expected amounts. exceptions: policy_id, product, reason, field, value, rule; one row per policy not
+    valued. total: sums over all policies in minor units, by money column.
     """
 
     settings: Settings
@@ -106,7 +106,7 @@ def no_progress(done: int, total: int) -> None:
 
 def as_money(minor: int, decimals: int) -> float:
     """Return minor units as the nearest double in currency."""
-    return minor / 10**decimals
+    return float(minor / 10**decimals)
 
 
 JSON = dict[str, Any]

@@ -1,7 +1,7 @@
 """Slots: the rows of numbers per policy that streams refer to, each worked out once per chunk.
 
-Designs name columns, numbers and ages in many places. Each distinct one gets a row: money amounts, durations in whole
-months, months between payments.
+Designs name columns, numbers and ages in many places. Each distinct one gets a row: money amounts, durations
+in whole months, months between payments.
 """
 
 from __future__ import annotations
@@ -28,8 +28,8 @@ Key = tuple[str, float | int | str | tuple[int, ...]]
 class Slots:
     """The distinct amounts and whole numbers of all streams, in order of first use.
 
-    An amount is a column of the money matrix (policy, amount); durations in months, months between payments and places of
-    rows that depend on the policy are columns of the whole-number matrix (policy, number).
+    An amount is a column of the money matrix (policy, amount); durations in months, months between payments
+    and places of rows that depend on the policy are columns of the whole-number matrix (policy, number).
     """
 
     money: dict[str, int] = field(default_factory=dict)
@@ -79,20 +79,21 @@ class Slots:
     def numbers_of(self, chunk: Chunk, months_to_age: Callable[[int, int], NDArray[np.int32]]) -> NDArray[np.int32]:
         """Return the whole-number matrix of a chunk: NOT_WHOLE for a duration that is no good, 0 for no frequency.
 
-        months_to_age: gives the months from commencement to an age per policy, told age and column. Places of rows are left at 0.
+        months_to_age: gives the months from commencement to an age per policy, told age and column. Places of
+        rows are left at 0.
         """
         matrix = np.zeros((chunk.n, len(self.whole)), dtype=np.int32)
         for (kind, what), column in self.whole.items():
             if kind == "age":
                 matrix[:, column] = months_to_age(int(what), column)  # type: ignore[arg-type]
             elif kind == "latest":
-                matrix[:, column] = matrix[:, list(what)].max(axis=1)  # type: ignore[arg-type]
+                matrix[:, column] = matrix[:, list(what)].max(axis=1)  # type: ignore[arg-type, index]
             elif kind == "duration":
                 matrix[:, column] = whole_months(chunk.number(str(what)))
             elif kind == "years":
                 matrix[:, column] = whole_months(np.array([what], dtype=np.float64))[0]
             elif kind == "period":
-                matrix[:, column] = what  # type: ignore[assignment]
+                matrix[:, column] = int(what)  # type: ignore[arg-type]
             elif kind == "frequency":
                 number = np.nan_to_num(chunk.number(str(what)))
                 matrix[:, column] = _PERIODS[np.clip(number, 0, 13).astype(np.int64)]

@@ -1,8 +1,8 @@
 """The records in which streams and policies reach the compiled loops, and the codes in them.
 
-Every field is a number, so that one array of records holds the streams of every cell. A *segment* is what streams of a cell
-have in common where they are paid at the same points in the same shape: a premium, the commission on it, the expenses charged
-on it. It is summed once, and each *charge* takes its share of the sum.
+Every field is a number, so that one array of records holds the streams of every cell. A *segment* is what
+streams of a cell have in common where they are paid at the same points in the same shape: a premium, the
+commission on it, the expenses charged on it. It is summed once, and each *charge* takes its share of the sum.
 """
 
 from __future__ import annotations

@@ -16,6 +16,7 @@ from .results import MONEY_COLUMNS, ControlTotal
 QUANTA = 1000
 """Cash flows are added in whole thousandths of a minor unit."""
 
+
 @dataclass
 class ChunkTally:
     """What one chunk adds: money by group, cash flows by line and month, control totals, curiosities."""
@@ -73,7 +74,9 @@ class Tally:
             (place for place in range(len(self.totals)) if self.totals[place, 0]),
             key=lambda place: tuple((value is None, str(type(value)), value) for value in keys[place]),
         )
-        columns: dict[str, Any] = {name: pa.array([keys[place][at] for place in order]) for at, name in enumerate(names)}
+        columns: dict[str, Any] = {
+            name: pa.array([keys[place][at] for place in order]) for at, name in enumerate(names)
+        }
         rows = self.totals[order] if order else self.totals[:0]
         columns["policies"] = pa.array([int(row[0]) for row in rows], pa.int64())
         for at, name in enumerate(MONEY_COLUMNS):

@@ -2,13 +2,11 @@
 
 from __future__ import annotations
 
-import heapq
 import os
 from collections import deque
 from collections.abc import Collection, Iterator
 from concurrent.futures import Future, ThreadPoolExecutor
-from dataclasses import dataclass, field
-from threading import Lock
+from dataclasses import dataclass
 from time import perf_counter
 from typing import Any
 
@@ -27,31 +25,29 @@ from portfolios.reasons import Reason
 
 from . import loops
 from .engine import Engine, Valued
+from .gate import RunStopped, check_gate
 from .groups import Groups
-from .plain_check import Candidate, check_sample
+from .plain_check import Sample, check_sample
 from .results import MONEY_COLUMNS, Outcome, PolicySink, Progress, no_progress
 from .settings import Settings
 from .sheet import convention_sheet
 from .tally import ChunkTally, Tally
 
 
-class RunStopped(ValueError):
-    """A valuation that must not go on: too many exceptions, a gate that does not close, a sample that differs."""
-
-
 @dataclass(frozen=True)
 class Plan:
     """What a valuation is asked beside its figures.
 
-    group_by: extract columns of the totals; in_force: values of 'status' that are valued; exceptions_limit: share of policies
-    that may be exceptions; sample: policies that the plain twin values again; threads: at most; chunk_rows: policies at a time.
+    group_by: extract columns of the totals; in_force: values of 'status' that are valued; exceptions_limit:
+    share of policies that may be exceptions; sample: policies that the plain twin values again; threads: at
+    most; chunk_rows: policies at a time.
     """
 
     group_by: tuple[str, ...] = ("product",)
     in_force: tuple[str, ...] = ("in force",)
     exceptions_limit: float = 1.0
     sample: int = 40
-    threads: int = field(default_factory=lambda: len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1)
+    threads: int = 2
     chunk_rows: int = CHUNK_ROWS
 
 
@@ -72,20 +68,19 @@ def value_extract(
 ) -> Outcome:
     """Value every policy of an extract.
 
-    sink takes the per-policy results in the order of the extract: policy_id, product, the groups, and the money columns
-    in currency. Raises ExtractError or DocumentError for input that does not fit together, RunStopped where more than
-    ``exceptions_limit`` of the policies cannot be valued, the in-force gate does not close, or the plain twin disagrees.
+    sink takes the per-policy results in the order of the extract: policy_id, product, the groups, and the
+    money columns in currency. Raises ExtractError or DocumentError for input that does not fit together,
+    RunStopped where more than ``exceptions_limit`` of the policies cannot be valued, the in-force gate does
+    not close, or the plain twin disagrees.
     """
-    plan = Plan(tuple(group_by), tuple(in_force), exceptions_limit, sample, threads or Plan().threads, chunk_rows)
+    plan = Plan(tuple(group_by), tuple(in_force), exceptions_limit, sample, threads or usable_cores(), chunk_rows)
     return _Valuation(extract, designs, basis, settings, plan).run(sink, progress)
 
 
 class _Valuation:
     """One valuation under way."""
 
-    def __init__(
-        self, extract: Extract, designs: list[Design], basis: Basis, settings: Settings, plan: Plan
-    ) -> None:
+    def __init__(self, extract: Extract, designs: list[Design], basis: Basis, settings: Settings, plan: Plan) -> None:
         self.extract, self.designs, self.basis, self.settings, self.plan = extract, designs, basis, settings, plan
         self.group_by = plan.group_by
         until = [rule.until for rule in basis.document.lapse.rule] if basis.document.lapse else []
@@ -93,13 +88,11 @@ class _Valuation:
         rule_columns = basis.document.rule_columns()
         self.needed = needed_columns(designs, [*numbers, *rule_columns, *self.group_by])
         extract.need(self.needed, numbers=numbers)
-        self.amounts = [
-            name for name in extract.column_names if name in BY_NAME and BY_NAME[name].kind == "money"
-        ]
+        self.amounts = [name for name in extract.column_names if name in BY_NAME and BY_NAME[name].kind == "money"]
         self.needed = tuple(dict.fromkeys([*self.needed, *self.amounts]))
         extract.need(self.needed, numbers=numbers)
         self.groups = Groups(self.group_by)
-        self.sample = _Sample(plan.sample)
+        self.sample = Sample(plan.sample)
         self.seconds: dict[str, float] = {}
         self.kinds = {column: str(extract.column_kind(column)) for column in rule_columns}
         self.read = 0
@@ -201,14 +194,16 @@ class _Valuation:
         names = dict.fromkeys(["product", *self.group_by])
         columns: dict[str, Any] = {"policy_id": chunk.ids}
         columns.update({name: _plain(chunk.raw(name)) for name in names if name != "policy_id"})
-        columns.update({name: pa.array(np.ascontiguousarray(minor[:, place])) for place, name in enumerate(MONEY_COLUMNS)})
+        columns.update(
+            {name: pa.array(np.ascontiguousarray(minor[:, place])) for place, name in enumerate(MONEY_COLUMNS)}
+        )
         table = pa.table(columns)
         return table if not valued.checked.reason.any() else table.filter(pa.array(valued.valued))
 
     def _outcome(self, tally: Tally, began: float) -> Outcome:
         control = tally.control_totals()
         exceptions = pa.concat_tables([no_exceptions(), *tally.exceptions])
-        self._check_gate(control, exceptions)
+        check_gate(control, exceptions, self.extract.rows, self.plan.exceptions_limit)
         started = perf_counter()
         result = check_sample(self.sample.chosen(), self.designs, self.basis, self.settings)
         self.seconds["sample"] = perf_counter() - started
@@ -241,55 +236,12 @@ class _Valuation:
             timings=seconds,
         )
 
-    def _check_gate(self, control: tuple[Any, ...], exceptions: pa.Table) -> None:
-        if not control or not control[0].read:
-            raise RunStopped("the extract holds no policies")
-        for total in control:
-            if not total.closes:
-                raise RunStopped(
-                    f"the in-force gate does not close for {total.name}: {total.read:,} read, {total.valued:,} valued, "
-                    f"{total.exceptions:,} exceptions"
-                )
-        if control[0].read != self.extract.rows or control[0].exceptions != exceptions.num_rows:
-            raise RunStopped(
-                f"the in-force gate does not close: {self.extract.rows:,} policies in the files, {control[0].read:,} read, "
-                f"{control[0].exceptions:,} exceptions, {exceptions.num_rows:,} of them listed"
-            )
-        share = control[0].exceptions / control[0].read
-        if share > self.plan.exceptions_limit:
-            reasons = exceptions.group_by("reason").aggregate([("reason", "count")]).sort_by([("reason_count", "descending")])
-            worst = ", ".join(f"{row['reason']}: {row['reason_count']:,}" for row in reasons.slice(0, 3).to_pylist())
-            raise RunStopped(
-                f"{control[0].exceptions:,} of {control[0].read:,} policies are exceptions ({share:.2%}), more than the "
-                f"'exceptions_limit' of {self.plan.exceptions_limit:.2%} allows ({worst}); mend the extract or raise the limit"
-            )
 
-
-class _Sample:
-    """The policies with the smallest hashes among those valued: the same ones in whatever order they come."""
-
-    def __init__(self, size: int) -> None:
-        self.size = size
-        self._kept: list[tuple[int, int, Candidate]] = []
-        self._lock = Lock()
-
-    def offer(self, chunk: Chunk, valued: Valued) -> None:
-        good = np.flatnonzero(valued.valued)
-        hashes = chunk.hashes[good]
-        few = good if len(good) <= self.size else good[np.argpartition(hashes, self.size)[: self.size]]
-        with self._lock:
-            for i in few.tolist():
-                key = -int(chunk.hashes[i])
-                if len(self._kept) >= self.size and key <= self._kept[0][0]:
-                    continue
-                candidate = Candidate(
-                    chunk.policy(i), int(valued.checked.product[i]), valued.results.parts[i].tolist()
-                )
-                push = heapq.heappush if len(self._kept) < self.size else heapq.heappushpop
-                push(self._kept, (key, chunk.start + i, candidate))
-
-    def chosen(self) -> list[Candidate]:
-        return [candidate for _, _, candidate in sorted(self._kept, key=lambda kept: -kept[0])]
+def usable_cores() -> int:
+    """Processors that this process may use."""
+    if hasattr(os, "sched_getaffinity"):
+        return len(os.sched_getaffinity(0))
+    return os.cpu_count() or 1
 
 
 def _plain(column: pa.Array) -> pa.Array:

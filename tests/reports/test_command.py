@@ -9,7 +9,7 @@ from typing import Any
 import pytest
 
 import reports.reserve_run
-from projection.valuation import RunStopped
+from projection.gate import RunStopped
 from reports.command import main, run_command
 from reports.installation import PACKAGES, strangers
 
