@@ -10,7 +10,7 @@ from pydantic import BaseModel, ConfigDict, Field
 class Item(BaseModel):
     """A part of a document. Unknown keys are errors, and nothing changes after reading."""
 
-    model_config = ConfigDict(extra="forbid", frozen=True, populate_by_name=True, strict=False)
+    model_config = ConfigDict(extra="forbid", frozen=True, populate_by_name=True, strict=True)
 
 
 class Sourced(Item):

@@ -10,7 +10,7 @@ from collections.abc import Iterable, Mapping, Sequence
 from datetime import date
 from typing import Any, TypeVar
 
-from pydantic import Field, model_validator
+from pydantic import Field, field_validator, model_validator
 
 from .items import Item, Sourced
 
@@ -49,6 +49,14 @@ class Rule(Sourced):
         alias="for",
         description="extract columns and the values that fit: a value, a list, or { from, to }; absent: every policy",
     )
+
+    @field_validator("for_", mode="before")
+    @classmethod
+    def _one_kind(cls, value: Any) -> Any:
+        # A table can only be a band; saying so gives one plain error in place of one for each kind of value.
+        if not isinstance(value, dict):
+            return value
+        return {key: Band.model_validate(part) if isinstance(part, dict) else part for key, part in value.items()}
 
     def fits(self, policy: Mapping[str, Any]) -> bool:
         """Say whether the rule is for this policy, a mapping of extract column to value."""

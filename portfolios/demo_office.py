@@ -5,13 +5,13 @@ Quarrenoy Mutual Life Office, the island of Quarrenoy, its products and every ra
 
 from __future__ import annotations
 
-import secrets
 import shutil
 from importlib.resources import files
 from importlib.resources.abc import Traversable
 from pathlib import Path
 
 from .demo_extract import MOST_POLICIES, Progress, write_extract
+from .unfinished import clean_unfinished, make_parents, new_unfinished, remove_empty, unlock
 
 OFFICE = "Quarrenoy Mutual Life Office"
 EXTRACT = "inforce"
@@ -31,7 +31,8 @@ def write_office(
     written so far and all of them.
 
     Raises ValueError for a number out of range, FileExistsError where the folder holds something, and any
-    other OSError of the disk; whatever was written is taken away again.
+    other OSError of the disk; whatever was written is taken away again. What a killed call with the same
+    folder left behind is removed.
     """
     if not 1 <= policies <= MOST_POLICIES:
         raise ValueError(f"{policies:,} policies; the demo office has 1 to {MOST_POLICIES:,}")
@@ -39,8 +40,9 @@ def write_office(
         raise ValueError(f"the seed is {seed}; it must not be below 0")
     folder = Path(folder)
     _refuse_used(folder)
-    folder.parent.mkdir(parents=True, exist_ok=True)
-    unfinished = folder.with_name(f".{folder.name}.unfinished-{secrets.token_hex(4)}")
+    made = make_parents(folder.parent)
+    clean_unfinished(folder)
+    unfinished, lock = new_unfinished(folder)
     try:
         _copy(files("portfolios").joinpath("office"), unfinished)
         write_extract(unfinished / EXTRACT, policies, seed, progress)
@@ -49,7 +51,10 @@ def write_office(
         unfinished.rename(folder)
     except BaseException:
         shutil.rmtree(unfinished, ignore_errors=True)
+        remove_empty(made)
         raise
+    finally:
+        unlock(lock)
 
 
 def _refuse_used(folder: Path) -> None:
@@ -61,7 +66,7 @@ def _refuse_used(folder: Path) -> None:
 
 
 def _copy(source: Traversable, target: Path) -> None:
-    target.mkdir()
+    target.mkdir(exist_ok=True)
     for entry in source.iterdir():
         if entry.is_dir():
             _copy(entry, target / entry.name)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 
 import numpy as np
 import numpy.typing as npt
@@ -56,6 +56,13 @@ def rule_text(reason: Reason, column: str = "") -> str:
         unit = f" {known.unit}" if known.unit else ""
         return f"the value must lie between {known.low:,g} and {known.high:,.15g}{unit}"
     return reason.rule
+
+
+def sentence(row: Mapping[str, str | None]) -> str:
+    """Return what is wrong with a policy, given its row of exceptions: field, value and rule."""
+    value = f"is '{row['value']}'" if row["value"] else "is missing"
+    where = f"{row['field']} {value}" if row["field"] else ""
+    return "; ".join(part for part in (where, row["rule"] or "") if part)
 
 
 def _said(pair: int, needed: Sequence[str]) -> tuple[Reason, str]:

@@ -92,8 +92,11 @@ class Extract:
             raise ExtractError("\n".join(faults))
         return self._chunks(names, rows)
 
-    def find(self, policy_id: str) -> list[dict[str, Any]]:
-        """Return the rows with this identifier, column to Python value; more than one if it is not unique."""
+    def find(self, policy_id: str) -> list[Chunk]:
+        """Return each row with this identifier as a chunk of its own; more than one if it is not unique.
+
+        The chunks hold every column that can be read.
+        """
         found: set[int] = set()
         for chunk in self.chunks(["policy_id"]):
             there = pc.indices_nonzero(pc.equal(chunk.ids, policy_id)).to_pylist()
@@ -101,10 +104,10 @@ class Extract:
         if not found:
             return []
         usable = [name for name in self.column_names if not any(self._faults(name, None))]
-        policies: list[dict[str, Any]] = []
+        policies: list[Chunk] = []
         for chunk in self.chunks(usable):
-            inside = sorted(row for row in found if chunk.start <= row < chunk.start + chunk.n)
-            policies += [chunk.policy(row - chunk.start) for row in inside]
+            inside = sorted(row - chunk.start for row in found if 0 <= row - chunk.start < chunk.n)
+            policies += [Chunk(chunk.batch.slice(row, 1), chunk.start + row) for row in inside]
             if len(policies) == len(found):
                 break
         return policies

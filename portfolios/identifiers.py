@@ -8,7 +8,7 @@ of the identifier, so that chunks, files and machines do not matter. It is quick
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Protocol
 
 import numpy as np
@@ -134,11 +134,13 @@ class _Extract(Protocol):
 class Duplicates:
     """Identifiers that occur more than once.
 
-    hashes: theirs, ascending; spared: other identifiers with the same hash that occur only once.
+    hashes: theirs, ascending; spared: other identifiers with the same hash that occur only once; smallest: the
+    smallest hashes of all identifiers, ascending, for whoever picks a sample by hash.
     """
 
     hashes: Hashes = field(default_factory=lambda: np.zeros(0, dtype=np.uint64))
     spared: frozenset[str] = frozenset()
+    smallest: Hashes = field(default_factory=lambda: np.zeros(0, dtype=np.uint64))
 
     def __len__(self) -> int:
         return len(self.hashes)
@@ -167,8 +169,8 @@ def members(hashes: Hashes, wanted: Hashes) -> npt.NDArray[np.bool_]:
     return found
 
 
-def find_duplicates(extract: _Extract) -> Duplicates:
-    """Return the identifiers that occur more than once in an extract.
+def find_duplicates(extract: _Extract, keep: int = 0) -> Duplicates:
+    """Return the identifiers that occur more than once in an extract, and the ``keep`` smallest hashes.
 
     Reads the column ``policy_id`` once and, only where two hashes are equal, once more to compare the
     strings. Memory: 8 bytes a policy. Missing and empty identifiers are left out, being exceptions anyway.
@@ -184,8 +186,10 @@ def find_duplicates(extract: _Extract) -> Duplicates:
     hashes.sort()
     equal = hashes[1:] == hashes[:-1]
     twice = np.unique(hashes[1:][equal]) if equal.any() else hashes[:0].copy()
+    smallest = hashes[:keep].copy()
     del hashes, equal
-    return _confirm(extract, twice) if len(twice) else Duplicates()
+    found = _confirm(extract, twice) if len(twice) else Duplicates()
+    return replace(found, smallest=smallest)
 
 
 def _confirm(extract: _Extract, twice: Hashes) -> Duplicates:

@@ -59,7 +59,8 @@ class _Listed:
     def codes(self, chunk: Chunk) -> NDArray[np.int64]:
         codes, values = chunk.text(self.column)
         other = len(self.values)
-        known = {str(value): code for code, value in enumerate(self.values)}
+        # Flags are 'true' and 'false' as text.
+        known = {str(value).lower() if isinstance(value, bool) else value: code for code, value in enumerate(self.values)}
         # The last entry answers for -1, a missing value.
         table = np.array([*(known.get(value, other) for value in values), other + 1], dtype=np.int64)
         return table[codes]
@@ -106,7 +107,7 @@ class Cells:
     def __init__(self, designs: list[Design], basis: Basis, kinds: dict[str, str]) -> None:
         self.designs, self.basis = designs, basis
         self.columns = [column for column in basis.document.rule_columns() if column != "product"]
-        rules = [rule for _, rule in basis.document.rules()]
+        rules = _placed(basis)
         self.coders: list[_Coder] = [_coder(column, kinds[column], rules) for column in self.columns]
         self.cells: list[Cell] = []
         self._numbers: dict[Cell, int] = {}
@@ -163,20 +164,40 @@ class Cells:
         return Cell(design, mortality, lapse, interest, tuple(expenses))
 
 
-def _coder(column: str, kind: str, rules: list[Rule]) -> _Coder:
-    conditions = [rule.for_[column] for rule in rules if column in rule.for_]
-    values: list[Any] = []
-    for condition in conditions:
-        if isinstance(condition, Band):
-            if kind not in ("number", "day"):
-                raise DocumentError(f"a rule asks for a band of '{column}', which holds {kind}")
-            values += [bound for bound in (condition.from_, condition.to) if bound is not None]
-        else:
-            values += condition if isinstance(condition, list) else [condition]
+def _placed(basis: Basis) -> list[tuple[str, Rule]]:
+    """Return every rule with its place as the author of the basis would count it."""
+    count: dict[str, int] = {}
+    placed = []
+    for place, rule in basis.document.rules():
+        count[place] = count.get(place, 0) + 1
+        placed.append((f"{place}, rule {count[place]}", rule))
+    return placed
+
+
+_KINDS = {"text": "text", "number": "numbers", "day": "dates", "flag": "true and false"}
+
+
+def _coder(column: str, kind: str, rules: list[tuple[str, Rule]]) -> _Coder:
     fitting: Any = {"text": str, "flag": bool, "number": (int, float), "day": date}[kind]
-    for value in values:
-        if not isinstance(value, fitting) or (kind == "number" and isinstance(value, bool)):
-            raise DocumentError(f"a rule compares column '{column}', which holds {kind}, with {value!r}")
+    values: list[Any] = []
+    for place, rule in rules:
+        condition = rule.for_.get(column)
+        if condition is None:
+            continue
+        if isinstance(condition, Band):
+            asked: list[Any] = [bound for bound in (condition.from_, condition.to) if bound is not None]
+        else:
+            asked = condition if isinstance(condition, list) else [condition]
+        banded = isinstance(condition, Band) and kind not in ("number", "day")
+        for value in asked:
+            if banded or not isinstance(value, fitting) or (kind == "number" and isinstance(value, bool)):
+                shown = repr(value) if isinstance(value, str) else str(value).lower()
+                what = f"a band with the bound {shown}" if isinstance(condition, Band) else shown
+                raise DocumentError(
+                    f"{place}, for: key '{column}' is {what}, but the extract's column holds {_KINDS[kind]}; "
+                    "no policy could ever fit: compare like with like"
+                )
+        values += asked
     if kind == "day":
         return _Measured(column, [(value - EPOCH).days for value in values], dates=True)
     if kind == "number":

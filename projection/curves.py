@@ -64,22 +64,19 @@ class Survival:
                     "years; set the key 'age' to last, nearest or next birthday"
                 )
 
-    def codes(self, rule: NDArray[np.int64], policies: NDArray[Any]) -> NDArray[np.int64]:
+    def codes(self, rule: Keys, places: loops.Places) -> Keys:
         """Return the key of each policy's row: rule and age at commencement."""
-        age: Keys = policies["age"]
-        since: Keys = policies["since"]
-        span: Keys = policies["span"]
         basis = self.basis.document.mortality.age
+        key: Keys = places.age.astype(np.int64)
         if self.exact:
-            key = (2 * np.clip(age, 0, 159) + (span == 366)) * _SPANS + since
-        elif basis == "last birthday":
-            key = age
+            key = (2 * np.clip(key, 0, 159) + (places.span == 366)) * _SPANS + places.since
         elif basis == "next birthday":
-            key = age + 1
-        else:
-            key = age + (since > span - since)
-        codes: Keys = rule * self.keys + np.clip(key, 0, self.keys - 1)
-        return codes
+            key += 1
+        elif basis == "nearest birthday":
+            key += places.since > places.span - places.since
+        np.clip(key, 0, self.keys - 1, out=key)
+        key += rule * self.keys
+        return key
 
     def row(self, code: int) -> int:
         """Return the row of a key, made on first meeting; IMPOSSIBLE where the rates do not cover the age."""
@@ -210,11 +207,12 @@ class Discount:
     def __post_init__(self) -> None:
         self.paid = self.basis.document.claims.paid
 
-    def codes(self, rule: NDArray[np.int64], policies: NDArray[Any]) -> NDArray[np.int64]:
+    def codes(self, rule: Keys, places: loops.Places) -> Keys:
         """Return the key of each policy's row: rule, and the part of a month that has passed."""
-        part: Keys = policies["part"]
-        whole: Keys = policies["whole"]
-        return (rule * 6 + _WHOLES[whole]) * _SPANS + part
+        key: Keys = rule * 6 + _WHOLES[places.whole]
+        key *= _SPANS
+        key += places.part
+        return key
 
     def row(self, code: int) -> int:
         """Return the row of a key, made on first meeting."""
@@ -234,10 +232,10 @@ class Discount:
             self.places.append((payment, claim))
         return self.known[code]
 
-    def months_after_start(self) -> float | None:
-        """Months from the start of a step to the payment of a death claim; None where it is paid at its end."""
+    def months_after_start(self) -> float:
+        """Months from the start of a step to the payment of a death claim; below 0 where it is paid at its end."""
         if self.paid == "end of step":
-            return None
+            return -1.0
         delay = self.paid.delay_months if isinstance(self.paid, ClaimDelay) else 0.0
         return self.settings.step_months / 2 + delay
 

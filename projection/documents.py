@@ -73,28 +73,49 @@ def check_document(content: dict[str, Any], model: type[Model], name: str) -> Mo
     try:
         return model.model_validate(content)
     except ValidationError as error:
-        faults = dict.fromkeys(_sentence(fault, model, content) for fault in error.errors())
-        raise DocumentError("\n".join(f"{name}: {fault}" for fault in faults)) from None
+        raise DocumentError("\n".join(f"{name}: {fault}" for fault in _sentences(error, model, content))) from None
 
 
-def _sentence(fault: Any, model: type[BaseModel], content: dict[str, Any]) -> str:
+def _sentences(error: ValidationError, model: type[BaseModel], content: dict[str, Any]) -> list[str]:
+    """Say every fault; what may be one of several kinds has a fault for each, which become one sentence."""
+    said: dict[str, list[str]] = {}
+    for fault in error.errors():
+        start, remedy = _sentence(fault, model, content)
+        said.setdefault(start, []).append(remedy)
+    return [start + " or ".join(dict.fromkeys(remedies)) for start, remedies in said.items()]
+
+
+def _sentence(fault: Any, model: type[BaseModel], content: dict[str, Any]) -> tuple[str, str]:
+    """Return place and value of a fault, and its remedy."""
     keys = [part for part in fault["loc"] if _is_place(part)]
     place = _place(keys, content)
     kind = fault["type"]
     if kind == "extra_forbidden":
-        known = sorted(_keys_beside(keys, model))
+        known = sorted(_keys_beside(keys, model, content))
         near = difflib.get_close_matches(str(keys[-1]), known, n=1)
-        remedy = f"did you mean '{near[0]}'?" if near else f"known here: {', '.join(known)}"
-        return f"{place} is not known; {remedy}"
+        return f"{place} is not known; ", f"did you mean '{near[0]}'?" if near else f"known here: {', '.join(known)}"
     if kind == "missing":
-        return f"{place} is missing"
+        return f"{place} is missing", ""
     message = fault["msg"].removeprefix("Value error, ").removeprefix("Input should be ")
-    value = fault.get("input")
     if kind == "value_error":
-        return f"{place}: {message}" if keys else message
-    shown = f" is {_short(value)}" if not isinstance(value, dict | list) else ""
-    return f"{place}{shown}; it should be {message}"
+        return f"{place}: " if keys else "", message
+    return f"{place} is {_short(fault.get('input'))}; it should be ", _WORDS.get(kind, message)
 
+
+_DATE = "a date, written like 2026-11-30 and without quotes"
+_WORDS = {
+    **dict.fromkeys(("int_type", "int_parsing", "int_from_float"), "a whole number"),
+    **dict.fromkeys(("float_type", "float_parsing"), "a number"),
+    **dict.fromkeys(("date_type", "date_parsing", "date_from_datetime_parsing", "date_from_datetime_inexact"), _DATE),
+    **dict.fromkeys(("model_type", "model_attributes_type", "dict_type"), "a table of keys and values"),
+    "bool_type": "true or false",
+    "string_type": "text in quotes",
+    "list_type": "a list in square brackets",
+    "too_short": "a list of at least one item",
+    "string_too_short": "text of at least one letter",
+    "finite_number": "a finite number",
+}
+"""What a value should be, by the kind of fault, where the checker's own words are for programmers."""
 
 _MEMBERS = {"str", "float", "int", "bool", "date", "AtAge", "Law", "TableFile", "ClaimDelay", "Band"}
 
@@ -105,6 +126,12 @@ def _is_place(part: Any) -> bool:
 
 
 def _short(value: Any) -> str:
+    if isinstance(value, dict):
+        return "a table of keys and values"
+    if isinstance(value, list):
+        return "a list" if value else "an empty list"
+    if isinstance(value, bool):
+        return str(value).lower()
     text = repr(value) if isinstance(value, str) else str(value)
     return text if len(text) <= 60 else text[:57] + "..."
 
@@ -126,25 +153,35 @@ def _place(keys: Iterable[Any], content: Any) -> str:
     return f"{where}key '{last}'" if " " not in last else f"{where}{last}"
 
 
-def _keys_beside(keys: list[Any], model: type[BaseModel]) -> list[str]:
+def _keys_beside(keys: list[Any], model: type[BaseModel], content: Any) -> list[str]:
     """Keys that are known where the last of these stands."""
     current: Any = model
     for key in keys[:-1]:
+        content = _inside(content, key)
         if isinstance(key, int):
             continue
         field = next((field for name, field in current.model_fields.items() if key in (name, field.alias)), None)
-        inner = _model_in(field.annotation) if field is not None else None
-        if inner is None:
+        models = _models_in(field.annotation) if field is not None else []
+        if not models:
             break
-        current = inner
-    return [field.alias or name for name, field in current.model_fields.items()]
+        # Where a table may be one of several kinds, the one that knows most of its keys is meant.
+        written = content if isinstance(content, dict) else {}
+        current = max(models, key=lambda kind: len(set(_keys_of(kind)).intersection(written)))
+    return _keys_of(current)
 
 
-def _model_in(annotation: Any) -> type[BaseModel] | None:
+def _inside(content: Any, key: Any) -> Any:
+    try:
+        return content[key]
+    except (KeyError, IndexError, TypeError):
+        return None
+
+
+def _keys_of(model: type[BaseModel]) -> list[str]:
+    return [field.alias or name for name, field in model.model_fields.items()]
+
+
+def _models_in(annotation: Any) -> list[type[BaseModel]]:
     if isinstance(annotation, type) and issubclass(annotation, BaseModel):
-        return annotation
-    for argument in getattr(annotation, "__args__", ()):
-        found = _model_in(argument)
-        if found is not None:
-            return found
-    return None
+        return [annotation]
+    return [found for argument in getattr(annotation, "__args__", ()) for found in _models_in(argument)]

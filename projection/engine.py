@@ -7,7 +7,7 @@ came first.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Collection
+from collections.abc import Collection
 from datetime import date
 from threading import Lock
 from time import perf_counter
@@ -97,53 +97,40 @@ class Engine:
         clock = _Clock()
         checked = self.checks.check(chunk)
         clock.lap("check")
-        policies = self._locate(chunk, checked)
+        places = self._locate(chunk, checked)
         clock.lap("dates")
         with self._lock:
             cell = self._cells(chunk, checked)
             clock.lap("rules")
-            tables = self._rows(chunk, checked, cell, policies)
-            accounts = len(self.plans.accounts)
+            found = self._find(chunk, checked, cell, places)
+        order = self._order(found)
+        policies = np.zeros(chunk.n, POLICY)
+        after = self.discount.months_after_start()
+        loops.fill_policies(order, places, found, after, self.settings.step_months, policies)
+        tables = self._tables(chunk, checked, cell, order)
         clock.lap("curves")
-        results = loops.Results(
-            reason=checked.reason,
-            fault=np.full(chunk.n, -1, dtype=np.int64),
-            parts=np.zeros((chunk.n, 3)),
-            minor=np.zeros((chunk.n, 4), dtype=np.int64),
-            flows=np.zeros(accounts * loops.BINS, dtype=np.int64),
-            months=np.zeros(1, dtype=np.int64),
-            room=np.ones(loops.ROOM * loops.BINS),
-            filled=np.zeros((loops.ROOM, 2), dtype=np.int64),
-            firsts=np.empty(len(tables.segments) + 1, dtype=np.int64),
-            counts=np.empty(len(tables.segments) + 1, dtype=np.int64),
-        )
-        order = self._order(policies, cell, tables)
-        tables = tables._replace(money=_taken(tables.money, order), whole=_taken(tables.whole, order))
-        loops.value_policies(order, _records_taken(policies, order), tables, self.rules, results)
+        results = _room_for(chunk.n, checked, tables, len(self.plans.accounts))
+        loops.value_policies(order, policies, tables, self.rules, results)
         clock.lap("loops")
         self._name_faults(checked, results.fault, tables.segments)
         valued = Valued(checked, results, int(results.months[0]))
         valued.seconds = clock.seconds
         return valued
 
-    def _order(self, policies: NDArray[Any], cell: NDArray[np.int32], tables: loops.Tables) -> NDArray[np.int64]:
-        """Order in which policies with the same streams and rows follow one another, still in the cache."""
-        order, again = np.arange(len(cell)), np.empty(len(cell), dtype=np.int64)
-        keys = (
-            (policies["lapse"], len(self.persistency.places)),
-            (policies["survival"], len(tables.survivals)),
-            (cell, len(self.cells.cells)),
+    def _locate(self, chunk: Chunk, checked: Checked) -> loops.Places:
+        places = loops.Places(*(np.zeros(chunk.n, dtype=np.int32) for _ in loops.Places._fields))
+        places.whole[:] = 30
+        days_of_age = self.basis.document.mortality.age in ("exact", "nearest birthday")
+        loops.locate(
+            chunk.day("birth_date"),
+            chunk.day("commencement_date"),
+            checked.reason,
+            self._today,
+            self.settings.step_months,
+            days_of_age,
+            places,
         )
-        for key, size in keys:
-            loops.sort_by(key.astype(np.int64), size, order, again)
-        return order
-
-    def _locate(self, chunk: Chunk, checked: Checked) -> NDArray[Any]:
-        policies = np.zeros(chunk.n, POLICY)
-        policies["whole"] = 30
-        birth, commencement = chunk.day("birth_date"), chunk.day("commencement_date")
-        loops.locate(birth, commencement, checked.reason, self._today, self.settings.step_months, policies)
-        return policies
+        return places
 
     def _cells(self, chunk: Chunk, checked: Checked) -> NDArray[np.int32]:
         cell = self.cells.of(chunk, checked.product)
@@ -154,67 +141,62 @@ class Engine:
             self._flag(checked, missing[cell], Reason.NO_RULE_FITS, "product")
         return np.maximum(cell, 0)
 
-    def _rows(self, chunk: Chunk, checked: Checked, cell: NDArray[np.int32], policies: NDArray[Any]) -> loops.Tables:
+    def _find(self, chunk: Chunk, checked: Checked, cell: NDArray[np.int32], places: loops.Places) -> loops.Found:
+        """Find each policy's rows of curves, making those that are new."""
         known = self.cells.cells
         mortality, lapse, interest = (
             np.array([getattr(one, part) for one in known], dtype=np.int64)[cell]
             for part in ("mortality", "lapse", "interest")
         )
-        fine = checked.reason == 0
-        survival = np.zeros(chunk.n, dtype=np.int64)
-        survival[fine] = self._survivals.rows_for(self.survival.codes(mortality, policies)[fine])
+        codes = self.survival.codes(mortality, places)
+        if checked.reason.any():
+            # No rows for the ages of policies that are listed already; the first fine one stands in for them.
+            fine = checked.reason == 0
+            codes[~fine] = codes[fine.argmax()]
+        survival = self._survivals.rows_for(codes) if (checked.reason == 0).any() else np.zeros_like(codes)
         self._flag(checked, survival == IMPOSSIBLE, Reason.AGE_OUTSIDE_TABLE, "birth_date")
-        policies["survival"] = np.maximum(survival, 0)
-        policies["segments"], policies["segments_end"] = self.plans.ranges.T[:, cell]
-        self._persistency_rows(chunk, checked, lapse, policies)
-        codes = np.maximum(self.discount.codes(interest, policies), 0)
-        discount = self._discounts.rows_for(codes)
-        policies["payment"], policies["claim"] = np.array(self.discount.places).T[:, discount]
-        policies["claim_shift"] = self._claim_shift(policies)
-        whole = self.plans.slots.numbers_of(chunk, self._months_to_age(chunk, checked, cell))
-        self._changing(chunk, checked, cell, whole)
-        plans = self.plans
-        records = self.survival.records if len(self.survival.records) else np.zeros(1, SURVIVAL)
-        money = plans.slots.amounts_of(chunk)
-        return loops.Tables(plans.segments, plans.charges, records, self.pool.numbers, money, whole)
-
-    def _persistency_rows(
-        self, chunk: Chunk, checked: Checked, lapse: NDArray[np.int64], policies: NDArray[Any]
-    ) -> None:
         until = self._until.months(chunk, lapse)
         self._flag(checked, until < 0, Reason.NOT_WHOLE_MONTHS, self._until.column)
-        codes = (1 + lapse) * (NEVER + 1) + np.maximum(until, 0)
-        rows = self._persistencies.rows_for(codes)
-        policies["lapse"] = rows
-        policies["held"], policies["dead"], policies["lapsing"] = np.array(self.persistency.places).T[:, rows]
+        lapse = self._persistencies.rows_for((1 + lapse) * (NEVER + 1) + np.maximum(until, 0))
+        discount = self._discounts.rows_for(np.maximum(self.discount.codes(interest, places), 0))
+        return loops.Found(
+            cell=cell,
+            survival=np.maximum(survival, 0).astype(np.int32),
+            lapse=lapse.astype(np.int32),
+            discount=discount.astype(np.int32),
+            ranges=self.plans.ranges,
+            persistency=np.array(self.persistency.places, dtype=np.int64),
+            factors=np.array(self.discount.places, dtype=np.int64),
+        )
 
-    def _months_to_age(
-        self, chunk: Chunk, checked: Checked, cell: NDArray[np.int32]
-    ) -> Callable[[int, int], NDArray[np.int32]]:
-        def find(age: int, column: int) -> NDArray[np.int32]:
+    def _order(self, found: loops.Found) -> NDArray[np.int64]:
+        """Order of calculation: policies with the same streams and rows follow one another, still in the cache."""
+        order, again = np.arange(len(found.cell)), np.empty(len(found.cell), dtype=np.int64)
+        for keys in (found.lapse, found.survival, found.cell):
+            loops.sort_by(keys, int(keys.max(initial=0)) + 1, order, again)
+        return order
+
+    def _tables(
+        self, chunk: Chunk, checked: Checked, cell: NDArray[np.int32], order: NDArray[np.int64]
+    ) -> loops.Tables:
+        def months_to_age(age: int, row: int) -> NDArray[np.int32]:
             months = np.zeros(chunk.n, dtype=np.int32)
-            concerned = self.plans.using(column)[cell] & (checked.reason == 0)
+            concerned = self.plans.using(row)[cell] & (checked.reason == 0)
             birth, commencement = chunk.day("birth_date"), chunk.day("commencement_date")
             loops.months_to_age(birth, commencement, concerned, age, self.settings.step_months, months)
             return months
 
-        return find
-
-    def _changing(self, chunk: Chunk, checked: Checked, cell: NDArray[np.int32], whole: NDArray[np.int32]) -> None:
-        """Fill in the places of relative amounts that depend on the policy."""
-        for number in range(len(self.plans.relative.changing)):
-            column = self.plans.slots.changing(number)
-            mine = np.flatnonzero(self.plans.using(column)[cell] & (checked.reason == 0))
-            if len(mine):
-                whole[mine, column] = self.plans.relative.places_of(number, chunk, whole, mine)
-
-    def _claim_shift(self, policies: NDArray[Any]) -> NDArray[np.int64] | int:
-        """Calendar months from the end of a step to the payment of its death claims."""
-        after = self.discount.months_after_start()
-        if after is None:
-            return 0
-        whole = np.floor((policies["day"] - 1) / 30.4375 + after).astype(np.int64)
-        return whole - self.settings.step_months
+        plans = self.plans
+        with self._lock:
+            whole = plans.slots.numbers_of(chunk, order, months_to_age)
+            for number in range(len(plans.relative.changing)):
+                row = plans.slots.changing(number)
+                mine = np.flatnonzero(plans.using(row)[cell[order]] & (checked.reason[order] == 0))
+                if len(mine):
+                    whole[row, mine] = plans.relative.places_of(number, chunk, whole, order, mine)
+            money = plans.slots.amounts_of(chunk, order)
+            records = self.survival.records if len(self.survival.records) else np.zeros(1, SURVIVAL)
+            return loops.Tables(plans.segments, plans.charges, records, self.pool.numbers, money, whole)
 
     def _flag(self, checked: Checked, bad: NDArray[np.bool_], reason: Reason, column: str) -> None:
         if bad.any():
@@ -232,14 +214,19 @@ class Engine:
                 checked.field[i] = self.needed.index(named[0])
 
 
-def _taken(rows: NDArray[Any], order: NDArray[np.int64]) -> NDArray[Any]:
-    """Rows in another order, so that the loops walk through memory and do not jump about in it."""
-    return np.take(rows, order, axis=0, mode="clip")
-
-
-def _records_taken(records: NDArray[Any], order: NDArray[np.int64]) -> NDArray[Any]:
-    # As rows of whole numbers: numpy moves records one by one.
-    return _taken(records.view(np.int64).reshape(len(records), -1), order).view(POLICY).reshape(-1)
+def _room_for(policies: int, checked: Checked, tables: loops.Tables, accounts: int) -> loops.Results:
+    return loops.Results(
+        reason=checked.reason,
+        fault=np.full(policies, -1, dtype=np.int64),
+        parts=np.zeros((policies, 3)),
+        minor=np.zeros((policies, 4), dtype=np.int64),
+        flows=np.zeros(accounts * loops.BINS, dtype=np.int64),
+        months=np.zeros(1, dtype=np.int64),
+        room=np.ones(loops.ROOM * loops.BINS),
+        filled=np.zeros((loops.ROOM, 2), dtype=np.int64),
+        firsts=np.empty(len(tables.segments) + 1, dtype=np.int64),
+        counts=np.empty(len(tables.segments) + 1, dtype=np.int64),
+    )
 
 
 class _Until:

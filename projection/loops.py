@@ -182,39 +182,108 @@ def months_later(year, month, day, months):
     return day_count(index // 12, index % 12 + 1, day)
 
 
-@compiled
-def locate(birth, commencement, reason, today, step, policies):
-    """Fill in where the policies stand at T that have no reason against them yet.
+class Places(NamedTuple):
+    """Where policies stand at T, one array each, in the order of the extract.
 
-    birth, commencement: days since 1970-01-01.
+    k, part, whole: months passed, and part / whole of the next one; shift: calendar months from that of T to
+    that of commencement; day: of the month of commencement; age: completed years at commencement; since, span:
+    days from the last birthday to commencement and to the next birthday, filled in where asked for.
     """
-    ty, tm, _ = civil(today)
+
+    k: Any
+    part: Any
+    whole: Any
+    shift: Any
+    day: Any
+    age: Any
+    since: Any
+    span: Any
+
+
+@compiled
+def locate(birth, commencement, reason, today, step, days_of_age, places):
+    """Fill in the places of all policies that have no reason against them yet.
+
+    birth, commencement: days since 1970-01-01; days_of_age: whether the age basis looks at days.
+    """
+    ty, tm, td = civil(today)
+    first = today - td + 1
+    # Lengths of the months before, at and after T: for monthly steps they are all that is needed.
+    before = first - months_later(ty, tm, 1, -1)
+    current = months_later(ty, tm, 1, 1) - first
+    after = months_later(ty, tm, 1, 2) - first - current
     for i in range(len(reason)):
         if reason[i] != 0:
             continue
-        p = policies[i]
         cy, cm, cd = civil(np.int64(commencement[i]))
         shift = (cy - ty) * 12 + cm - tm
-        k = -shift // step * step
-        if months_later(cy, cm, cd, k) > today:
-            k -= step
-        last = months_later(cy, cm, cd, k)
-        whole = months_later(cy, cm, cd, k + step) - last
-        passed = (today - last) * step
-        p.k = k + passed // whole
-        p.part = passed % whole
-        p.whole = whole
-        p.shift = shift
-        p.day = cd
+        if step == 1:
+            due = min(cd, current)
+            if due <= td:
+                k, passed, whole = -shift, td - due, current - due + min(cd, after)
+            else:
+                earlier = min(cd, before)
+                k, passed, whole = -shift - 1, before - earlier + td, before - earlier + due
+        else:
+            k = -shift // 12 * 12
+            if months_later(cy, cm, cd, k) > today:
+                k -= 12
+            last = months_later(cy, cm, cd, k)
+            whole = months_later(cy, cm, cd, k + 12) - last
+            passed = (today - last) * 12
+            k += passed // whole
+            passed = passed % whole
+        places.k[i], places.part[i], places.whole[i] = k, passed, whole
+        places.shift[i], places.day[i] = shift, cd
         by, bm, bd = civil(np.int64(birth[i]))
         age = cy - by
-        birthday = day_count(cy, bm, bd)
-        if birthday > commencement[i]:
+        if cm < bm or (cm == bm and cd < bd and day_count(cy, bm, bd) > commencement[i]):
             age -= 1
-            birthday = day_count(cy - 1, bm, bd)
-        p.age = age
-        p.since = commencement[i] - birthday
-        p.span = day_count(by + age + 1, bm, bd) - birthday
+        places.age[i] = age
+        if days_of_age:
+            birthday = day_count(by + age, bm, bd)
+            places.since[i] = commencement[i] - birthday
+            places.span[i] = day_count(by + age + 1, bm, bd) - birthday
+
+
+class Found(NamedTuple):
+    """Numbers of what was found for each policy, in the order of the extract, and what the numbers stand for.
+
+    cell, survival, lapse, discount: a number per policy; ranges: (cell, 2) first segment and behind the last;
+    persistency: (lapse, 3) places of held, dead and lapsing; factors: (discount, 2) places of payment and claim.
+    """
+
+    cell: Any
+    survival: Any
+    lapse: Any
+    discount: Any
+    ranges: Any
+    persistency: Any
+    factors: Any
+
+
+@compiled
+def fill_policies(order, places, found, claim_after, step, policies):
+    """Fill the records of policies, in the order of calculation.
+
+    claim_after: months from the start of a step to the payment of its death claims; below 0: at its end.
+    """
+    for j in range(len(order)):
+        i = order[j]
+        p = policies[j]
+        p.k, p.part, p.whole, p.shift = places.k[i], places.part[i], places.whole[i], places.shift[i]
+        p.segments, p.segments_end = found.ranges[found.cell[i], 0], found.ranges[found.cell[i], 1]
+        p.survival = found.survival[i]
+        lapse, discount = found.lapse[i], found.discount[i]
+        p.held, p.dead, p.lapsing = (
+            found.persistency[lapse, 0],
+            found.persistency[lapse, 1],
+            found.persistency[lapse, 2],
+        )
+        p.payment, p.claim = found.factors[discount, 0], found.factors[discount, 1]
+        p.claim_shift = 0
+        if claim_after >= 0.0:
+            p.claim_shift = np.int64(np.floor((places.day[i] - 1) / 30.4375 + claim_after)) - step
 
 
 @compiled
@@ -233,13 +302,13 @@ def months_to_age(birth, commencement, concerned, age, step, months):
 
 
 @compiled
-def whole_months(years, longest, months):
-    """Fill in durations in years as whole months; -1 where one is missing, negative, too long, or not whole to 1e-6."""
-    for i in range(len(years)):
-        exact = 12.0 * years[i]
+def whole_months(years, order, longest, months):
+    """Fill in durations in years as whole months, in an order; -1 for a missing, negative or broken one."""
+    for j in range(len(order)):
+        exact = 12.0 * years[order[j]]
         nearest = np.rint(exact)
         good = abs(exact - nearest) <= 1e-6 and 0.0 <= nearest <= longest
-        months[i] = np.int32(nearest) if good else -1
+        months[j] = np.int32(nearest) if good else -1
 
 
 @compiled
@@ -401,11 +470,18 @@ def formula_from(stream, start, p, rules):
     return first_due(start, 12, p.k if whole else p.k + 1)
 
 
+@compiled
+def span_start(stream, start):
+    """First relative month of a segment. A first span takes months before the stream's start too: years from 0."""
+    return max(start + stream.span_from, stream.clip_from) if stream.span_from > 0 else stream.clip_from
+
+
 @inlined
-def extent(stream, whole, p, survival, last, rules):
+def extent(stream, whole, j, p, survival, last, rules):
     """Reason, first point and number of points after T of a segment of streams.
 
-    whole: the policy's whole numbers; last: the last point that counts, at most survival.over. A payment due
+    whole, j: the matrix of whole numbers and the policy's place in it; last: the last point that counts, at
+    most survival.over. A payment due
     exactly on T is not among the points.
     """
     k = p.k
@@ -413,15 +489,15 @@ def extent(stream, whole, p, survival, last, rules):
         return 0, 0, 0
     over = survival.over
     lives = stream.cover != s.CERTAIN
-    start = np.int64(whole[stream.start])
-    end = np.int64(whole[stream.end]) if stream.end >= 0 else max(start, over)
+    start = np.int64(whole[stream.start, j])
+    end = np.int64(whole[stream.end, j]) if stream.end >= 0 else max(start, over)
     if start < 0 or end < 0:
         return _MONTHS, 0, 0
     if end < start:
         return _ORDER, 0, 0
     if lives and survival.closed == 0 and (stream.end < 0 or end > over):
         return _TABLE, 0, 0
-    low = max(start + stream.span_from, stream.clip_from)
+    low = span_start(stream, start)
     high = min(start + stream.span_to, stream.clip_to)
     when = stream.when
     if when == s.ONCE:
@@ -438,20 +514,19 @@ def extent(stream, whole, p, survival, last, rules):
         begin = max(k - leftover(k, step), first_due(0, step, max(start, low)))
         finish = min(end, last + step - 1, over, high + step - 1)
         return 0, begin + step, periods_in(max(0, finish - begin), step)
-    period = np.int64(whole[stream.period])
+    period = np.int64(whole[stream.period, j])
     if period <= 0 or (stream.whole == 1 and leftover(end - start, period) != 0):
         return _PERIOD, 0, 0
     begin = start
     if stream.guarantee >= 0:
-        guaranteed = np.int64(whole[stream.guarantee])
+        guaranteed = np.int64(whole[stream.guarantee, j])
         if guaranteed < 0:
             return _MONTHS, 0, 0
-        if leftover(guaranteed, period) != 0:
-            return _PERIOD, 0, 0
         if stream.cover == s.GUARANTEED:
             end = min(end, start + guaranteed)
         else:
-            begin = start + guaranteed
+            # In arrears, the first payment after the guarantee may belong to a period that starts within it.
+            begin = start + guaranteed + (1 - period if when == s.ARREARS else 0)
     if stream.window != s.OWN_DATES:
         turn = formula_from(stream, start, p, rules)
         complete = start + (end - start) // 12 * 12
@@ -465,31 +540,30 @@ def extent(stream, whole, p, survival, last, rules):
     month = first_due(start, period, max(begin, low, (k if when == s.THIRD_TERM else k + 1) - lag))
     stop = min(end - lag + 1 if lag else end, high)
     if stream.cover == s.ALIVE or stream.cover == s.AFTER_GUARANTEE:
-        # The third term of Woolhouse's formula looks at both ends of a year.
-        stop = min(stop, last + 1 - (12 if when == s.THIRD_TERM else lag))
+        stop = min(stop, last + 1 - lag)
     return 0, month + lag, periods_in(max(0, stop - month + period - 1), period)
 
 
 @compiled
-def due_today(stream, whole, p, rules):
+def due_today(stream, whole, j, p, rules):
     """Whether a segment has a payment to come exactly on T, and its relative month; only asked where T is a point."""
     k = p.k
-    start = np.int64(whole[stream.start])
+    start = np.int64(whole[stream.start, j])
     if stream.window == s.WHOLE_YEARS:
         # The near end of the first year taken by the formula, if the year starts now.
         starts = formula_from(stream, start, p, rules) == k and k + 12 <= (
-            np.int64(whole[stream.end]) if stream.end >= 0 else s.FOR_EVER
+            np.int64(whole[stream.end, j]) if stream.end >= 0 else s.FOR_EVER
         )
         return starts and stream.when == s.ADVANCE and stream.clip_from <= k < stream.clip_to, k
     if stream.when >= s.DEATH or rules.outstanding == 0:
         return False, 0
-    end = np.int64(whole[stream.end]) if stream.end >= 0 else s.FOR_EVER
-    low = max(start + stream.span_from, stream.clip_from)
+    end = np.int64(whole[stream.end, j]) if stream.end >= 0 else s.FOR_EVER
+    low = span_start(stream, start)
     high = min(start + stream.span_to, stream.clip_to)
     if stream.when == s.ONCE:
         month = max(k - 1, start if stream.clock == 0 else 0)
         return start == k and low <= month < high, month
-    period = np.int64(whole[stream.period])
+    period = np.int64(whole[stream.period, j])
     lag = period if stream.when == s.ARREARS else 0
     month = k - lag
     if stream.window == s.BROKEN_YEAR:
@@ -500,24 +574,24 @@ def due_today(stream, whole, p, rules):
         return False, 0
     first = start
     if stream.guarantee >= 0:
-        turn = start + np.int64(whole[stream.guarantee])
+        turn = start + np.int64(whole[stream.guarantee, j])
         if stream.cover == s.GUARANTEED:
             end = min(end, turn)
         else:
-            first = turn
+            first = turn + (1 - lag if lag else 0)
     due = first <= month < end and month <= end - lag and (month - start) % period == 0
     return due and low <= month < high, month
 
 
 @inlined
-def relative_place(stream, whole, month, calendar):
+def relative_place(stream, whole, j, month, calendar):
     """Place of the relative amount of a month on the stream's clock, or of a calendar month."""
     if stream.calendar >= 0:
         return stream.calendar + max(0, calendar)
-    row = stream.relative if stream.changing < 0 else np.int64(whole[stream.changing])
+    row = stream.relative if stream.changing < 0 else np.int64(whole[stream.changing, j])
     if row == ONES:
         return ONES
-    clock = np.int64(whole[stream.start]) if stream.clock == 0 else 0
+    clock = np.int64(whole[stream.start, j]) if stream.clock == 0 else 0
     return row + max(0, month - clock)
 
 
@@ -568,13 +642,13 @@ def value_policies(order, policies, tables, rules, results):
         going = False
         for n in range(p.segments, p.segments_end):
             reason, firsts[n - p.segments], counts[n - p.segments] = extent(
-                segments[n], whole[j], p, survival, last, rules
+                segments[n], whole, j, p, survival, last, rules
             )
             if reason != 0:
                 results.fault[i] = n
                 break
             if segments[n].own == 1 and (
-                counts[n - p.segments] > 0 or (today and due_today(segments[n], whole[j], p, rules)[0])
+                counts[n - p.segments] > 0 or (today and due_today(segments[n], whole, j, p, rules)[0])
             ):
                 going = True
         if reason == 0 and not going:
@@ -590,13 +664,14 @@ def value_policies(order, policies, tables, rules, results):
         for n in range(p.segments, p.segments_end):
             first, count = firsts[n - p.segments], counts[n - p.segments]
             if count > 0:
-                furthest = max(furthest, first + (count - 1) * apart(segments[n], whole[j], rules))
+                furthest = max(furthest, first + (count - 1) * apart(segments[n], whole, j, rules))
             if count > 0 or today:
                 value = value_segment(
                     segments[n],
                     p,
-                    whole[j],
-                    money[j],
+                    whole,
+                    j,
+                    money,
                     survival,
                     pool,
                     alive,
@@ -630,33 +705,33 @@ def round_results(i, parts, minor, results):
 
 @inlined
 def value_segment(
-    stream, p, whole, money, survival, pool, alive, inforce, first, count, today, rules, flows, room, filled
+    stream, p, whole, j, money, survival, pool, alive, inforce, first, count, today, rules, flows, room, filled
 ):
     """Value of a segment for one policy."""
     amount = stream.factor
     if stream.amount >= 0:
-        amount *= money[stream.amount]
+        amount *= money[stream.amount, j]
     for _ in range(stream.power):
-        amount *= whole[stream.period] / 12.0
+        amount *= whole[stream.period, j] / 12.0
     if amount == 0.0:
         return 0.0
     value = 0.0
     if today:
-        due, month = due_today(stream, whole, p, rules)
+        due, month = due_today(stream, whole, j, p, rules)
         if due:
             # Survival and discount do not come in; the payment is certain.
-            value = amount * pool[relative_place(stream, whole, month, p.k + p.shift)]
+            value = amount * pool[relative_place(stream, whole, j, month, p.k + p.shift)]
             flows[stream.account * BINS + max(0, p.k + p.shift)] += quanta(value * rules.quantum)
     if count > 0:
         if stream.when == s.DEATH or stream.when == s.LAPSE:
             value += value_moves(
-                stream, p, whole, survival, pool, alive, inforce, first, count, amount, rules, flows, room, filled
+                stream, p, whole, j, survival, pool, alive, inforce, first, count, amount, rules, flows, room, filled
             )
         elif stream.when == s.THIRD_TERM:
-            value += third_term(stream, p, whole, survival, pool, alive * inforce, first, count, amount, rules)
+            value += third_term(stream, p, whole, j, survival, pool, alive * inforce, first, count, amount, rules)
         else:
             value += value_payments(
-                stream, p, whole, survival, pool, alive * inforce, first, count, amount, rules, flows, room, filled
+                stream, p, whole, j, survival, pool, alive * inforce, first, count, amount, rules, flows, room, filled
             )
     return value
 
@@ -671,7 +746,7 @@ def persistency_at(p, pool, rules):
 
 
 @compiled
-def apart(stream, whole, rules):
+def apart(stream, whole, j, rules):
     """Months between the points of a segment."""
     if stream.when == s.ONCE:
         return np.int64(1)
@@ -679,21 +754,21 @@ def apart(stream, whole, rules):
         return np.int64(rules.step)
     if stream.window == s.WHOLE_YEARS:
         return np.int64(12)
-    return np.int64(whole[stream.period])
+    return np.int64(whole[stream.period, j])
 
 
 @inlined
-def value_payments(stream, p, whole, survival, pool, there, first, count, amount, rules, flows, room, filled):
+def value_payments(stream, p, whole, j, survival, pool, there, first, count, amount, rules, flows, room, filled):
     """Value of payments while alive, for certain, or guaranteed, at their own dates after T; there: L(T) P(T)."""
-    period = apart(stream, whole, rules)
-    start = np.int64(whole[stream.start])
+    period = apart(stream, whole, j, rules)
+    start = np.int64(whole[stream.start, j])
     month = first
     if stream.when == s.ARREARS:
         month = first - period
     elif stream.when == s.ONCE:
         month = max(first - 1, start if stream.clock == 0 else 0)
     calendar = first + p.shift
-    relative = relative_place(stream, whole, month, calendar)
+    relative = relative_place(stream, whole, j, month, calendar)
     discount = p.payment + first - p.k
     flow = stream.account * BINS + max(0, calendar)
     lives = stream.cover == s.ALIVE or stream.cover == s.AFTER_GUARANTEE
@@ -716,7 +791,7 @@ def value_payments(stream, p, whole, survival, pool, there, first, count, amount
 
 
 @inlined
-def value_moves(stream, p, whole, survival, pool, alive, inforce, first, count, amount, rules, flows, room, filled):
+def value_moves(stream, p, whole, j, survival, pool, alive, inforce, first, count, amount, rules, flows, room, filled):
     """Value of payments on death or lapse, step by step; the broken first step on its own."""
     step = rules.step
     death = stream.when == s.DEATH
@@ -731,7 +806,7 @@ def value_moves(stream, p, whole, survival, pool, alive, inforce, first, count, 
     elif rules.dependent == 1:
         a, b, kind = 0.5, 0.5, SPREAD
     amount /= alive * inforce
-    relative = relative_place(stream, whole, first - step, first + p.shift)
+    relative = relative_place(stream, whole, j, first - step, first + p.shift)
     flow = stream.account * BINS + max(0, calendar)
     value = 0.0
     if first - step <= p.k:
@@ -773,13 +848,13 @@ def value_moves(stream, p, whole, survival, pool, alive, inforce, first, count, 
 
 
 @compiled
-def third_term(stream, p, whole, survival, pool, there, first, count, amount, rules):
+def third_term(stream, p, whole, j, survival, pool, there, first, count, amount, rules):
     """Third term of Woolhouse's formula: for each year, (mu + delta) at its start less that at its end."""
     before = 0 if rules.dependent == 1 else stream.before
     total = 0.0
     for n in range(count):
         g = first + 12 * n
-        level = pool[relative_place(stream, whole, g, g)]
+        level = pool[relative_place(stream, whole, j, g, g)]
         total += level * (
             inclination(p, survival, pool, there, g, before) - inclination(p, survival, pool, there, g + 12, before)
         )
@@ -790,7 +865,7 @@ def third_term(stream, p, whole, survival, pool, there, first, count, amount, ru
 def inclination(p, survival, pool, there, g, before):
     """L P v (mu + delta) at a point, over L(T) P(T); the forces from the years on both sides of the point."""
     living = survival.living + g
-    here = pool[living]
+    here = pool[living] if g <= survival.over else 0.0
     if here <= 0.0:
         return 0.0
     after = here / pool[living + 12] if g + 12 <= survival.over and pool[living + 12] > 0.0 else 0.0

@@ -166,9 +166,7 @@ def _course(
     course = Course(position.u, settings.step_months, outstanding, life, lapses, document.claims, curve)
     for share, what in ((course.alive_now, "alive"), (course.in_force_now, "in force")):
         if share <= 0:
-            raise NotValued(
-                f"nobody {what} at the valuation date", "commencement_date", None, f"by the basis, {share}"
-            )
+            raise NotValued(f"nobody {what} at the valuation date", "commencement_date", None, f"by the basis, {share}")
     return course, RulesUsed(mortality + 1, lapse + 1, interest + 1, expenses)
 
 
@@ -188,9 +186,7 @@ def _streams(
     ends = [stream.terms.end for stream in streams]
     known = [end for end in ends if end is not None]
     if len(known) == len(ends) and max(known) < course.u:
-        raise NotValued(
-            "matured", f"product {design.code}", f"{max(known)} months", "ends before the valuation date"
-        )
+        raise NotValued("matured", f"product {design.code}", f"{max(known)} months", "ends before the valuation date")
     own = {stream.name for stream in design.stream if stream.of is None}
     added: list[PolicyStream] = []
     for item in basis.document.expense:
@@ -200,11 +196,7 @@ def _streams(
 
 
 def _payments(streams: list[PolicyStream], course: Course, commencement: date) -> list[Payment]:
-    return [
-        _payment(stream, occasion, course, commencement)
-        for stream in streams
-        for occasion in stream.occasions
-    ]
+    return [_payment(stream, occasion, course, commencement) for stream in streams for occasion in stream.occasions]
 
 
 def _payment(stream: PolicyStream, occasion: Occasion, course: Course, commencement: date) -> Payment:

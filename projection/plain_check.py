@@ -2,9 +2,7 @@
 
 from __future__ import annotations
 
-import heapq
 from dataclasses import dataclass
-from threading import Lock
 from typing import Any
 
 import numpy as np
@@ -12,6 +10,7 @@ import numpy as np
 from assumptions.basis import Basis
 from portfolios.chunk import Chunk
 from portfolios.designs import Design
+from portfolios.identifiers import Hashes
 
 from .engine import Valued
 from .plain import plain_value
@@ -23,23 +22,10 @@ from .settings import Settings
 class Candidate:
     """A policy with what the engine found: benefits, expenses, premiums in currency, not rounded."""
 
+    hash: int
     policy: dict[str, Any]
     design: int
     parts: list[float]
-
-
-def check_sample(chosen: list[Candidate], designs: list[Design], basis: Basis, settings: Settings) -> SampleCheck:
-    """Value the chosen policies with the plain twin and return the largest difference.
-
-    The difference is that of the parts, relative to the sum of their absolute values. A policy that the twin
-    refuses to value counts as a difference without bounds.
-    """
-    worst = SampleCheck(0, 0.0, 0.0, "")
-    for candidate in chosen:
-        difference, relative = _difference(candidate, designs, basis, settings)
-        if not relative <= worst.largest_relative or worst.policies == 0:
-            worst = SampleCheck(1, difference, relative, str(candidate.policy["policy_id"]))
-    return SampleCheck(len(chosen), worst.largest_difference, worst.largest_relative, worst.policy_id)
 
 
 def _difference(candidate: Candidate, designs: list[Design], basis: Basis, settings: Settings) -> tuple[float, float]:
@@ -54,27 +40,56 @@ def _difference(candidate: Candidate, designs: list[Design], basis: Basis, setti
 
 
 class Sample:
-    """The policies with the smallest hashes among those valued: the same ones in whatever order they come."""
+    """The policies with the smallest hashes among those valued: the same ones in whatever order they come.
 
-    def __init__(self, size: int) -> None:
+    smallest: the smallest hashes of the extract, ascending, some more than the sample has policies, because some may turn
+    out to be exceptions. Each of the first is valued by the plain twin as soon as it comes along, while other threads
+    go on; the others wait until it is known how many are missing.
+    """
+
+    def __init__(self, size: int, smallest: Hashes, designs: list[Design], basis: Basis, settings: Settings) -> None:
         self.size = size
-        self._kept: list[tuple[int, int, Candidate]] = []
-        self._lock = Lock()
+        self._likely = smallest[min(size, len(smallest)) - 1] if len(smallest) else np.uint64(0)
+        self._bound = smallest[-1] if len(smallest) else np.uint64(0)
+        self._designs, self._basis, self._settings = designs, basis, settings
+        self._checked: list[tuple[float, float, str]] = []
+        self._waiting: list[Candidate] = []
 
-    def offer(self, chunk: Chunk, valued: Valued) -> None:
-        """Take the policies of a chunk into account; may be called from several threads."""
-        good = np.flatnonzero(valued.valued)
-        hashes = chunk.hashes[good]
-        few = good if len(good) <= self.size else good[np.argpartition(hashes, self.size)[: self.size]]
-        with self._lock:
-            for i in few.tolist():
-                key = -int(chunk.hashes[i])
-                if len(self._kept) >= self.size and key <= self._kept[0][0]:
-                    continue
-                candidate = Candidate(chunk.policy(i), int(valued.checked.product[i]), valued.results.parts[i].tolist())
-                push = heapq.heappush if len(self._kept) < self.size else heapq.heappushpop
-                push(self._kept, (key, chunk.start + i, candidate))
+    def candidates(self, chunk: Chunk, valued: Valued) -> list[Candidate]:
+        """Return the policies of a chunk that may belong to the sample; may be called from several threads."""
+        rows = np.flatnonzero((chunk.hashes <= self._bound) & valued.valued)
+        return [
+            Candidate(
+                int(chunk.hashes[i]),
+                chunk.policy(i),
+                int(valued.checked.product[i]),
+                valued.results.parts[i].tolist(),
+            )
+            for i in rows.tolist()
+        ]
 
-    def chosen(self) -> list[Candidate]:
-        """The sample, in order of hash."""
-        return [candidate for _, _, candidate in sorted(self._kept, key=lambda kept: -kept[0])]
+    def take(self, candidates: list[Candidate]) -> None:
+        """Value those that belong to the sample for certain, and keep the others."""
+        for candidate in candidates:
+            if candidate.hash <= self._likely:
+                self._check(candidate)
+            else:
+                self._waiting.append(candidate)
+
+    def result(self) -> SampleCheck:
+        """Fill up the sample and return the largest difference.
+
+        The difference is that of the parts, relative to the sum of their absolute values. A policy that the
+        twin refuses to value counts as a difference without bounds.
+        """
+        missing = max(0, self.size - len(self._checked))
+        for candidate in sorted(self._waiting, key=lambda waiting: waiting.hash)[:missing]:
+            self._check(candidate)
+        if not self._checked:
+            return SampleCheck(0, 0.0, 0.0, "")
+        relative, difference, policy_id = max(self._checked)
+        return SampleCheck(len(self._checked), difference, relative, policy_id)
+
+    def _check(self, candidate: Candidate) -> None:
+        difference, relative = _difference(candidate, self._designs, self._basis, self._settings)
+        self._checked.append((relative, difference, str(candidate.policy["policy_id"])))

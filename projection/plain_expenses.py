@@ -56,18 +56,14 @@ def expense_streams(
             if stream.part == "benefits" and stream.name in own and stream.terms.way in ("death", "once"):
                 yield _stream(item, stream.terms, stream.occasions, by_year, grown)
         elif stream.part == f"{item.per}s":
-            yield _stream(
-                item, stream.terms, stream.occasions, _times(stream.amount, by_year), stream.relative
-            )
+            yield _stream(item, stream.terms, stream.occasions, _times(stream.amount, by_year), stream.relative)
 
 
 def _times(amount: Figure, share: Figure) -> Figure:
     return lambda occasion: amount(occasion) * share(occasion)
 
 
-def _stream(
-    item: Expense, terms: Terms, payments: list[Occasion], amount: Figure, relative: Figure
-) -> PolicyStream:
+def _stream(item: Expense, terms: Terms, payments: list[Occasion], amount: Figure, relative: Figure) -> PolicyStream:
     return PolicyStream(item.name, "expenses", "out", terms, payments, amount, relative)
 
 
@@ -76,11 +72,7 @@ def _contract(terms: list[Terms], a_year: int) -> Terms | None:
 
     That is until the latest end of the streams paid while alive, once or on death; None if there are none.
     """
-    ends = [
-        term.end
-        for term in terms
-        if term.way in ("once", "death") or (term.way != "lapse" and not term.certain)
-    ]
+    ends = [term.end for term in terms if term.way in ("once", "death") or (term.way != "lapse" and not term.certain)]
     if not ends:
         return None
     known = [end for end in ends if end is not None]

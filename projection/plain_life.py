@@ -64,9 +64,7 @@ def yearly_rates(rule: MortalityRule, rates: Rates, age: Fraction) -> YearlyRate
     entry: float = whole if rates.whole_ages_only or age == whole else float(age)
     select_years: int = getattr(rates, "select_years", 0)
     if offset > 0 and select_years > 0:
-        raise NotValued(
-            "age not whole", "age", float(age), "a select table needs a whole age at commencement"
-        )
+        raise NotValued("age not whole", "age", float(age), "a select table needs a whole age at commencement")
     entered = entry + rule.added_years
     if not rates.first_age <= entered < rates.final_age:
         held = f"the table holds ages {rates.first_age} to {rates.final_age - 1}"

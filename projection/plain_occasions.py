@@ -152,8 +152,8 @@ def _at_their_dates(terms: Terms, course: Course, first: int, last: int) -> Iter
         point = month + arrears
         if point < course.next_point or point > last:
             continue
-        # Inside are the periods that start before the guarantee's end, in advance and in arrears.
-        if terms.certain or month < guaranteed:
+        inside = point <= guaranteed if arrears else point < guaranteed
+        if terms.certain or inside:
             survival, persistency = certain
         else:
             survival, persistency = course.alive(point), course.in_force(point, terms.way)

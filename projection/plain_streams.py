@@ -52,8 +52,7 @@ def design_streams(design: Design, policy: Policy, course: Course) -> list[Polic
     """
     bases = {stream.name: _own(stream, policy, course) for stream in design.stream if stream.of is None}
     return [
-        bases[stream.name] if stream.of is None else _share_of(stream, bases[stream.of])
-        for stream in design.stream
+        bases[stream.name] if stream.of is None else _share_of(stream, bases[stream.of]) for stream in design.stream
     ]
 
 
@@ -109,17 +108,13 @@ def terms_of(stream: Stream, policy: Policy, step_months: int) -> Terms:
     if way == "once":
         end = start
     if end is not None and end < start:
-        raise NotValued(
-            "end before start", f"stream '{stream.name}'", f"{start} to {end} months", "to >= from"
-        )
+        raise NotValued("end before start", f"stream '{stream.name}'", f"{start} to {end} months", "to >= from")
     a_year = _frequency(stream, policy)
     by_age = isinstance(stream.from_, AtAge) or isinstance(stream.to, AtAge)
     periodic = way in ("advance", "arrears") and not by_age
     if periodic and end is not None and (end - start) % (12 // a_year):
         rule = f"with {a_year} payments a year it lasts a whole number of periods"
-        raise NotValued(
-            "duration not in whole periods", f"stream '{stream.name}'", f"{end - start} months", rule
-        )
+        raise NotValued("duration not in whole periods", f"stream '{stream.name}'", f"{end - start} months", rule)
     return Terms(
         way,
         stream.while_ == "certain",
@@ -140,9 +135,7 @@ def _months(value: float | str | AtAge, stream: Stream, policy: Policy, step_mon
     field = value if isinstance(value, str) else f"stream '{stream.name}'"
     months = round(12 * years)
     if abs(12 * years - months) > TOLERANCE or months < 0:
-        raise NotValued(
-            "duration not in whole months", field, years, "years from commencement, in whole months"
-        )
+        raise NotValued("duration not in whole months", field, years, "years from commencement, in whole months")
     if stream.on is not None and months % step_months:
         raise NotValued("duration not in whole years", field, years, "needed on a move with the step 'year'")
     return months

@@ -222,7 +222,7 @@ class Plans:
         """The records whose payments an expense item is charged on."""
         own = [record for stream in design.stream if stream.of is None for record in made[stream.name]]
         if item.per == "policy":
-            if any(record.cover != s.CERTAIN and record.when != s.LAPSE for record in own):
+            if any(_runs(record) for record in own):
                 start, period = self.slots.duration(0.0), self.slots.frequency(item.a_year)
                 yield _Record(start=start, end=self._contract_end(own), period=period, power=1)
         elif item.per == "claim":
@@ -234,11 +234,16 @@ class Plans:
             for stream in design.stream:
                 if _PART[stream.part] == part:
                     # A payment against the usual direction of its part costs as much as one along it.
-                    yield from (replace(one, factor=abs(one.factor)) for one in made[stream.name])
+                    yield from (replace(one, factor=one.factor * _sign(stream)) for one in made[stream.name])
 
     def _contract_end(self, records: list[_Record]) -> int:
-        ends = {record.end for record in records if record.cover != s.CERTAIN and record.when != s.LAPSE}
+        ends = {record.end for record in records if _runs(record)}
         return -1 if -1 in ends or not ends else self.slots.latest(tuple(sorted(ends)))
+
+
+def _runs(record: _Record) -> bool:
+    """Whether the contract runs on until the record's end: paid while alive, once or on death."""
+    return record.when == s.ONCE or (record.cover != s.CERTAIN and record.when != s.LAPSE)
 
 
 def segments_of(records: list[_Record]) -> Iterator[tuple[_Record, list[_Record]]]:
@@ -265,6 +270,8 @@ def segments_of(records: list[_Record]) -> Iterator[tuple[_Record, list[_Record]
 
 def _sign(stream: Stream) -> int:
     """1, or -1 for a stream that runs against its part: a premium paid out, a benefit received."""
+    if stream.direction is None:
+        return 1
     return 1 if (stream.direction == "in") == (stream.part == "premium") else -1
 
 

@@ -120,18 +120,27 @@ class RelativeRows:
         return self.changing.setdefault((shape, start, end), len(self.changing))
 
     def places_of(
-        self, number: int, chunk: Chunk, whole: NDArray[np.int32], policies: NDArray[np.int64]
+        self,
+        number: int,
+        chunk: Chunk,
+        whole: NDArray[np.int32],
+        order: NDArray[np.int64],
+        policies: NDArray[np.int64],
     ) -> NDArray[np.int32]:
-        """Return the place of the row of relative amounts for each of some policies of a chunk."""
+        """Return the place of the row of relative amounts for each of some policies of a chunk.
+
+        policies: places in the order of calculation, whose policies of the extract are ``order``; whole: the
+        whole-number matrix.
+        """
         shape, start, end = list(self.changing)[number]
         rates: list[float] = [0.0 if isinstance(shape.rate, str) else shape.rate]
         codes = np.zeros(len(policies), dtype=np.int64)
         if isinstance(shape.rate, str):
-            found, codes = np.unique(chunk.number(shape.rate)[policies], return_inverse=True)
+            found, codes = np.unique(chunk.number(shape.rate)[order[policies]], return_inverse=True)
             rates = found.tolist()
         if shape.by:
-            begin = whole[policies, start].astype(np.int64)
-            length = np.maximum(whole[policies, end] - begin, 0)
+            begin = whole[start, policies].astype(np.int64)
+            length = np.maximum(whole[end, policies] - begin, 0)
             begin = np.maximum(begin, 0) if shape.from_commencement else np.zeros_like(begin)
             codes = (codes * _WIDE + begin) * _WIDE + length
         keys, inverse = distinct(codes)

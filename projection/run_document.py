@@ -12,7 +12,7 @@ from .settings import Due, Settings, Step
 class RunDocument(BaseModel):
     """A reserve run as written in TOML. Paths are relative to the document's folder."""
 
-    model_config = ConfigDict(extra="forbid", frozen=True)
+    model_config = ConfigDict(extra="forbid", frozen=True, strict=True)
 
     title: str = Field("", description="name of the run in reports")
     valuation_date: date = Field(description="end of this day")

@@ -45,16 +45,16 @@ SEGMENT = np.dtype(
         ("before", "i8"),  # 1: paid before the lapses of the same point
         ("cover", "i8"),  # ALIVE ... AFTER_GUARANTEE
         ("window", "i8"),  # OWN_DATES, or the part of a stream that Woolhouse's formula leaves or takes
-        ("amount", "i8"),  # column of the money matrix; -1: 1
+        ("amount", "i8"),  # row of the money matrix; -1: 1
         ("factor", "f8"),  # times this
         ("power", "i8"),  # divided by (payments a year) to this power
-        ("start", "i8"),  # column of the whole-number matrix: months
-        ("end", "i8"),  # column of months; -1: for life
-        ("period", "i8"),  # column: months between payments
-        ("guarantee", "i8"),  # column of months; -1: none
+        ("start", "i8"),  # row of the whole-number matrix: months
+        ("end", "i8"),  # row of months; -1: for life
+        ("period", "i8"),  # row: months between payments
+        ("guarantee", "i8"),  # row of months; -1: none
         ("clock", "i8"),  # 0: the stream's start, 1: commencement
         ("relative", "i8"),  # place of its row of relative amounts by months of the clock
-        ("changing", "i8"),  # column with the place of that row per policy; -1: the same for all
+        ("changing", "i8"),  # row with the place of that row per policy; -1: the same for all
         ("calendar", "i8"),  # place of a row of relative amounts by calendar month; -1: none
         ("span_from", "i8"),  # payments whose relative month is at least this many months after the stream's start
         ("span_to", "i8"),  # ... and less than this many
@@ -90,14 +90,9 @@ POLICY = np.dtype(
         ("part", "i8"),  # and part / whole of the next one
         ("whole", "i8"),
         ("shift", "i8"),  # calendar months from that of the valuation date to that of commencement
-        ("day", "i8"),  # of the month of commencement
-        ("age", "i8"),  # completed years at commencement
-        ("since", "i8"),  # days from the last birthday to commencement
-        ("span", "i8"),  # days from it to the next birthday
         ("segments", "i8"),  # first segment of its cell
         ("segments_end", "i8"),  # behind the last of them
         ("survival", "i8"),  # record of its survival
-        ("lapse", "i8"),  # number of its rows of persistency
         ("held", "i8"),  # place of persistency at g = 0; one more lies in front for g = -1
         ("dead", "i8"),  # place of the weight of deaths of the step that ends at g = 0
         ("lapsing", "i8"),  # place of the share that lapses at g = 0

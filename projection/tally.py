@@ -29,6 +29,7 @@ class ChunkTally:
     months: int = 0
     seconds: dict[str, float] = field(default_factory=dict)
     totals_read: int = 0
+    sample: list[Any] = field(default_factory=list)
 
 
 @dataclass

@@ -14,7 +14,7 @@ import numpy as np
 import pyarrow as pa
 
 from assumptions.basis import Basis
-from portfolios.checks import needed_columns
+from portfolios.checks import needed_columns, number_columns
 from portfolios.chunk import Chunk
 from portfolios.columns import BY_NAME
 from portfolios.designs import Design
@@ -27,11 +27,15 @@ from . import loops
 from .engine import Engine, Valued
 from .gate import RunStopped, check_gate
 from .groups import Groups
-from .plain_check import Sample, check_sample
+from .plain_check import Sample
 from .results import MONEY_COLUMNS, Outcome, PolicySink, Progress, no_progress
 from .settings import Settings
 from .sheet import convention_sheet
 from .tally import ChunkTally, Tally
+
+
+SPARE = 64
+"""Policies that may step in where others of the sample turn out to be exceptions."""
 
 
 @dataclass(frozen=True)
@@ -84,7 +88,7 @@ class _Valuation:
         self.extract, self.designs, self.basis, self.settings, self.plan = extract, designs, basis, settings, plan
         self.group_by = plan.group_by
         until = [rule.until for rule in basis.document.lapse.rule] if basis.document.lapse else []
-        numbers = [column for column in until if isinstance(column, str)]
+        numbers = [*number_columns(designs), *(column for column in until if isinstance(column, str))]
         rule_columns = basis.document.rule_columns()
         self.needed = needed_columns(designs, [*numbers, *rule_columns, *self.group_by])
         extract.need(self.needed, numbers=numbers)
@@ -92,7 +96,6 @@ class _Valuation:
         self.needed = tuple(dict.fromkeys([*self.needed, *self.amounts]))
         extract.need(self.needed, numbers=numbers)
         self.groups = Groups(self.group_by)
-        self.sample = Sample(plan.sample)
         self.seconds: dict[str, float] = {}
         self.kinds = {column: str(extract.column_kind(column)) for column in rule_columns}
         self.read = 0
@@ -100,7 +103,9 @@ class _Valuation:
     def run(self, sink: PolicySink | None, progress: Progress) -> Outcome:
         """Read, value and add up."""
         began = perf_counter()
-        duplicates = find_duplicates(self.extract)
+        plan = self.plan
+        duplicates = find_duplicates(self.extract, keep=plan.sample + SPARE)
+        self.sample = Sample(plan.sample, duplicates.smallest, self.designs, self.basis, self.settings)
         self.seconds["identifiers"] = perf_counter() - began
         self.engine = Engine(
             self.designs, self.basis, self.settings, self.needed, self.kinds, self.plan.in_force, duplicates
@@ -110,9 +115,15 @@ class _Valuation:
             tally.add(part)
             if sink is not None and part.policies.num_rows:
                 sink(part.policies)
+            self._check_sample(part)
             self.read += part.totals_read
             progress(self.read, self.extract.rows)
         return self._outcome(tally, began)
+
+    def _check_sample(self, part: ChunkTally) -> None:
+        started = perf_counter()
+        self.sample.take(part.sample)
+        self.seconds["sample"] = self.seconds.get("sample", 0.0) + perf_counter() - started
 
     def _parts(self) -> Iterator[ChunkTally]:
         """Results of the chunks in their order; a few chunks are under way at any time."""
@@ -151,7 +162,6 @@ class _Valuation:
         totals = np.zeros((len(self.groups.keys), 1 + len(MONEY_COLUMNS)), dtype=np.int64)
         loops.add_totals(groups, checked.reason, results.minor, totals)
         exceptions = self._exceptions(chunk, valued)
-        self.sample.offer(chunk, valued)
         part = ChunkTally(
             totals=totals,
             flows=results.flows.reshape(-1, loops.BINS),
@@ -161,6 +171,7 @@ class _Valuation:
             months=valued.months,
             seconds=valued.seconds,
             totals_read=chunk.n,
+            sample=self.sample.candidates(chunk, valued),
         )
         part.seconds["results"] = perf_counter() - began
         return part
@@ -204,9 +215,7 @@ class _Valuation:
         control = tally.control_totals()
         exceptions = pa.concat_tables([no_exceptions(), *tally.exceptions])
         check_gate(control, exceptions, self.extract.rows, self.plan.exceptions_limit)
-        started = perf_counter()
-        result = check_sample(self.sample.chosen(), self.designs, self.basis, self.settings)
-        self.seconds["sample"] = perf_counter() - started
+        result = self.sample.result()
         if not result.passes:
             raise RunStopped(
                 f"policy {result.policy_id}: the engine and the plain twin differ by {result.largest_difference:.6g} "

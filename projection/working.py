@@ -174,9 +174,7 @@ def _lapses(value: PlainValue) -> list[str]:
     return table(("policy year", "w"), rows)
 
 
-def _stream(
-    name: str, payments: list[Payment], value: PlainValue, settings: Settings, listing: Listing
-) -> list[str]:
+def _stream(name: str, payments: list[Payment], value: PlainValue, settings: Settings, listing: Listing) -> list[str]:
     first = payments[0]
     headings, rows = _every(payments, value) if listing == "all" else _yearly(payments)
     total = money(sum(payment.value for payment in payments), settings.decimals)

@@ -9,6 +9,7 @@ from pathlib import Path
 
 import pyarrow as pa
 
+from portfolios.exception_rows import sentence
 from projection.results import Outcome
 
 from .figures import count, counted, lines_up
@@ -80,10 +81,7 @@ def _exceptions(outcome: Outcome) -> list[str]:
     for row in outcome.exceptions.to_pylist():
         found = examples[row["reason"]]
         if len(found) < EXAMPLES:
-            value = f"is '{row['value']}'" if row["value"] else "is missing"
-            where = f"{row['field']} {value}" if row["field"] else ""
-            said = "; ".join(part for part in (where, row["rule"] or "") if part)
-            line = f"{row['policy_id']}: {said}"
+            line = f"{row['policy_id']}: {sentence(row)}"
             found += [line] if line not in found else []
     lines = []
     for reason, number in reasons(outcome).items():

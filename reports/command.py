@@ -9,6 +9,7 @@ from typing import Annotated, NoReturn
 import typer
 
 from .exits import FAILED, WRONG_INPUT, end_politely, run_app
+from .figures import visible
 from .installation import strangers
 
 app = typer.Typer(
@@ -61,9 +62,10 @@ def demo(
     """
     from portfolios.demo_office import write_office
 
+    from .disk import plainly
     from .progress import progress_on
 
-    with progress_on("writing the demo") as progress:
+    with plainly(folder), progress_on("writing the demo") as progress:
         write_office(folder, policies, seed, progress)
     print(f"An invented office of {policies:,} policies is in {folder}.")
     print("About a dozen of them are wrong on purpose. Next:")
@@ -86,7 +88,7 @@ def check(run: RunDocumentPath, threads: Threads = None) -> None:
 
     with progress_on("checking") as progress:
         checked = check_run(run, progress, threads)
-    print("\n".join(checked.lines))
+    print(visible("\n".join(checked.lines)))
     if not checked.ready:
         raise typer.Exit(WRONG_INPUT)
 
@@ -124,7 +126,7 @@ def reserve(
     report = reserve_run(
         run, out, progress_on, replace_finished=replace, threads=threads, workbook=not no_workbook
     )
-    print(summary(report, str(out)))
+    print(visible(summary(report, str(out))))
 
 
 @app.command(short_help="Show the working of one policy.")
@@ -180,7 +182,7 @@ def verify(
         "\n".join([*(f"ok     {line}" for line in found.sound), *(f"note   {line}" for line in found.notes)])
     )
     for line in found.faults:
-        print(f"WRONG  {line}")
+        print(visible(f"WRONG  {line}"))
     print(f"{folder}: {'as recorded' if found.holds else 'NOT as recorded'}.")
     if not found.holds:
         raise typer.Exit(FAILED)

@@ -48,6 +48,9 @@ def plainly(target: Path) -> Iterator[None]:
     try:
         yield
     except OSError as error:
+        # Without a number it does not come from the system, and says itself what is the matter.
+        if error.errno is None:
+            raise
         raise RunFolderError(plain(error, target)) from error
 
 

@@ -10,6 +10,8 @@ from typing import Any, NoReturn
 
 import typer
 
+from .figures import visible
+
 FAILED = 1
 """The run, or the verification, failed."""
 WRONG_INPUT = 2
@@ -28,8 +30,7 @@ def run_app(app: typer.Typer, arguments: list[str]) -> int:
     try:
         result = _invoke(app, arguments)
     except KeyboardInterrupt:
-        _say("Interrupted; nothing was left behind.")
-        return INTERRUPTED
+        result = INTERRUPTED
     except BrokenPipeError:
         # The reader of our output has gone; closing quietly is what it expects.
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
@@ -42,6 +43,9 @@ def run_app(app: typer.Typer, arguments: list[str]) -> int:
         return code
     except Exception as error:
         return _usage(error)
+    # Typer takes an interrupt for itself and only hands on its exit code.
+    if result == INTERRUPTED:
+        _say("Interrupted; nothing was left behind.")
     return result if isinstance(result, int) else 0
 
 
@@ -86,7 +90,7 @@ def _version() -> str:
 
 
 def _say(text: str) -> None:
-    print(text, file=sys.stderr)
+    print(visible(text), file=sys.stderr)
 
 
 def _interrupt(number: int, frame: object) -> NoReturn:

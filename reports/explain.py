@@ -3,12 +3,16 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import Any
 
+from portfolios.checks import Checks, needed_columns
+from portfolios.chunk import Chunk
+from portfolios.exception_rows import exception_rows, sentence
 from portfolios.extract import Extract
+from portfolios.identifiers import Duplicates
+from projection.plain_faults import NotValued
 from projection.working import working
 
-from .prepared import prepare
+from .prepared import Prepared, prepare
 
 
 class ExplainError(ValueError):
@@ -18,30 +22,38 @@ class ExplainError(ValueError):
 def explain(run: Path, policy_id: str) -> str:
     """Return the working of a policy as text.
 
-    Raises DocumentError and ExtractError for wrong input, ExplainError if the policy is not in the extract,
-    is there more than once, or is of a product without a design; and what ``working`` raises where it
-    cannot be valued.
+    Raises DocumentError and ExtractError for wrong input, and ExplainError if the policy is not in the
+    extract, or the run would list it as an exception: what a run does not value has no working either.
     """
     prepared = prepare(run)
+    needed = needed_columns(prepared.designs, prepared.basis.document.rule_columns())
+    prepared.extract.need(needed)
     policy = find_policy(prepared.extract, policy_id)
-    product = policy.get("product")
-    design = next((design for design in prepared.designs if design.code == product), None)
-    if design is None:
-        raise ExplainError(f"policy '{policy_id}': no design has the code of its product, '{product}'")
-    status = policy.get("status")
-    if status not in prepared.document.in_force:
-        raise ExplainError(
-            f"policy '{policy_id}' is not valued: its status is '{status}', and the run values "
-            + " and ".join(f"'{name}'" for name in prepared.document.in_force)
+    place = _checked(prepared, policy, needed, policy_id)
+    try:
+        return working(
+            policy.policy(0), prepared.designs[place], prepared.basis, prepared.document.settings
         )
-    return working(policy, design, prepared.basis, prepared.document.settings)
+    except NotValued as error:
+        raise ExplainError(f"policy '{policy_id}' is not valued: {error}") from error
 
 
-def find_policy(extract: Extract, policy_id: str) -> dict[str, Any]:
-    """Return the row of a policy as Python values. Raises ExplainError unless there is exactly one."""
+def find_policy(extract: Extract, policy_id: str) -> Chunk:
+    """Return the row of a policy as a chunk of its own. Raises ExplainError unless there is exactly one."""
     found = extract.find(policy_id)
     if not found:
         raise ExplainError(f"policy '{policy_id}' is not in the extract ({extract.rows:,} policies)")
     if len(found) > 1:
         raise ExplainError(f"policy '{policy_id}' is not valued: the extract holds it {len(found)} times")
     return found[0]
+
+
+def _checked(prepared: Prepared, policy: Chunk, needed: tuple[str, ...], policy_id: str) -> int:
+    """Return the position of the policy's design. Raises ExplainError where the checks of a run object."""
+    document = prepared.document
+    checks = Checks(prepared.designs, document.valuation_date, document.in_force, Duplicates(), needed)
+    checked = checks.check(policy)
+    if checked.reason[0]:
+        (row,) = exception_rows(policy, checked, needed).to_pylist()
+        raise ExplainError(f"policy '{policy_id}' is not valued: {row['reason']}: {sentence(row)}")
+    return int(checked.product[0])

@@ -64,6 +64,11 @@ def words(name: str) -> str:
     return name.replace("_", " ")
 
 
+def visible(text: str) -> str:
+    """Return text for a terminal: what is no letter, mark or line end becomes '?', for it could deceive."""
+    return "".join(letter if letter.isprintable() or letter == "\n" else "?" for letter in text)
+
+
 def shown(value: object) -> str:
     """Return a cell of a group column as text; a missing value is said in words."""
     return "(missing)" if value is None or value == "" else str(value)

@@ -11,6 +11,7 @@ from importlib import import_module
 from pathlib import Path
 from typing import Any
 
+from projection.documents import DocumentError
 from projection.results import Outcome
 from projection.valuation import value_extract
 
@@ -68,7 +69,10 @@ def reserve_run(
 def value_prepared(
     prepared: Prepared, sink: Any, progress: Callable[[int, int], None], threads: int | None, **changes: Any
 ) -> Outcome:
-    """Value what was read, as the run document asks or with some of its questions changed."""
+    """Value what was read, as the run document asks or with some of its questions changed.
+
+    Raises what ``value_extract`` does; where basis and extract do not fit together, the basis's file is named.
+    """
     document = prepared.document
     asked: dict[str, Any] = {
         "group_by": tuple(document.group_by),
@@ -79,9 +83,12 @@ def value_prepared(
         "progress": progress,
         "threads": threads,
     }
-    return value_extract(
-        prepared.extract, prepared.designs, prepared.basis, document.settings, **(asked | changes)
-    )
+    try:
+        return value_extract(
+            prepared.extract, prepared.designs, prepared.basis, document.settings, **(asked | changes)
+        )
+    except DocumentError as error:
+        raise DocumentError(f"{prepared.folder / document.basis}: {error}") from error
 
 
 def write_tables(folder: Path, outcome: Outcome) -> list[WrittenFile]:

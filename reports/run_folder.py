@@ -8,21 +8,25 @@ moment between two renames; the next run puts it back if the new one never arriv
 
 from __future__ import annotations
 
-import contextlib
 import os
 import secrets
 import shutil
-import time
 from pathlib import Path
 from types import TracebackType
 
+from portfolios.unfinished import (
+    clean_unfinished,
+    glob_escape,
+    make_parents,
+    new_unfinished,
+    remove_empty,
+    unlock,
+)
+
 from .disk import RunFolderError, is_about, plain, plainly, sync
-from .locks import lock_folder, no_locks, unlock
 
 RECORD = "run.json"
 """Name of the record; a folder that holds one is a finished run."""
-
-_STALE_SECONDS = 24 * 3600.0
 
 
 class RunFolder:
@@ -45,10 +49,10 @@ class RunFolder:
         if self.target.name in ("", ".", ".."):
             raise RunFolderError(f"{self.target}: give the run folder a name of its own")
         with plainly(self.target):
-            self._made = _make_parents(parent)
+            self._made = make_parents(parent)
             clean_leftovers(self.target)
             check_target(self.target, self.replace)
-            self.path, self._lock = _new_folder(self.target)
+            self.path, self._lock = new_unfinished(self.target)
         return self
 
     def __exit__(
@@ -56,7 +60,7 @@ class RunFolder:
     ) -> None:
         if not self._finished:
             shutil.rmtree(self.path, ignore_errors=True)
-            _remove_empty(self._made)
+            remove_empty(self._made)
         unlock(self._lock)
         if (
             isinstance(error, OSError)
@@ -128,44 +132,4 @@ def clean_leftovers(target: Path) -> list[str]:
         else:
             aside.rename(target)
         done.append(aside.name)
-    for folder in sorted(target.parent.glob(f".{glob_escape(target.name)}.unfinished-*")):
-        lock = lock_folder(folder)
-        if lock is not None or (no_locks() and _stale(folder)):
-            shutil.rmtree(folder, ignore_errors=True)
-            unlock(lock)
-            done.append(folder.name)
-    return done
-
-
-def glob_escape(name: str) -> str:
-    """Return a name that a pattern takes literally."""
-    return "".join(f"[{letter}]" if letter in "*?[" else letter for letter in name)
-
-
-def _new_folder(target: Path) -> tuple[Path, int | None]:
-    while True:
-        path = target.with_name(f".{target.name}.unfinished-{secrets.token_hex(4)}")
-        path.mkdir()
-        lock = lock_folder(path)
-        # Between mkdir and lock another run may have taken the folder for a leftover.
-        if path.is_dir() and (lock is not None or no_locks()):
-            return path, lock
-        unlock(lock)
-
-
-def _make_parents(parent: Path) -> list[Path]:
-    """Make the folders above the target; return those that were not there, the innermost first."""
-    missing = [folder for folder in (parent, *parent.parents) if not folder.exists()]
-    for folder in reversed(missing):
-        folder.mkdir()
-    return missing
-
-
-def _remove_empty(folders: list[Path]) -> None:
-    for folder in folders:
-        with contextlib.suppress(OSError):
-            folder.rmdir()
-
-
-def _stale(folder: Path) -> bool:  # pragma: no cover - only where folders cannot be locked
-    return time.time() - folder.stat().st_mtime > _STALE_SECONDS
+    return done + clean_unfinished(target)

@@ -301,8 +301,9 @@ def test_find(tmp_path: Path) -> None:
     twice = pa.concat_tables([POLICIES, POLICIES.slice(3, 1)])
     extract = open_extract(write(tmp_path, table=twice))
     identifier = EXPECTED[3]["policy_id"]
-    assert extract.find(str(identifier)) == [EXPECTED[3], EXPECTED[3]]
-    assert extract.find(str(EXPECTED[200]["policy_id"])) == [EXPECTED[200]]
+    assert [chunk.policy(0) for chunk in extract.find(str(identifier))] == [EXPECTED[3], EXPECTED[3]]
+    (found,) = extract.find(str(EXPECTED[200]["policy_id"]))
+    assert (found.policy(0), found.start, found.n) == (EXPECTED[200], 200, 1)
     assert extract.find("nobody") == []
 
 

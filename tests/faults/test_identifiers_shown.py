@@ -1,0 +1,131 @@
+"""Identifiers that would like to be more than text, through every output."""
+
+from __future__ import annotations
+
+import zipfile
+from pathlib import Path
+from typing import Any
+
+import openpyxl
+import pyarrow as pa
+import pyarrow.parquet as pq
+import pytest
+from fault_office import Office, Said
+
+WICKED = (
+    "=1+1",
+    "<script>alert(1)</script>",
+    "@SUM(A1)",
+    "-7",
+    "+7",
+    "{{ 7 * 7 }}",
+    "https://example.invalid",
+    "x" * 40_000,
+    "Ære-Øy-Ålesund-Ωμέγα-保険-🦀",
+    "e\u0301 is not \u00e9",
+    " spaces before and after ",
+    "tab\tline\nend\rreturn",
+    "\x1b[31mred\x1b[0m",
+    "bell\x07null\x00end",
+    "\u202eback to front",
+    "'; DROP TABLE policies; --",
+    "../../etc/passwd",
+)
+EMPTY = ("", None)
+
+
+@pytest.fixture
+def wicked(office: Office) -> Office:
+    """The office with identifiers of this kind, each on a good policy and on one that has no birth date."""
+    assert office.reserve("--no-workbook").code == 0
+    good = set(pq.read_table(office.out / "policies", columns=["policy_id"]).column("policy_id").to_pylist())
+    table = office.extract()
+    ids, births = table.column("policy_id").to_pylist(), table.column("birth_date").to_pylist()
+    rows = [row for row, identifier in enumerate(ids) if identifier in good]
+    for row, identifier in zip(rows, WICKED, strict=False):
+        ids[row] = identifier
+    for row, identifier in zip(rows[len(WICKED) :], WICKED, strict=False):
+        ids[row], births[row] = f"{identifier}!", None
+    for row, identifier in zip(rows[2 * len(WICKED) :], EMPTY, strict=False):
+        ids[row] = identifier
+    for name, cells in (("policy_id", ids), ("birth_date", births)):
+        place = table.schema.get_field_index(name)
+        table = table.set_column(place, name, pa.array(cells, table.schema.field(name).type))
+    office.write(table)
+    office.replace("month-end.toml", "0.15", "0.5")
+    # Groups show text of the extract too.
+    office.replace("month-end.toml", '["product", "sex"]', '["product", "policy_id"]')
+    return office
+
+
+@pytest.fixture
+def valued(wicked: Office) -> tuple[Office, Said]:
+    return wicked, wicked.reserve("--replace")
+
+
+def test_tables_hold_them_as_they_are(valued: tuple[Office, Said]) -> None:
+    office, said = valued
+    assert said.code == 0, said.err
+    policies = pq.read_table(office.out / "policies").column("policy_id").to_pylist()
+    assert set(WICKED) <= set(policies)
+    found = {row["policy_id"]: row for row in pq.read_table(office.out / "exceptions.parquet").to_pylist()}
+    assert {found[f"{identifier}!"]["reason"] for identifier in WICKED} == {"date missing"}
+    assert found[""]["reason"] == "identifier missing"
+    rows = pq.read_table(office.out / "exceptions.parquet").column("reason").to_pylist()
+    assert rows.count("identifier missing") == 2
+    assert office.command("verify", str(office.out)).code == 0
+
+
+def test_the_page_escapes_them(valued: tuple[Office, Said]) -> None:
+    page = (valued[0].out / "report.html").read_text()
+    assert "<script" not in page
+    assert "&lt;script&gt;alert(1)&lt;/script&gt;" in page
+    assert "{{ 7 * 7 }}" in page
+    assert "javascript:" not in page
+    assert 'href="https://example.invalid' not in page
+    assert not set("\x00\x07\x1b\u202e") & set(page)
+
+
+def test_the_workbook_holds_text_and_no_formula(valued: tuple[Office, Said]) -> None:
+    path = valued[0].out / "report.xlsx"
+    cells = [cell for row in sheet_rows(path) for cell in row if isinstance(cell.value, str)]
+    texts = {cell.value for cell in cells}
+    for identifier in ("=1+1!", "@SUM(A1)!", "-7!", "+7!", "<script>alert(1)</script>!", "https://example.invalid!"):
+        assert identifier in texts
+    assert all(cell.data_type == "s" for cell in cells if cell.value.startswith(("=1", "@SUM", "-7", "+7")))
+    assert not any(cell.hyperlink for cell in cells)
+    with zipfile.ZipFile(path) as parts:
+        sheets = [parts.read(name) for name in parts.namelist() if name.startswith("xl/worksheets/sheet")]
+    assert sheets
+    assert not any(b"1+1</f>" in sheet or b"<f>" + b"SUM(A1)" in sheet or b"hyperlink" in sheet for sheet in sheets)
+
+
+def sheet_rows(path: Path) -> list[Any]:
+    return [row for sheet in openpyxl.load_workbook(path) for row in sheet.iter_rows()]
+
+
+def test_what_is_printed_cannot_steer_the_terminal(wicked: Office) -> None:
+    checked = wicked.check()
+    assert checked.code == 0
+    assert "<script>alert(1)</script>!: birth_date is missing" in checked.out
+    explained = [wicked.command("explain", str(wicked.run), identifier) for identifier in ("\x1b[31mred\x1b[0m!", "\x07")]
+    assert [said.code for said in explained] == [2, 2]
+    reserved = wicked.reserve("--replace", "--no-workbook")
+    assert reserved.code == 0
+    for said in (checked, *explained, reserved):
+        assert all(letter.isprintable() or letter == "\n" for letter in said.out + said.err), said
+        assert max(map(len, (said.out + said.err).splitlines())) < 500
+
+
+@pytest.mark.parametrize("identifier", [*WICKED[:7], *WICKED[8:]])
+def test_each_can_be_explained(wicked: Office, identifier: str) -> None:
+    said = wicked.command("explain", str(wicked.run), identifier)
+    if identifier.startswith(("-", "+")) and said.code == 2:
+        # What begins with a dash must stand behind '--', as on every command line.
+        said = wicked.command("explain", str(wicked.run), "--", identifier)
+    assert said.code == 0, said.err
+    assert said.out.rstrip().splitlines()[-1].startswith("reserve ")
+    assert all(letter.isprintable() or letter == "\n" for letter in said.out)
+    with_fault = wicked.command("explain", str(wicked.run), "--", f"{identifier}!")
+    assert with_fault.code == 2
+    assert "is not valued: date missing: birth_date is missing; the date must be there" in with_fault.err
