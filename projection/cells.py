@@ -60,7 +60,9 @@ class _Listed:
         codes, values = chunk.text(self.column)
         other = len(self.values)
         # Flags are 'true' and 'false' as text.
-        known = {str(value).lower() if isinstance(value, bool) else value: code for code, value in enumerate(self.values)}
+        known = {
+            str(value).lower() if isinstance(value, bool) else value: code for code, value in enumerate(self.values)
+        }
         # The last entry answers for -1, a missing value.
         table = np.array([*(known.get(value, other) for value in values), other + 1], dtype=np.int64)
         return table[codes]

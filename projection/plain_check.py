@@ -42,9 +42,9 @@ def _difference(candidate: Candidate, designs: list[Design], basis: Basis, setti
 class Sample:
     """The policies with the smallest hashes among those valued: the same ones in whatever order they come.
 
-    smallest: the smallest hashes of the extract, ascending, some more than the sample has policies, because some may turn
-    out to be exceptions. Each of the first is valued by the plain twin as soon as it comes along, while other threads
-    go on; the others wait until it is known how many are missing.
+    smallest: the smallest hashes of the extract, ascending, some more than the sample has policies, because
+    some may turn out to be exceptions. Each of the first is valued by the plain twin as soon as it comes
+    along, while other threads go on; the others wait until it is known how many are missing.
     """
 
     def __init__(self, size: int, smallest: Hashes, designs: list[Design], basis: Basis, settings: Settings) -> None:

@@ -33,7 +33,6 @@ from .settings import Settings
 from .sheet import convention_sheet
 from .tally import ChunkTally, Tally
 
-
 SPARE = 64
 """Policies that may step in where others of the sample turn out to be exceptions."""
 

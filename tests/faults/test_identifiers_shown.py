@@ -108,7 +108,9 @@ def test_what_is_printed_cannot_steer_the_terminal(wicked: Office) -> None:
     checked = wicked.check()
     assert checked.code == 0
     assert "<script>alert(1)</script>!: birth_date is missing" in checked.out
-    explained = [wicked.command("explain", str(wicked.run), identifier) for identifier in ("\x1b[31mred\x1b[0m!", "\x07")]
+    explained = [
+        wicked.command("explain", str(wicked.run), identifier) for identifier in ("\x1b[31mred\x1b[0m!", "\x07")
+    ]
     assert [said.code for said in explained] == [2, 2]
     reserved = wicked.reserve("--replace", "--no-workbook")
     assert reserved.code == 0

@@ -20,7 +20,14 @@ from projection.settings import Settings
 
 Draw = Any
 
-DATES = [date(2026, 11, 30), date(2028, 2, 29), date(2027, 2, 28), date(2026, 12, 31), date(2026, 7, 15), date(2027, 1, 1)]
+DATES = [
+    date(2026, 11, 30),
+    date(2028, 2, 29),
+    date(2027, 2, 28),
+    date(2026, 12, 31),
+    date(2026, 7, 15),
+    date(2027, 1, 1),
+]
 MONEY = ["premium_pa", "single_premium", "sum_assured", "annuity_pa", "loading"]
 COLUMNS = {
     "policy_id": pa.string(),
@@ -259,7 +266,10 @@ def expenses(draw: Draw, number: int) -> dict[str, Any]:
     first, later = one_of(draw, (25.0, 30.0), (0.5, 0.02), (0.0, 7.0), (10.0, 0.0))
     item: dict[str, Any] = {"name": f"item {number}", "per": per}
     if per in ("policy", "claim") and not chance(draw, 3):
-        item["inflation"] = {"rate": one_of(draw, 0.025, -0.01), "from": one_of(draw, date(2026, 1, 1), date(2031, 6, 30))}
+        item["inflation"] = {
+            "rate": one_of(draw, 0.025, -0.01),
+            "from": one_of(draw, date(2026, 1, 1), date(2031, 6, 30)),
+        }
     if per == "policy":
         item["a_year"] = one_of(draw, 12, 4, 1, 2)
     item["rule"] = draw(ruled(st.just({"first_year": first, "later_years": later})))
@@ -277,7 +287,9 @@ def bases(draw: Draw, folder: Path, step: str) -> Basis:
         },
         "interest": {"rule": draw(ruled(interest_rules()))},
         "expense": [draw(expenses(number)) for number in range(draw(st.integers(0, 3)))],
-        "claims": {"paid": one_of(draw, "end of step", "middle of step", {"delay_months": one_of(draw, 2.5, 0, 1, 14)})},
+        "claims": {
+            "paid": one_of(draw, "end of step", "middle of step", {"delay_months": one_of(draw, 2.5, 0, 1, 14)})
+        },
     }
     if not chance(draw, 3):
         timing = one_of(draw, "each step", "anniversaries")

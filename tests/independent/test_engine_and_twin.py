@@ -58,7 +58,7 @@ def check_policy(example: Example, policy: dict[str, Any], valued: Valued, place
     reason = Reason(int(valued.checked.reason[place]))
     twin = by_twin(example, policy)
     if isinstance(twin, NotValued) or reason:
-        assert isinstance(twin, NotValued) and reason, f"engine: {reason.words}; twin: {twin}; {policy}"
+        assert isinstance(twin, NotValued) == bool(reason), f"engine: {reason.words}; twin: {twin}; {policy}"
         return
     engine, plain = valued.results.parts[place], np.array([twin.benefits, twin.expenses, twin.premiums])
     size = float(np.abs(plain).sum())
