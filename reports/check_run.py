@@ -12,7 +12,7 @@ import pyarrow as pa
 from portfolios.exception_rows import sentence
 from projection.results import Outcome
 
-from .figures import count, counted, lines_up
+from .figures import count, counted, lines_up, short
 from .prepared import Prepared, prepare
 from .record import reasons
 from .reserve_run import value_prepared
@@ -81,7 +81,7 @@ def _exceptions(outcome: Outcome) -> list[str]:
     for row in outcome.exceptions.to_pylist():
         found = examples[row["reason"]]
         if len(found) < EXAMPLES:
-            line = f"{row['policy_id']}: {sentence(row)}"
+            line = f"{short(row['policy_id'])}: {sentence(row)}"
             found += [line] if line not in found else []
     lines = []
     for reason, number in reasons(outcome).items():

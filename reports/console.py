@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from .figures import amount, count, counted, lines_up, seconds, shown, words
+from .figures import amount, count, counted, lines_up, seconds, short, shown, words
 from .report import Report
 
 MOST_GROUPS = 40
@@ -35,7 +35,7 @@ def _groups(report: Report) -> list[str]:
     groups = report.outcome.group_by
     rows = [[*map(words, groups), "policies", "reserve", "benefits", "expenses", "premiums"]]
     for row in report.total_rows[:MOST_GROUPS]:
-        rows.append([*(shown(row[name]) for name in groups), *_figures(row, report.decimals)])
+        rows.append([*(short(shown(row[name])) for name in groups), *_figures(row, report.decimals)])
     lines = lines_up([*rows, _total_row(report, len(groups))], right=range(len(groups), len(groups) + 5))
     lines.insert(-1, "-" * max(map(len, lines)))
     hidden = len(report.total_rows) - MOST_GROUPS

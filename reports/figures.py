@@ -2,8 +2,11 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterable, Sequence
 from decimal import Decimal
+
+_DECEIVING = re.compile("[\x00-\x09\x0b-\x1f\x7f-\x9f\u200e\u200f\u2028-\u202e\u2066-\u2069]")
 
 
 def count(number: int) -> str:
@@ -65,8 +68,13 @@ def words(name: str) -> str:
 
 
 def visible(text: str) -> str:
-    """Return text for a terminal: what is no letter, mark or line end becomes '?', for it could deceive."""
-    return "".join(letter if letter.isprintable() or letter == "\n" else "?" for letter in text)
+    """Return text with '?' for control characters and marks that turn the direction: both could deceive."""
+    return _DECEIVING.sub("?", text)
+
+
+def short(text: str, most: int = 60) -> str:
+    """Return text of at most so many letters, its end cut off where it is longer."""
+    return text if len(text) <= most else text[: most - 3] + "..."
 
 
 def shown(value: object) -> str:

@@ -11,7 +11,7 @@ from markupsafe import Markup
 
 from .cautions import counted_cautions
 from .charts import bar_chart, run_off_chart
-from .figures import amount, count, counted, seconds, shown, size, words
+from .figures import amount, count, counted, seconds, shown, size, visible, words
 from .report import Report, in_blocks
 
 MOST_GROUPS = 500
@@ -21,9 +21,9 @@ MOST_INPUTS = 200
 
 
 def page(report: Report) -> str:
-    """Return the page. Every text from the inputs is escaped."""
+    """Return the page. Every text from the inputs is escaped, and its control characters become '?'."""
     counts = set(counted_cautions(report.outcome))
-    return _template().render(
+    text = _template().render(
         report=report,
         record=report.record,
         settings=report.outcome.settings,
@@ -43,6 +43,7 @@ def page(report: Report) -> str:
         inputs=report.record["inputs"][:MOST_INPUTS],
         inputs_hidden=max(0, len(report.record["inputs"]) - MOST_INPUTS),
     )
+    return visible(text)
 
 
 def _bars(report: Report) -> Markup:

@@ -88,11 +88,12 @@ def _flows_apart(prepared: Prepared, table: pa.Table, plain: Policies, flows: Re
         ours[row["stream"]][int((np.datetime64(row["month"], "M") - today).astype(int))] += row["amount"]
     for line, amounts in zip(plain.lines, flows, strict=True):
         ours[line.name] -= amounts
-    deaths = {line.name for line in plain.lines if plain.schedules[line.schedule].way == WAYS["death"]}
-    apart = [abs(one.sum()) if name in deaths else np.abs(one).max() for name, one in ours.items()]
     # Half a cent for a line and month; a payment of a policy is rounded to a thousandth of a cent.
     allowed = 0.005 + 0.5e-5 * len(plain) * len(plain.lines)
-    return float(max(apart) / allowed)
+    deaths = {line.name for line in plain.lines if plain.schedules[line.schedule].way == WAYS["death"]}
+    sums = [abs(one.sum()) / np.count_nonzero(one) for name, one in ours.items() if name in deaths]
+    months = [np.abs(one).max() for name, one in ours.items() if name not in deaths]
+    return float(max([*sums, *months]) / allowed)
 
 
 def _engine(folder: Path, policies: int) -> tuple[Taken, Taken, int]:
