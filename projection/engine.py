@@ -104,7 +104,7 @@ class Engine:
             clock.lap("rules")
             found = self._find(chunk, checked, cell, places)
         order = self._order(found)
-        policies = np.zeros(chunk.n, POLICY)
+        policies = loops.records(np.zeros(chunk.n, POLICY))
         after = self.discount.months_after_start()
         loops.fill_policies(order, places, found, after, self.settings.step_months, policies)
         tables = self._tables(chunk, checked, cell, order)
@@ -196,7 +196,14 @@ class Engine:
                     whole[row, mine] = plans.relative.places_of(number, chunk, whole, order, mine)
             money = plans.slots.amounts_of(chunk, order)
             records = self.survival.records if len(self.survival.records) else np.zeros(1, SURVIVAL)
-            return loops.Tables(plans.segments, plans.charges, records, self.pool.numbers, money, whole)
+            return loops.Tables(
+                segments=loops.records(plans.segments),
+                charges=loops.records(plans.charges),
+                survivals=loops.records(records),
+                pool=self.pool.numbers,
+                money=money,
+                whole=whole,
+            )
 
     def _flag(self, checked: Checked, bad: NDArray[np.bool_], reason: Reason, column: str) -> None:
         if bad.any():

@@ -133,6 +133,23 @@ def bits(typing_context, number):
     return types.int64(types.float64), build
 
 
+if nb.config.DISABLE_JIT:
+    # Without compilation nobody counts owners, and the bits of a double are had through a view.
+
+    def unowned(array):
+        """The array itself."""
+        return array
+
+    def bits(number):
+        """The 64 bits of a double as a whole number."""
+        return np.float64(number).view(np.int64)
+
+
+def records(array: Any) -> Any:
+    """Records whose fields read as attributes, also where nothing is compiled."""
+    return array.view(np.recarray) if nb.config.DISABLE_JIT else array
+
+
 @compiled
 def quanta(amount):
     """An amount rounded to a whole number, half to even; below 2^51 in absolute value."""
@@ -281,9 +298,13 @@ def fill_policies(order, places, found, claim_after, step, policies):
             found.persistency[lapse, 2],
         )
         p.payment, p.claim = found.factors[discount, 0], found.factors[discount, 1]
-        p.claim_shift = 0
+        p.claim_shift = p.claim_first = 0
         if claim_after >= 0.0:
-            p.claim_shift = np.int64(np.floor((places.day[i] - 1) / 30.4375 + claim_after)) - step
+            # What has passed of the step of T at T brings the middle of the rest half as much nearer to its end.
+            passed = p.k % step + p.part / p.whole
+            day = (places.day[i] - 1) / 30.4375
+            p.claim_shift = np.int64(np.floor(day + claim_after)) - step
+            p.claim_first = np.int64(np.floor(day + claim_after + passed / 2)) - step
 
 
 @compiled
@@ -478,50 +499,51 @@ def span_start(stream, start):
 
 @inlined
 def extent(stream, whole, j, p, survival, last, rules):
-    """Reason, first point and number of points after T of a segment of streams.
+    """Reason, first point and number of points after T of a segment of streams, and whether it lasts beyond T.
 
     whole, j: the matrix of whole numbers and the policy's place in it; last: the last point that counts, at
-    most survival.over. A payment due
-    exactly on T is not among the points.
+    most survival.over. A payment due exactly on T is not among the points.
     """
     k = p.k
     if stream.clip_to <= k - 12:
-        return 0, 0, 0
+        return 0, 0, 0, False
     over = survival.over
     lives = stream.cover != s.CERTAIN
     start = np.int64(whole[stream.start, j])
     end = np.int64(whole[stream.end, j]) if stream.end >= 0 else max(start, over)
     if start < 0 or end < 0:
-        return _MONTHS, 0, 0
+        return _MONTHS, 0, 0, False
     if end < start:
-        return _ORDER, 0, 0
+        return _ORDER, 0, 0, False
     if lives and survival.closed == 0 and (stream.end < 0 or end > over):
-        return _TABLE, 0, 0
+        return _TABLE, 0, 0, False
     low = span_start(stream, start)
     high = min(start + stream.span_to, stream.clip_to)
     when = stream.when
     if when == s.ONCE:
         month = max(start - 1, start if stream.clock == 0 else 0)
-        return 0, start, 1 if start > k and low <= month < high and (start <= last or not lives) else 0
+        there = start > k and low <= month < high and (start <= last or not lives)
+        return 0, start, 1 if there else 0, start > k
     if when == s.DEATH or when == s.LAPSE:
         step = rules.step
         if step == 1:
             begin = max(k, start, low)
-            return 0, begin + 1, max(0, min(end, last, high) - begin)
+            return 0, begin + 1, max(0, min(end, last, high) - begin), end > k
         if leftover(start, step) != 0 or (stream.end >= 0 and leftover(end, step) != 0):
-            return _YEARS, 0, 0
+            return _YEARS, 0, 0, False
         # The first step after T starts at or before it; a later one starts where the stream or the clip does.
         begin = max(k - leftover(k, step), first_due(0, step, max(start, low)))
         finish = min(end, last + step - 1, over, high + step - 1)
-        return 0, begin + step, periods_in(max(0, finish - begin), step)
+        return 0, begin + step, periods_in(max(0, finish - begin), step), end > k
     period = np.int64(whole[stream.period, j])
     if period <= 0 or (stream.whole == 1 and leftover(end - start, period) != 0):
-        return _PERIOD, 0, 0
+        return _PERIOD, 0, 0, False
+    lasts = end > k
     begin = start
     if stream.guarantee >= 0:
         guaranteed = np.int64(whole[stream.guarantee, j])
         if guaranteed < 0:
-            return _MONTHS, 0, 0
+            return _MONTHS, 0, 0, False
         if stream.cover == s.GUARANTEED:
             end = min(end, start + guaranteed)
         else:
@@ -541,7 +563,7 @@ def extent(stream, whole, j, p, survival, last, rules):
     stop = min(end - lag + 1 if lag else end, high)
     if stream.cover == s.ALIVE or stream.cover == s.AFTER_GUARANTEE:
         stop = min(stop, last + 1 - lag)
-    return 0, month + lag, periods_in(max(0, stop - month + period - 1), period)
+    return 0, month + lag, periods_in(max(0, stop - month + period - 1), period), lasts
 
 
 @compiled
@@ -641,15 +663,13 @@ def value_policies(order, policies, tables, rules, results):
         reason = 0
         going = False
         for n in range(p.segments, p.segments_end):
-            reason, firsts[n - p.segments], counts[n - p.segments] = extent(
+            reason, firsts[n - p.segments], counts[n - p.segments], lasts = extent(
                 segments[n], whole, j, p, survival, last, rules
             )
             if reason != 0:
                 results.fault[i] = n
                 break
-            if segments[n].own == 1 and (
-                counts[n - p.segments] > 0 or (today and due_today(segments[n], whole, j, p, rules)[0])
-            ):
+            if segments[n].own == 1 and (lasts or (today and due_today(segments[n], whole, j, p, rules)[0])):
                 going = True
         if reason == 0 and not going:
             reason = _MATURED
@@ -802,12 +822,12 @@ def value_moves(stream, p, whole, j, survival, pool, alive, inforce, first, coun
     if death:
         a, b, kind = 1.0, -1.0, DYING
         held, discount = p.dead, p.claim + first - p.k
-        calendar += p.claim_shift
     elif rules.dependent == 1:
         a, b, kind = 0.5, 0.5, SPREAD
     amount /= alive * inforce
     relative = relative_place(stream, whole, j, first - step, first + p.shift)
-    flow = stream.account * BINS + max(0, calendar)
+    claim_first = p.claim_first if death else 0
+    claim_shift = p.claim_shift if death else 0
     value = 0.0
     if first - step <= p.k:
         share = pool[held + first]
@@ -816,17 +836,14 @@ def value_moves(stream, p, whole, j, survival, pool, alive, inforce, first, coun
         elif not death:
             share = inforce - pool[p.held + first]
         x = (a * alive + b * pool[survival.living + first]) * share * pool[relative]
-        flows[flow] += quanta(x * amount * rules.quantum)
+        flows[stream.account * BINS + max(0, calendar + claim_first)] += quanta(x * amount * rules.quantum)
         value = amount * x * pool[discount]
         count -= 1
-        first, relative, discount, flow = (
-            first + step,
-            relative + (step if relative != ONES else 0),
-            discount + step,
-            flow + step,
-        )
+        first, calendar, discount = first + step, calendar + step, discount + step
+        relative += step if relative != ONES else 0
     if count <= 0:
         return value
+    flow = stream.account * BINS + max(0, calendar + claim_shift)
     if step > 1 or count < 4:
         return value + sum_apart(
             pool,

@@ -184,9 +184,9 @@ def _streams(
     """Return the streams of the design and those that the expense items add, in this order."""
     streams = design_streams(design, policy, course)
     ends = [stream.terms.end for stream in streams]
-    known = [end for end in ends if end is not None]
-    if len(known) == len(ends) and max(known) < course.u:
-        raise NotValued("matured", f"product {design.code}", f"{max(known)} months", "ends before the valuation date")
+    ended = all(end is not None and end <= course.u for end in ends)
+    if ended and not any(stream.occasions for stream in streams):
+        raise NotValued("matured", f"product {design.code}", None, "something is to come after the valuation date")
     own = {stream.name for stream in design.stream if stream.of is None}
     added: list[PolicyStream] = []
     for item in basis.document.expense:

@@ -99,6 +99,7 @@ POLICY = np.dtype(
         ("payment", "i8"),  # place of the discount factor of a payment at point k
         ("claim", "i8"),  # place of that of a death claim of the step that ends at k
         ("claim_shift", "i8"),  # calendar months from the end of a step to the payment of its death claims
+        ("claim_first", "i8"),  # the same for the step in which the valuation date lies
     ],
     align=True,
 )

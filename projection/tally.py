@@ -108,12 +108,15 @@ class Tally:
 
     def _by_line(self, plans: Plans) -> NDArray[np.float64]:
         """Minor units by line and month: each line's shares of the accounts, rounded once."""
-        amounts = np.zeros((len(plans.lines), self.flows.shape[1]))
+        parts: dict[int, list[NDArray[np.float64]]] = {line: [] for line in range(len(plans.lines))}
         for (_, shares), account in plans.accounts.items():
             if account < len(self.flows):
                 for line, share in shares:
-                    amounts[line] += share * self.flows[account]
-        return np.rint(amounts / QUANTA)
+                    parts[line].append(share * self.flows[account])
+        # Added in order of size: which account was met first must not matter, even to the last bit.
+        nothing = np.zeros((1, self.flows.shape[1]))
+        sums = [np.sort(np.array([*nothing, *found]), axis=0).sum(axis=0) for found in parts.values()]
+        return np.rint(np.array(sums or nothing) / QUANTA)
 
     def _money(self, minor: list[int]) -> pa.Array:
         return pa.array([figure / 10**self.decimals for figure in minor], pa.float64())

@@ -1,7 +1,11 @@
 """Documents and tables that are wrong: each error names file, key, value and remedy in plain words."""
 
+# One case is one line: what is changed, and what must be said of it.
+# ruff: noqa: E501
+
 from __future__ import annotations
 
+import pyarrow.parquet as pq
 import pytest
 from fault_office import Office
 
@@ -183,8 +187,6 @@ def test_exit_codes(office: Office) -> None:
 
 def test_what_a_run_lists_as_an_exception_has_no_working(office: Office) -> None:
     """The twin alone would value some of them: only the checks know a column's range."""
-    import pyarrow.parquet as pq
-
     assert office.reserve("--no-workbook").code == 0
     exceptions = pq.read_table(office.out / "exceptions.parquet").to_pylist()
     assert len({row["reason"] for row in exceptions}) == 13

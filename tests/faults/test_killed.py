@@ -15,7 +15,7 @@ from fault_office import Office, Said, ended, names, spawn
 pytestmark = pytest.mark.skipif(os.name == "nt", reason="signals and folder locks are a Unix matter")
 
 SEED = 20261130
-POLICIES_OF_DEMO = 400_000
+POLICIES_OF_DEMO = 200_000
 
 
 def unfinished(folder: Path) -> list[str]:
