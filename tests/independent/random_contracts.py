@@ -119,7 +119,8 @@ def own_streams(draw: Draw, name: str, step: str) -> dict[str, Any]:
         stream["a_year"] = one_of(draw, 1, 12, 4, 2, "premium_frequency", "annuity_frequency")
         if stream["while"] == "alive" and chance(draw, 3):
             stream["guarantee"] = one_of(draw, 5, "guarantee_years", 0, 10, 2.5)
-        elif stream["while"] == "alive" and chance(draw, 3):
+        elif stream["while"] == "alive" and "to" in stream and chance(draw, 3):
+            # For life, the two differ in where the last, incomplete year of the formula ends; nobody is left in it.
             stream["payments"] = one_of(draw, "Woolhouse 2", "Woolhouse 3")
     _shape(draw, stream)
     return stream

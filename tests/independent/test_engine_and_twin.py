@@ -5,6 +5,7 @@ Both are written from the page of conventions, and share no line of arithmetic.
 
 from __future__ import annotations
 
+import os
 from pathlib import Path
 from typing import Any
 
@@ -23,6 +24,11 @@ from projection.plain import NotValued, PlainValue, plain_value
 
 TOLERANCE = 1e-11
 """Of the sum of the absolute parts."""
+
+NOTHING = 1e-9
+"""In currency: the engine leaves out points at which survival is below 1e-18 of that at T, the twin does not."""
+
+EXAMPLES = 15 if os.environ.get("NUMBA_DISABLE_JIT") == "1" else 150
 
 SLOW = [HealthCheck.too_slow, HealthCheck.data_too_large, HealthCheck.large_base_example]
 
@@ -67,11 +73,11 @@ def check_policy(example: Example, policy: dict[str, Any], valued: Valued, place
         listed = by_twin(example, policy, payments=True)
         assert isinstance(listed, PlainValue)
         size = sum(abs(payment.value) for payment in listed.payments)
-    assert np.abs(engine - plain).max() <= TOLERANCE * size, f"engine {engine}, twin {plain}: {policy}"
+    assert np.abs(engine - plain).max() <= TOLERANCE * size + NOTHING, f"engine {engine}, twin {plain}: {policy}"
 
 
 @given(data=st.data())
-@settings(max_examples=150, deadline=None, suppress_health_check=SLOW)
+@settings(max_examples=EXAMPLES, deadline=None, suppress_health_check=SLOW)
 def test_same_parts_and_same_refusals(folder: Path, data: st.DataObject) -> None:
     example = data.draw(examples(folder))
     chunk, valued = by_engine(example)
