@@ -143,8 +143,8 @@ def explain(
 
     \b
     Example:
-        duecourse explain office/month-end.toml TM-0000042-1
-        duecourse explain office/month-end.toml TM-0000042-1 --out working.txt
+        duecourse explain office/month-end.toml QM-000000011-5
+        duecourse explain office/month-end.toml QM-000000011-5 --out working.txt
     """
     from .explain import explain as explain_policy
 
