@@ -499,7 +499,7 @@ def span_start(stream, start):
 
 @inlined
 def extent(stream, whole, j, p, survival, last, rules):
-    """Reason, first point and number of points after T of a segment of streams, and whether it lasts beyond T.
+    """Reason, first point and number of points after T of a segment of streams, and whether it lasts to T.
 
     whole, j: the matrix of whole numbers and the policy's place in it; last: the last point that counts, at
     most survival.over. A payment due exactly on T is not among the points.
@@ -517,28 +517,28 @@ def extent(stream, whole, j, p, survival, last, rules):
         return _ORDER, 0, 0, False
     if lives and survival.closed == 0 and (stream.end < 0 or end > over):
         return _TABLE, 0, 0, False
+    lasts = end > k or (end == k and p.part == 0)
     low = span_start(stream, start)
     high = min(start + stream.span_to, stream.clip_to)
     when = stream.when
     if when == s.ONCE:
         month = max(start - 1, start if stream.clock == 0 else 0)
         there = start > k and low <= month < high and (start <= last or not lives)
-        return 0, start, 1 if there else 0, start > k
+        return 0, start, 1 if there else 0, lasts
     if when == s.DEATH or when == s.LAPSE:
         step = rules.step
         if step == 1:
             begin = max(k, start, low)
-            return 0, begin + 1, max(0, min(end, last, high) - begin), end > k
+            return 0, begin + 1, max(0, min(end, last, high) - begin), lasts
         if leftover(start, step) != 0 or (stream.end >= 0 and leftover(end, step) != 0):
             return _YEARS, 0, 0, False
         # The first step after T starts at or before it; a later one starts where the stream or the clip does.
         begin = max(k - leftover(k, step), first_due(0, step, max(start, low)))
         finish = min(end, last + step - 1, over, high + step - 1)
-        return 0, begin + step, periods_in(max(0, finish - begin), step), end > k
+        return 0, begin + step, periods_in(max(0, finish - begin), step), lasts
     period = np.int64(whole[stream.period, j])
     if period <= 0 or (stream.whole == 1 and leftover(end - start, period) != 0):
         return _PERIOD, 0, 0, False
-    lasts = end > k
     begin = start
     if stream.guarantee >= 0:
         guaranteed = np.int64(whole[stream.guarantee, j])

@@ -184,8 +184,7 @@ def _streams(
     """Return the streams of the design and those that the expense items add, in this order."""
     streams = design_streams(design, policy, course)
     ends = [stream.terms.end for stream in streams]
-    ended = all(end is not None and end <= course.u for end in ends)
-    if ended and not any(stream.occasions for stream in streams):
+    if all(end is not None and end < course.u for end in ends):
         raise NotValued("matured", f"product {design.code}", None, "something is to come after the valuation date")
     own = {stream.name for stream in design.stream if stream.of is None}
     added: list[PolicyStream] = []
