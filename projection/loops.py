@@ -797,7 +797,9 @@ def value_payments(stream, p, whole, j, survival, pool, there, first, count, amo
     if lives:
         amount /= there
     elif stream.cover == s.GUARANTEED and start > p.k:
-        amount *= pool[survival.living + start] * pool[p.held + start - before] / there
+        if start > survival.over:  # nobody lives to see its start
+            return 0.0
+        amount *= pool[survival.living + start] * pool[p.held + start] / there
     if period > 1 or count < 4:
         living, held = (survival.living + first, p.held + first - before) if lives else (ONES, ONES)
         return sum_apart(

@@ -92,7 +92,8 @@ class Survival:
         Raises NotValued where the table ends before.
         """
         if months not in self._seen:
-            self._seen[months] = self._unscaled(months) / self._divisor
+            # With a rate of 1 nobody is left in the year of age in which an exact age at commencement lies.
+            self._seen[months] = self._unscaled(months) / self._divisor if self._divisor else 0.0
         return self._seen[months]
 
     def end(self) -> int:
