@@ -106,7 +106,8 @@ class Survival:
         record["living"], record["over"] = living, count - 1
         record["yearly"], record["reached"] = self.pool.add(yearly), self.pool.add(reached)
         record["years"], record["passed"] = len(yearly), passed
-        record["closed"] = rule.close or rates.closed
+        # A multiple or an extra may bring a rate to 1 before the table ends; then too nobody is left.
+        record["closed"] = rule.close or rates.closed or bool((yearly >= 1).any())
         self.records = np.concatenate((self.records, record))
         return len(self.records) - 1
 

@@ -28,7 +28,7 @@ TOLERANCE = 1e-11
 NOTHING = 1e-9
 """In currency: the engine leaves out points at which survival is below 1e-18 of that at T, the twin does not."""
 
-EXAMPLES = 8 if os.environ.get("NUMBA_DISABLE_JIT") == "1" else 150
+EXAMPLES = 8 if os.environ.get("NUMBA_DISABLE_JIT") == "1" else 60 if os.environ.get("CI") else 150
 
 SLOW = [HealthCheck.too_slow, HealthCheck.data_too_large, HealthCheck.large_base_example]
 
