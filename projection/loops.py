@@ -348,6 +348,10 @@ def fraction_survived(q, part, rule):
 def fill_living(yearly, reached, passed, rule, living):
     """Fill a row of survival from commencement at points g = 0, 1 ..., given the rates of the years of age."""
     base = fraction_survived(yearly[0], passed, rule)
+    if base <= 0.0:  # a rate of 1 in the year of age in which an exact age lies
+        for g in range(len(living)):
+            living[g] = 0.0
+        return
     for g in range(len(living)):
         if passed == 0.0:
             year, part = g // 12, (g % 12) / 12.0
@@ -365,6 +369,8 @@ def fill_living(yearly, reached, passed, rule, living):
 def survival_at(survival, pool, months, rule):
     """Survival L from commencement to any real number of months later."""
     base = fraction_survived(pool[survival.yearly], survival.passed, rule)
+    if base <= 0.0:
+        return 0.0
     since = survival.passed + months / 12.0
     year = np.int64(np.floor(since))
     if year >= survival.years:
