@@ -1,7 +1,8 @@
 """Curves: one row per distinct key met in the portfolio, shared by every policy that has the key.
 
 Survival by mortality rule and age at commencement; persistency by lapse rule and the time at which lapses
-stop; discount factors by interest rule and the part of a step that has passed at the valuation date.
+stop; discount factors by interest rule and, unless interest is flat, the part of a step that has passed at the
+valuation date.
 """
 
 from __future__ import annotations
@@ -106,6 +107,8 @@ class Survival:
         record["living"], record["over"] = living, count - 1
         record["yearly"], record["reached"] = self.pool.add(yearly), self.pool.add(reached)
         record["years"], record["passed"] = len(yearly), passed
+        record["lasts"] = self.pool.space(count)
+        loops.fill_lasts(self.pool.row(living, count), self.pool.row(int(record["lasts"][0]), count))
         # A multiple or an extra may bring a rate to 1 before the table ends; then too nobody is left.
         record["closed"] = rule.close or rates.closed or bool((yearly >= 1).any())
         self.records = np.concatenate((self.records, record))
@@ -162,7 +165,11 @@ class Persistency:
             held, dead, lapsing = self._build(self._rates(number - 1, until))
             self.known[code] = len(self.places)
             # One place in front of each row stands for g = -1.
-            self.places.append((self.pool.add(held) + 1, self.pool.add(dead) + 1, self.pool.add(lapsing) + 1))
+            place = self.pool.add(held) + 1
+            # Without competition, the deaths of a step are weighted with persistency one month before its end:
+            # the same row, one place further on.
+            dying = self.pool.add(dead) + 1 if self.dependent else place - 1
+            self.places.append((place, dying, self.pool.add(lapsing) + 1))
         return self.known[code]
 
     def _rates(self, rule: int, until: int) -> Row:
@@ -197,13 +204,19 @@ class Persistency:
 
 @dataclass
 class Discount:
-    """Rows of discount factors to the points after the valuation date, by interest rule and place in the step."""
+    """Rows of discount factors to the points after the valuation date, by interest rule and place in the step.
+
+    With flat interest, the part of a month that has passed brings all points nearer by the same factor. One row
+    then serves every policy of a rule, and stays in the cache. ``accrued`` holds the factors to both rows.
+    """
 
     basis: Basis
     settings: Settings
     pool: Pool
     places: list[tuple[int, int]] = field(default_factory=list)
+    accrued: list[tuple[float, float]] = field(default_factory=list)
     known: dict[int, int] = field(default_factory=dict)
+    whole: dict[int, int] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
         self.paid = self.basis.document.claims.paid
@@ -224,14 +237,24 @@ class Discount:
             curve = self.basis.curves[rule]
             n = np.arange(LONGEST + 14, dtype=np.float64)
             self.known[code] = len(self.places)
-            payment = self.pool.add(factors(curve, np.maximum(n - passed, 0) / 12))
-            claim = payment
+            payment, accrued = self._payment(rule, curve, n, passed)
+            claim, claim_accrued = payment, accrued
             if self.paid != "end of step":
+                claim_accrued = 1.0
                 begin = np.maximum(n - self.settings.step_months, passed)
                 delay = self.paid.delay_months if isinstance(self.paid, ClaimDelay) else 0.0
                 claim = self.pool.add(factors(curve, np.maximum((begin + n) / 2 + delay - passed, 0) / 12))
             self.places.append((payment, claim))
+            self.accrued.append((accrued, claim_accrued))
         return self.known[code]
+
+    def _payment(self, rule: int, curve: Curve, n: Row, passed: float) -> tuple[int, float]:
+        """Place of the factors of payments n months after the last point, and the factor to all of them."""
+        if len(curve.times) > 1:
+            return self.pool.add(factors(curve, np.maximum(n - passed, 0) / 12)), 1.0
+        if rule not in self.whole:
+            self.whole[rule] = self.pool.add(factors(curve, n / 12))
+        return self.whole[rule], float(np.exp(curve.final_force * passed / 12))
 
     def months_after_start(self) -> float:
         """Months from the start of a step to the payment of a death claim; below 0 where it is paid at its end."""

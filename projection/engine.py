@@ -167,6 +167,7 @@ class Engine:
             ranges=self.plans.ranges,
             persistency=np.array(self.persistency.places, dtype=np.int64),
             factors=np.array(self.discount.places, dtype=np.int64),
+            accrued=np.array(self.discount.accrued, dtype=np.float64),
         )
 
     def _order(self, found: loops.Found) -> NDArray[np.int64]:
@@ -198,7 +199,6 @@ class Engine:
             records = self.survival.records if len(self.survival.records) else np.zeros(1, SURVIVAL)
             return loops.Tables(
                 segments=loops.records(plans.segments),
-                charges=loops.records(plans.charges),
                 survivals=loops.records(records),
                 pool=self.pool.numbers,
                 money=money,

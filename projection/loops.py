@@ -79,7 +79,6 @@ class Tables(NamedTuple):
     """Everything that the policies of a chunk are valued from: records, and the pool of rows."""
 
     segments: Any
-    charges: Any
     survivals: Any
     pool: Any
     money: Any
@@ -133,6 +132,82 @@ def bits(typing_context, number):
     return types.int64(types.float64), build
 
 
+LANES = 8
+"""Partial sums in which payments at every point are added up; two vectors of four doubles."""
+
+
+def _summing(relative):
+    """Return the maker of a sum of n payments, with their relative amounts or without, in vector instructions.
+
+    Payment j goes into sum j mod 8, and the last n mod 8 payments into one of their own; then the sums are folded
+    in a fixed way. The compiler does not do this by itself, since it may not reorder a sum. What is added stands
+    in plain words further down, where nothing is compiled.
+    """
+
+    def summing(typing_context, room, w, pool, d, r, flows, f, n, scale):
+        double, whole = ir.DoubleType(), ir.IntType(64)
+        fours, wholes = ir.VectorType(double, LANES // 2), ir.VectorType(whole, LANES // 2)
+
+        def build(context, builder, signature, args):
+            datas = [context.make_array(signature.args[at])(context, builder, args[at]).data for at in (0, 2, 5)]
+            starts = [args[1], args[3], args[4], args[6]]
+            weights, discounts, relatives, cash = (
+                builder.gep(data, [start])
+                for data, start in zip((datas[0], datas[1], datas[1], datas[2]), starts, strict=True)
+            )
+            count, scale = args[7], args[8]
+
+            def spread(value):
+                """A vector that holds a number four times."""
+                empty = ir.Constant(fours, ir.Undefined)
+                first = builder.insert_element(empty, value, ir.Constant(ir.IntType(32), 0))
+                zeros = ir.Constant(ir.VectorType(ir.IntType(32), LANES // 2), [0] * (LANES // 2))
+                return builder.shuffle_vector(first, empty, zeros)
+
+            def step(at, shape, integers, scale, magic, bits, total):
+                """Payments at a place: adds them to cash flows and total."""
+
+                def place(data, kind):
+                    return builder.bitcast(builder.gep(data, [at]), kind.as_pointer())
+
+                x = builder.load(place(weights, shape), align=8)
+                if relative:
+                    x = builder.fmul(x, builder.load(place(relatives, shape), align=8))
+                factor = builder.load(place(discounts, shape), align=8)
+                flow = builder.load(place(cash, integers), align=8)
+                rounded = builder.bitcast(builder.fadd(builder.fmul(x, scale), magic), integers)
+                flow = builder.add(flow, builder.sub(rounded, bits))
+                builder.store(flow, place(cash, integers), align=8)
+                builder.store(builder.fadd(builder.load(total), builder.fmul(x, factor)), total)
+
+            none = ir.Constant(fours, [0.0] * (LANES // 2))
+            first, second = (cgutils.alloca_once_value(builder, none) for _ in range(2))
+            rest = cgutils.alloca_once_value(builder, ir.Constant(double, 0.0))
+            magics = ir.Constant(fours, [MAGIC] * (LANES // 2))
+            many = (fours, wholes, spread(scale), magics, ir.Constant(wholes, [MAGIC_BITS] * (LANES // 2)))
+            single = (double, whole, scale, ir.Constant(double, MAGIC), ir.Constant(whole, MAGIC_BITS))
+            eights = builder.udiv(count, ir.Constant(whole, LANES))
+            with cgutils.for_range(builder, eights) as loop:
+                at = builder.mul(loop.index, ir.Constant(whole, LANES))
+                step(at, *many, first)
+                step(builder.add(at, ir.Constant(whole, LANES // 2)), *many, second)
+            done = builder.mul(eights, ir.Constant(whole, LANES))
+            with cgutils.for_range(builder, builder.sub(count, done)) as loop:
+                step(builder.add(done, loop.index), *single, rest)
+            sums = builder.fadd(builder.load(first), builder.load(second))
+            a, b, c, e = (builder.extract_element(sums, ir.Constant(ir.IntType(32), lane)) for lane in range(4))
+            return builder.fadd(builder.fadd(builder.fadd(a, b), builder.fadd(c, e)), builder.load(rest))
+
+        u = types.uint64
+        return types.float64(room, u, pool, u, u, flows, u, u, types.float64), build
+
+    return summing
+
+
+add_up = intrinsic(_summing(False))
+add_up_relative = intrinsic(_summing(True))
+
+
 if nb.config.DISABLE_JIT:
     # Without compilation nobody counts owners, and the bits of a double are had through a view.
 
@@ -143,6 +218,23 @@ if nb.config.DISABLE_JIT:
     def bits(number):
         """The 64 bits of a double as a whole number."""
         return np.float64(number).view(np.int64)
+
+    def add_up_relative(room, w, pool, d, r, flows, f, n, scale):
+        """Sum of payments, which are added to the cash flows."""
+        total = 0.0
+        for j in range(n):
+            x = room[w + j] * pool[r + j]
+            flows[f + j] += quanta(x * scale)
+            total += x * pool[d + j]
+        return total
+
+    def add_up(room, w, pool, d, r, flows, f, n, scale):
+        """The same with relative amounts of 1."""
+        total = 0.0
+        for j in range(n):
+            flows[f + j] += quanta(room[w + j] * scale)
+            total += room[w + j] * pool[d + j]
+        return total
 
 
 def records(array: Any) -> Any:
@@ -267,7 +359,8 @@ class Found(NamedTuple):
     """Numbers of what was found for each policy, in the order of the extract, and what the numbers stand for.
 
     cell, survival, lapse, discount: a number per policy; ranges: (cell, 2) first segment and behind the last;
-    persistency: (lapse, 3) places of held, dead and lapsing; factors: (discount, 2) places of payment and claim.
+    persistency: (lapse, 3) places of held, dead and lapsing; factors: (discount, 2) places of payment and claim;
+    accrued: (discount, 2) factors to them.
     """
 
     cell: Any
@@ -277,6 +370,7 @@ class Found(NamedTuple):
     ranges: Any
     persistency: Any
     factors: Any
+    accrued: Any
 
 
 @compiled
@@ -298,6 +392,7 @@ def fill_policies(order, places, found, claim_after, step, policies):
             found.persistency[lapse, 2],
         )
         p.payment, p.claim = found.factors[discount, 0], found.factors[discount, 1]
+        p.payment_accrued, p.claim_accrued = found.accrued[discount, 0], found.accrued[discount, 1]
         p.claim_shift = p.claim_first = 0
         if claim_after >= 0.0:
             # What has passed of the step of T at T brings the middle of the rest half as much nearer to its end.
@@ -366,6 +461,21 @@ def fill_living(yearly, reached, passed, rule, living):
 
 
 @compiled
+def fill_lasts(living, lasts):
+    """Fill in, per point, the first later point at which survival no longer counts in a double beside it.
+
+    Deaths of the step up to there still do. Survival at the point after it is looked at, since the valuation date
+    may lie between the two.
+    """
+    last, over = 0, len(living) - 1
+    for g in range(over + 1):
+        least = living[min(g + 1, over)] * 1e-18
+        while last < over and (last <= g or living[last] >= least):
+            last += 1
+        lasts[g] = last
+
+
+@compiled
 def survival_at(survival, pool, months, rule):
     """Survival L from commencement to any real number of months later."""
     base = fraction_survived(pool[survival.yearly], survival.passed, rule)
@@ -379,35 +489,16 @@ def survival_at(survival, pool, months, rule):
 
 
 @compiled
-def sum_monthly(room, weight, pool, relative, discount, flows, flow, count, amount, quantum):
+def sum_monthly(room, weight, pool, relative, discount, flows, flow, count, amount, rules):
     """Sum of payments at every point: amount x weight x relative x discount; adds them to the cash flows.
 
-    weight ... flow: places of the first payment. The sum runs in four lanes, payment by payment, and so
-    always in the same order. Places are unsigned, which spares the loops a look for negative ones; three
-    short loops keep the processor's vector units busier than one long one.
+    weight ... flow: places of the first payment.
     """
     n, w, f, d = np.uint64(count), np.uint64(weight), np.uint64(flow), np.uint64(discount)
-    if relative != ONES:
-        r, t = np.uint64(relative), np.uint64(SCRATCH * BINS)
-        for j in range(n):
-            room[t + j] = room[w + j] * pool[r + j]
-        w = t
-    scale = amount * quantum
-    for j in range(n):
-        flows[f + j] += bits(room[w + j] * scale + MAGIC) - MAGIC_BITS
-    one, two, three, four = np.uint64(1), np.uint64(2), np.uint64(3), np.uint64(4)
-    sum0, sum1, sum2, sum3 = 0.0, 0.0, 0.0, 0.0
-    i = np.uint64(0)
-    for _ in range(n // four):
-        sum0 += room[w + i] * pool[d + i]
-        sum1 += room[w + i + one] * pool[d + i + one]
-        sum2 += room[w + i + two] * pool[d + i + two]
-        sum3 += room[w + i + three] * pool[d + i + three]
-        i += four
-    while i < n:
-        sum0 += room[w + i] * pool[d + i]
-        i += one
-    return amount * ((sum0 + sum1) + (sum2 + sum3))
+    if relative == ONES:
+        return amount * add_up(room, w, pool, d, d, flows, f, n, amount * rules.quantum)
+    r = np.uint64(relative)
+    return amount * add_up_relative(room, w, pool, d, r, flows, f, n, amount * rules.quantum)
 
 
 @compiled
@@ -551,7 +642,8 @@ def extent(stream, whole, j, p, survival, last, rules):
         if guaranteed < 0:
             return _MONTHS, 0, 0, False
         if stream.cover == s.GUARANTEED:
-            end = min(end, start + guaranteed)
+            # A guarantee for life may outlast the table.
+            end = min(end if stream.end >= 0 else s.LONGEST, start + guaranteed)
         else:
             # In arrears, the first payment after the guarantee may belong to a period that starts within it.
             begin = start + guaranteed + (1 - period if when == s.ARREARS else 0)
@@ -624,32 +716,15 @@ def relative_place(stream, whole, j, month, calendar):
 
 
 @compiled
-def last_point(survival, pool, alive):
-    """The last point at which survival still counts beside ``alive``, survival to T, in a double."""
-    low = survival.living
-    high = survival.living + survival.over
-    least = alive * 1e-18
-    if pool[high] >= least:
-        return survival.over
-    while high - low > 1:
-        middle = (low + high) // 2
-        if pool[middle] >= least:
-            low = middle
-        else:
-            high = middle
-    return high - survival.living
-
-
-@compiled
 def value_policies(order, policies, tables, rules, results):
     """Value the policies: parts, rounded results, and expected cash flows per account and month.
 
     policies and the tables' matrices are in the order of calculation; order: the place of each policy in the
     results.
     """
-    segments, charges, survivals = unowned(tables.segments), unowned(tables.charges), unowned(tables.survivals)
+    segments, survivals = unowned(tables.segments), unowned(tables.survivals)
     pool, money, whole = unowned(tables.pool), unowned(tables.money), unowned(tables.whole)
-    parts, flows = unowned(results.parts), unowned(results.flows)
+    flows = unowned(results.flows)
     room, filled = unowned(results.room), unowned(results.filled)
     firsts, counts = unowned(results.firsts), unowned(results.counts)
     survived, persisting = np.int64(-1), np.int64(-1)
@@ -664,7 +739,7 @@ def value_policies(order, policies, tables, rules, results):
         if not alive > 0.0 or not inforce > 0.0:
             results.reason[i] = _NO_SURVIVAL
             continue
-        last = last_point(survival, pool, alive)
+        last = np.int64(pool[survival.lasts + min(p.k, survival.over)])
         today = p.part == 0
         reason = 0
         going = False
@@ -687,6 +762,7 @@ def value_policies(order, policies, tables, rules, results):
             for kind in range(ROOM):
                 filled[kind, 0] = filled[kind, 1] = 0
         furthest = p.k
+        benefits, expenses, premiums = 0.0, 0.0, 0.0
         for n in range(p.segments, p.segments_end):
             first, count = firsts[n - p.segments], counts[n - p.segments]
             if count > 0:
@@ -710,16 +786,17 @@ def value_policies(order, policies, tables, rules, results):
                     room,
                     filled,
                 )
-                for c in range(segments[n].charges, segments[n].charges_end):
-                    parts[i, charges[c].part] += charges[c].ratio * value
+                benefits += segments[n].benefits * value
+                expenses += segments[n].expenses * value
+                premiums += segments[n].premiums * value
         results.months[0] += furthest - p.k
-        round_results(i, parts, rules.minor, results)
+        keep_results(i, benefits, expenses, premiums, rules.minor, results)
 
 
 @inlined
-def round_results(i, parts, minor, results):
-    """Round a policy's results to the minor unit, once."""
-    benefits, expenses, premiums = parts[i, 0], parts[i, 1], parts[i, 2]
+def keep_results(i, benefits, expenses, premiums, minor, results):
+    """Keep a policy's results, and round them to the minor unit, once."""
+    results.parts[i, 0], results.parts[i, 1], results.parts[i, 2] = benefits, expenses, premiums
     if not max(abs(benefits), abs(expenses), abs(premiums)) * minor < LARGEST_RESULT:
         results.reason[i] = _NOT_FINITE
         return
@@ -808,14 +885,14 @@ def value_payments(stream, p, whole, j, survival, pool, there, first, count, amo
         amount *= pool[survival.living + start] * pool[p.held + start] / there
     if period > 1 or count < 4:
         living, held = (survival.living + first, p.held + first - before) if lives else (ONES, ONES)
-        return sum_apart(
+        return p.payment_accrued * sum_apart(
             pool, living, held, relative, discount, 0.0, 1.0, flows, flow, count, period, amount, rules.quantum
         )
     weight = CERTAINLY * BINS
     if lives:
         kind = AFTER if before == 0 else BEFORE
         weight = weights(kind, pool, survival.living, p.held - before, first, count, filled, room)
-    return sum_monthly(room, weight, pool, relative, discount, flows, flow, count, amount, rules.quantum)
+    return p.payment_accrued * sum_monthly(room, weight, pool, relative, discount, flows, flow, count, amount, rules)
 
 
 @inlined
@@ -825,11 +902,11 @@ def value_moves(stream, p, whole, j, survival, pool, alive, inforce, first, coun
     death = stream.when == s.DEATH
     # Deaths are the difference of survival; lapses fall on the survivors, or on the mean where they spread.
     a, b, kind = 0.0, 1.0, LAPSING
-    held, discount = p.lapsing, p.payment + first - p.k
+    held, discount, accrued = p.lapsing, p.payment + first - p.k, p.payment_accrued
     calendar = first + p.shift
     if death:
         a, b, kind = 1.0, -1.0, DYING
-        held, discount = p.dead, p.claim + first - p.k
+        held, discount, accrued = p.dead, p.claim + first - p.k, p.claim_accrued
     elif rules.dependent == 1:
         a, b, kind = 0.5, 0.5, SPREAD
     amount /= alive * inforce
@@ -850,10 +927,10 @@ def value_moves(stream, p, whole, j, survival, pool, alive, inforce, first, coun
         first, calendar, discount = first + step, calendar + step, discount + step
         relative += step if relative != ONES else 0
     if count <= 0:
-        return value
+        return accrued * value
     flow = stream.account * BINS + max(0, calendar + claim_shift)
     if step > 1 or count < 4:
-        return value + sum_apart(
+        value += sum_apart(
             pool,
             survival.living + first,
             held + first,
@@ -868,8 +945,10 @@ def value_moves(stream, p, whole, j, survival, pool, alive, inforce, first, coun
             amount,
             rules.quantum,
         )
+        return accrued * value
     weight = weights(kind, pool, survival.living, held, first, count, filled, room)
-    return value + sum_monthly(room, weight, pool, relative, discount, flows, flow, count, amount, rules.quantum)
+    value += sum_monthly(room, weight, pool, relative, discount, flows, flow, count, amount, rules)
+    return accrued * value
 
 
 @compiled
@@ -883,7 +962,7 @@ def third_term(stream, p, whole, j, survival, pool, there, first, count, amount,
         total += level * (
             inclination(p, survival, pool, there, g, before) - inclination(p, survival, pool, there, g + 12, before)
         )
-    return amount * total
+    return p.payment_accrued * amount * total
 
 
 @compiled

@@ -124,6 +124,9 @@ def occasions(terms: Terms, course: Course) -> list[Occasion]:
     if terms.woolhouse and terms.a_year > 1:
         return list(_by_woolhouse(terms, course))
     end = last_point(terms, course)
+    if terms.end is None and terms.guaranteed:
+        # A guarantee for life may outlast the table.
+        end = max(end, terms.start + terms.guaranteed)
     return list(_at_their_dates(terms, course, terms.start, end))
 
 

@@ -70,13 +70,16 @@ class _Record:
         return replace(self, clip_from=max(self.clip_from, begin), clip_to=min(self.clip_to, end))
 
 
-_SHARED = [name for name in s.SEGMENT.names or () if name not in ("account", "charges", "charges_end")]
+_PARTS = ("benefits", "expenses", "premiums")
+"""Fields with the shares of the parts, by their codes."""
+
+_SHARED = [name for name in s.SEGMENT.names or () if name not in ("account", *_PARTS)]
 """Fields that a segment takes from its records."""
 
 
 @dataclass
 class Plans:
-    """The plans of all cells met so far: segments and charges, and the range of segments that belongs to each cell.
+    """The plans of all cells met so far: their segments, and the range of segments that belongs to each cell.
 
     accounts: per account of expected cash flows, the lines that take a share of it, with their shares.
     """
@@ -87,7 +90,6 @@ class Plans:
     slots: Slots = field(default_factory=Slots)
     lines: dict[Line, int] = field(default_factory=dict)
     segments: NDArray[Any] = field(default_factory=lambda: np.zeros(0, s.SEGMENT))
-    charges: NDArray[Any] = field(default_factory=lambda: np.zeros(0, s.CHARGE))
     ranges: NDArray[np.int64] = field(default_factory=lambda: np.zeros((0, 2), np.int64))
     accounts: dict[Account, int] = field(default_factory=dict)
     _known: dict[tuple[int, tuple[int, ...], str], tuple[int, int]] = field(default_factory=dict)
@@ -103,21 +105,19 @@ class Plans:
             begin = len(self.segments)
             made = list(segments_of(records))
             rows = np.zeros(len(made), s.SEGMENT)
-            charges: list[tuple[int, float]] = []
             for row, (shape, charged) in zip(rows, made, strict=True):
-                self._fill(row, shape, charged, len(self.charges) + len(charges))
-                charges += [(record.part, record.factor / shape.factor) for record in charged]
+                self._fill(row, shape, charged)
             self.segments = np.concatenate((self.segments, rows))
-            self.charges = np.concatenate((self.charges, np.array(charges, s.CHARGE)))
             self._known[key] = (begin, len(self.segments))
         self.ranges = np.concatenate((self.ranges, [self._known[key]]))
 
-    def _fill(self, row: Any, shape: _Record, charged: list[_Record], charges: int) -> None:
+    def _fill(self, row: Any, shape: _Record, charged: list[_Record]) -> None:
         for name in _SHARED:
             row[name] = getattr(shape, name)
         shares = tuple((record.line, record.factor / shape.factor) for record in charged)
         row["account"] = self.accounts.setdefault((shape, shares), len(self.accounts))
-        row["charges"], row["charges_end"] = charges, charges + len(charged)
+        for record in charged:
+            row[_PARTS[record.part]] += record.factor / shape.factor
 
     def using(self, column: int) -> NDArray[np.bool_]:
         """Say of each cell whether some stream of it looks at a column of the whole-number matrix."""

@@ -2,7 +2,7 @@
 
 Every field is a number, so that one array of records holds the streams of every cell. A *segment* is what
 streams of a cell have in common where they are paid at the same points in the same shape: a premium, the
-commission on it, the expenses charged on it. It is summed once, and each *charge* takes its share of the sum.
+commission on it, the expenses charged on it. It is summed once, and each part of the reserve takes its share.
 """
 
 from __future__ import annotations
@@ -62,14 +62,12 @@ SEGMENT = np.dtype(
         ("clip_to", "i8"),  # ... and less than this many
         ("whole", "i8"),  # 1: its length must be a whole number of periods
         ("own", "i8"),  # 1: belongs to a stream of the design, which keeps the contract going
-        ("charges", "i8"),  # first of its charges
-        ("charges_end", "i8"),  # behind the last of them
+        ("benefits", "f8"),  # share of its sum that belongs to the value of benefits
+        ("expenses", "f8"),  # ... of expenses and commission
+        ("premiums", "f8"),  # ... of premiums
     ],
     align=True,
 )
-
-CHARGE = np.dtype([("part", "i8"), ("ratio", "f8")], align=True)
-"""What a charge makes of its segment's sum: this share of it, in this part of the reserve."""
 
 SURVIVAL = np.dtype(
     [
@@ -79,6 +77,7 @@ SURVIVAL = np.dtype(
         ("reached", "i8"),  # place of survival to the start of each of them
         ("years", "i8"),  # how many there are
         ("passed", "f8"),  # share of the first of them that has passed at commencement
+        ("lasts", "i8"),  # place of the last point that counts beside survival to points 0, 1 ...
         ("closed", "i8"),  # 1: nobody is left at the end
     ],
     align=True,
@@ -98,6 +97,8 @@ POLICY = np.dtype(
         ("lapsing", "i8"),  # place of the share that lapses at g = 0
         ("payment", "i8"),  # place of the discount factor of a payment at point k
         ("claim", "i8"),  # place of that of a death claim of the step that ends at k
+        ("payment_accrued", "f8"),  # factor to all of the former, for the part of the month that has passed
+        ("claim_accrued", "f8"),  # the same to the latter
         ("claim_shift", "i8"),  # calendar months from the end of a step to the payment of its death claims
         ("claim_first", "i8"),  # the same for the step in which the valuation date lies
     ],
