@@ -55,8 +55,13 @@ _SHARES = np.array([0] + [(1 << 32) // period + 1 for period in range(1, 13)], d
 
 compiled = nb.njit(cache=True, nogil=True, error_model="numpy")
 
-inlined = nb.njit(cache=True, nogil=True, error_model="numpy", forceinline=True)
-"""For functions with many arguments that are called once per stream: the call costs as much as what it does."""
+_INNER: Any = {"nogil": True, "error_model": "numpy", "no_cpython_wrapper": True, "no_cfunc_wrapper": True}
+
+inner = nb.njit(**_INNER)
+"""For functions that only compiled ones call: nothing is compiled for calls from Python, nor kept for itself."""
+
+inlined = nb.njit(**_INNER, forceinline=True)
+"""For inner functions with many arguments that are called once per stream: the call costs as much as the work."""
 
 
 class Rules(NamedTuple):
@@ -242,13 +247,13 @@ def records(array: Any) -> Any:
     return array.view(np.recarray) if nb.config.DISABLE_JIT else array
 
 
-@compiled
+@inner
 def quanta(amount):
     """An amount rounded to a whole number, half to even; below 2^51 in absolute value."""
     return bits(amount + MAGIC) - MAGIC_BITS
 
 
-@compiled
+@inner
 def civil(day):
     """Year, month and day of a day count, by the proleptic Gregorian calendar.
 
@@ -265,7 +270,7 @@ def civil(day):
     return year, month, doy - (153 * mp + 2) // 5 + 1
 
 
-@compiled
+@inner
 def day_count(year, month, day):
     """Days since 1970-01-01 of a date; the month's last day where the day is missing."""
     if day > 28:
@@ -284,11 +289,11 @@ def day_count(year, month, day):
     return era * 146097 + doe - 719468
 
 
-@compiled
+@inner
 def months_later(year, month, day, months):
     """Day count of the date so many months later; the month's last day where the day is missing."""
-    index = year * 12 + month - 1 + months
-    return day_count(index // 12, index % 12 + 1, day)
+    index = np.int64(year) * 12 + month - 1 + months
+    return day_count(index // 12, index % 12 + 1, np.int64(day))
 
 
 class Places(NamedTuple):
@@ -427,7 +432,7 @@ def whole_months(years, order, longest, months):
         months[j] = np.int32(nearest) if good else -1
 
 
-@compiled
+@inner
 def fraction_survived(q, part, rule):
     """Survival F(q, s) through the first part s of a year under a rule for fractions of a year."""
     if part <= 0.0:
@@ -475,7 +480,7 @@ def fill_lasts(living, lasts):
         lasts[g] = last
 
 
-@compiled
+@inner
 def survival_at(survival, pool, months, rule):
     """Survival L from commencement to any real number of months later."""
     base = fraction_survived(pool[survival.yearly], survival.passed, rule)
@@ -488,7 +493,7 @@ def survival_at(survival, pool, months, rule):
     return pool[survival.reached + year] * fraction_survived(pool[survival.yearly + year], since - year, rule) / base
 
 
-@compiled
+@inner
 def sum_monthly(room, weight, pool, relative, discount, flows, flow, count, amount, rules):
     """Sum of payments at every point: amount x weight x relative x discount; adds them to the cash flows.
 
@@ -501,7 +506,7 @@ def sum_monthly(room, weight, pool, relative, discount, flows, flow, count, amou
     return amount * add_up_relative(room, w, pool, d, r, flows, f, n, amount * rules.quantum)
 
 
-@compiled
+@inner
 def sum_apart(pool, living, held, relative, discount, a, b, flows, flow, count, hop, amount, quantum):
     """The same for payments ``hop`` points from one another, with a and b times survival at both ends as occupancy."""
     scale = amount * quantum
@@ -535,7 +540,7 @@ def weights(kind, pool, living, held, first, count, filled, room):
     return base + first
 
 
-@compiled
+@inner
 def fill_weights(kind, pool, living, held, begin, end, base, room):
     """Fill in the weights of the points from ``begin`` up to but not including ``end``."""
     if end <= begin:
@@ -556,7 +561,7 @@ def fill_weights(kind, pool, living, held, begin, end, base, room):
         room[w + j] = (a * pool[e + j] + b * pool[o + j]) * pool[h + j]
 
 
-@compiled
+@inner
 def periods_in(months, period):
     """Whole periods of 1, 3, 6 or 12 months in a number of months from 0 to 2^20.
 
@@ -567,18 +572,24 @@ def periods_in(months, period):
     return (months * _SHARES[period]) >> 32
 
 
-@compiled
+@inner
 def leftover(months, period):
     """What whole periods leave of a number of months."""
     return months - periods_in(months, period) * period
 
 
-@compiled
+@inner
 def first_due(start, period, least):
     """The first of start, start + period ... that is at least ``least``."""
     if start >= least:
         return start
     return start + periods_in(least - start + period - 1, period) * period
+
+
+@inlined
+def entry(whole, row, j):
+    """A whole number of a policy; places are unsigned, which spares a look for negative ones."""
+    return np.int64(whole[np.uint64(row), np.uint64(j)])
 
 
 @inlined
@@ -588,7 +599,7 @@ def formula_from(stream, start, p, rules):
     return first_due(start, 12, p.k if whole else p.k + 1)
 
 
-@compiled
+@inner
 def span_start(stream, start):
     """First relative month of a segment. A first span takes months before the stream's start too: years from 0."""
     return max(start + stream.span_from, stream.clip_from) if stream.span_from > 0 else stream.clip_from
@@ -606,8 +617,8 @@ def extent(stream, whole, j, p, survival, last, rules):
         return 0, 0, 0, False
     over = survival.over
     lives = stream.cover != s.CERTAIN
-    start = np.int64(whole[stream.start, j])
-    end = np.int64(whole[stream.end, j]) if stream.end >= 0 else max(start, over)
+    start = entry(whole, stream.start, j)
+    end = entry(whole, stream.end, j) if stream.end >= 0 else max(start, over)
     if start < 0 or end < 0:
         return _MONTHS, 0, 0, False
     if end < start:
@@ -633,12 +644,12 @@ def extent(stream, whole, j, p, survival, last, rules):
         begin = max(k - leftover(k, step), first_due(0, step, max(start, low)))
         finish = min(end, last + step - 1, over, high + step - 1)
         return 0, begin + step, periods_in(max(0, finish - begin), step), lasts
-    period = np.int64(whole[stream.period, j])
+    period = entry(whole, stream.period, j)
     if period <= 0 or (stream.whole == 1 and leftover(end - start, period) != 0):
         return _PERIOD, 0, 0, False
     begin = start
     if stream.guarantee >= 0:
-        guaranteed = np.int64(whole[stream.guarantee, j])
+        guaranteed = entry(whole, stream.guarantee, j)
         if guaranteed < 0:
             return _MONTHS, 0, 0, False
         if stream.cover == s.GUARANTEED:
@@ -664,26 +675,26 @@ def extent(stream, whole, j, p, survival, last, rules):
     return 0, month + lag, periods_in(max(0, stop - month + period - 1), period), lasts
 
 
-@compiled
+@inner
 def due_today(stream, whole, j, p, rules):
     """Whether a segment has a payment to come exactly on T, and its relative month; only asked where T is a point."""
     k = p.k
-    start = np.int64(whole[stream.start, j])
+    start = entry(whole, stream.start, j)
     if stream.window == s.WHOLE_YEARS:
         # The near end of the first year taken by the formula, if the year starts now.
         starts = formula_from(stream, start, p, rules) == k and k + 12 <= (
-            np.int64(whole[stream.end, j]) if stream.end >= 0 else s.FOR_EVER
+            entry(whole, stream.end, j) if stream.end >= 0 else s.FOR_EVER
         )
         return starts and stream.when == s.ADVANCE and stream.clip_from <= k < stream.clip_to, k
     if stream.when >= s.DEATH or rules.outstanding == 0:
         return False, 0
-    end = np.int64(whole[stream.end, j]) if stream.end >= 0 else s.FOR_EVER
+    end = entry(whole, stream.end, j) if stream.end >= 0 else s.FOR_EVER
     low = span_start(stream, start)
     high = min(start + stream.span_to, stream.clip_to)
     if stream.when == s.ONCE:
         month = max(k - 1, start if stream.clock == 0 else 0)
         return start == k and low <= month < high, month
-    period = np.int64(whole[stream.period, j])
+    period = entry(whole, stream.period, j)
     lag = period if stream.when == s.ARREARS else 0
     month = k - lag
     if stream.window == s.BROKEN_YEAR:
@@ -694,7 +705,7 @@ def due_today(stream, whole, j, p, rules):
         return False, 0
     first = start
     if stream.guarantee >= 0:
-        turn = start + np.int64(whole[stream.guarantee, j])
+        turn = start + entry(whole, stream.guarantee, j)
         if stream.cover == s.GUARANTEED:
             end = min(end, turn)
         else:
@@ -708,10 +719,10 @@ def relative_place(stream, whole, j, month, calendar):
     """Place of the relative amount of a month on the stream's clock, or of a calendar month."""
     if stream.calendar >= 0:
         return stream.calendar + max(0, calendar)
-    row = stream.relative if stream.changing < 0 else np.int64(whole[stream.changing, j])
+    row = stream.relative if stream.changing < 0 else entry(whole, stream.changing, j)
     if row == ONES:
         return ONES
-    clock = np.int64(whole[stream.start, j]) if stream.clock == 0 else 0
+    clock = entry(whole, stream.start, j) if stream.clock == 0 else 0
     return row + max(0, month - clock)
 
 
@@ -729,11 +740,11 @@ def value_policies(order, policies, tables, rules, results):
     firsts, counts = unowned(results.firsts), unowned(results.counts)
     survived, persisting = np.int64(-1), np.int64(-1)
     for j in range(len(order)):
-        i = order[j]
+        i = np.uint64(order[np.uint64(j)])
         if results.reason[i] != 0:
             continue
-        p = policies[j]
-        survival = survivals[p.survival]
+        p = policies[np.uint64(j)]
+        survival = survivals[np.uint64(p.survival)]
         alive = survival_at(survival, pool, p.k + p.part / p.whole, rules.fractions)
         inforce = persistency_at(p, pool, rules)
         if not alive > 0.0 or not inforce > 0.0:
@@ -741,10 +752,12 @@ def value_policies(order, policies, tables, rules, results):
             continue
         last = np.int64(pool[survival.lasts + min(p.k, survival.over)])
         today = p.part == 0
+        # Unsigned, which spares a look for negative places.
+        begin, behind = np.uint64(p.segments), np.uint64(p.segments_end)
         reason = 0
         going = False
-        for n in range(p.segments, p.segments_end):
-            reason, firsts[n - p.segments], counts[n - p.segments], lasts = extent(
+        for n in range(begin, behind):
+            reason, firsts[n - begin], counts[n - begin], lasts = extent(
                 segments[n], whole, j, p, survival, last, rules
             )
             if reason != 0:
@@ -763,8 +776,8 @@ def value_policies(order, policies, tables, rules, results):
                 filled[kind, 0] = filled[kind, 1] = 0
         furthest = p.k
         benefits, expenses, premiums = 0.0, 0.0, 0.0
-        for n in range(p.segments, p.segments_end):
-            first, count = firsts[n - p.segments], counts[n - p.segments]
+        for n in range(begin, behind):
+            first, count = firsts[n - begin], counts[n - begin]
             if count > 0:
                 furthest = max(furthest, first + (count - 1) * apart(segments[n], whole, j, rules))
             if count > 0 or today:
@@ -813,9 +826,9 @@ def value_segment(
     """Value of a segment for one policy."""
     amount = stream.factor
     if stream.amount >= 0:
-        amount *= money[stream.amount, j]
+        amount *= money[np.uint64(stream.amount), np.uint64(j)]
     for _ in range(stream.power):
-        amount *= whole[stream.period, j] / 12.0
+        amount *= entry(whole, stream.period, j) / 12.0
     if amount == 0.0:
         return 0.0
     value = 0.0
@@ -848,7 +861,7 @@ def persistency_at(p, pool, rules):
     return held
 
 
-@compiled
+@inner
 def apart(stream, whole, j, rules):
     """Months between the points of a segment."""
     if stream.when == s.ONCE:
@@ -857,14 +870,14 @@ def apart(stream, whole, j, rules):
         return np.int64(rules.step)
     if stream.window == s.WHOLE_YEARS:
         return np.int64(12)
-    return np.int64(whole[stream.period, j])
+    return entry(whole, stream.period, j)
 
 
 @inlined
 def value_payments(stream, p, whole, j, survival, pool, there, first, count, amount, rules, flows, room, filled):
     """Value of payments while alive, for certain, or guaranteed, at their own dates after T; there: L(T) P(T)."""
     period = apart(stream, whole, j, rules)
-    start = np.int64(whole[stream.start, j])
+    start = entry(whole, stream.start, j)
     month = first
     if stream.when == s.ARREARS:
         month = first - period
@@ -951,7 +964,7 @@ def value_moves(stream, p, whole, j, survival, pool, alive, inforce, first, coun
     return accrued * value
 
 
-@compiled
+@inner
 def third_term(stream, p, whole, j, survival, pool, there, first, count, amount, rules):
     """Third term of Woolhouse's formula: for each year, (mu + delta) at its start less that at its end."""
     before = 0 if rules.dependent == 1 else stream.before
@@ -965,7 +978,7 @@ def third_term(stream, p, whole, j, survival, pool, there, first, count, amount,
     return p.payment_accrued * amount * total
 
 
-@compiled
+@inner
 def inclination(p, survival, pool, there, g, before):
     """L P v (mu + delta) at a point, over L(T) P(T); the forces from the years on both sides of the point."""
     living = survival.living + g
