@@ -142,6 +142,7 @@ class Persistency:
     pool: Pool
     places: list[tuple[int, int, int]] = field(default_factory=list)
     known: dict[int, int] = field(default_factory=dict)
+    _years: dict[int, Row] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
         lapse = self.basis.document.lapse
@@ -172,14 +173,20 @@ class Persistency:
             self.places.append((place, dying, self.pool.add(lapsing) + 1))
         return self.known[code]
 
+    def _yearly(self, rule: int) -> Row:
+        """Rates of the years since commencement; the same however long lapses go on."""
+        if rule not in self._years:
+            document: LapseRule = self.basis.document.lapse.rule[rule]  # type: ignore[union-attr]
+            table = list(self.basis.lapses[rule])
+            self._years[rule] = np.array([yearly_lapse(document, table, year) for year in range(LONGEST // 12 + 2)])
+        return self._years[rule]
+
     def _rates(self, rule: int, until: int) -> Row:
         """Share lapsing at each point 0, 1 ... of those still there before."""
         points = np.arange(LONGEST + 13)
         if rule < 0:
             return np.zeros(len(points))
-        document: LapseRule = self.basis.document.lapse.rule[rule]  # type: ignore[union-attr]
-        table = list(self.basis.lapses[rule])
-        yearly = np.array([yearly_lapse(document, table, year) for year in range(len(points) // 12 + 1)])
+        yearly = self._yearly(rule)
         if self.spread:
             shares = (1 - (1 - yearly) ** (1 / 12))[np.maximum(points - 1, 0) // 12]
         else:
