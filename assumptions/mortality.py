@@ -79,6 +79,13 @@ class Mortality(Item):
 
     age: AgeBasis = Field("exact", description="age at commencement that enters the tables")
     fractions: Fractions = Field("constant force", description="mortality within a year of age")
+    common_shock: float = Field(
+        0.0,
+        ge=0,
+        le=1,
+        description="force, a year, of a cause that kills both lives of a contract on two lives at once; it is part of "
+        "the rates of each. At 0 they are independent",
+    )
     rule: list[MortalityRule] = Field(min_length=1, description="read top to bottom, the first that fits wins")
 
 

@@ -51,9 +51,7 @@ class RateTable:
                 raise TableError(f"{self.name}: rate {wrong[0]:g} does not lie between 0 and 1")
             rows.flags.writeable = False
         if not np.isfinite(self._entry_rates).any():
-            raise TableError(
-                f"{self.name}: no rate to begin with; a table needs one in the first year after entry"
-            )
+            raise TableError(f"{self.name}: no rate to begin with; a table needs one in the first year after entry")
 
     @property
     def name(self) -> str:

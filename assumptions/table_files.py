@@ -41,9 +41,7 @@ class Columns:
         """
         key = name.strip().lower()
         if key in self.others:
-            raise TableError(
-                f"{self.file}: column '{name}' holds {self.others[key]}, not numbers; convert it"
-            )
+            raise TableError(f"{self.file}: column '{name}' holds {self.others[key]}, not numbers; convert it")
         if key not in self.cells:
             near = difflib.get_close_matches(key, self.cells, 1)
             hint = f"; did you mean '{near[0]}'?" if near else ""

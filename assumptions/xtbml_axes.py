@@ -12,9 +12,7 @@ from .rate_table import RateTable, Rows, TableError
 from .select_rows import SelectBy, by_entry_age, check_rate, consecutive_ages, keying, without_blank_ends
 from .xtbml import Axis, XtbmlTable
 
-Meaning = Literal[
-    "age", "entry age", "attained age", "duration", "calendar year", "part of a year", "unknown"
-]
+Meaning = Literal["age", "entry age", "attained age", "duration", "calendar year", "part of a year", "unknown"]
 
 # The archive's own files write "Duration", "Duation" and "Year" for the same thing, so words are looked for.
 _MEANINGS: tuple[tuple[str, Meaning], ...] = (

@@ -2,10 +2,10 @@
 
 The checks run in this order, and a policy is reported with the first that it fails: identifier missing, not
 readable, not unique; product not known; status not in force; birth date, then commencement date, missing or
-out of range; commenced before birth; commences after the valuation date; then each number that the product's
-design uses, in the order of the registry of columns and after it by name: missing, not finite, negative,
-frequency not known, out of range, duration not in whole months. A number is looked at only for the products
-whose design uses it.
+out of range; commenced before birth; commences after the valuation date; on two lives, who lives, and the birth
+date of the second life where it lives; then each number that the product's design uses, in the order of the
+registry of columns and after it by name: missing, not finite, negative, frequency not known, out of range,
+duration not in whole months. A number is looked at only for the products whose design uses it.
 """
 
 from __future__ import annotations
@@ -23,6 +23,7 @@ from .designs import Design
 from .identifiers import Duplicates, byte_lengths, string_bytes
 from .number_rules import Mask, NumberRule, needed_columns, number_columns, number_rules
 from .reasons import Reason
+from .states import LIVES
 
 __all__ = ["Checked", "Checks", "check_chunk", "needed_columns", "number_columns"]
 
@@ -66,6 +67,7 @@ class Checks:
         self._today = (valuation_date - date(1970, 1, 1)).days
         self._duplicates = duplicates
         self._rules = number_rules(designs)
+        self._on_two = np.array([design.states == "two lives" for design in designs] + [False])
 
     def check(self, chunk: Chunk) -> Checked:
         """Return the product of each policy and the first rule that it breaks."""
@@ -75,6 +77,8 @@ class Checks:
         self._mark(checked, product < 0, Reason.PRODUCT_UNKNOWN, "product")
         self._check_status(chunk, checked)
         self._check_dates(chunk, checked)
+        if self._on_two.any():
+            self._check_second(chunk, checked)
         self._check_numbers(chunk, checked)
         return checked
 
@@ -115,6 +119,20 @@ class Checks:
         early = commenced < chunk.day("birth_date")
         self._mark(checked, early, Reason.COMMENCED_BEFORE_BIRTH, "commencement_date")
         self._mark(checked, commenced > self._today, Reason.COMMENCES_LATER, "commencement_date")
+
+    def _check_second(self, chunk: Chunk, checked: Checked) -> None:
+        on_two = self._on_two.take(checked.product, mode="wrap")
+        codes, values = chunk.text("lives")
+        unknown = np.array([value not in LIVES for value in values] + [True]).take(codes, mode="wrap")
+        self._mark(checked, on_two & unknown, Reason.LIVES_UNKNOWN, "lives")
+        # The birth date of a second life that is dead, or was never there, does not matter.
+        dead = np.array([value in ("first", "none") for value in values] + [True]).take(codes, mode="wrap")
+        days, alive = chunk.day("second_birth_date"), on_two & ~dead
+        self._mark(checked, alive & (days == MISSING_DAY), Reason.DATE_MISSING, "second_birth_date")
+        outside = (days < EARLIEST) | (days > LATEST)
+        self._mark(checked, alive & outside, Reason.DATE_OUT_OF_RANGE, "second_birth_date")
+        early = chunk.day("commencement_date") < days
+        self._mark(checked, alive & early, Reason.COMMENCED_BEFORE_BIRTH, "second_birth_date")
 
     def _check_numbers(self, chunk: Chunk, checked: Checked) -> None:
         places = checked.product.astype(np.intp)

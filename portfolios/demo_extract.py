@@ -65,9 +65,7 @@ def _finish(pending: Future[None] | None, written: int, policies: int, progress:
 
 def _writer(path: Path) -> pq.ParquetWriter:
     # Without Arrow's own schema beside Parquet's, texts are read back as plain texts.
-    return pq.ParquetWriter(
-        path, _schema(), compression="snappy", use_dictionary=_FEW_VALUES, store_schema=False
-    )
+    return pq.ParquetWriter(path, _schema(), compression="snappy", use_dictionary=_FEW_VALUES, store_schema=False)
 
 
 def _schema() -> pa.Schema:

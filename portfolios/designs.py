@@ -12,6 +12,8 @@ from typing import Any, Literal
 
 from pydantic import BaseModel, ConfigDict, Field, field_validator, model_validator
 
+from .states import LEFT_ON, WHILE
+
 
 class _Part(BaseModel):
     model_config = ConfigDict(extra="forbid", frozen=True, populate_by_name=True, strict=True)
@@ -39,6 +41,8 @@ class Increase(_Part):
 
 Duration = float | str | AtAge
 Kind = Literal["premium", "benefit", "expense", "commission"]
+While = Literal["alive", "both", "either", "first", "second", "first only", "second only", "certain"]
+On = Literal["death", "first death", "second death", "death of first", "death of second", "lapse"]
 
 
 class Stream(_Part):
@@ -58,10 +62,15 @@ class Stream(_Part):
         None,
         description="name of another stream: paid whenever that one pays, as a share of it; replaces amount and dates",
     )
-    while_: Literal["alive", "certain"] | None = Field(
-        None, alias="while", description="paid as long as the life lives and the policy is in force, or for certain"
+    while_: While | None = Field(
+        None,
+        alias="while",
+        description="paid as long as the policy is in force and the life lives, or for certain; on two lives: as long "
+        "as both live, either, the first (whether or not the second lives), the second, or one of them only",
     )
-    on: Literal["death", "lapse"] | None = Field(None, description="paid on this move")
+    on: On | None = Field(
+        None, description="paid on this move; 'death' is for one life, the others with 'death' are for two"
+    )
     from_: Duration = Field(
         0.0, alias="from", description="years from commencement to its start: a number, a column, or { age = x }"
     )
@@ -121,7 +130,7 @@ class Stream(_Part):
             raise ValueError("a stream paid for certain needs 'to'")
         if self.pattern and any(piece.years is None for piece in self.pattern[:-1]):
             raise ValueError("only the last piece of a pattern may leave out 'years'")
-        if self.guarantee is not None and self.while_ != "alive":
+        if self.guarantee is not None and self.while_ in (None, "certain"):
             raise ValueError("a guarantee needs a stream paid while alive")
         if self.payments != "at their dates" and (self.guarantee is not None or self.while_ != "alive"):
             raise ValueError(f"{self.payments} needs a stream paid while alive, without a guarantee")
@@ -153,7 +162,7 @@ class Design(_Part):
     title: str = Field("", description="name in reports")
     effective: date | None = Field(None, description="date from which it is sold")
     reference: str = Field("", description="where its terms are laid down")
-    states: Literal["one life"] = Field("one life", description="state model that the streams hang on")
+    states: Literal["one life", "two lives"] = Field("one life", description="state model that the streams hang on")
     stream: list[Stream] = Field(min_length=1, description="the payment streams")
 
     @model_validator(mode="after")
@@ -163,6 +172,7 @@ class Design(_Part):
             if names.count(name) > 1:
                 raise ValueError(f"two streams are called '{name}'")
         for stream in self.stream:
+            self._check_words(stream)
             if stream.of is None:
                 continue
             base = next((other for other in self.stream if other.name == stream.of), None)
@@ -172,8 +182,18 @@ class Design(_Part):
                 raise ValueError(f"stream '{stream.name}' is a share of '{stream.of}', which is itself a share")
         return self
 
+    def _check_words(self, stream: Stream) -> None:
+        one = self.states == "one life"
+        asked = (("while", stream.while_, "alive", WHILE), ("on", stream.on, "death", LEFT_ON))
+        for key, word, single, words in asked:
+            if word in words and (word == single) != one:
+                known = f"'{single}'" if one else ", ".join(f"'{other}'" for other in words if other != single)
+                raise ValueError(f"stream '{stream.name}': {key} '{word}' is not for {self.states}; use {known}")
+        if not one and stream.payments != "at their dates":
+            raise ValueError(f"stream '{stream.name}': {stream.payments} is for one life")
+
     def columns(self) -> list[str]:
-        """Extract columns that the design looks at, in order of first mention."""
+        """Extract columns that the design looks at as numbers, in order of first mention."""
         return list(dict.fromkeys(column for stream in self.stream for column in stream.columns()))
 
     def named(self, name: str) -> Stream:

@@ -12,7 +12,7 @@ import pyarrow.compute as pc
 
 from .chunk import Chunk
 from .column_types import WORDS, ColumnKind, same_storage, serves, stored_kind, wanted_kind
-from .extract_parts import FilePart, Part, TablePart
+from .extract_parts import FilePart, Part, Rows, TablePart
 from .sources import ExtractError, InputFile, find_files
 
 __all__ = ["CHUNK_ROWS", "Extract", "ExtractError", "InputFile", "open_extract"]
@@ -91,6 +91,18 @@ class Extract:
         if faults:
             raise ExtractError("\n".join(faults))
         return self._chunks(names, rows)
+
+    def near(self, columns: Iterable[str], rows: Rows) -> Iterator[Chunk]:
+        """Read only the pieces of the extract in which some rows lie.
+
+        rows: row numbers from 0, ascending. Raises ExtractError like ``chunks``.
+        """
+        names, before = list(columns), 0
+        for part in self._parts:
+            inside = rows[(rows >= before) & (rows < before + part.file.rows)] - before
+            if len(inside):
+                yield from (Chunk(batch, before + start) for start, batch in part.pieces(names, inside))
+            before += part.file.rows
 
     def find(self, policy_id: str) -> list[Chunk]:
         """Return each row with this identifier as a chunk of its own; more than one if it is not unique.

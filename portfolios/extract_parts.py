@@ -6,16 +6,20 @@ import hashlib
 from collections.abc import Iterator
 from typing import Any, Protocol
 
+import numpy as np
+import numpy.typing as npt
 import pyarrow as pa
 import pyarrow.parquet as pq
 
 from .column_types import is_text
 from .sources import ExtractError, InputFile, Place, first_line
 
+Rows = npt.NDArray[np.int64]
+
 # Bytes read ahead of each column: a row group is never held as a whole, however large it is.
 _BUFFER = 1 << 18
 _HASH_BLOCK = 1 << 20
-_DIGEST_ROWS = 65_536
+_BLOCK_ROWS = 65_536
 
 
 class Part(Protocol):
@@ -26,6 +30,9 @@ class Part(Protocol):
 
     def batches(self, columns: list[str], rows: int) -> Iterator[pa.RecordBatch]:
         """Read columns in batches of at most ``rows`` rows."""
+
+    def pieces(self, columns: list[str], rows: Rows) -> Iterator[tuple[int, pa.RecordBatch]]:
+        """Read the pieces in which some rows lie, each with the number of its first row; rows are ascending."""
 
     def digest(self) -> str:
         """Return the SHA-256."""
@@ -59,6 +66,20 @@ class FilePart:
                 f"{self.file.path}: {count:,} rows were read where the file promises {self.file.rows:,}; "
                 "it is damaged or was changed during the run: write it again"
             )
+
+    def pieces(self, columns: list[str], rows: Rows) -> Iterator[tuple[int, pa.RecordBatch]]:
+        """Read the row groups in which some rows lie, in batches, each with the number of its first row."""
+        sizes = [self._footer.row_group(group).num_rows for group in range(self._footer.num_row_groups)]
+        ends = np.cumsum(sizes)
+        try:
+            with self._open(columns) as file:
+                for group in np.unique(np.searchsorted(ends, rows, side="right")).tolist():
+                    start = int(ends[group]) - sizes[group]
+                    for batch in file.iter_batches(row_groups=[group], columns=columns, use_threads=True):
+                        yield start, batch.select(columns)
+                        start += batch.num_rows
+        except (pa.ArrowException, OSError) as error:
+            raise self._unreadable(error) from error
 
     def digest(self) -> str:
         """Return the SHA-256 of the file, read in blocks."""
@@ -98,12 +119,20 @@ class TablePart:
         """Cut columns into batches of at most ``rows`` rows."""
         yield from self._table.select(columns).to_batches(max_chunksize=rows)
 
+    def pieces(self, columns: list[str], rows: Rows) -> Iterator[tuple[int, pa.RecordBatch]]:
+        """Cut out the blocks in which some rows lie, in batches, each with the number of its first row."""
+        for block in np.unique(rows // _BLOCK_ROWS).tolist():
+            start = block * _BLOCK_ROWS
+            for batch in self._table.select(columns).slice(start, _BLOCK_ROWS).to_batches():
+                yield start, batch
+                start += batch.num_rows
+
     def digest(self) -> str:
         """Return the SHA-256 of the Arrow IPC stream in batches of 65,536 rows, without metadata."""
         sink = _HashingSink()
         with pa.ipc.new_stream(pa.PythonFile(sink, mode="w"), self.schema) as stream:
-            for start in range(0, self._table.num_rows, _DIGEST_ROWS):
-                rows = self._table.slice(start, _DIGEST_ROWS)
+            for start in range(0, self._table.num_rows, _BLOCK_ROWS):
+                rows = self._table.slice(start, _BLOCK_ROWS)
                 stream.write_table(rows.unify_dictionaries().combine_chunks())
         return sink.digest.hexdigest()
 

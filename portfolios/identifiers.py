@@ -128,6 +128,7 @@ class _Extract(Protocol):
     @property
     def rows(self) -> int: ...
     def chunks(self, columns: Iterable[str], rows: int = ...) -> Iterator[_Chunk]: ...
+    def near(self, columns: Iterable[str], rows: npt.NDArray[np.int64]) -> Iterator[_Chunk]: ...
 
 
 @dataclass(frozen=True)
@@ -172,33 +173,35 @@ def members(hashes: Hashes, wanted: Hashes) -> npt.NDArray[np.bool_]:
 def find_duplicates(extract: _Extract, keep: int = 0) -> Duplicates:
     """Return the identifiers that occur more than once in an extract, and the ``keep`` smallest hashes.
 
-    Reads the column ``policy_id`` once and, only where two hashes are equal, once more to compare the
-    strings. Memory: 8 bytes a policy. Missing and empty identifiers are left out, being exceptions anyway.
+    Reads the column ``policy_id`` once and, only where two hashes are equal, once more near these to compare
+    the strings. Memory: 16 bytes a policy. Missing and empty identifiers are left out, being exceptions anyway.
     """
     hashes = np.empty(extract.rows, dtype=np.uint64)
+    missing: list[npt.NDArray[np.int64]] = []
     filled = 0
     for chunk in extract.chunks(["policy_id"]):
-        there = byte_lengths(chunk.ids) > 0
-        some = chunk.hashes if there.all() else chunk.hashes[there]
-        hashes[filled : filled + len(some)] = some
-        filled += len(some)
-    hashes = hashes[:filled]
-    hashes.sort()
-    equal = hashes[1:] == hashes[:-1]
-    twice = np.unique(hashes[1:][equal]) if equal.any() else hashes[:0].copy()
-    smallest = hashes[:keep].copy()
-    del hashes, equal
-    found = _confirm(extract, twice) if len(twice) else Duplicates()
+        absent = byte_lengths(chunk.ids) == 0
+        if absent.any():
+            missing.append(filled + np.flatnonzero(absent))
+        hashes[filled : filled + len(absent)] = chunk.hashes
+        filled += len(absent)
+    ascending = np.delete(hashes, np.concatenate(missing)) if missing else hashes.copy()
+    ascending.sort()
+    equal = ascending[1:] == ascending[:-1]
+    twice = np.unique(ascending[1:][equal]) if equal.any() else ascending[:0].copy()
+    smallest = ascending[:keep].copy()
+    del ascending, equal
+    found = _confirm(extract, twice, np.flatnonzero(members(hashes, twice))) if len(twice) else Duplicates()
     return replace(found, smallest=smallest)
 
 
-def _confirm(extract: _Extract, twice: Hashes) -> Duplicates:
-    """Compare the strings behind equal hashes."""
+def _confirm(extract: _Extract, twice: Hashes, rows: npt.NDArray[np.int64]) -> Duplicates:
+    """Compare the strings behind equal hashes, which lie in these rows."""
     found = [pa.array([], pa.string())]
-    for chunk in extract.chunks(["policy_id"]):
-        rows = members(chunk.hashes, twice) & (byte_lengths(chunk.ids) > 0)
-        if rows.any():
-            found.append(chunk.ids.filter(pa.array(rows)))
+    for chunk in extract.near(["policy_id"], rows):
+        there = members(chunk.hashes, twice) & (byte_lengths(chunk.ids) > 0)
+        if there.any():
+            found.append(chunk.ids.filter(pa.array(there)))
     counts = pc.value_counts(pa.concat_arrays(found))
     strings, times = counts.field(0), counts.field(1).to_numpy()
     hashes = identifier_hashes(strings)

@@ -15,6 +15,9 @@ from .reasons import Reason
 Mask = npt.NDArray[np.bool_]
 
 FREQUENCIES = (1, 2, 4, 12)
+TWO_LIVES = ("second_birth_date", "lives")
+"""Columns that contracts on two lives need."""
+
 MONTH_TOLERANCE = 1e-6
 """How far a duration may lie from a whole number of months, in months."""
 
@@ -52,9 +55,7 @@ class NumberRule:
             (Reason.FREQUENCY_UNKNOWN, frequency),
             (Reason.NUMBER_OUT_OF_RANGE, outside),
         ]
-        reasons = np.select(
-            [mask for _, mask in order], [reason for reason, _ in order], Reason.NOT_WHOLE_MONTHS
-        )
+        reasons = np.select([mask for _, mask in order], [reason for reason, _ in order], Reason.NOT_WHOLE_MONTHS)
         return reasons.astype(np.uint8)
 
 
@@ -83,7 +84,9 @@ def number_columns(designs: Iterable[Design]) -> list[str]:
 
 def needed_columns(designs: Iterable[Design], others: Iterable[str] = ()) -> tuple[str, ...]:
     """Return the columns that a run reads: those always needed, those of the designs, and others given."""
-    return tuple(dict.fromkeys([*ALWAYS, *number_columns(designs), *others]))
+    designs = list(designs)
+    pairs = TWO_LIVES if any(design.states == "two lives" for design in designs) else ()
+    return tuple(dict.fromkeys([*ALWAYS, *pairs, *number_columns(designs), *others]))
 
 
 def number_rules(designs: Sequence[Design]) -> list[NumberRule]:

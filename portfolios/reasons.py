@@ -24,6 +24,7 @@ class Reason(IntEnum):
     NUMBER_OUT_OF_RANGE = 13
     FREQUENCY_UNKNOWN = 14
     NOT_WHOLE_MONTHS = 15
+    LIVES_UNKNOWN = 16
     # The following are found by the projection.
     NOT_WHOLE_YEARS = 20
     NOT_WHOLE_PERIODS = 21
@@ -73,6 +74,7 @@ _WORDS: dict[Reason, tuple[str, str]] = {
         "duration not in whole months",
         "a duration in years must be a whole number of months",
     ),
+    Reason.LIVES_UNKNOWN: ("lives not known", "lives of a contract on two lives must be both, first, second or none"),
     Reason.NOT_WHOLE_YEARS: (
         "duration not in whole years",
         "a stream paid on a move needs durations of whole years where the step is a year",

@@ -18,8 +18,11 @@ from assumptions.basis import Basis
 from assumptions.rules import Band, Rule, first_fit
 from portfolios.chunk import Chunk
 from portfolios.designs import Design
+from portfolios.states import LIVES
 
 from .documents import DocumentError
+from .lives import LIFE, now, rule_columns
+from .lives import second as second_column
 
 EPOCH = date(1970, 1, 1)
 OTHER = "\0any other"
@@ -29,11 +32,15 @@ OTHER = "\0any other"
 class Cell:
     """What the rules say of one set of policies: positions of design and rules, or the part that has none.
 
-    lapse is -1 where the basis has no lapses; missing names the part of the basis without a fitting rule.
+    lapse is -1 where the basis has no lapses; missing names the part of the basis without a fitting rule. lives:
+    the value of that column, nothing on one life that lives. mortality is the rule of the first life, or of the only
+    one that is left; second that of the second where both live.
     """
 
     design: int
     mortality: int = -1
+    second: int = -1
+    lives: str = ""
     lapse: int = -1
     interest: int = -1
     expenses: tuple[int, ...] = ()
@@ -108,7 +115,7 @@ class Cells:
 
     def __init__(self, designs: list[Design], basis: Basis, kinds: dict[str, str]) -> None:
         self.designs, self.basis = designs, basis
-        self.columns = [column for column in basis.document.rule_columns() if column != "product"]
+        self.columns = [column for column in rule_columns(basis, designs, kinds) if column != "product"]
         rules = _placed(basis)
         self.coders: list[_Coder] = [_coder(column, kinds[column], rules) for column in self.columns]
         self.cells: list[Cell] = []
@@ -148,8 +155,12 @@ class Cells:
 
     def _rules_for(self, design: int, policy: dict[str, Any]) -> Cell:
         document = self.basis.document
-        mortality = first_fit(document.mortality.rule, policy)
-        if mortality is None:
+        lives = now(self.designs[design], policy.get("lives"))
+        if lives and lives not in LIVES:
+            return Cell(design, missing="lives")  # the checks have listed the policy
+        mortality = first_fit(document.mortality.rule, _of_life(policy, "second" if lives == "second" else "first"))
+        second = first_fit(document.mortality.rule, _of_life(policy, "second")) if lives == "both" else -1
+        if mortality is None or second is None:
             return Cell(design, missing="mortality")
         lapse = first_fit(document.lapse.rule, policy) if document.lapse else -1
         if lapse is None:
@@ -163,7 +174,15 @@ class Cells:
             if rule is None:
                 return Cell(design, missing=f"expense '{item.name}'")
             expenses.append(rule)
-        return Cell(design, mortality, lapse, interest, tuple(expenses))
+        return Cell(design, mortality, second, lives, lapse, interest, tuple(expenses))
+
+
+def _of_life(policy: dict[str, Any], life: str) -> dict[str, Any]:
+    """What mortality rules see of a life: columns of the second life stand in for those of the first."""
+    seen = {**policy, LIFE: life}
+    if life == "second":
+        seen |= {column: policy[second_column(column)] for column in policy if second_column(column) in policy}
+    return seen
 
 
 def _placed(basis: Basis) -> list[tuple[str, Rule]]:
@@ -181,9 +200,10 @@ _KINDS = {"text": "text", "number": "numbers", "day": "dates", "flag": "true and
 
 def _coder(column: str, kind: str, rules: list[tuple[str, Rule]]) -> _Coder:
     fitting: Any = {"text": str, "flag": bool, "number": (int, float), "day": date}[kind]
-    values: list[Any] = []
+    values: list[Any] = list(LIVES) if column == "lives" else []
     for place, rule in rules:
-        condition = rule.for_.get(column)
+        # Of the second life the same is asked as of the first.
+        condition = rule.for_.get(column, rule.for_.get(column.removeprefix("second_")))
         if condition is None:
             continue
         if isinstance(condition, Band):

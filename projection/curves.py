@@ -65,16 +65,16 @@ class Survival:
                     "years; set the key 'age' to last, nearest or next birthday"
                 )
 
-    def codes(self, rule: Keys, places: loops.Places) -> Keys:
-        """Return the key of each policy's row: rule and age at commencement."""
+    def codes(self, rule: Keys, ages: loops.Ages) -> Keys:
+        """Return the key of each life's row: rule and age at commencement."""
         basis = self.basis.document.mortality.age
-        key: Keys = places.age.astype(np.int64)
+        key: Keys = ages.age.astype(np.int64)
         if self.exact:
-            key = (2 * np.clip(key, 0, 159) + (places.span == 366)) * _SPANS + places.since
+            key = (2 * np.clip(key, 0, 159) + (ages.span == 366)) * _SPANS + ages.since
         elif basis == "next birthday":
             key += 1
         elif basis == "nearest birthday":
-            key += places.since > places.span - places.since
+            key += ages.since > ages.span - ages.since
         np.clip(key, 0, self.keys - 1, out=key)
         key += rule * self.keys
         return key
@@ -126,10 +126,14 @@ def yearly_rates(rule: MortalityRule, rates: Rates, age: float) -> Row:
     years = max(0, int(np.ceil(rates.final_age - entered)))
     if years == 0:
         return np.zeros(0)
-    source = rates.rates_from(entered if isinstance(rates, Law) else int(entered), years)  # type: ignore[attr-defined]
+    entry = entered if isinstance(rates, Law) else int(entered)
+    closing = rule.close or rates.closed
+    # The last rate of a table that closes is 1, whatever it says itself.
+    known = years - closing
+    source = rates.rates_from(entry, known) if known else np.zeros(0)  # type: ignore[attr-defined]
     adjusted = np.minimum(1.0, rule.multiple * source + rule.extra)
-    if rule.close or rates.closed:
-        adjusted[-1] = 1.0
+    if closing:
+        adjusted = np.append(adjusted, 1.0)
     return np.asarray(adjusted)
 
 

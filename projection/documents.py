@@ -58,7 +58,8 @@ def read_document(path: Path | str, model: type[Model]) -> Model:
     path = Path(path)
     try:
         with path.open("rb") as file:
-            content = tomllib.load(file)
+            # Some editors put a mark of the byte order in front.
+            content = tomllib.loads(file.read().decode("utf-8-sig"))
     except FileNotFoundError:
         raise DocumentError(f"{path}: there is no such file") from None
     except OSError as error:

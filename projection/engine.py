@@ -25,14 +25,17 @@ from portfolios.reasons import Reason
 
 from . import loops
 from .cells import Cells
-from .curves import IMPOSSIBLE, NEVER, Discount, Finder, Persistency, Survival
+from .curves import IMPOSSIBLE, NEVER, Discount, Finder, Keys, Persistency, Survival
+from .lives import on_two
 from .plans import Plans
 from .pool import Pool
 from .relative import RelativeRows
 from .settings import Settings
 from .slots import whole_months
-from .streams import POLICY, SURVIVAL
+from .streams import LIFE, NO_SECOND, NOBODY, POLICY, SURVIVAL
 from .tally import QUANTA
+
+Mask = NDArray[np.bool_]
 
 
 class Valued:
@@ -82,6 +85,7 @@ class Engine:
         self._discounts = Finder(self.discount.row)
         self._today = (today - date(1970, 1, 1)).days
         self._until = _Until(basis)
+        self._on_two = on_two(designs)
         self._lock = Lock()
         self.rules = loops.Rules(
             step=settings.step_months,
@@ -90,6 +94,7 @@ class Engine:
             dependent=int(self.persistency.dependent),
             quantum=float(QUANTA * 10**settings.decimals),
             minor=float(10**settings.decimals),
+            shock=basis.document.mortality.common_shock,
         )
 
     def value(self, chunk: Chunk) -> Valued:
@@ -120,16 +125,8 @@ class Engine:
     def _locate(self, chunk: Chunk, checked: Checked) -> loops.Places:
         places = loops.Places(*(np.zeros(chunk.n, dtype=np.int32) for _ in loops.Places._fields))
         places.whole[:] = 30
-        days_of_age = self.basis.document.mortality.age in ("exact", "nearest birthday")
-        loops.locate(
-            chunk.day("birth_date"),
-            chunk.day("commencement_date"),
-            checked.reason,
-            self._today,
-            self.settings.step_months,
-            days_of_age,
-            places,
-        )
+        step = self.settings.step_months
+        loops.locate(chunk.day("commencement_date"), checked.reason, self._today, step, places)
         return places
 
     def _cells(self, chunk: Chunk, checked: Checked) -> NDArray[np.int32]:
@@ -148,13 +145,7 @@ class Engine:
             np.array([getattr(one, part) for one in known], dtype=np.int64)[cell]
             for part in ("mortality", "lapse", "interest")
         )
-        codes = self.survival.codes(mortality, places)
-        if checked.reason.any():
-            # No rows for the ages of policies that are listed already; the first fine one stands in for them.
-            fine = checked.reason == 0
-            codes[~fine] = codes[fine.argmax()]
-        survival = self._survivals.rows_for(codes) if (checked.reason == 0).any() else np.zeros_like(codes)
-        self._flag(checked, survival == IMPOSSIBLE, Reason.AGE_OUTSIDE_TABLE, "birth_date")
+        survival, second = self._lives(chunk, checked, cell, mortality)
         until = self._until.months(chunk, lapse)
         self._flag(checked, until < 0, Reason.NOT_WHOLE_MONTHS, self._until.column)
         lapse = self._persistencies.rows_for((1 + lapse) * (NEVER + 1) + np.maximum(until, 0))
@@ -162,6 +153,7 @@ class Engine:
         return loops.Found(
             cell=cell,
             survival=np.maximum(survival, 0).astype(np.int32),
+            second=second.astype(np.int32),
             lapse=lapse.astype(np.int32),
             discount=discount.astype(np.int32),
             ranges=self.plans.ranges,
@@ -170,10 +162,45 @@ class Engine:
             accrued=np.array(self.discount.accrued, dtype=np.float64),
         )
 
+    def _lives(self, chunk: Chunk, checked: Checked, cell: NDArray[np.int32], mortality: Keys) -> tuple[Keys, Keys]:
+        """Rows of survival of the first life, or the only one left, and of the second where both live, else -1."""
+        birth = chunk.day("birth_date")
+        known = self.cells.cells
+        nobody = np.array([one.lives == "none" for one in known])[cell]
+        fine = checked.reason == 0
+        fine &= ~nobody
+        second = np.where(nobody, NOBODY, NO_SECOND)
+        if not self._on_two:
+            return self._rows_of(chunk, checked, fine, birth, mortality, "birth_date"), second
+        other = np.array([one.second for one in known], dtype=np.int64)[cell]
+        left = np.array([one.lives == "second" for one in known])[cell]
+        births = chunk.day("second_birth_date")
+        survival = self._rows_of(chunk, checked, fine, np.where(left, births, birth), mortality, "birth_date")
+        both = fine & (other >= 0) & (checked.reason == 0)
+        rows = self._rows_of(chunk, checked, both, births, np.maximum(other, 0), "second_birth_date")
+        return survival, np.where(both, np.maximum(rows, 0), second)
+
+    def _rows_of(
+        self, chunk: Chunk, checked: Checked, fine: Mask, birth: NDArray[np.int32], mortality: Keys, column: str
+    ) -> Keys:
+        """Rows of survival of the lives that count, born on given days."""
+        if not fine.any():
+            return np.zeros(chunk.n, dtype=np.int64)
+        ages = loops.Ages(*(np.zeros(chunk.n, dtype=np.int32) for _ in loops.Ages._fields))
+        days_of_age = self.basis.document.mortality.age in ("exact", "nearest birthday")
+        loops.find_ages(birth, chunk.day("commencement_date"), fine, days_of_age, ages)
+        codes = self.survival.codes(mortality, ages)
+        # No rows for the ages of others; the first one that counts stands in for them.
+        codes[~fine] = codes[fine.argmax()]
+        rows = self._survivals.rows_for(codes)
+        self._flag(checked, fine & (rows == IMPOSSIBLE), Reason.AGE_OUTSIDE_TABLE, column)
+        return rows
+
     def _order(self, found: loops.Found) -> NDArray[np.int64]:
         """Order of calculation: policies with the same streams and rows follow one another, still in the cache."""
         order, again = np.arange(len(found.cell)), np.empty(len(found.cell), dtype=np.int64)
-        for keys in (found.lapse, found.survival, found.cell):
+        seconds = (found.second - NOBODY,) if self._on_two else ()
+        for keys in (found.lapse, *seconds, found.survival, found.cell):
             loops.sort_by(keys, int(keys.max(initial=0)) + 1, order, again)
         return order
 
@@ -230,9 +257,10 @@ def _room_for(policies: int, checked: Checked, tables: loops.Tables, accounts: i
         flows=np.zeros(accounts * loops.BINS, dtype=np.int64),
         months=np.zeros(1, dtype=np.int64),
         room=np.ones(loops.ROOM * loops.BINS),
-        filled=np.zeros((loops.ROOM, 2), dtype=np.int64),
+        filled=np.zeros((3 * loops.KINDS, 2), dtype=np.int64),
         firsts=np.empty(len(tables.segments) + 1, dtype=np.int64),
         counts=np.empty(len(tables.segments) + 1, dtype=np.int64),
+        lives=loops.records(np.zeros(3, LIFE)),
     )
 
 

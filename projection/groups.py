@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from datetime import date, timedelta
 from threading import Lock
 from typing import Any
@@ -12,6 +13,21 @@ from numpy.typing import NDArray
 from portfolios.chunk import Chunk
 
 from .cells import EPOCH, distinct
+from .documents import DocumentError
+from .results import MONEY_COLUMNS
+
+RESULT_COLUMNS = ("policies", *MONEY_COLUMNS, "rounding")
+"""Names that the tables of a run use themselves."""
+
+
+def check_names(group_by: Sequence[str]) -> None:
+    """Raise DocumentError where a column of the extract would stand beside a result of the same name."""
+    taken = [name for name in group_by if name in RESULT_COLUMNS]
+    if taken:
+        raise DocumentError(
+            f"key 'group_by': '{taken[0]}' is the name of a column of the results; give the extract's "
+            "column another name"
+        )
 
 
 class Groups:

@@ -29,10 +29,13 @@ BEFORE: Final = 1
 DYING: Final = 2
 LAPSING: Final = 3
 SPREAD: Final = 4
-CERTAINLY: Final = 5
-SCRATCH: Final = 6
-ROOM: Final = 7
-"""Rows to work in: weights after and before lapses, of deaths, of lapses (of survivors, or spread), ones, products."""
+KINDS: Final = 5
+"""Kinds of weights, for each life and for both: after and before lapses, of deaths, of lapses of survivors, spread."""
+
+CERTAINLY: Final = 3 * KINDS
+TOGETHER: Final = CERTAINLY + 1
+ROOM: Final = TOGETHER + 1
+"""Rows to work in: weights by life and kind, ones, survival of both lives."""
 
 MAGIC = 6755399441055744.0
 """1.5 * 2^52: a number added to it is rounded to a whole one, half to even, which then stands in its last bits."""
@@ -69,7 +72,8 @@ class Rules(NamedTuple):
 
     step: months; outstanding: 1 if payments due on T are to come; fractions: 0 constant force, 1 uniform
     deaths, 2 Balducci; dependent: 1 for decrements uniform in their single tables; quantum: cash flows are
-    rounded to whole multiples of 1 / quantum; minor: minor units in one of currency.
+    rounded to whole multiples of 1 / quantum; minor: minor units in one of currency; shock: force of a cause from
+    which both lives die at once.
     """
 
     step: int
@@ -78,6 +82,7 @@ class Rules(NamedTuple):
     dependent: int
     quantum: float
     minor: float
+    shock: float
 
 
 class Tables(NamedTuple):
@@ -95,7 +100,7 @@ class Results(NamedTuple):
 
     The columns of parts are benefits, expenses and premiums; those of minor the reserve and then the parts.
     flows: expected cash flows by account and calendar month, BINS to an account, in whole quanta. months:
-    policy-months projected, one number. room, filled, firsts and counts are to work in.
+    policy-months projected, one number. room, filled, firsts, counts and lives are to work in.
     """
 
     reason: Any
@@ -108,6 +113,7 @@ class Results(NamedTuple):
     filled: Any
     firsts: Any
     counts: Any
+    lives: Any
 
 
 @intrinsic
@@ -300,8 +306,7 @@ class Places(NamedTuple):
     """Where policies stand at T, one array each, in the order of the extract.
 
     k, part, whole: months passed, and part / whole of the next one; shift: calendar months from that of T to
-    that of commencement; day: of the month of commencement; age: completed years at commencement; since, span:
-    days from the last birthday to commencement and to the next birthday, filled in where asked for.
+    that of commencement; day: of the month of commencement.
     """
 
     k: Any
@@ -309,17 +314,23 @@ class Places(NamedTuple):
     whole: Any
     shift: Any
     day: Any
+
+
+class Ages(NamedTuple):
+    """Ages of lives at commencement, one array each, in the order of the extract.
+
+    age: completed years; since, span: days from the last birthday to commencement and to the next birthday,
+    filled in where asked for.
+    """
+
     age: Any
     since: Any
     span: Any
 
 
 @compiled
-def locate(birth, commencement, reason, today, step, days_of_age, places):
-    """Fill in the places of all policies that have no reason against them yet.
-
-    birth, commencement: days since 1970-01-01; days_of_age: whether the age basis looks at days.
-    """
+def locate(commencement, reason, today, step, places):
+    """Fill in the places of all policies that have no reason against them yet; days since 1970-01-01."""
     ty, tm, td = civil(today)
     first = today - td + 1
     # Lengths of the months before, at and after T: for monthly steps they are all that is needed.
@@ -349,27 +360,37 @@ def locate(birth, commencement, reason, today, step, days_of_age, places):
             passed = passed % whole
         places.k[i], places.part[i], places.whole[i] = k, passed, whole
         places.shift[i], places.day[i] = shift, cd
+
+
+@compiled
+def find_ages(birth, commencement, fine, days_of_age, ages):
+    """Fill in the ages of the lives that count; days_of_age: whether the age basis looks at days."""
+    for i in range(len(fine)):
+        if not fine[i]:
+            continue
+        cy, cm, cd = civil(np.int64(commencement[i]))
         by, bm, bd = civil(np.int64(birth[i]))
         age = cy - by
         if cm < bm or (cm == bm and cd < bd and day_count(cy, bm, bd) > commencement[i]):
             age -= 1
-        places.age[i] = age
+        ages.age[i] = age
         if days_of_age:
             birthday = day_count(by + age, bm, bd)
-            places.since[i] = commencement[i] - birthday
-            places.span[i] = day_count(by + age + 1, bm, bd) - birthday
+            ages.since[i] = commencement[i] - birthday
+            ages.span[i] = day_count(by + age + 1, bm, bd) - birthday
 
 
 class Found(NamedTuple):
     """Numbers of what was found for each policy, in the order of the extract, and what the numbers stand for.
 
-    cell, survival, lapse, discount: a number per policy; ranges: (cell, 2) first segment and behind the last;
+    cell, survival, second, lapse, discount: a number per policy; ranges: (cell, 2) first segment and behind the last;
     persistency: (lapse, 3) places of held, dead and lapsing; factors: (discount, 2) places of payment and claim;
     accrued: (discount, 2) factors to them.
     """
 
     cell: Any
     survival: Any
+    second: Any
     lapse: Any
     discount: Any
     ranges: Any
@@ -389,7 +410,7 @@ def fill_policies(order, places, found, claim_after, step, policies):
         p = policies[j]
         p.k, p.part, p.whole, p.shift = places.k[i], places.part[i], places.whole[i], places.shift[i]
         p.segments, p.segments_end = found.ranges[found.cell[i], 0], found.ranges[found.cell[i], 1]
-        p.survival = found.survival[i]
+        p.survival, p.second = found.survival[i], found.second[i]
         lapse, discount = found.lapse[i], found.discount[i]
         p.held, p.dead, p.lapsing = (
             found.persistency[lapse, 0],
@@ -507,7 +528,7 @@ def sum_monthly(room, weight, pool, relative, discount, flows, flow, count, amou
 
 
 @inner
-def sum_apart(pool, living, held, relative, discount, a, b, flows, flow, count, hop, amount, quantum):
+def sum_apart(lives, pool, living, held, relative, discount, a, b, flows, flow, count, hop, amount, quantum):
     """The same for payments ``hop`` points from one another, with a and b times survival at both ends as occupancy."""
     scale = amount * quantum
     o, h, r, d, f = np.uint64(living), np.uint64(held), np.uint64(relative), np.uint64(discount), np.uint64(flow)
@@ -515,7 +536,7 @@ def sum_apart(pool, living, held, relative, discount, a, b, flows, flow, count, 
     hop = np.uint64(hop)
     total = 0.0
     for _ in range(count):
-        x = (a * pool[e] + b * pool[o]) * pool[h] * pool[r]
+        x = (a * lives[e] + b * lives[o]) * pool[h] * pool[r]
         flows[f] += quanta(x * scale)
         total += x * pool[d]
         e, o, h, r, d, f = e + hop, o + hop, h + hop, r + hop, d + hop, f + hop
@@ -523,25 +544,24 @@ def sum_apart(pool, living, held, relative, discount, a, b, flows, flow, count, 
 
 
 @inlined
-def weights(kind, pool, living, held, first, count, filled, room):
+def weights(kind, lives, pool, living, held, first, count, filled, room):
     """Place of the first of some monthly weights, survival x persistency; fills in what is missing.
 
-    kind: AFTER, BEFORE, DYING, LAPSING or SPREAD; living, held: places of g = 0 in the rows that the kind
-    takes; filled: (kind, 2) the points for which the room holds weights, forgotten when another pair of rows
-    comes along.
+    kind: AFTER ... SPREAD, of a life; living, held: places of g = 0 in the rows that the kind takes, the former
+    in ``lives``; filled: (kind, 2) the points for which the room holds weights, forgotten when other rows come along.
     """
     base = kind * BINS
     low, high = filled[kind, 0], filled[kind, 1]
     if low >= high:
         low, high = first, first
-    fill_weights(kind, pool, living, held, first, low, base, room)
-    fill_weights(kind, pool, living, held, high, first + count, base, room)
+    fill_weights(kind % KINDS, lives, pool, living, held, first, low, base, room)
+    fill_weights(kind % KINDS, lives, pool, living, held, high, first + count, base, room)
     filled[kind, 0], filled[kind, 1] = min(first, low), max(first + count, high)
     return base + first
 
 
 @inner
-def fill_weights(kind, pool, living, held, begin, end, base, room):
+def fill_weights(kind, lives, pool, living, held, begin, end, base, room):
     """Fill in the weights of the points from ``begin`` up to but not including ``end``."""
     if end <= begin:
         return
@@ -549,7 +569,7 @@ def fill_weights(kind, pool, living, held, begin, end, base, room):
     o, h, w = np.uint64(living + begin), np.uint64(held + begin), np.uint64(base + begin)
     if kind in (AFTER, BEFORE):
         for j in range(n):
-            room[w + j] = pool[o + j] * pool[h + j]
+            room[w + j] = lives[o + j] * pool[h + j]
         return
     e = np.uint64(living + begin - 1)
     a, b = 0.0, 1.0
@@ -558,7 +578,7 @@ def fill_weights(kind, pool, living, held, begin, end, base, room):
     elif kind == SPREAD:
         a, b = 0.5, 0.5
     for j in range(n):
-        room[w + j] = (a * pool[e + j] + b * pool[o + j]) * pool[h + j]
+        room[w + j] = (a * lives[e + j] + b * lives[o + j]) * pool[h + j]
 
 
 @inner
@@ -606,24 +626,24 @@ def span_start(stream, start):
 
 
 @inlined
-def extent(stream, whole, j, p, survival, last, rules):
+def extent(stream, whole, j, p, life, rules):
     """Reason, first point and number of points after T of a segment of streams, and whether it lasts to T.
 
-    whole, j: the matrix of whole numbers and the policy's place in it; last: the last point that counts, at
-    most survival.over. A payment due exactly on T is not among the points.
+    whole, j: the matrix of whole numbers and the policy's place in it. A payment due exactly on T is not among
+    the points.
     """
     k = p.k
     if stream.clip_to <= k - 12:
         return 0, 0, 0, False
-    over = survival.over
-    lives = stream.cover != s.CERTAIN
+    over, last = life.over, life.last
+    lives = stream.cover != s.CERTAIN and stream.cover != s.BEGUN
     start = entry(whole, stream.start, j)
     end = entry(whole, stream.end, j) if stream.end >= 0 else max(start, over)
     if start < 0 or end < 0:
         return _MONTHS, 0, 0, False
     if end < start:
         return _ORDER, 0, 0, False
-    if lives and survival.closed == 0 and (stream.end < 0 or end > over):
+    if lives and life.closed == 0 and (stream.end < 0 or end > over):
         return _TABLE, 0, 0, False
     lasts = end > k or (end == k and p.part == 0)
     low = span_start(stream, start)
@@ -652,9 +672,14 @@ def extent(stream, whole, j, p, survival, last, rules):
         guaranteed = entry(whole, stream.guarantee, j)
         if guaranteed < 0:
             return _MONTHS, 0, 0, False
-        if stream.cover == s.GUARANTEED:
+        if stream.cover != s.AFTER_GUARANTEE:
             # A guarantee for life may outlast the table.
             end = min(end if stream.end >= 0 else s.LONGEST, start + guaranteed)
+            if stream.cover == s.BEGUN:
+                # Where nobody is left for it, a stream that has not begun never does.
+                going = start < k or (start == k and p.part > 0)
+                lasts = going and (end > k or (end == k and p.part == 0))
+                end = end if going else start
         else:
             # In arrears, the first payment after the guarantee may belong to a period that starts within it.
             begin = start + guaranteed + (1 - period if when == s.ARREARS else 0)
@@ -706,8 +731,10 @@ def due_today(stream, whole, j, p, rules):
     first = start
     if stream.guarantee >= 0:
         turn = start + entry(whole, stream.guarantee, j)
-        if stream.cover == s.GUARANTEED:
+        if stream.cover == s.GUARANTEED or (stream.cover == s.BEGUN and start < k):
             end = min(end, turn)
+        elif stream.cover == s.BEGUN:
+            end = start
         else:
             first = turn + (1 - lag if lag else 0)
     due = first <= month < end and month <= end - lag and (month - start) % period == 0
@@ -726,6 +753,43 @@ def relative_place(stream, whole, j, month, calendar):
     return row + max(0, month - clock)
 
 
+@inlined
+def stand(life, survival, pool, p, rules):
+    """Fill in what streams need to know of one life."""
+    life.living, life.over, life.closed = survival.living, survival.over, survival.closed
+    life.last = np.int64(pool[survival.lasts + min(p.k, survival.over)])
+    life.alive = survival_at(survival, pool, p.k + p.part / p.whole, rules.fractions)
+
+
+@inlined
+def outlives(life, p):
+    """Whether the valuation date lies after the end of a table that is not closed."""
+    return life.closed == 0 and (p.k > life.over or (p.k == life.over and p.part > 0))
+
+
+@inner
+def stand_together(lives, pool, room, p, new, rules):
+    """Fill in what streams need to know of both lives; new: whether they are not those of the policy before.
+
+    Without the cause from which both die at once, the lives are independent. It is part of the rates of either,
+    so that both live with the product of their survivals times exp(shock x time).
+    """
+    one, two, both = lives[s.FIRST], lives[s.SECOND], lives[s.JOINT]
+    shorter = one if one.over <= two.over else two
+    both.living, both.over, both.closed = TOGETHER * BINS, shorter.over, shorter.closed
+    both.last = min(one.last, two.last)
+    both.alive = one.alive * two.alive
+    if rules.shock > 0.0:
+        both.alive *= np.exp(rules.shock * (p.k + p.part / p.whole) / 12.0)
+    if not new:
+        return
+    for g in range(both.over + 1):
+        room[both.living + g] = pool[one.living + g] * pool[two.living + g]
+    if rules.shock > 0.0:
+        for g in range(both.over + 1):
+            room[both.living + g] *= np.exp(rules.shock * g / 12.0)
+
+
 @compiled
 def value_policies(order, policies, tables, rules, results):
     """Value the policies: parts, rounded results, and expected cash flows per account and month.
@@ -735,61 +799,72 @@ def value_policies(order, policies, tables, rules, results):
     """
     segments, survivals = unowned(tables.segments), unowned(tables.survivals)
     pool, money, whole = unowned(tables.pool), unowned(tables.money), unowned(tables.whole)
-    flows = unowned(results.flows)
+    flows, lives = unowned(results.flows), unowned(results.lives)
     room, filled = unowned(results.room), unowned(results.filled)
     firsts, counts = unowned(results.firsts), unowned(results.counts)
-    survived, persisting = np.int64(-1), np.int64(-1)
+    survived, beside, persisting = np.int64(-1), np.int64(-1), np.int64(-1)
     for j in range(len(order)):
         i = np.uint64(order[np.uint64(j)])
         if results.reason[i] != 0:
             continue
         p = policies[np.uint64(j)]
-        survival = survivals[np.uint64(p.survival)]
-        alive = survival_at(survival, pool, p.k + p.part / p.whole, rules.fractions)
+        new = p.survival != survived or p.second != beside
+        stand(lives[s.FIRST], survivals[np.uint64(p.survival)], pool, p, rules)
+        beyond = outlives(lives[s.FIRST], p)
+        if p.second == s.NOBODY:
+            lives[s.FIRST].alive = 1.0
+            beyond = False
+        alive = lives[s.FIRST].alive
+        if p.second >= 0:
+            stand(lives[s.SECOND], survivals[np.uint64(p.second)], pool, p, rules)
+            stand_together(lives, pool, room, p, new, rules)
+            beyond = beyond or outlives(lives[s.SECOND], p)
+            alive = lives[s.JOINT].alive
         inforce = persistency_at(p, pool, rules)
-        if not alive > 0.0 or not inforce > 0.0:
-            results.reason[i] = _NO_SURVIVAL
+        if new or p.held != persisting:
+            survived, beside, persisting = p.survival, p.second, p.held
+            for kind in range(3 * KINDS if p.second >= 0 else KINDS):
+                filled[kind, 0] = filled[kind, 1] = 0
+        if beyond or not alive > 0.0 or not inforce > 0.0:
+            results.reason[i] = _TABLE if beyond else _NO_SURVIVAL
             continue
-        last = np.int64(pool[survival.lasts + min(p.k, survival.over)])
         today = p.part == 0
         # Unsigned, which spares a look for negative places.
         begin, behind = np.uint64(p.segments), np.uint64(p.segments_end)
         reason = 0
         going = False
         for n in range(begin, behind):
+            stream = segments[n]
             reason, firsts[n - begin], counts[n - begin], lasts = extent(
-                segments[n], whole, j, p, survival, last, rules
+                stream, whole, j, p, lives[np.uint64(stream.life)], rules
             )
             if reason != 0:
                 results.fault[i] = n
                 break
-            if segments[n].own == 1 and (lasts or (today and due_today(segments[n], whole, j, p, rules)[0])):
+            if stream.own == 1 and (lasts or (today and due_today(stream, whole, j, p, rules)[0])):
                 going = True
         if reason == 0 and not going:
             reason = _MATURED
         if reason != 0:
             results.reason[i] = reason
             continue
-        if p.survival != survived or p.held != persisting:
-            survived, persisting = p.survival, p.held
-            for kind in range(ROOM):
-                filled[kind, 0] = filled[kind, 1] = 0
         furthest = p.k
         benefits, expenses, premiums = 0.0, 0.0, 0.0
         for n in range(begin, behind):
+            stream = segments[n]
             first, count = firsts[n - begin], counts[n - begin]
             if count > 0:
-                furthest = max(furthest, first + (count - 1) * apart(segments[n], whole, j, rules))
+                furthest = max(furthest, first + (count - 1) * apart(stream, whole, j, rules))
             if count > 0 or today:
                 value = value_segment(
-                    segments[n],
+                    stream,
                     p,
+                    lives[np.uint64(stream.life)],
+                    room if stream.life == s.JOINT else pool,
                     whole,
                     j,
                     money,
-                    survival,
                     pool,
-                    alive,
                     inforce,
                     first,
                     count,
@@ -799,9 +874,9 @@ def value_policies(order, policies, tables, rules, results):
                     room,
                     filled,
                 )
-                benefits += segments[n].benefits * value
-                expenses += segments[n].expenses * value
-                premiums += segments[n].premiums * value
+                benefits += stream.benefits * value
+                expenses += stream.expenses * value
+                premiums += stream.premiums * value
         results.months[0] += furthest - p.k
         keep_results(i, benefits, expenses, premiums, rules.minor, results)
 
@@ -821,9 +896,9 @@ def keep_results(i, benefits, expenses, premiums, minor, results):
 
 @inlined
 def value_segment(
-    stream, p, whole, j, money, survival, pool, alive, inforce, first, count, today, rules, flows, room, filled
+    stream, p, life, lives, whole, j, money, pool, inforce, first, count, today, rules, flows, room, filled
 ):
-    """Value of a segment for one policy."""
+    """Value of a segment for one policy; life: whose survival it depends on, and lives the array that holds it."""
     amount = stream.factor
     if stream.amount >= 0:
         amount *= money[np.uint64(stream.amount), np.uint64(j)]
@@ -841,13 +916,13 @@ def value_segment(
     if count > 0:
         if stream.when == s.DEATH or stream.when == s.LAPSE:
             value += value_moves(
-                stream, p, whole, j, survival, pool, alive, inforce, first, count, amount, rules, flows, room, filled
+                stream, p, life, lives, whole, j, pool, inforce, first, count, amount, rules, flows, room, filled
             )
         elif stream.when == s.THIRD_TERM:
-            value += third_term(stream, p, whole, j, survival, pool, alive * inforce, first, count, amount, rules)
+            value += third_term(stream, p, life, whole, j, pool, inforce, first, count, amount, rules)
         else:
             value += value_payments(
-                stream, p, whole, j, survival, pool, alive * inforce, first, count, amount, rules, flows, room, filled
+                stream, p, life, lives, whole, j, pool, inforce, first, count, amount, rules, flows, room, filled
             )
     return value
 
@@ -874,8 +949,9 @@ def apart(stream, whole, j, rules):
 
 
 @inlined
-def value_payments(stream, p, whole, j, survival, pool, there, first, count, amount, rules, flows, room, filled):
-    """Value of payments while alive, for certain, or guaranteed, at their own dates after T; there: L(T) P(T)."""
+def value_payments(stream, p, life, lives, whole, j, pool, inforce, first, count, amount, rules, flows, room, filled):
+    """Value of payments while alive, for certain, or guaranteed, at their own dates after T."""
+    there = life.alive * inforce
     period = apart(stream, whole, j, rules)
     start = entry(whole, stream.start, j)
     month = first
@@ -887,29 +963,42 @@ def value_payments(stream, p, whole, j, survival, pool, there, first, count, amo
     relative = relative_place(stream, whole, j, month, calendar)
     discount = p.payment + first - p.k
     flow = stream.account * BINS + max(0, calendar)
-    lives = stream.cover == s.ALIVE or stream.cover == s.AFTER_GUARANTEE
+    alive = stream.cover == s.ALIVE or stream.cover == s.AFTER_GUARANTEE
     # Payments that are not in advance come before the lapses at the end of a step.
     before = 0 if rules.dependent == 1 else stream.before
-    if lives:
+    if alive:
         amount /= there
     elif stream.cover == s.GUARANTEED and start > p.k:
-        if start > survival.over:  # nobody lives to see its start
+        if start > life.over:  # nobody lives to see its start
             return 0.0
-        amount *= pool[survival.living + start] * pool[p.held + start] / there
+        amount *= lives[life.living + start] * pool[p.held + start] / there
     if period > 1 or count < 4:
-        living, held = (survival.living + first, p.held + first - before) if lives else (ONES, ONES)
+        place, held = (life.living + first, p.held + first - before) if alive else (ONES, ONES)
         return p.payment_accrued * sum_apart(
-            pool, living, held, relative, discount, 0.0, 1.0, flows, flow, count, period, amount, rules.quantum
+            lives if alive else pool,
+            pool,
+            place,
+            held,
+            relative,
+            discount,
+            0.0,
+            1.0,
+            flows,
+            flow,
+            count,
+            period,
+            amount,
+            rules.quantum,
         )
     weight = CERTAINLY * BINS
-    if lives:
-        kind = AFTER if before == 0 else BEFORE
-        weight = weights(kind, pool, survival.living, p.held - before, first, count, filled, room)
+    if alive:
+        kind = stream.life * KINDS + (AFTER if before == 0 else BEFORE)
+        weight = weights(kind, lives, pool, life.living, p.held - before, first, count, filled, room)
     return p.payment_accrued * sum_monthly(room, weight, pool, relative, discount, flows, flow, count, amount, rules)
 
 
 @inlined
-def value_moves(stream, p, whole, j, survival, pool, alive, inforce, first, count, amount, rules, flows, room, filled):
+def value_moves(stream, p, life, lives, whole, j, pool, inforce, first, count, amount, rules, flows, room, filled):
     """Value of payments on death or lapse, step by step; the broken first step on its own."""
     step = rules.step
     death = stream.when == s.DEATH
@@ -922,7 +1011,7 @@ def value_moves(stream, p, whole, j, survival, pool, alive, inforce, first, coun
         held, discount, accrued = p.dead, p.claim + first - p.k, p.claim_accrued
     elif rules.dependent == 1:
         a, b, kind = 0.5, 0.5, SPREAD
-    amount /= alive * inforce
+    amount /= life.alive * inforce
     relative = relative_place(stream, whole, j, first - step, first + p.shift)
     claim_first = p.claim_first if death else 0
     claim_shift = p.claim_shift if death else 0
@@ -933,7 +1022,7 @@ def value_moves(stream, p, whole, j, survival, pool, alive, inforce, first, coun
             share = 0.5 * (inforce + pool[p.held + first])
         elif not death:
             share = inforce - pool[p.held + first]
-        x = (a * alive + b * pool[survival.living + first]) * share * pool[relative]
+        x = (a * life.alive + b * lives[life.living + first]) * share * pool[relative]
         flows[stream.account * BINS + max(0, calendar + claim_first)] += quanta(x * amount * rules.quantum)
         value = amount * x * pool[discount]
         count -= 1
@@ -944,8 +1033,9 @@ def value_moves(stream, p, whole, j, survival, pool, alive, inforce, first, coun
     flow = stream.account * BINS + max(0, calendar + claim_shift)
     if step > 1 or count < 4:
         value += sum_apart(
+            lives,
             pool,
-            survival.living + first,
+            life.living + first,
             held + first,
             relative,
             discount,
@@ -959,33 +1049,34 @@ def value_moves(stream, p, whole, j, survival, pool, alive, inforce, first, coun
             rules.quantum,
         )
         return accrued * value
-    weight = weights(kind, pool, survival.living, held, first, count, filled, room)
+    weight = weights(stream.life * KINDS + kind, lives, pool, life.living, held, first, count, filled, room)
     value += sum_monthly(room, weight, pool, relative, discount, flows, flow, count, amount, rules)
     return accrued * value
 
 
 @inner
-def third_term(stream, p, whole, j, survival, pool, there, first, count, amount, rules):
+def third_term(stream, p, life, whole, j, pool, inforce, first, count, amount, rules):
     """Third term of Woolhouse's formula: for each year, (mu + delta) at its start less that at its end."""
     before = 0 if rules.dependent == 1 else stream.before
+    there = life.alive * inforce
     total = 0.0
     for n in range(count):
         g = first + 12 * n
         level = pool[relative_place(stream, whole, j, g, g)]
         total += level * (
-            inclination(p, survival, pool, there, g, before) - inclination(p, survival, pool, there, g + 12, before)
+            inclination(p, life, pool, there, g, before) - inclination(p, life, pool, there, g + 12, before)
         )
     return p.payment_accrued * amount * total
 
 
 @inner
-def inclination(p, survival, pool, there, g, before):
+def inclination(p, life, pool, there, g, before):
     """L P v (mu + delta) at a point, over L(T) P(T); the forces from the years on both sides of the point."""
-    living = survival.living + g
-    here = pool[living] if g <= survival.over else 0.0
+    living = life.living + g
+    here = pool[living] if g <= life.over else 0.0
     if here <= 0.0:
         return 0.0
-    after = here / pool[living + 12] if g + 12 <= survival.over and pool[living + 12] > 0.0 else 0.0
+    after = here / pool[living + 12] if g + 12 <= life.over and pool[living + 12] > 0.0 else 0.0
     earlier = pool[living - 12] / here if g >= 12 else 0.0
     mortality = 0.0
     if earlier > 0.0 and after > 0.0:

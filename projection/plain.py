@@ -17,12 +17,14 @@ from typing import Any, Literal, NamedTuple
 from assumptions.basis import Basis
 from assumptions.rules import Rule, first_fit
 from portfolios.designs import Design
+from portfolios.states import ALIVE, LIVES
 
 from .plain_dates import Position, age_at, month_after, monthiversary, position_of
 from .plain_expenses import expense_rule, expense_streams
 from .plain_faults import NotValued
 from .plain_lapse import Persistency, until_months
 from .plain_life import Survival, yearly_rates
+from .plain_lives import Lives, running
 from .plain_occasions import Course, Occasion
 from .plain_streams import Part, Policy, PolicyStream, design_streams
 from .settings import Settings
@@ -72,7 +74,8 @@ class PlainValue:
     """The reserve of one policy and what it is made of; money in currency, not rounded.
 
     age: at commencement, in years; survival and persistency: L(T) and P(T) from commencement to the valuation
-    date; life and lapses: the yearly rates behind them, ``life.yearly`` those used.
+    date; life and lapses: the yearly rates behind them, ``life.yearly`` those used; second: the same for the second
+    life where both live.
     """
 
     benefits: float
@@ -84,6 +87,7 @@ class PlainValue:
     survival: float
     persistency: float
     life: Survival
+    second: Survival | None
     lapses: Persistency
     rules: RulesUsed
 
@@ -105,7 +109,7 @@ def plain_value(
     birth, commencement = _date(policy, "birth_date"), _date(policy, "commencement_date")
     position = position_of(settings.valuation_date, commencement, settings.step)
     age = age_at(birth, commencement, basis.document.mortality.age)
-    course, rules = _course(policy, age, position, basis, settings)
+    course, rules = _course(policy, age, position, design, basis, settings)
     streams = _streams(policy, design, basis, course, rules, commencement)
     values: dict[Part, list[float]] = {"benefits": [], "expenses": [], "premiums": []}
     for stream in streams:
@@ -119,7 +123,8 @@ def plain_value(
         age=age,
         survival=course.alive_now,
         persistency=course.in_force_now,
-        life=course.life,
+        life=course.lives.first,
+        second=course.lives.second,
         lapses=course.lapses,
         rules=rules,
     )
@@ -145,16 +150,14 @@ def _date(policy: Policy, column: str) -> date:
 
 
 def _course(
-    policy: Policy, age: Fraction, position: Position, basis: Basis, settings: Settings
+    policy: Policy, age: Fraction, position: Position, design: Design, basis: Basis, settings: Settings
 ) -> tuple[Course, RulesUsed]:
     """Find the rules that fit and return what the policy's probabilities and discount factors depend on."""
     document = basis.document
-    mortality = _fit("mortality", document.mortality.rule, policy)
     interest = _fit("interest", document.interest.rule, policy)
     lapse = _fit("lapse", document.lapse.rule, policy) if document.lapse else -1
     expenses = {item.name: expense_rule(item, policy) + 1 for item in document.expense}
-    rates = yearly_rates(document.mortality.rule[mortality], basis.rates[mortality], age)
-    life = Survival(rates, document.mortality.fractions)
+    mortality, lives = _lives(policy, age, position, design, basis)
     if document.lapse:
         rule = document.lapse.rule[lapse]
         until = until_months(rule, policy.get(rule.until) if isinstance(rule.until, str) else None)
@@ -163,11 +166,46 @@ def _course(
         lapses = Persistency(None, None, (), None, settings.step_months)
     outstanding = settings.due == "outstanding"
     curve = basis.curves[interest]
-    course = Course(position.u, settings.step_months, outstanding, life, lapses, document.claims, curve)
+    course = Course(position.u, settings.step_months, outstanding, lives, lapses, document.claims, curve)
     for share, what in ((course.alive_now, "alive"), (course.in_force_now, "in force")):
         if share <= 0:
             raise NotValued(f"nobody {what} at the valuation date", "commencement_date", None, f"by the basis, {share}")
     return course, RulesUsed(mortality + 1, lapse + 1, interest + 1, expenses)
+
+
+def _lives(policy: Policy, age: Fraction, position: Position, design: Design, basis: Basis) -> tuple[int, Lives]:
+    """Return the position of the mortality rule of the first life, or the only one left, and the lives."""
+    mortality = basis.document.mortality
+    now = str(policy.get("lives"))
+    if design.states == "one life":
+        now = "none" if now == "none" else ""
+    elif now not in LIVES:
+        raise NotValued("lives not known", "lives", now, "both, first, second or none")
+    ages = {"first": age}
+    if now in ("both", "second"):
+        ages["second"] = age_at(_date(policy, "second_birth_date"), _date(policy, "commencement_date"), mortality.age)
+    found: dict[str, tuple[int, Survival]] = {}
+    for life in ("first", "second") if now == "both" else ("second" if now == "second" else "first",):
+        place = _fit("mortality", mortality.rule, _seen(policy, life))
+        rule, table = mortality.rule[place], basis.rates[place]
+        if now == "none":
+            # Nobody is left to look at rates, so that any age does.
+            ages[life] = Fraction(table.first_age - rule.added_years)
+        rates = yearly_rates(rule, table, ages[life])
+        found[life] = place, Survival(rates, mortality.fractions)
+    place, first = found["second" if now == "second" else "first"]
+    second = found["second"][1] if now == "both" else None
+    return place, Lives(first, second, LIVES.get(now, ALIVE), mortality.common_shock, position.u)
+
+
+def _seen(policy: Policy, life: str) -> dict[str, Any]:
+    """Return what mortality rules see: of the second life, its own columns in place of the first one's."""
+    seen = {**policy, "life": life}
+    if life == "second":
+        for column in policy:
+            if f"second_{column}" in policy:
+                seen[column] = policy[f"second_{column}"]
+    return seen
 
 
 def _fit(place: str, rules: list[Any], policy: Policy) -> int:
@@ -183,15 +221,26 @@ def _streams(
 ) -> list[PolicyStream]:
     """Return the streams of the design and those that the expense items add, in this order."""
     streams = design_streams(design, policy, course)
-    ends = [stream.terms.end for stream in streams]
+    ends = [end for stream in streams for end in _ends(stream, course)]
     if all(end is not None and end < course.u for end in ends):
         raise NotValued("matured", f"product {design.code}", None, "something is to come after the valuation date")
     own = {stream.name for stream in design.stream if stream.of is None}
     added: list[PolicyStream] = []
     for item in basis.document.expense:
         rule = item.rule[rules.expenses[item.name] - 1]
-        added += expense_streams(item, rule, streams, own, course, commencement)
+        added += expense_streams(item, rule, streams, own, running(design), course, commencement)
     return streams + added
+
+
+def _ends(stream: PolicyStream, course: Course) -> list[int | None]:
+    """Return the end of a stream that may still be paid, be it for its guarantee only; else nothing."""
+    terms = stream.terms
+    if course.lives.may_be(terms.states):
+        return [terms.end]
+    if not terms.guaranteed or terms.start >= course.u or not course.lives.may_have_been(terms.states):
+        return []
+    guaranteed = terms.start + terms.guaranteed
+    return [guaranteed if terms.end is None else min(terms.end, guaranteed)]
 
 
 def _payments(streams: list[PolicyStream], course: Course, commencement: date) -> list[Payment]:

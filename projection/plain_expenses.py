@@ -7,6 +7,7 @@ from datetime import date
 
 from assumptions.expenses import Expense, ExpenseRule
 from assumptions.rules import first_fit
+from portfolios.states import States
 
 from .plain_dates import month_after
 from .plain_faults import NotValued
@@ -29,12 +30,14 @@ def expense_streams(
     rule: ExpenseRule,
     streams: list[PolicyStream],
     own: set[str],
+    running: States,
     course: Course,
     commencement: date,
 ) -> Iterator[PolicyStream]:
     """Yield what one item of expense adds to the streams of a design.
 
-    ``own`` names the streams that have terms of their own, that is, are not a share of another one.
+    ``own`` names the streams that have terms of their own, that is, are not a share of another one; running: the
+    states in which a contract on two lives runs.
     """
 
     def by_year(occasion: Occasion) -> float:
@@ -46,8 +49,10 @@ def expense_streams(
         return item.inflation.factor(*month_after(commencement, occasion.point))
 
     if item.per == "policy":
-        terms = _contract([stream.terms for stream in streams if stream.name in own], item.a_year)
+        mine = [stream.terms for stream in streams if stream.name in own]
+        terms = _contract([one for one in mine if course.lives.may_be(one.states)], item.a_year)
         if terms is not None:
+            terms = terms._replace(states=running)
             figure: Figure = lambda occasion: by_year(occasion) / item.a_year  # noqa: E731
             yield _stream(item, terms, occasions(terms, course), figure, grown)
         return

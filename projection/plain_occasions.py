@@ -10,9 +10,10 @@ from typing import Literal, NamedTuple
 
 from assumptions.basis import ClaimDelay, Claims
 from assumptions.interest import Curve
+from portfolios.states import States
 
 from .plain_lapse import Persistency
-from .plain_life import Survival
+from .plain_lives import Lives
 
 Way = Literal["advance", "arrears", "once", "death", "lapse"]
 
@@ -21,7 +22,8 @@ class Terms(NamedTuple):
     """When one stream of one policy is paid; months from commencement.
 
     end: None at the end of survival; guaranteed: months from the start; woolhouse: terms of the formula, 0
-    for payments at their dates; clock: month from which the relative amount counts its years.
+    for payments at their dates; clock: month from which the relative amount counts its years; states: of a
+    contract on two lives, while the stream is paid or which are left when it is.
     """
 
     way: Way
@@ -32,6 +34,7 @@ class Terms(NamedTuple):
     guaranteed: int = 0
     woolhouse: int = 0
     clock: int = 0
+    states: States | None = None
 
     @property
     def period(self) -> int:
@@ -65,7 +68,7 @@ class Course:
     u: Fraction
     step_months: int
     outstanding: bool
-    life: Survival
+    lives: Lives
     lapses: Persistency
     claims: Claims
     curve: Curve
@@ -75,7 +78,7 @@ class Course:
     """P(T)."""
 
     def __post_init__(self) -> None:
-        self.alive_now = self.life.at(self.u)
+        self.alive_now = self.lives.now
         self.in_force_now = self.lapses.at_valuation(self.u)
         self.due_now = int(self.u) if self.u.denominator == 1 else None
         """The point that falls on the valuation date, if any."""
@@ -84,7 +87,8 @@ class Course:
         self._months_passed = float(self.u)
         self._discount: dict[float, float] = {}
         now = {self.due_now: 1.0} if self.due_now is not None else {}
-        self._alive, self._in_advance, self._in_arrears = dict(now), dict(now), dict(now)
+        self._in_advance, self._in_arrears = dict(now), dict(now)
+        self._alive: dict[tuple[int, States | None], float] = {}
 
     @property
     def _still_due(self) -> bool:
@@ -100,11 +104,11 @@ class Course:
             self._discount[months] = self.curve.factor(self.years_to(months))
         return self._discount[months]
 
-    def alive(self, point: int) -> float:
-        """Return L(g) / L(T), 1 on the valuation date."""
-        if point not in self._alive:
-            self._alive[point] = self.life.at(point) / self.alive_now
-        return self._alive[point]
+    def alive(self, point: int, states: States | None) -> float:
+        """Return L(g) / L(T), or the probability of the states on two lives."""
+        if (point, states) not in self._alive:
+            self._alive[point, states] = self.lives.probability(point, states)
+        return self._alive[point, states]
 
     def in_force(self, point: int, way: Way) -> float:
         """Return P / P(T) for a payment while alive or once at a point, 1 on the valuation date."""
@@ -136,12 +140,12 @@ def last_point(terms: Terms, course: Course) -> int:
     Raises NotValued where the stream runs beyond the last age of a table that is not closed.
     """
     if terms.end is None:
-        end = course.life.end()
+        end = course.lives.end(terms.states)
         # The last deaths count in the step that ends with nobody left.
         on_move = terms.way in ("death", "lapse")
         return -(-end // course.step_months) * course.step_months if on_move else end
     if not terms.certain and terms.end > terms.start:
-        course.life.at(terms.end)
+        course.alive(terms.end, terms.states)
     return terms.end
 
 
@@ -151,6 +155,7 @@ def _at_their_dates(terms: Terms, course: Course, first: int, last: int) -> Iter
     arrears = period if terms.way == "arrears" else 0
     guaranteed = terms.start + terms.guaranteed
     certain = (1.0, 1.0) if terms.certain else _factor_of_guarantee(terms, course)
+    possible = course.lives.may_be(terms.states)
     for month in range(first, last, period):
         point = month + arrears
         if point < course.next_point or point > last:
@@ -158,16 +163,24 @@ def _at_their_dates(terms: Terms, course: Course, first: int, last: int) -> Iter
         inside = point <= guaranteed if arrears else point < guaranteed
         if terms.certain or inside:
             survival, persistency = certain
+        elif possible:
+            survival, persistency = course.alive(point, terms.states), course.in_force(point, terms.way)
         else:
-            survival, persistency = course.alive(point), course.in_force(point, terms.way)
+            continue
         yield Occasion(point, point, month, 1.0, survival, persistency)
 
 
 def _factor_of_guarantee(terms: Terms, course: Course) -> tuple[float, float]:
-    # Survival and persistency to the start of the stream; 1 once it has started.
-    if terms.guaranteed == 0 or terms.start <= course.u:
+    # Survival and persistency to the start of the stream; 1 once it has started in one of its states.
+    if terms.guaranteed == 0:
         return 1.0, 1.0
-    return course.alive(terms.start), course.in_force(terms.start, "advance")
+    if terms.start == course.u:
+        return _now(terms, course), 1.0
+    if terms.start < course.u:
+        return (1.0, 1.0) if course.lives.may_have_been(terms.states) else (0.0, 1.0)
+    if not course.lives.may_be(terms.states):
+        return 0.0, 1.0
+    return course.alive(terms.start, terms.states), course.in_force(terms.start, "advance")
 
 
 def _once(terms: Terms, course: Course) -> Iterator[Occasion]:
@@ -178,7 +191,7 @@ def _once(terms: Terms, course: Course) -> Iterator[Occasion]:
     if terms.certain:
         yield Occasion(point, point, month, 1.0, 1.0, 1.0)
     else:
-        yield Occasion(point, point, month, 1.0, course.alive(point), course.in_force(point, "once"))
+        yield Occasion(point, point, month, 1.0, course.alive(point, terms.states), course.in_force(point, "once"))
 
 
 def _moves(terms: Terms, course: Course) -> Iterator[Occasion]:
@@ -191,9 +204,9 @@ def _moves(terms: Terms, course: Course) -> Iterator[Occasion]:
         # The first step ahead, whole or broken, starts on the valuation date: all are alive and in force.
         broken = point == first
         start = float(course.u) if broken else float(point - step)
-        alive = 1.0 if broken else course.alive(point - step)
+        alive = _now(terms, course) if broken else course.alive(point - step, terms.states)
         in_force = 1.0 if broken else course.lapses.at(point - step) / course.in_force_now
-        alive_after = course.alive(point)
+        alive_after = course.alive(point, terms.states)
         in_force_after = course.lapses.at(point) / course.in_force_now
         if terms.way == "death":
             survival = alive - alive_after
@@ -204,6 +217,11 @@ def _moves(terms: Terms, course: Course) -> Iterator[Occasion]:
             persistency = in_force - in_force_after
             paid = point
         yield Occasion(point, paid, point - step, 1.0, survival, persistency)
+
+
+def _now(terms: Terms, course: Course) -> float:
+    """1 if the contract is in one of the stream's states on the valuation date, else 0."""
+    return 1.0 if terms.states is None or course.lives.state in terms.states else 0.0
 
 
 def _claim_paid(claims: Claims, start: float, end: int) -> float:
@@ -234,7 +252,7 @@ def _by_woolhouse(terms: Terms, course: Course) -> Iterator[Occasion]:
         for point, weight, sign in ((first, at_start, -1.0), (last, at_end, 1.0)):
             if third:
                 weight += sign * third * _decline(point, course)
-            survival, persistency = course.alive(point), course.in_force(point, terms.way)
+            survival, persistency = course.alive(point, terms.states), course.in_force(point, terms.way)
             # An amount is one of m payments a year; the formula's terms are amounts of a year.
             yield Occasion(point, point, first, m * weight, survival, persistency)
 
@@ -248,9 +266,9 @@ def _lies_ahead(first: int, terms: Terms, course: Course) -> bool:
 def _decline(point: int, course: Course) -> float:
     """Return mu + delta at a point, the forces of mortality (0 where nobody is left) and of interest."""
     t = course.years_to(point)
-    curve = course.curve
+    curve, life = course.curve, course.lives.first
     if t < 1:
         delta = math.log(curve.factor(t) / curve.factor(t + 1))
     else:
         delta = math.log(curve.factor(t - 1) / curve.factor(t + 1)) / 2
-    return delta + (course.life.force(point) if course.life.at(point) > 0 else 0.0)
+    return delta + (life.force(point) if life.at(point) > 0 else 0.0)

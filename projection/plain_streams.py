@@ -8,10 +8,12 @@ from dataclasses import dataclass
 from typing import Any, Literal
 
 from portfolios.designs import AtAge, Design, Share, Stream
+from portfolios.states import States
 
 from .plain_dates import first_point_at_age
 from .plain_faults import NotValued
 from .plain_lapse import TOLERANCE
+from .plain_lives import states_of
 from .plain_occasions import Course, Occasion, Terms, Way, last_point, occasions
 
 Policy = Mapping[str, Any]
@@ -22,6 +24,10 @@ PART_OF_KIND: dict[str, Part] = {
     "commission": "expenses",
     "premium": "premiums",
 }
+
+
+UNFIT = ("end before start", "duration not in whole periods", "duration not in whole years")
+"""Reasons why a stream's dates, each of them fine, do not go together."""
 
 
 @dataclass
@@ -50,14 +56,23 @@ def design_streams(design: Design, policy: Policy, course: Course) -> list[Polic
 
     Raises NotValued where a column of the policy makes no sense for its stream.
     """
-    bases = {stream.name: _own(stream, policy, course) for stream in design.stream if stream.of is None}
+    own = [stream for stream in design.stream if stream.of is None]
+    bases = {stream.name: _own(stream, states_of(stream, design), policy, course) for stream in own}
     return [
         bases[stream.name] if stream.of is None else _share_of(stream, bases[stream.of]) for stream in design.stream
     ]
 
 
-def _own(stream: Stream, policy: Policy, course: Course) -> PolicyStream:
-    terms = terms_of(stream, policy, course.step_months)
+def _own(stream: Stream, states: States | None, policy: Policy, course: Course) -> PolicyStream:
+    guaranteed = stream.guarantee is not None and course.lives.may_have_been(states)
+    possible = course.lives.may_be(states) or guaranteed
+    try:
+        terms = terms_of(stream, policy, course.step_months)._replace(states=states)
+    except NotValued as fault:
+        if possible or fault.reason not in UNFIT:
+            raise
+        # Nobody minds the dates of a stream that cannot be paid any more.
+        terms = Terms("once", False, 0, 0, states=states)
     last_point(terms, course)
     amount = number(policy, stream.amount, f"stream '{stream.name}' needs an amount")
     if isinstance(stream.amount, str) and amount < 0:
@@ -75,7 +90,7 @@ def _own(stream: Stream, policy: Policy, course: Course) -> PolicyStream:
         PART_OF_KIND[stream.part],
         stream.direction,
         terms,
-        occasions(terms, course),
+        occasions(terms, course) if possible else [],
         lambda _: amount,
         lambda occasion: relative_amount(stream, terms, rate, occasion.month) if varies else 1.0,
     )
@@ -102,7 +117,7 @@ def _share_of(stream: Stream, base: PolicyStream) -> PolicyStream:
 
 def terms_of(stream: Stream, policy: Policy, step_months: int) -> Terms:
     """Return when a stream is paid. Raises NotValued for durations that do not fit it."""
-    way: Way = stream.on or stream.paid
+    way: Way = stream.paid if stream.on is None else "lapse" if stream.on == "lapse" else "death"
     start = _months(stream.from_, stream, policy, step_months)
     end = None if stream.to is None else _months(stream.to, stream, policy, step_months)
     if way == "once":

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from dataclasses import dataclass, field, replace
 from itertools import pairwise
 from typing import Any
@@ -16,6 +16,7 @@ from portfolios.designs import AtAge, Design, Stream
 
 from . import streams as s
 from .cells import Cell
+from .lives import Terms, begun, probability, running, states_of
 from .pool import ONES
 from .relative import RelativeRows, pattern_of, shape_of
 from .slots import Slots
@@ -64,6 +65,9 @@ class _Record:
     clip_to: int = s.FOR_EVER
     whole: int = 0
     own: int = 1
+    life: int = s.FIRST
+    term: float = 1.0
+    """Factor of the life's curve in the probability of the states that the stream depends on."""
 
     def clipped(self, begin: int, end: int) -> _Record:
         """The record for payments of months ``begin`` to ``end`` from commencement only."""
@@ -92,14 +96,14 @@ class Plans:
     segments: NDArray[Any] = field(default_factory=lambda: np.zeros(0, s.SEGMENT))
     ranges: NDArray[np.int64] = field(default_factory=lambda: np.zeros((0, 2), np.int64))
     accounts: dict[Account, int] = field(default_factory=dict)
-    _known: dict[tuple[int, tuple[int, ...], str], tuple[int, int]] = field(default_factory=dict)
+    _known: dict[tuple[int, tuple[int, ...], str, str], tuple[int, int]] = field(default_factory=dict)
 
     def add(self, cell: Cell) -> None:
         """Add the plan of the next cell; a cell without rules gets an empty one.
 
         Cells that differ only in rates share their plan.
         """
-        key = (cell.design, cell.expenses, cell.missing)
+        key = (cell.design, cell.expenses, cell.missing, cell.lives)
         if key not in self._known:
             records = [] if cell.missing else list(self._records(self.designs[cell.design], cell))
             begin = len(self.segments)
@@ -136,11 +140,15 @@ class Plans:
     def _records(self, design: Design, cell: Cell) -> Iterator[_Record]:
         made: dict[str, list[_Record]] = {}
         for stream in sorted(design.stream, key=lambda stream: stream.of is not None):
-            records = self._stream(design, stream) if stream.of is None else self._share(design, stream, made)
-            made[stream.name] = list(records)
+            if stream.of is None:
+                states = running(design) if stream.on == "lapse" else states_of(stream)
+                terms = probability(states, cell.lives)
+                made[stream.name] = list(_on_lives(self._stream(design, stream), terms, begun(states, cell.lives)))
+            else:
+                made[stream.name] = list(self._share(design, stream, made))
             yield from made[stream.name]
         for item, rule in zip(self.basis.document.expense, cell.expenses, strict=True):
-            yield from self._expense(design, item, rule, made)
+            yield from self._expense(design, item, rule, made, probability(running(design), cell.lives))
 
     def _line(self, design: Design, name: str, part: str, direction: str) -> int:
         return self.lines.setdefault(Line(design.code, name, part, direction), len(self.lines))
@@ -166,7 +174,7 @@ class Plans:
         else:
             record = replace(record, relative=self.relative.fixed(shape))
         if stream.on is not None:
-            yield replace(record, when=s.DEATH if stream.on == "death" else s.LAPSE)
+            yield replace(record, when=s.LAPSE if stream.on == "lapse" else s.DEATH)
         elif stream.paid == "once":
             yield replace(record, when=s.ONCE, before=1, end=start)
         else:
@@ -207,28 +215,33 @@ class Plans:
                     yield replace(piece, span_from=begin, span_to=end)
             begin = end
 
-    def _expense(self, design: Design, item: Expense, rule: int, made: dict[str, list[_Record]]) -> Iterator[_Record]:
+    def _expense(
+        self, design: Design, item: Expense, rule: int, made: dict[str, list[_Record]], running: Terms
+    ) -> Iterator[_Record]:
         line = self._line(design, item.name, "expense", "out")
         figures = item.rule[rule]
         calendar = -1 if item.inflation is None else self.relative.inflating(item.inflation)
         for begin, end, figure in ((0, 12, figures.first_year), (12, s.FOR_EVER, figures.later_years)):
-            for record in self._charged(design, item, made) if figure else ():
+            for record in self._charged(design, item, made, running) if figure else ():
                 charged = replace(record, line=line, part=s.EXPENSES, own=0, whole=0, factor=record.factor * figure)
                 if calendar >= 0:
                     charged = replace(charged, calendar=calendar)
                 yield charged.clipped(begin, end)
 
-    def _charged(self, design: Design, item: Expense, made: dict[str, list[_Record]]) -> Iterator[_Record]:
+    def _charged(
+        self, design: Design, item: Expense, made: dict[str, list[_Record]], running: Terms
+    ) -> Iterator[_Record]:
         """The records whose payments an expense item is charged on."""
         own = [record for stream in design.stream if stream.of is None for record in made[stream.name]]
         if item.per == "policy":
             if any(_runs(record) for record in own):
                 start, period = self.slots.duration(0.0), self.slots.frequency(item.a_year)
-                yield _Record(start=start, end=self._contract_end(own), period=period, power=1)
+                runs = _Record(start=start, end=self._contract_end(own), period=period, power=1)
+                yield from _on_lives([runs], running, False)
         elif item.per == "claim":
             for record in own:
                 if record.part == s.BENEFITS and record.when in (s.DEATH, s.ONCE):
-                    yield replace(record, amount=-1, factor=1.0, relative=ONES, changing=-1)
+                    yield replace(record, amount=-1, factor=record.term, relative=ONES, changing=-1)
         else:
             part = s.PREMIUMS if item.per == "premium" else s.BENEFITS
             for stream in design.stream:
@@ -241,9 +254,23 @@ class Plans:
         return -1 if -1 in ends or not ends else self.slots.latest(tuple(sorted(ends)))
 
 
+def _on_lives(records: Iterable[_Record], terms: Terms, begun: bool) -> Iterator[_Record]:
+    """Records once for each term of the probability that they depend on; what is certain stays as it is.
+
+    begun: whether the stream may have begun; where nobody is left for it, its guarantee is still paid.
+    """
+    for record in records:
+        if record.cover == s.CERTAIN:
+            yield record
+        elif record.cover == s.GUARANTEED and not terms and begun:
+            yield replace(record, cover=s.BEGUN)
+        for life, factor in terms:
+            yield replace(record, life=life, factor=record.factor * factor, term=factor)
+
+
 def _runs(record: _Record) -> bool:
     """Whether the contract runs on until the record's end: paid while alive, once or on death."""
-    return record.when == s.ONCE or (record.cover != s.CERTAIN and record.when != s.LAPSE)
+    return record.when == s.ONCE or (record.cover not in (s.CERTAIN, s.BEGUN) and record.when != s.LAPSE)
 
 
 def segments_of(records: list[_Record]) -> Iterator[tuple[_Record, list[_Record]]]:
@@ -255,7 +282,7 @@ def segments_of(records: list[_Record]) -> Iterator[tuple[_Record, list[_Record]
     """
     alike: dict[_Record, list[_Record]] = {}
     for record in records:
-        shape = replace(record, line=0, part=0, factor=1.0, own=0, whole=0, clip_from=0, clip_to=s.FOR_EVER)
+        shape = replace(record, line=0, part=0, factor=1.0, term=1.0, own=0, whole=0, clip_from=0, clip_to=s.FOR_EVER)
         alike.setdefault(shape, []).append(record)
     for shape, members in alike.items():
         bounds = sorted({bound for record in members for bound in (record.clip_from, record.clip_to)})

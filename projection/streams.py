@@ -22,11 +22,19 @@ ALIVE: Final = 0
 CERTAIN: Final = 1
 GUARANTEED: Final = 2
 AFTER_GUARANTEE: Final = 3
+BEGUN: Final = 4
 
 OWN_DATES: Final = 0
 BROKEN_YEAR: Final = 1
 WHOLE_YEARS: Final = 2
 LAST_YEAR: Final = 3
+
+FIRST: Final = 0
+SECOND: Final = 1
+JOINT: Final = 2
+
+NO_SECOND: Final = -1
+NOBODY: Final = -2
 
 BENEFITS: Final = 0
 EXPENSES: Final = 1
@@ -43,7 +51,8 @@ SEGMENT = np.dtype(
         ("account", "i8"),  # where its expected cash flows are gathered
         ("when", "i8"),  # ADVANCE ... THIRD_TERM
         ("before", "i8"),  # 1: paid before the lapses of the same point
-        ("cover", "i8"),  # ALIVE ... AFTER_GUARANTEE
+        ("cover", "i8"),  # ALIVE ... BEGUN
+        ("life", "i8"),  # FIRST ... JOINT: whose survival it depends on
         ("window", "i8"),  # OWN_DATES, or the part of a stream that Woolhouse's formula leaves or takes
         ("amount", "i8"),  # row of the money matrix; -1: 1
         ("factor", "f8"),  # times this
@@ -83,6 +92,18 @@ SURVIVAL = np.dtype(
     align=True,
 )
 
+LIFE = np.dtype(
+    [
+        ("living", "i8"),  # place of survival at point 0, in the pool or for both lives in the room to work in
+        ("over", "i8"),  # last point of the row
+        ("last", "i8"),  # last point that counts
+        ("closed", "i8"),  # 1: nobody is left at the end
+        ("alive", "f8"),  # survival to the valuation date
+    ],
+    align=True,
+)
+"""What a policy's streams need to know of a life, or of both together."""
+
 POLICY = np.dtype(
     [
         ("k", "i8"),  # months passed at the valuation date
@@ -91,7 +112,8 @@ POLICY = np.dtype(
         ("shift", "i8"),  # calendar months from that of the valuation date to that of commencement
         ("segments", "i8"),  # first segment of its cell
         ("segments_end", "i8"),  # behind the last of them
-        ("survival", "i8"),  # record of its survival
+        ("survival", "i8"),  # record of its survival, or of that of the first life, or of the only one left
+        ("second", "i8"),  # record of that of the second life, NO_SECOND or NOBODY
         ("held", "i8"),  # place of persistency at g = 0; one more lies in front for g = -1
         ("dead", "i8"),  # place of the weight of deaths of the step that ends at g = 0
         ("lapsing", "i8"),  # place of the share that lapses at g = 0

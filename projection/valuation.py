@@ -26,7 +26,8 @@ from portfolios.reasons import Reason
 from . import loops
 from .engine import Engine, Valued
 from .gate import RunStopped, check_gate
-from .groups import Groups
+from .groups import Groups, check_names
+from .lives import rule_columns
 from .plain_check import Sample
 from .results import MONEY_COLUMNS, Outcome, PolicySink, Progress, no_progress
 from .settings import Settings
@@ -85,18 +86,19 @@ class _Valuation:
 
     def __init__(self, extract: Extract, designs: list[Design], basis: Basis, settings: Settings, plan: Plan) -> None:
         self.extract, self.designs, self.basis, self.settings, self.plan = extract, designs, basis, settings, plan
+        check_names(plan.group_by)
         self.group_by = plan.group_by
         until = [rule.until for rule in basis.document.lapse.rule] if basis.document.lapse else []
         numbers = [*number_columns(designs), *(column for column in until if isinstance(column, str))]
-        rule_columns = basis.document.rule_columns()
-        self.needed = needed_columns(designs, [*numbers, *rule_columns, *self.group_by])
+        asked = rule_columns(basis, designs, extract.column_names)
+        self.needed = needed_columns(designs, [*numbers, *asked, *self.group_by])
         extract.need(self.needed, numbers=numbers)
         self.amounts = [name for name in extract.column_names if name in BY_NAME and BY_NAME[name].kind == "money"]
         self.needed = tuple(dict.fromkeys([*self.needed, *self.amounts]))
         extract.need(self.needed, numbers=numbers)
         self.groups = Groups(self.group_by)
         self.seconds: dict[str, float] = {}
-        self.kinds = {column: str(extract.column_kind(column)) for column in rule_columns}
+        self.kinds = {column: str(extract.column_kind(column)) for column in asked}
         self.read = 0
 
     def run(self, sink: PolicySink | None, progress: Progress) -> Outcome:

@@ -14,8 +14,7 @@ GENERAL = (
 )
 
 ONE_SCENARIO = (
-    "The figures rest on one deterministic scenario. It says nothing of the time value of options and "
-    "guarantees."
+    "The figures rest on one deterministic scenario. It says nothing of the time value of options and guarantees."
 )
 
 OUTSIDE_THE_MODEL = (

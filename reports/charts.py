@@ -41,7 +41,8 @@ class Axis:
 def axis_for(low: float, high: float, steps: int = 6) -> Axis:
     """Return an axis that holds 0, ``low`` and ``high`` with about so many steps of 1, 2 or 5 times 10^n."""
     low, high = min(0.0, low), max(0.0, high)
-    if high == low:
+    if high - low < 1e-9:
+        # Nothing, or so little that dividing it would leave nothing.
         high = 1.0
     raw = (high - low) / steps
     power = 10.0 ** math.floor(math.log10(raw))
@@ -65,9 +66,7 @@ def run_off_chart(years: Sequence[str], out: Sequence[float], in_: Sequence[floa
 
     slot = plot / max(1, len(years))
     bar = max(1.0, slot * 0.78)
-    marks: list[str] = [
-        _grid_line(left, WIDTH - right, y(tick), axis.label(abs(tick))) for tick in axis.ticks
-    ]
+    marks: list[str] = [_grid_line(left, WIDTH - right, y(tick), axis.label(abs(tick))) for tick in axis.ticks]
     for i, year in enumerate(years):
         x = left + i * slot + (slot - bar) / 2
         marks.append(_bar(x, y(out[i]), bar, y(0) - y(out[i]), "out", f"{year}: {amount(out[i], 0)} out"))

@@ -43,9 +43,7 @@ def check_run(run: Path, progress: Callable[[int, int], None], threads: int | No
     verdict = [
         f"{count(left_out)} of {counted(outcome.read, 'policy', 'policies')} would not be valued"
         f" ({_share(left_out, outcome.read)}; the run stops above {limit:.2%}).",
-        "The run can go ahead."
-        if ready
-        else "The run would stop. Correct the extract or the documents first.",
+        "The run can go ahead." if ready else "The run would stop. Correct the extract or the documents first.",
     ]
     return Checked((*_read(prepared), "", *_exceptions(outcome), "", *verdict), ready)
 

@@ -9,8 +9,11 @@ from typing import Annotated, NoReturn
 import typer
 
 from .exits import FAILED, WRONG_INPUT, end_politely, run_app
-from .figures import visible
-from .installation import strangers
+from .figures import short, visible
+from .installation import strangers, without_pandas
+
+MOST_FAULTS = 40
+"""Faults that ``verify`` lists; they are as many as there are groups where a table was exchanged."""
 
 app = typer.Typer(
     name="duecourse",
@@ -35,17 +38,13 @@ app = typer.Typer(
 RunDocumentPath = Annotated[Path, typer.Argument(metavar="RUN", help="The run document, a TOML file.")]
 Threads = Annotated[
     int | None,
-    typer.Option(
-        metavar="N", min=1, max=1024, help="Threads to value with; by default as many as there are cores."
-    ),
+    typer.Option(metavar="N", min=1, max=1024, help="Threads to value with; by default as many as there are cores."),
 ]
 
 
 @app.command(short_help="Write an invented office, ready to run.")
 def demo(
-    folder: Annotated[
-        Path, typer.Argument(metavar="FOLDER", help="Folder to write; must not exist or be empty.")
-    ],
+    folder: Annotated[Path, typer.Argument(metavar="FOLDER", help="Folder to write; must not exist or be empty.")],
     policies: Annotated[
         int, typer.Option(metavar="N", min=1, max=100_000_000, help="Policies in the extract.")
     ] = 10_000,
@@ -96,9 +95,7 @@ def check(run: RunDocumentPath, threads: Threads = None) -> None:
 @app.command(short_help="The month-end run: value all policies, leave a run folder.")
 def reserve(
     run: RunDocumentPath,
-    out: Annotated[
-        Path, typer.Option(metavar="FOLDER", help="Run folder to write: complete, or not at all.")
-    ],
+    out: Annotated[Path, typer.Option(metavar="FOLDER", help="Run folder to write: complete, or not at all.")],
     replace: Annotated[bool, typer.Option("--replace", help="Replace a finished run of this name.")] = False,
     threads: Threads = None,
     no_workbook: Annotated[bool, typer.Option("--no-workbook", help="Leave out report.xlsx.")] = False,
@@ -123,20 +120,17 @@ def reserve(
     from .progress import progress_on
     from .reserve_run import reserve_run
 
-    report = reserve_run(
-        run, out, progress_on, replace_finished=replace, threads=threads, workbook=not no_workbook
-    )
+    report = reserve_run(run, out, progress_on, replace_finished=replace, threads=threads, workbook=not no_workbook)
     print(visible(summary(report, str(out))))
 
 
 @app.command(short_help="Show the working of one policy.")
 def explain(
     run: RunDocumentPath,
-    policy: Annotated[
-        str, typer.Argument(metavar="POLICY", help="Identifier of the policy, as in the extract.")
-    ],
+    policy: Annotated[str, typer.Argument(metavar="POLICY", help="Identifier of the policy, as in the extract.")],
     out: Annotated[
-        Path | None, typer.Option(metavar="FILE", help="Write the working to this text file.")
+        Path | None,
+        typer.Option(metavar="FILE", help="Write the working to this file: a workbook if it ends in .xlsx, else text."),
     ] = None,
 ) -> None:
     """Show the working of one policy: every date, age, rate, probability, discount factor and payment.
@@ -145,17 +139,18 @@ def explain(
     Example:
         duecourse explain office/month-end.toml QM-000000011-5
         duecourse explain office/month-end.toml QM-000000011-5 --out working.txt
+        duecourse explain office/month-end.toml QM-000000011-5 --out working.xlsx
     """
+    from .disk import write_whole
+    from .explain import as_workbook, explain_in_workbook
     from .explain import explain as explain_policy
 
-    text = explain_policy(run, policy)
     if out is None:
-        print(text)
-    else:
-        from .disk import write_text
-
-        write_text(out, text.rstrip("\n") + "\n")
-        print(f"The working of {policy} is in {out}.")
+        print(explain_policy(run, policy), end="")
+        return
+    content = explain_in_workbook(run, policy) if as_workbook(out) else explain_policy(run, policy).encode()
+    write_whole(out, content)
+    print(visible(f"The working of {short(policy)} is in {out}."))
 
 
 @app.command(short_help="Check a finished run folder against its record.")
@@ -178,11 +173,13 @@ def verify(
     from .verify import verify as verify_folder
 
     found = verify_folder(folder, inputs, not no_inputs)
-    print(
-        "\n".join([*(f"ok     {line}" for line in found.sound), *(f"note   {line}" for line in found.notes)])
-    )
-    for line in found.faults:
+    for kind, lines in (("ok    ", found.sound), ("note  ", found.notes)):
+        for line in lines:
+            print(visible(f"{kind} {line}"))
+    for line in found.faults[:MOST_FAULTS]:
         print(visible(f"WRONG  {line}"))
+    if len(found.faults) > MOST_FAULTS:
+        print(f"WRONG  and {len(found.faults) - MOST_FAULTS:,} more of the kind")
     print(f"{folder}: {'as recorded' if found.holds else 'NOT as recorded'}.")
     if not found.holds:
         raise typer.Exit(FAILED)
@@ -195,6 +192,7 @@ def main() -> NoReturn:
         print("\n".join(faults), file=sys.stderr)
         sys.exit(WRONG_INPUT)
     end_politely()
+    without_pandas()
     sys.exit(run_command())
 
 

@@ -42,9 +42,7 @@ def _groups(report: Report) -> list[str]:
     if hidden > 0:
         lines.insert(-2, f"... and {counted(hidden, 'more group')} in totals.parquet")
     if report.rounding:
-        lines.append(
-            f"Parts are rounded one by one; they differ from the reserve by {report.money(report.rounding)}."
-        )
+        lines.append(f"Parts are rounded one by one; they differ from the reserve by {report.money(report.rounding)}.")
     return lines
 
 

@@ -5,9 +5,11 @@ from __future__ import annotations
 import contextlib
 import errno
 import os
-import secrets
+import shutil
 from collections.abc import Iterator
 from pathlib import Path
+
+from portfolios.unfinished import clean_unfinished, new_unfinished, unlock
 
 
 class RunFolderError(ValueError):
@@ -29,17 +31,23 @@ def sync(path: Path) -> None:
         os.close(descriptor)
 
 
-def write_text(path: Path, text: str) -> None:
-    """Write a text file as a whole or not at all. Raises RunFolderError."""
-    beside = path.with_name(f".{path.name}.unfinished-{secrets.token_hex(4)}")
+def write_whole(path: Path, content: bytes) -> None:
+    """Write a file as a whole or not at all. Raises RunFolderError.
+
+    It is written in a hidden folder beside its place; what a killed command left there goes first.
+    """
     with plainly(path):
+        clean_unfinished(path)
+        folder, lock = new_unfinished(path)
         try:
-            beside.write_text(text, encoding="utf-8")
+            beside = folder / path.name
+            beside.write_bytes(content)
             sync(beside)
             beside.replace(path)
-        except BaseException:
-            beside.unlink(missing_ok=True)
-            raise
+            sync(path.parent)
+        finally:
+            shutil.rmtree(folder, ignore_errors=True)
+            unlock(lock)
 
 
 @contextlib.contextmanager

@@ -1,22 +1,46 @@
-"""The working of one policy, found in the extract by its identifier."""
+"""The working of one policy, found in the extract by its identifier: as text or as a workbook."""
 
 from __future__ import annotations
 
+import contextlib
+from collections.abc import Iterator
+from dataclasses import dataclass
 from pathlib import Path
+from typing import Any
 
+from assumptions.basis import Basis
 from portfolios.checks import Checks, needed_columns
 from portfolios.chunk import Chunk
+from portfolios.designs import Design
 from portfolios.exception_rows import exception_rows, sentence
 from portfolios.extract import Extract
 from portfolios.identifiers import Duplicates
+from projection.lives import rule_columns
 from projection.plain_faults import NotValued
+from projection.settings import Settings
 from projection.working import working
 
 from .prepared import Prepared, prepare
 
+OTHER_WORKBOOKS = (".xls", ".xlsm", ".xlsb", ".ods")
+
 
 class ExplainError(ValueError):
     """A policy whose working cannot be shown."""
+
+
+@dataclass(frozen=True)
+class Asked:
+    """A policy that a run would value, and what it is to be valued by."""
+
+    policy: dict[str, Any]
+    design: Design
+    prepared: Prepared
+
+    @property
+    def parts(self) -> tuple[dict[str, Any], Design, Basis, Settings]:
+        """What a valuation by the plain implementation is asked."""
+        return self.policy, self.design, self.prepared.basis, self.prepared.document.settings
 
 
 def explain(run: Path, policy_id: str) -> str:
@@ -25,17 +49,46 @@ def explain(run: Path, policy_id: str) -> str:
     Raises DocumentError and ExtractError for wrong input, and ExplainError if the policy is not in the
     extract, or the run would list it as an exception: what a run does not value has no working either.
     """
+    asked = look_up(run, policy_id)
+    with _said_plainly(policy_id):
+        return working(*asked.parts)
+
+
+def explain_in_workbook(run: Path, policy_id: str) -> bytes:
+    """Return the working of a policy as a workbook. Raises what ``explain`` does."""
+    from .working_book import working_bytes
+    from .working_facts import work_out
+
+    asked = look_up(run, policy_id)
+    with _said_plainly(policy_id):
+        return working_bytes(work_out(*asked.parts), asked.prepared.document.currency)
+
+
+def as_workbook(out: Path) -> bool:
+    """Say whether a file is to be a workbook, by its name. Raises ExplainError for other kinds of workbook."""
+    if out.suffix.lower() in OTHER_WORKBOOKS:
+        raise ExplainError(f"{out}: workbooks are written as .xlsx only; any other name than .xlsx gives text")
+    return out.suffix.lower() == ".xlsx"
+
+
+def look_up(run: Path, policy_id: str) -> Asked:
+    """Return a policy and what it is valued by. Raises what ``explain`` does."""
     prepared = prepare(run)
-    needed = needed_columns(prepared.designs, prepared.basis.document.rule_columns())
+    asked = rule_columns(prepared.basis, prepared.designs, prepared.extract.column_names)
+    needed = needed_columns(prepared.designs, asked)
     prepared.extract.need(needed)
     policy = find_policy(prepared.extract, policy_id)
     place = _checked(prepared, policy, needed, policy_id)
+    return Asked(policy.policy(0), prepared.designs[place], prepared)
+
+
+@contextlib.contextmanager
+def _said_plainly(policy_id: str) -> Iterator[None]:
     try:
-        return working(
-            policy.policy(0), prepared.designs[place], prepared.basis, prepared.document.settings
-        )
+        yield
     except NotValued as error:
-        raise ExplainError(f"policy '{policy_id}' is not valued: {error}") from error
+        found = error.field if error.value is None else f"{error.field} is '{error.value}'"
+        raise ExplainError(f"policy '{policy_id}' is not valued: {error.reason}: {found}; {error.rule}") from error
 
 
 def find_policy(extract: Extract, policy_id: str) -> Chunk:

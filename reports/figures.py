@@ -6,7 +6,7 @@ import re
 from collections.abc import Iterable, Sequence
 from decimal import Decimal
 
-_DECEIVING = re.compile("[\x00-\x09\x0b-\x1f\x7f-\x9f\u200e\u200f\u2028-\u202e\u2066-\u2069]")
+_DECEIVING = re.compile("[\x00-\x09\x0b-\x1f\x7f-\x9f\u200e\u200f\u2028-\u202e\u2066-\u2069\ufffe\uffff]")
 
 
 def count(number: int) -> str:
@@ -89,8 +89,6 @@ def lines_up(rows: Iterable[Sequence[str]], right: Iterable[int] = (), gap: str 
         return []
     widths = [max(len(row[i]) for row in table if i < len(row)) for i in range(max(map(len, table)))]
     return [
-        gap.join(
-            cell.rjust(widths[i]) if i in flush else cell.ljust(widths[i]) for i, cell in enumerate(row)
-        ).rstrip()
+        gap.join(cell.rjust(widths[i]) if i in flush else cell.ljust(widths[i]) for i, cell in enumerate(row)).rstrip()
         for row in table
     ]

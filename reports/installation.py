@@ -1,11 +1,12 @@
-"""Whether the four packages are the ones that were installed together.
+"""Whether the four packages are the ones that were installed together; and pandas, which the command leaves out.
 
-Their names are plain words, so a user's own ``reports.py`` or a folder ``portfolios`` may stand before them.
+The packages' names are plain words, so a user's own ``reports.py`` or a folder ``portfolios`` may stand before them.
 """
 
 from __future__ import annotations
 
 import importlib.util
+import sys
 from pathlib import Path
 
 PACKAGES = ("assumptions", "portfolios", "projection", "reports")
@@ -40,3 +41,20 @@ def _place(name: str) -> Path | None:
     places = list(spec.submodule_search_locations or [])
     place = places[0] if places else spec.origin
     return Path(place).resolve() if place else None
+
+
+class _Hidden:
+    """Finds no pandas, so that an import of it fails as if it were not installed."""
+
+    def find_spec(self, name: str, path: object = None, target: object = None) -> None:
+        if name == "pandas":
+            raise ModuleNotFoundError("duecourse does not use pandas from the command line", name=name)
+
+
+def without_pandas() -> None:
+    """Have pyarrow go without pandas in this process.
+
+    At its first conversion of a Python value pyarrow imports pandas if it is installed, which takes half a
+    second. Nothing that the command does uses it; DataFrames are for notebooks.
+    """
+    sys.meta_path.insert(0, _Hidden())

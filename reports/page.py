@@ -23,7 +23,7 @@ MOST_INPUTS = 200
 def page(report: Report) -> str:
     """Return the page. Every text from the inputs is escaped, and its control characters become '?'."""
     counts = set(counted_cautions(report.outcome))
-    text = _template().render(
+    text = template().render(
         report=report,
         record=report.record,
         settings=report.outcome.settings,
@@ -56,9 +56,7 @@ def _bars(report: Report) -> Markup:
     titles = {design["code"]: design["title"] for design in report.record["designs"]}
     named = report.bar_group == "product"
     labelled = [(_label(name, titles.get(name, "") if named else ""), value) for name, value in rows]
-    return Markup(
-        bar_chart(f"Reserve by {words(report.bar_group or '')}", labelled, report.currency, report.decimals)
-    )
+    return Markup(bar_chart(f"Reserve by {words(report.bar_group or '')}", labelled, report.currency, report.decimals))
 
 
 def _label(code: str, title: str) -> str:
@@ -82,7 +80,8 @@ def _run_off(report: Report) -> Markup:
 
 
 @cache
-def _template() -> jinja2.Template:
+def template() -> jinja2.Template:
+    """Return the page's template, compiled when it is first asked for."""
     environment = jinja2.Environment(
         loader=jinja2.FileSystemLoader(Path(__file__).with_name("templates")),
         autoescape=True,

@@ -10,6 +10,7 @@ from assumptions.basis import Basis
 from portfolios.designs import Design
 from portfolios.extract import Extract, open_extract
 from projection.documents import DocumentError, read_basis, read_designs, read_run
+from projection.groups import check_names
 from projection.run_document import RunDocument
 
 from .sealed_files import digest_of
@@ -57,9 +58,7 @@ class Prepared:
         now = _stamps(self.extract, self.folder)
         for path, stamp in self.stamps.items():
             if now.get(path) != stamp:
-                raise DocumentError(
-                    f"{path}: changed while the run was reading it; run again when it is at rest"
-                )
+                raise DocumentError(f"{path}: changed while the run was reading it; run again when it is at rest")
 
 
 def prepare(run: Path) -> Prepared:
@@ -68,6 +67,7 @@ def prepare(run: Path) -> Prepared:
     Raises DocumentError or ExtractError, in that order of reading: run document, designs, basis, extract.
     """
     document = read_run(run)
+    check_groups(run, document)
     folder = run.parent
     designs_path, basis_path = folder / document.designs, folder / document.basis
     designs = read_designs(designs_path)
@@ -76,15 +76,20 @@ def prepare(run: Path) -> Prepared:
         ("run document", run.name),
         *(("design", design) for design in _design_names(document.designs, designs_path)),
         ("basis", document.basis),
-        *(
-            ("table of the basis", os.path.join(os.path.dirname(document.basis), name))
-            for name in basis.files
-        ),
+        *(("table of the basis", os.path.join(os.path.dirname(document.basis), name)) for name in basis.files),
     ]
     sealed = [_sealed(role, os.path.normpath(path), folder) for role, path in named]
     extract = open_extract(document.extract, folder)
     digests = tuple(item.sha256 for item in sealed if item.role == "design")
     return Prepared(run, document, designs, basis, extract, tuple(sealed), digests, _stamps(extract, folder))
+
+
+def check_groups(run: Path, document: RunDocument) -> None:
+    """Raise DocumentError where a column of the extract would stand beside a result of the same name."""
+    try:
+        check_names(document.group_by)
+    except DocumentError as error:
+        raise DocumentError(f"{run}: {error}") from None
 
 
 def _design_names(written: str, path: Path) -> list[str]:

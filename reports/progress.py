@@ -33,8 +33,7 @@ class LogLines(AbstractContextManager["LogLines"]):
         left = f", about {seconds((total - done) / rate)} left" if rate > 0 and total > done else ""
         moment = datetime.now(UTC).strftime("%Y-%m-%dT%H:%M:%SZ")
         print(
-            f"{moment}  {self._what}: {count(done)} of {count(total)} policies, "
-            f"{count(round(rate))} a second{left}",
+            f"{moment}  {self._what}: {count(done)} of {count(total)} policies, {count(round(rate))} a second{left}",
             file=self._stream,
             flush=True,
         )

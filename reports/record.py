@@ -78,9 +78,7 @@ def build_record(
             for design, digest in zip(prepared.designs, prepared.design_digests, strict=True)
         ],
         "control": [_control(total, outcome.settings.decimals) for total in outcome.control],
-        "totals": {
-            name: decimal_text(minor, outcome.settings.decimals) for name, minor in outcome.total.items()
-        },
+        "totals": {name: decimal_text(minor, outcome.settings.decimals) for name, minor in outcome.total.items()},
         "exceptions_by_reason": reasons(outcome),
         "sample": {**asdict(outcome.sample), "passes": outcome.sample.passes},
         "counts": dict(outcome.counts),
@@ -90,9 +88,7 @@ def build_record(
     }
 
 
-def complete(
-    record: JSON, outputs: Iterable[WrittenFile], timings: dict[str, float], finished: datetime
-) -> JSON:
+def complete(record: JSON, outputs: Iterable[WrittenFile], timings: dict[str, float], finished: datetime) -> JSON:
     """Return the record of a finished run: with its outputs, all timings and the time of its end."""
     return record | {
         "status": "complete",

@@ -75,9 +75,7 @@ def _against_totals(path: Path, sums: dict[Key, Sums], groups: list[str], decima
     for row in totals.to_pylist():
         key = tuple(row[name] for name in groups)
         found = left.pop(key, dict.fromkeys(("policies", *MONEY_COLUMNS), 0))
-        said = {"policies": row["policies"]} | {
-            name: round(float(row[name]) * 10**decimals) for name in MONEY_COLUMNS
-        }
+        said = {"policies": row["policies"]} | {name: round(float(row[name]) * 10**decimals) for name in MONEY_COLUMNS}
         for name, value in said.items():
             if value != found[name]:
                 where = f"totals.parquet: {_place(groups, key)}{name}"
@@ -116,6 +114,4 @@ def _against_exceptions(path: Path, record: JSON, valued: int) -> Iterator[str]:
 
 
 def _place(groups: list[str], key: Key) -> str:
-    return ", ".join(f"{name} {value}" for name, value in zip(groups, key, strict=True)) + (
-        ": " if groups else ""
-    )
+    return ", ".join(f"{name} {value}" for name, value in zip(groups, key, strict=True)) + (": " if groups else "")

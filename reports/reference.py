@@ -73,9 +73,7 @@ def _sections(model: type[BaseModel], seen: set[type[BaseModel]]) -> Iterator[st
     for name, field in fields:
         for inner in _models(field.annotation):
             if inner not in seen:
-                where = (
-                    f"[[{field.alias or name}]]" if _is_list(field.annotation) else f"{field.alias or name}"
-                )
+                where = f"[[{field.alias or name}]]" if _is_list(field.annotation) else f"{field.alias or name}"
                 yield f"### {_name(inner)}: `{where}` of {_name(model).lower()}"
                 said = (inner.__doc__ or "").strip().split("\n\n")[0]
                 yield " ".join(said.split())

@@ -98,10 +98,12 @@ class Report:
 
     @cached_property
     def years(self) -> list[YearFlows]:
-        """Expected cash flows by calendar year, without gaps."""
+        """Expected cash flows by calendar year, without gaps; from the first year with any to the last."""
         parts: dict[int, dict[str, float]] = defaultdict(lambda: defaultdict(float))
         ways: dict[int, dict[str, float]] = defaultdict(lambda: defaultdict(float))
         for row in self._yearly_rows:
+            if not row["amount"]:
+                continue
             parts[row["year"]][str(row["part"])] += row["amount"]
             ways[row["year"]][str(row["direction"])] += row["amount"]
         if not parts:
@@ -118,9 +120,7 @@ class Report:
         for row in self._yearly_rows:
             table[row["year"]][row["part"], row["stream"], row["direction"]] += row["amount"]
         keys = {key for row in table.values() for key in row}
-        return sorted(keys, key=lambda key: (_order(key[0]), key)), {
-            year: dict(table[year]) for year in sorted(table)
-        }
+        return sorted(keys, key=lambda key: (_order(key[0]), key)), {year: dict(table[year]) for year in sorted(table)}
 
     @cached_property
     def _yearly_rows(self) -> list[JSON]:
@@ -129,7 +129,8 @@ class Report:
         flows = self.outcome.cash_flows
         flows = flows.append_column("year", pc.year(flows.column("month")))
         keys = ["year", "part", "stream", "direction"]
-        rows: list[JSON] = flows.group_by(keys).aggregate([("amount", "sum")]).to_pylist()
+        # One thread adds in one order, so that the last bits are the same every time.
+        rows: list[JSON] = flows.group_by(keys, use_threads=False).aggregate([("amount", "sum")]).to_pylist()
         for row in rows:
             row["amount"] = float(row.pop("amount_sum"))
         return rows
@@ -151,9 +152,7 @@ def in_blocks(years: list[YearFlows], single: int = 10, block: int = 5) -> list[
             for part, value in year.parts.items():
                 parts[part] += value
         label = piece[0].label if len(piece) == 1 else f"{piece[0].label} to {piece[-1].label}"
-        rows.append(
-            YearFlows(label, dict(parts), sum(y.paid_out for y in piece), sum(y.paid_in for y in piece))
-        )
+        rows.append(YearFlows(label, dict(parts), sum(y.paid_out for y in piece), sum(y.paid_in for y in piece)))
     return rows
 
 

@@ -84,9 +84,7 @@ def value_prepared(
         "threads": threads,
     }
     try:
-        return value_extract(
-            prepared.extract, prepared.designs, prepared.basis, document.settings, **(asked | changes)
-        )
+        return value_extract(prepared.extract, prepared.designs, prepared.basis, document.settings, **(asked | changes))
     except DocumentError as error:
         raise DocumentError(f"{prepared.folder / document.basis}: {error}") from error
 
@@ -116,8 +114,8 @@ def write_reports(folder: Path, report: Report, watch: Stopwatch, workbook: bool
 
 
 def _load_writers(workbook: bool) -> None:
-    """Import what page and workbook need while the engine computes."""
-    import_module(".page", __package__)
+    """Import what page and workbook need, and compile the page's template, while the engine computes."""
+    import_module(".page", __package__).template()
     if workbook:
         import_module(".workbook", __package__)
 

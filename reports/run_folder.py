@@ -62,11 +62,7 @@ class RunFolder:
             shutil.rmtree(self.path, ignore_errors=True)
             remove_empty(self._made)
         unlock(self._lock)
-        if (
-            isinstance(error, OSError)
-            and not isinstance(error, RunFolderError)
-            and is_about(error, self.path)
-        ):
+        if isinstance(error, OSError) and not isinstance(error, RunFolderError) and is_about(error, self.path):
             raise RunFolderError(plain(error, self.target)) from error
 
     def finish(self) -> None:
@@ -115,9 +111,7 @@ def check_target(target: Path, replace: bool) -> None:
             f"{target}: is not empty and not a finished run (it holds no {RECORD}); choose another name"
         )
     if not replace:
-        raise RunFolderError(
-            f"{target}: holds a finished run; choose another name, or say --replace to replace it"
-        )
+        raise RunFolderError(f"{target}: holds a finished run; choose another name, or say --replace to replace it")
 
 
 def clean_leftovers(target: Path) -> list[str]:

@@ -63,9 +63,7 @@ class PolicyWriter:
     raised by the next call.
     """
 
-    def __init__(
-        self, folder: Path, rows_a_file: int = ROWS_A_FILE, rows_a_group: int = ROWS_A_GROUP
-    ) -> None:
+    def __init__(self, folder: Path, rows_a_file: int = ROWS_A_FILE, rows_a_group: int = ROWS_A_GROUP) -> None:
         self.files: list[WrittenFile] = []
         self.rows = 0
         self._folder = folder

@@ -47,9 +47,7 @@ def verify(folder: Path, inputs: Path | None = None, look_at_inputs: bool = True
     damaged = _check_outputs(folder, record, found)
     _check_strays(folder, record, found)
     if damaged:
-        found.notes.append(
-            "Totals were not recomputed, because files that they come from are damaged or missing."
-        )
+        found.notes.append("Totals were not recomputed, because files that they come from are damaged or missing.")
     else:
         try:
             _check_sums(recount(folder, record), record, found)
@@ -70,9 +68,7 @@ def _check_outputs(folder: Path, record: JSON, found: Verified) -> bool:
             damaged = damaged or output["path"].endswith(".parquet")
         else:
             sound += 1
-    found.sound.append(
-        f"{counted(sound, 'file')} of {len(record['outputs'])} match the record by size and SHA-256."
-    )
+    found.sound.append(f"{counted(sound, 'file')} of {len(record['outputs'])} match the record by size and SHA-256.")
     return damaged
 
 

@@ -8,10 +8,10 @@ from typing import Any
 
 import xlsxwriter
 
-from .figures import words
+from .figures import short, visible, words
 from .report import Report
 from .workbook_flows import add_cash_flows, add_monthly
-from .workbook_sheets import Formats, Table, formats_for, put_table, text
+from .workbook_sheets import OPTIONS, Formats, Table, formats_for, put_table, text
 from .workbook_summary import fill_summary
 
 MOST_EXCEPTIONS = 100_000
@@ -21,15 +21,8 @@ MOST_TOTALS = 100_000
 def workbook_bytes(report: Report) -> bytes:
     """Return the workbook, sheet by sheet in the order below."""
     content = io.BytesIO()
-    options = {
-        "strings_to_formulas": False,
-        "strings_to_urls": False,
-        "strings_to_numbers": False,
-        "nan_inf_to_errors": True,
-        "in_memory": True,
-    }
-    with xlsxwriter.Workbook(content, options) as book:
-        book.set_properties({"title": report.title, "comments": "Unsigned; not an actuarial opinion."})
+    with xlsxwriter.Workbook(content, OPTIONS) as book:
+        book.set_properties({"title": visible(report.title), "comments": "Unsigned; not an actuarial opinion."})
         formats = formats_for(book, report.decimals)
         summary = book.add_worksheet("Summary")
         bars = _totals(book, report, formats)
@@ -76,7 +69,8 @@ def _bars(book: Any, sheet: Any, report: Report, formats: Formats, column: int) 
     text(sheet, 1, column + 1, "reserve", formats.head_right)
     sheet.set_column(column, column + 1, 20)
     for place, (label, value) in enumerate(rows, 2):
-        text(sheet, place, column, label)
+        # The chart keeps a copy of its labels, in which the writer lets control characters stand.
+        text(sheet, place, column, short(visible(label), 40))
         sheet.write_number(place, column + 1, value, formats.money)
     chart = book.add_chart({"type": "bar"})
     chart.add_series(
@@ -88,11 +82,11 @@ def _bars(book: Any, sheet: Any, report: Report, formats: Formats, column: int) 
             "gap": 40,
         }
     )
-    chart.set_title({"name": f"Reserve by {name}", "name_font": {"size": 12}, "overlay": False})
+    chart.set_title({"name": f"Reserve by {visible(name)}", "name_font": {"size": 12}, "overlay": False})
     grid = {"visible": True, "line": {"color": "#d5d9dd"}}
     # The largest comes first, so the categories run downwards; 'high' is then the lower edge.
     chart.set_x_axis(
-        {"name": report.currency, "num_format": "#,##0", "major_gridlines": grid, "label_position": "high"}
+        {"name": visible(report.currency), "num_format": "#,##0", "major_gridlines": grid, "label_position": "high"}
     )
     chart.set_y_axis({"reverse": True, "label_position": "low"})
     chart.set_legend({"none": True})

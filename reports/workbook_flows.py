@@ -6,7 +6,7 @@ from collections import defaultdict
 from datetime import date
 from typing import Any
 
-from .figures import words
+from .figures import visible, words
 from .report import Report
 from .workbook_sheets import Formats, Table, put_table
 
@@ -23,15 +23,11 @@ def add_cash_flows(book: Any, report: Report, formats: Formats) -> Any:
     rows = []
     for year in report.years:
         cells = table.get(int(year.label), {})
-        rows.append(
-            [int(year.label), year.paid_out, year.paid_in, year.net, *(cells.get(key) for key in keys)]
-        )
+        rows.append([int(year.label), year.paid_out, year.paid_in, year.net, *(cells.get(key) for key in keys)])
     names = ["year", "paid out", "received", "out less in", *map(_name, keys)]
     plain = book.add_format({"num_format": "0", "align": "left"})
     layout = Table(names, [plain, *(formats.money for _ in names[1:])], [10, *(18 for _ in names[1:])])
-    note = (
-        f"Expected amounts in {report.currency} by calendar year, not discounted; all in cash_flows.parquet."
-    )
+    note = f"Expected amounts in {report.currency} by calendar year, not discounted; all in cash_flows.parquet."
     number = put_table(sheet, layout, rows, formats, note=note)
     sheet.freeze_panes(2, 1)
     return _chart(book, sheet, number, report) if number else None
@@ -52,7 +48,7 @@ def _chart(book: Any, sheet: Any, rows: int, report: Report) -> Any:
     chart.set_title({"name": "Expected cash flows by calendar year, undiscounted", "name_font": {"size": 12}})
     chart.set_y_axis(
         {
-            "name": report.currency,
+            "name": visible(report.currency),
             "num_format": "#,##0",
             "major_gridlines": {"visible": True, "line": {"color": "#d5d9dd"}},
         }
@@ -68,18 +64,14 @@ def add_monthly(book: Any, report: Report, formats: Formats) -> None:
     sheet = book.add_worksheet("Monthly")
     table = _by_month(report)
     keys = sorted({key for row in table.values() for key in row})
-    months = sorted(table)
-    rows = [[_serial(month), *(table[month].get(key) for key in keys)] for month in months[:MOST_MONTHS]]
+    months = sorted(month for month, row in table.items() if any(row.values()))
+    rows = [[month, *(table[month].get(key) for key in keys)] for month in months[:MOST_MONTHS]]
     layout = Table(
         ["month", *(f"{words(part)} ({direction})" for part, direction in keys)],
         [formats.month, *(formats.money for _ in keys)],
         [10, *(18 for _ in keys)],
     )
-    cut = (
-        f"the first {MOST_MONTHS} of {len(months):,} months"
-        if len(months) > MOST_MONTHS
-        else "not discounted"
-    )
+    cut = f"the first {MOST_MONTHS} of {len(months):,} months" if len(months) > MOST_MONTHS else "not discounted"
     note = f"Expected amounts in {report.currency} by calendar month, {cut}; all in cash_flows.parquet."
     put_table(sheet, layout, rows, formats, note=note)
     sheet.freeze_panes(2, 1)
@@ -87,17 +79,13 @@ def add_monthly(book: Any, report: Report, formats: Formats) -> None:
 
 def _by_month(report: Report) -> dict[date, dict[tuple[str, str], float]]:
     flows = report.outcome.cash_flows
-    summed = flows.group_by(["month", "part", "direction"]).aggregate([("amount", "sum")]).to_pydict()
+    by = flows.group_by(["month", "part", "direction"], use_threads=False)
+    summed = by.aggregate([("amount", "sum")]).to_pydict()
     table: dict[date, dict[tuple[str, str], float]] = defaultdict(dict)
     columns = [summed[name] for name in ("month", "part", "direction", "amount_sum")]
     for month, part, direction, amount in zip(*columns, strict=True):
         table[month][part, direction] = float(amount)
     return table
-
-
-def _serial(day: date) -> int:
-    """Return the number under which a workbook knows a date."""
-    return (day - date(1899, 12, 30)).days
 
 
 def _name(key: Key) -> str:

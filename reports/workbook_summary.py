@@ -36,9 +36,7 @@ def fill_summary(sheet: Any, report: Report, formats: Formats, charts: Sequence[
         ("= reserve", total["reserve"]),
     ):
         text(sheet, row, 0, name, formats.head if name.startswith("=") else None)
-        sheet.write_number(
-            row, 1, value / scale, formats.money_head if name.startswith("=") else formats.money
-        )
+        sheet.write_number(row, 1, value / scale, formats.money_head if name.startswith("=") else formats.money)
         text(sheet, row, 2, report.currency, formats.beside)
         row += 1
     row = _gate(sheet, row + 1, report, formats)

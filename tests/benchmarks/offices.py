@@ -14,6 +14,7 @@ from portfolios.checks import needed_columns
 from portfolios.chunk import Chunk
 from portfolios.demo_office import write_office
 from projection.engine import Engine
+from projection.lives import rule_columns
 from reports.prepared import Prepared, prepare
 from reports.reserve_run import reserve_run
 
@@ -58,12 +59,14 @@ def columns_of(prepared: Prepared) -> tuple[str, ...]:
     basis = prepared.basis.document
     until = [rule.until for rule in basis.lapse.rule] if basis.lapse else []
     named = [column for column in until if isinstance(column, str)]
-    return tuple(needed_columns(prepared.designs, [*named, *basis.rule_columns()]))
+    asked = rule_columns(prepared.basis, prepared.designs, prepared.extract.column_names)
+    return tuple(needed_columns(prepared.designs, [*named, *asked]))
 
 
 def new_engine(prepared: Prepared) -> Engine:
     """Return an engine that has not met a policy yet."""
-    kinds = {column: str(prepared.extract.column_kind(column)) for column in prepared.basis.document.rule_columns()}
+    asked = rule_columns(prepared.basis, prepared.designs, prepared.extract.column_names)
+    kinds = {column: str(prepared.extract.column_kind(column)) for column in asked}
     return Engine(
         prepared.designs, prepared.basis, prepared.document.settings, columns_of(prepared), kinds,
         tuple(prepared.document.in_force),

@@ -78,3 +78,22 @@ def test_a_working_that_cannot_be_written(office: Office) -> None:
     said = office.command("explain", str(office.run), policy, "--out", str(office.folder / "nowhere" / "w.txt"))
     assert said.code == 2
     assert "w.txt: cannot be written: No such file or directory" in said.err
+
+
+@pytest.mark.parametrize("name", ["working.txt", "working.xlsx"])
+def test_a_working_on_a_full_disk(office: Office, tmp_path: Path, name: str) -> None:
+    policy = str(office.extract().column("policy_id")[20])
+    with small_disk(tmp_path / "disk", "size=8k") as disk:
+        said = office.command("explain", str(office.run), policy, "--out", str(disk / name))
+        assert said.code == 2
+        assert said.err.strip() == f"{disk / name}: cannot be written: the disk is full; nothing was left behind"
+        assert names(disk) == []
+
+
+def test_what_a_killed_working_left_goes_with_the_next(office: Office, tmp_path: Path) -> None:
+    policy = str(office.extract().column("policy_id")[20])
+    left = tmp_path / ".working.xlsx.unfinished-0123abcd"
+    left.mkdir()
+    (left / "working.xlsx").write_bytes(b"half")
+    assert office.command("explain", str(office.run), policy, "--out", str(tmp_path / "working.xlsx")).code == 0
+    assert [name for name in names(tmp_path) if "working" in name] == ["working.xlsx"]

@@ -34,6 +34,8 @@ WICKED = (
     "\u202eback to front",
     "'; DROP TABLE policies; --",
     "../../etc/passwd",
+    "<r><t>markup of the workbook's</t></r>",
+    "no character: \ufffe",
 )
 EMPTY = ("", None)
 
@@ -138,3 +140,13 @@ def test_each_can_be_explained(wicked: Office, identifier: str) -> None:
     with_fault = wicked.command("explain", str(wicked.run), "--", f"{identifier}!")
     assert with_fault.code == 2
     assert "is not valued: date missing: birth_date is missing; the date must be there" in with_fault.err
+
+
+@pytest.mark.parametrize("identifier", ["=1+1", "@SUM(A1)", "<r><t>markup of the workbook's</t></r>", "x" * 40_000])
+def test_each_can_be_explained_in_a_workbook(wicked: Office, tmp_path: Path, identifier: str) -> None:
+    path = tmp_path / "working.xlsx"
+    said = wicked.command("explain", str(wicked.run), "--out", str(path), "--", identifier)
+    assert said.code == 0, said.err
+    cells = [cell for row in sheet_rows(path) for cell in row if cell.value is not None]
+    assert identifier[:32_767] in {cell.value for cell in cells}
+    assert not any(cell.data_type == "f" or cell.hyperlink for cell in cells)

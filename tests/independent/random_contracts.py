@@ -36,6 +36,9 @@ COLUMNS = {
     "birth_date": pa.date32(),
     "commencement_date": pa.date32(),
     "sex": pa.string(),
+    "lives": pa.string(),
+    "second_birth_date": pa.date32(),
+    "second_sex": pa.string(),
     "smoker": pa.bool_(),
     "term_years": pa.float64(),
     "premium_years": pa.float64(),
@@ -91,8 +94,8 @@ def chance(draw: Draw, once_in: int) -> bool:
 
 
 @st.composite
-def own_streams(draw: Draw, name: str, step: str) -> dict[str, Any]:
-    """A stream with terms of its own."""
+def own_streams(draw: Draw, name: str, step: str, pair: bool = False) -> dict[str, Any]:
+    """A stream with terms of its own; pair: of a contract on two lives."""
     stream: dict[str, Any] = {"name": name, "direction": one_of(draw, "out", "in")}
     if chance(draw, 4):
         stream["kind"] = one_of(draw, "premium", "benefit", "expense", "commission")
@@ -123,7 +126,17 @@ def own_streams(draw: Draw, name: str, step: str) -> dict[str, Any]:
             # For life, the two differ in where the last, incomplete year of the formula ends; nobody is left in it.
             stream["payments"] = one_of(draw, "Woolhouse 2", "Woolhouse 3")
     _shape(draw, stream)
+    if pair:
+        _on_two(draw, stream)
     return stream
+
+
+def _on_two(draw: Draw, stream: dict[str, Any]) -> None:
+    stream.pop("payments", None)
+    if stream.get("while") == "alive":
+        stream["while"] = one_of(draw, "both", "either", "first", "second", "first only", "second only")
+    if stream.get("on") == "death":
+        stream["on"] = one_of(draw, "first death", "second death", "death of first", "death of second")
 
 
 def _shape(draw: Draw, stream: dict[str, Any]) -> None:
@@ -164,14 +177,16 @@ def shares_of(draw: Draw, name: str, base: str) -> dict[str, Any]:
 
 @st.composite
 def designs(draw: Draw, code: str, step: str) -> Design:
-    own = [draw(own_streams(f"own {number}", step)) for number in range(draw(st.integers(1, 4)))]
+    pair = chance(draw, 3)
+    own = [draw(own_streams(f"own {number}", step, pair)) for number in range(draw(st.integers(1, 4)))]
     shared = [
         draw(shares_of(f"share {number}", one_of(draw, *(stream["name"] for stream in own))))
         for number in range(draw(st.integers(0, 2)))
     ]
     # A share may stand before what it is a share of.
     streams = [*shared, *own] if chance(draw, 3) else [*own, *shared]
-    return Design.model_validate({"code": code, "title": "invented", "stream": streams})
+    states = "two lives" if pair else "one life"
+    return Design.model_validate({"code": code, "title": "invented", "states": states, "stream": streams})
 
 
 # Bases
@@ -192,9 +207,13 @@ def conditions(draw: Draw) -> dict[str, Any]:
 
 
 @st.composite
-def ruled(draw: Draw, rules: st.SearchStrategy[dict[str, Any]]) -> list[dict[str, Any]]:
-    """Some rules; the last is nearly always for everybody."""
-    made = [{**draw(rules), "for": draw(conditions())} for _ in range(draw(st.integers(0, 2)))]
+def ruled(
+    draw: Draw,
+    rules: st.SearchStrategy[dict[str, Any]],
+    more: st.SearchStrategy[dict[str, Any]] = st.nothing(),  # noqa: B008
+) -> list[dict[str, Any]]:
+    """Some rules; the last is nearly always for everybody. more: conditions that this part knows beside others."""
+    made = [{**draw(rules), "for": draw(conditions() | more)} for _ in range(draw(st.integers(0, 2)))]
     last = draw(rules)
     return [*made, {**last, "for": draw(conditions())} if chance(draw, 12) else last]
 
@@ -284,7 +303,8 @@ def bases(draw: Draw, folder: Path, step: str) -> Basis:
         "mortality": {
             "age": age,
             "fractions": one_of(draw, "constant force", "uniform deaths", "Balducci"),
-            "rule": draw(ruled(mortality_rules(age == "exact"))),
+            "rule": draw(ruled(mortality_rules(age == "exact"), st.just({"life": "second"}))),
+            "common_shock": one_of(draw, 0.0, 0.001),
         },
         "interest": {"rule": draw(ruled(interest_rules()))},
         "expense": [draw(expenses(number)) for number in range(draw(st.integers(0, 3)))],
@@ -326,6 +346,9 @@ def policies(draw: Draw, number: int, codes: list[str], today: date) -> dict[str
         "birth_date": min(born, commenced),
         "commencement_date": commenced,
         "sex": one_of(draw, "F", "M"),
+        "lives": one_of(draw, "both", "first", "second") if not chance(draw, 12) else "none",
+        "second_birth_date": on_day(commenced.year - draw(st.integers(18, 70)), 1 + number % 12, commenced.day),
+        "second_sex": one_of(draw, "M", "F", None),
         "smoker": draw(st.booleans()),
         "term_years": one_of(draw, 20.0, 25.0, 35.0, 10.0, 26.5),
         "premium_years": one_of(draw, 20.0, 10.0, 5.0, 30.0),
@@ -362,6 +385,9 @@ def _spoil(draw: Draw, policy: dict[str, Any], today: date) -> None:
         ("birth_date", date(today.year - 119, 3, 1)),
         ("birth_date", date(today.year - 3, 3, 1)),
         ("guarantee_years", None),
+        ("lives", "all"),
+        ("lives", None),
+        ("second_birth_date", None),
     )
     policy[column] = value
 

@@ -20,6 +20,7 @@ from portfolios.chunk import Chunk
 from portfolios.extract import open_extract
 from portfolios.reasons import Reason
 from projection.engine import Engine, Valued
+from projection.lives import rule_columns
 from projection.plain import NotValued, PlainValue, plain_value
 
 TOLERANCE = 1e-11
@@ -44,9 +45,9 @@ def by_engine(example: Example) -> tuple[Chunk, Valued]:
     """Value the policies as a run does, without rounding."""
     extract, document = open_extract(example.table), example.basis.document
     until = [rule.until for rule in document.lapse.rule] if document.lapse else []
-    rule_columns = document.rule_columns()
-    needed = needed_columns(example.designs, [*(name for name in until if isinstance(name, str)), *rule_columns])
-    kinds = {column: str(extract.column_kind(column)) for column in rule_columns}
+    asked = rule_columns(example.basis, example.designs, extract.column_names)
+    needed = needed_columns(example.designs, [*(name for name in until if isinstance(name, str)), *asked])
+    kinds = {column: str(extract.column_kind(column)) for column in asked}
     engine = Engine(example.designs, example.basis, example.settings, needed, kinds)
     (chunk,) = extract.chunks(needed)
     return chunk, engine.value(chunk)

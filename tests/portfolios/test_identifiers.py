@@ -3,15 +3,18 @@
 from __future__ import annotations
 
 from collections import Counter
+from pathlib import Path
 
 import numpy as np
 import pyarrow as pa
+import pyarrow.parquet as pq
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 from made_extract import made_policies
 
 import portfolios.chunk
+import portfolios.extract_parts
 from portfolios.extract import open_extract
 from portfolios.identifiers import Duplicates, byte_lengths, find_duplicates, identifier_hashes, members
 
@@ -118,6 +121,28 @@ def test_none_in_a_large_extract() -> None:
     table = made_policies(3000)
     assert len(find_duplicates(open_extract(table))) == 0
     assert len(find_duplicates(open_extract(pa.concat_tables([table, table.slice(17, 2)])))) == 2
+
+
+@pytest.mark.parametrize("in_files", [True, False])
+def test_they_are_found_wherever_they_lie(tmp_path: Path, monkeypatch: pytest.MonkeyPatch, in_files: bool) -> None:
+    monkeypatch.setattr(portfolios.extract_parts, "_BLOCK_ROWS", 100)
+    ids = [None if row % 50 == 3 else f"P-{row:04d}" for row in range(1000)]
+    ids[5], ids[990], ids[400], ids[401], ids[999] = ids[612], "", "twins", "twins", ids[612]
+    table = pa.table({"policy_id": pa.array(ids, pa.string())})
+    if in_files:
+        pq.write_table(table.slice(0, 410), tmp_path / "a.parquet", row_group_size=100)
+        pq.write_table(table.slice(410, 0), tmp_path / "b.parquet")
+        pq.write_table(table.slice(410), tmp_path / "c.parquet", row_group_size=70)
+    extract = open_extract(tmp_path if in_files else table)
+    duplicates = find_duplicates(extract, keep=3)
+    hashes = identifier_hashes(pa.array([text for text in ids if text]))
+    assert duplicates.hashes.tolist() == sorted(identifier_hashes(pa.array([ids[612], "twins"])).tolist())
+    assert duplicates.smallest.tolist() == sorted(hashes.tolist())[:3]
+    read = list(extract.near(["policy_id"], np.array([5, 400, 401, 612, 999])))
+    assert sum(map(len, read)) < 600
+    assert all(chunk.ids.to_pylist() == ids[chunk.start : chunk.start + len(chunk)] for chunk in read)
+    rows = {chunk.start + row for chunk in read for row in range(len(chunk))}
+    assert {5, 400, 401, 612, 999} <= rows
 
 
 def test_equal_hashes_of_different_identifiers_are_told_apart(monkeypatch: pytest.MonkeyPatch) -> None:

@@ -4,7 +4,7 @@ import re
 from xml.etree import ElementTree
 
 import pytest
-from hypothesis import given
+from hypothesis import example, given
 from hypothesis import strategies as st
 
 from reports.charts import axis_for, bar_chart, run_off_chart
@@ -13,6 +13,8 @@ AMOUNTS = st.floats(-1e12, 1e12, allow_nan=False)
 
 
 @given(AMOUNTS, AMOUNTS)
+@example(0.0, 5e-324)
+@example(-1e-310, 0.0)
 def test_an_axis_holds_its_values_and_nothing(a: float, b: float) -> None:
     low, high = sorted((a, b))
     axis = axis_for(low, high)

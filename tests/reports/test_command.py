@@ -8,9 +8,11 @@ from typing import Any
 
 import pytest
 
+import reports.command
 import reports.reserve_run
+import reports.verify
 from projection.gate import RunStopped
-from reports.command import main, run_command
+from reports.command import MOST_FAULTS, main, run_command
 from reports.installation import PACKAGES, strangers
 
 ROOT = Path(__file__).resolve().parents[2]
@@ -85,6 +87,49 @@ def test_unknown_keys_and_missing_columns(
     assert run_command(["reserve", str(tmp_path / "column.toml"), "--out", str(tmp_path / "out")]) == 2
     assert "did you mean 'sex'?" in capsys.readouterr().err
     assert not (tmp_path / "out").exists()
+
+
+@pytest.mark.parametrize("name", ["policies", "reserve", "value_of_premiums", "rounding"])
+def test_a_group_must_not_bear_the_name_of_a_result(
+    name: str, office: Path, tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """Its column would take the place of the result's, and the totals would be wrong."""
+    text = (office / "month-end.toml").read_text().replace('["product", "sex"]', f'["product", "{name}"]')
+    for part in ("inforce", "designs", "bases/statutory.toml"):
+        text = text.replace(f'"{part}"', f'"{(office / part).as_posix()}"')
+    run = tmp_path / "groups.toml"
+    run.write_text(text)
+    assert run_command(["reserve", str(run), "--out", str(tmp_path / "out")]) == 2
+    said = capsys.readouterr().err
+    assert said.startswith(f"{run}: key 'group_by': '{name}' is the name of a column of the results; give ")
+    assert run_command(["check", str(run)]) == 2
+    assert not (tmp_path / "out").exists()
+
+
+def test_verify_does_not_list_without_end(
+    monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
+) -> None:
+    many = reports.verify.Verified(faults=[f"fault {number}" for number in range(1000)])
+    monkeypatch.setattr(reports.verify, "verify", lambda *given: many)
+    assert run_command(["verify", "anywhere"]) == 1
+    lines = capsys.readouterr().out.splitlines()
+    assert len(lines) == MOST_FAULTS + 2
+    assert lines[-2:] == ["WRONG  and 960 more of the kind", "anywhere: NOT as recorded."]
+
+
+def test_a_policy_without_a_value_gives_its_reason_in_words(
+    office: Path, tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    import pyarrow.parquet as pq
+
+    run, out = str(office / "month-end.toml"), tmp_path / "out"
+    assert run_command(["reserve", run, "--out", str(out), "--no-workbook"]) == 0
+    rows = pq.read_table(out / "exceptions.parquet").to_pylist()
+    matured = next(row["policy_id"] for row in rows if row["reason"] == "matured")
+    assert run_command(["explain", run, matured]) == 2
+    assert capsys.readouterr().err.startswith(
+        f"policy '{matured}' is not valued: matured: product LARBOARD; something is to come after"
+    )
 
 
 def test_a_whole_month_end(office: Path, tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
@@ -205,10 +250,27 @@ def test_the_installation_is_in_order(tmp_path: Path) -> None:
 
 def test_main_leaves_with_the_exit_code(monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr("signal.signal", lambda *given: None)
+    # The tests go on to use it in this process.
+    monkeypatch.setattr(reports.command, "without_pandas", lambda: None)
     monkeypatch.setattr(sys, "argv", ["duecourse", "verify", "nowhere"])
     with pytest.raises(SystemExit) as left:
         main()
     assert left.value.code == 2
+
+
+def test_a_run_by_the_command_does_not_load_pandas(office: Path, tmp_path: Path) -> None:
+    code = f"""
+import atexit, sys
+atexit.register(lambda: print("pandas:", "pandas" in sys.modules))
+sys.path[:0] = [{str(ROOT)!r}]
+sys.argv = ["duecourse", "reserve", {str(office / "month-end.toml")!r}, "--out", {str(tmp_path / "out")!r}]
+from reports.command import main
+main()
+"""
+    done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=False)
+    assert done.returncode == 0, done.stderr
+    assert done.stdout.splitlines()[-1] == "pandas: False"
+    assert (tmp_path / "out" / "report.xlsx").is_file()
 
 
 def test_version(capsys: pytest.CaptureFixture[str]) -> None:

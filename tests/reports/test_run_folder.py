@@ -11,7 +11,7 @@ from pathlib import Path
 
 import pytest
 
-from reports.disk import RunFolderError, write_text
+from reports.disk import RunFolderError, write_whole
 from reports.run_folder import RECORD, RunFolder, clean_leftovers
 
 ROOT = Path(__file__).resolve().parents[2]
@@ -208,9 +208,9 @@ def test_a_read_only_place_gives_a_plain_error(tmp_path: Path) -> None:
 
 
 def test_text_files_are_whole_or_not_there(tmp_path: Path) -> None:
-    write_text(tmp_path / "working.txt", "one")
-    write_text(tmp_path / "working.txt", "two")
+    write_whole(tmp_path / "working.txt", b"one")
+    write_whole(tmp_path / "working.txt", b"two")
     with pytest.raises(RunFolderError, match="cannot be written"):
-        write_text(tmp_path / "nowhere" / "working.txt", "three")
+        write_whole(tmp_path / "nowhere" / "working.txt", b"three")
     assert names(tmp_path) == ["working.txt"]
     assert (tmp_path / "working.txt").read_text() == "two"

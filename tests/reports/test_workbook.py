@@ -3,10 +3,12 @@ from __future__ import annotations
 import io
 import zipfile
 from dataclasses import replace
-from datetime import datetime
+from datetime import date, datetime
 from typing import Any
+from xml.etree import ElementTree
 
 import openpyxl
+import pyarrow as pa
 import pytest
 import reports_examples as examples
 
@@ -53,6 +55,21 @@ def test_no_text_became_a_formula_or_a_link(content: bytes, book: Any) -> None:
     assert shown[:5] == ["=1+1", "<script>alert(1)</script>", "@SUM(A1)", "https://example.invalid", "-7"]
 
 
+def test_text_of_any_kind_gives_a_workbook_that_can_be_read(report: Report) -> None:
+    """The writer keeps copies of labels in charts and properties, and knows markup of its own: '<r>...</r>'."""
+    wicked = ("\x1b[31mred", "<r><t>rich</t></r>", "<r>&</r>", "a\ufffeb", "<b>&amp;</b>")
+    results = examples.policies(50)
+    groups = pa.array([wicked[row % len(wicked)] for row in range(50)])
+    outcome = examples.outcome(results.set_column(2, "sex", groups), examples.exceptions(5), ("sex",))
+    settings = report.record["settings"] | {"currency": "\x1b\ufffe&<r>"}
+    content = workbook_bytes(Report(outcome, report.record | {"title": "\x07<r>&</r>", "settings": settings}))
+    with zipfile.ZipFile(io.BytesIO(content)) as parts:
+        for name in parts.namelist():
+            ElementTree.fromstring(parts.read(name))
+    shown = {row[0] for row in rows(openpyxl.load_workbook(io.BytesIO(content))["Totals"])[2:]}
+    assert {"<r><t>rich</t></r>", "<r>&</r>", "<b>&amp;</b>"} <= shown
+
+
 def test_totals_are_numbers_and_add_up(book: Any, report: Report) -> None:
     head, *body = rows(book["Totals"])[1:]
     reserve, groups = head.index("reserve"), len(report.outcome.group_by)
@@ -85,6 +102,18 @@ def test_cash_flows_by_year_and_month_agree(book: Any, report: Report) -> None:
     assert sum(sum(row[1:]) for row in second) == pytest.approx(years[1][1] + years[1][2])
 
 
+def test_months_and_years_without_any_flow_at_the_ends_are_left_out(report: Report) -> None:
+    """The table of cash flows may begin with the month of the valuation date, in which all is settled."""
+    flows = report.outcome.cash_flows
+    quiet = flows.slice(0, 2).set_column(5, "amount", pa.array([0.0, 0.0]))
+    ends = [quiet.set_column(0, "month", pa.array([day] * 2)) for day in (date(2025, 11, 1), date(2150, 1, 1))]
+    around = Report(replace(report.outcome, cash_flows=pa.concat_tables([ends[0], flows, ends[1]])), report.record)
+    assert [(year.label, year.net) for year in around.years] == [(year.label, year.net) for year in report.years]
+    book = openpyxl.load_workbook(io.BytesIO(workbook_bytes(around)))
+    assert rows(book["Monthly"])[2][0] == datetime(2026, 12, 1)
+    assert rows(book["Cash flows"])[2][0] == 2026
+
+
 def test_two_native_charts(content: bytes) -> None:
     with zipfile.ZipFile(io.BytesIO(content)) as parts:
         assert len([name for name in parts.namelist() if name.startswith("xl/charts/chart")]) == 2
@@ -112,3 +141,6 @@ def test_very_long_text_is_cut_to_the_cell(report: Report) -> None:
         io.BytesIO(workbook_bytes(Report(replace(report.outcome, exceptions=long), report.record)))
     )
     assert len(rows(book["Exceptions"])[2][5]) == 32_767
+    record = report.record | {"conventions": [{"matter": "long", "rule": "x" * 40_000}]}
+    book = openpyxl.load_workbook(io.BytesIO(workbook_bytes(Report(report.outcome, record))))
+    assert book["Conventions"].row_dimensions[3].height <= 409
