@@ -65,7 +65,7 @@ class Checks:
         self._codes = {design.code: place for place, design in enumerate(designs)}
         self._in_force = frozenset(in_force)
         self._today = (valuation_date - date(1970, 1, 1)).days
-        self._duplicates = duplicates
+        self.duplicates = duplicates
         self._rules = number_rules(designs)
         self._on_two = np.array([design.states == "two lives" for design in designs] + [False])
 
@@ -98,8 +98,8 @@ class Checks:
         unreadable = _unreadable(chunk.ids)
         if unreadable is not None:
             self._mark(checked, unreadable, Reason.IDENTIFIER_UNREADABLE, "policy_id")
-        if len(self._duplicates):
-            twice = self._duplicates.mask(chunk.ids, chunk.hashes)
+        if len(self.duplicates):
+            twice = self.duplicates.mask(chunk.ids, chunk.hashes)
             self._mark(checked, twice, Reason.IDENTIFIER_NOT_UNIQUE, "policy_id")
 
     def _check_status(self, chunk: Chunk, checked: Checked) -> None:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import difflib
 import os
-from collections.abc import Iterable, Iterator
+from collections.abc import Generator, Iterable, Iterator
 from typing import Any
 
 import pyarrow as pa
@@ -78,7 +78,7 @@ class Extract:
         if faults:
             raise ExtractError("\n".join(faults))
 
-    def chunks(self, columns: Iterable[str], rows: int = CHUNK_ROWS) -> Iterator[Chunk]:
+    def chunks(self, columns: Iterable[str], rows: int = CHUNK_ROWS) -> Generator[Chunk, None, None]:
         """Read columns in chunks of at most ``rows`` rows, in order.
 
         A chunk ends where the next piece of a file would not fit any more; no result may depend on that.
@@ -132,7 +132,7 @@ class Extract:
         """
         return {part.file.path: part.digest() for part in self._parts}
 
-    def _chunks(self, names: list[str], rows: int) -> Iterator[Chunk]:
+    def _chunks(self, names: list[str], rows: int) -> Generator[Chunk, None, None]:
         start = 0
         for batch in _gathered(self._batches(names, rows), rows):
             yield Chunk(batch, start)

@@ -69,11 +69,10 @@ class Engine:
         needed: tuple[str, ...],
         kinds: dict[str, str],
         in_force: Collection[str] = ("in force",),
-        duplicates: Duplicates | None = None,
     ) -> None:
         self.basis, self.settings, self.needed = basis, settings, needed
         today = settings.valuation_date
-        self.checks = Checks(designs, today, in_force, duplicates or Duplicates(), needed)
+        self.checks = Checks(designs, today, in_force, Duplicates(), needed)
         self.cells = Cells(designs, basis, kinds)
         self.pool = Pool()
         self.plans = Plans(designs, basis, RelativeRows(self.pool, today.year, today.month))
@@ -96,6 +95,13 @@ class Engine:
             minor=float(10**settings.decimals),
             shock=basis.document.mortality.common_shock,
         )
+
+    def meet(self, chunk: Chunk) -> None:
+        """Make the plans and rows that a chunk needs, before it is valued."""
+        checked = self.checks.check(chunk)
+        places = self._locate(chunk, checked)
+        with self._lock:
+            self._find(chunk, checked, self._cells(chunk, checked), places)
 
     def value(self, chunk: Chunk) -> Valued:
         """Value the policies of a chunk."""

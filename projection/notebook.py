@@ -62,7 +62,7 @@ def value(
     group_by: Sequence[str] = ("product",),
     in_force: Sequence[str] = ("in force",),
     exceptions_limit: float = 1.0,
-    sample: int = 40,
+    sample: int = 24,
     threads: int | None = None,
 ) -> Valuation:
     """Value policies: the same run as the command ``duecourse reserve``, with the results in memory.

@@ -132,12 +132,18 @@ def plain_value(
 
 def _value_of(stream: PolicyStream, course: Course) -> float:
     """Return the sum of amount x relative x probability x discount factor over the payments of a stream."""
+    discount, level = course.discount, stream.level
+    if level is not None:
+        return level * fsum(
+            weight * (survival * persistency) * discount(paid)
+            for _, paid, _, weight, survival, persistency in stream.occasions
+        )
     return fsum(
         stream.amount(occasion)
         * stream.relative(occasion)
         * occasion.weight
         * (occasion.survival * occasion.persistency)
-        * course.discount(occasion.paid)
+        * discount(occasion.paid)
         for occasion in stream.occasions
     )
 

@@ -88,7 +88,7 @@ class Course:
         self._discount: dict[float, float] = {}
         now = {self.due_now: 1.0} if self.due_now is not None else {}
         self._in_advance, self._in_arrears = dict(now), dict(now)
-        self._alive: dict[tuple[int, States | None], float] = {}
+        self._alive: dict[States | None, dict[int, float]] = {}
 
     @property
     def _still_due(self) -> bool:
@@ -106,9 +106,10 @@ class Course:
 
     def alive(self, point: int, states: States | None) -> float:
         """Return L(g) / L(T), or the probability of the states on two lives."""
-        if (point, states) not in self._alive:
-            self._alive[point, states] = self.lives.probability(point, states)
-        return self._alive[point, states]
+        known = self._alive.setdefault(states, {})
+        if point not in known:
+            known[point] = self.lives.probability(point, states)
+        return known[point]
 
     def in_force(self, point: int, way: Way) -> float:
         """Return P / P(T) for a payment while alive or once at a point, 1 on the valuation date."""

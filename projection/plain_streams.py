@@ -34,7 +34,8 @@ UNFIT = ("end before start", "duration not in whole periods", "duration not in w
 class PolicyStream:
     """One stream of one policy: its payments to come, and what each amounts to.
 
-    amount and relative are functions of the occasion; the payment is their product with its weight.
+    amount and relative are functions of the occasion; the payment is their product with its weight. level: the
+    product of both where it is the same for every payment.
     """
 
     name: str
@@ -44,6 +45,7 @@ class PolicyStream:
     occasions: list[Occasion]
     amount: Callable[[Occasion], float]
     relative: Callable[[Occasion], float]
+    level: float | None = None
 
     @property
     def sign(self) -> int:
@@ -92,7 +94,8 @@ def _own(stream: Stream, states: States | None, policy: Policy, course: Course) 
         terms,
         occasions(terms, course) if possible else [],
         lambda _: amount,
-        lambda occasion: relative_amount(stream, terms, rate, occasion.month) if varies else 1.0,
+        (lambda occasion: relative_amount(stream, terms, rate, occasion.month)) if varies else (lambda _: 1.0),
+        level=None if varies else amount,
     )
 
 

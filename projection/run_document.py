@@ -32,7 +32,7 @@ class RunDocument(BaseModel):
     exceptions_limit: float = Field(
         0.01, ge=0, le=1, description="share of policies that may be exceptions before the run stops"
     )
-    sample: int = Field(40, ge=1, le=10000, description="policies valued a second time by the plain twin")
+    sample: int = Field(24, ge=1, le=10000, description="policies valued a second time by the plain twin")
 
     @property
     def settings(self) -> Settings:

@@ -86,23 +86,22 @@ class Tally:
         return pa.table(columns)
 
     def flows_table(self, plans: Plans, year: int, month: int) -> pa.Table:
-        """Expected cash flows by calendar month and line, without the empty months after the last payment of all."""
+        """Expected cash flows by calendar month and line, without the months in which a line has none."""
         lines = list(plans.lines)
-        used = np.flatnonzero(self.flows.any(axis=0))
-        months = int(used[-1]) + 1 if len(used) else 0
-        amounts = self._by_line(plans)[:, :months]
-        first = np.datetime64(f"{year:04d}-{month:02d}", "M")
-        dates = (first + np.arange(months)).astype("datetime64[D]").astype(np.int32)
+        amounts = self._by_line(plans)
         order = sorted(range(len(lines)), key=lambda place: (lines[place].product, place))
-        order = [place for place in order if amounts[place].any()]
+        flat = amounts[order].T.reshape(-1)
+        paid = np.flatnonzero(flat)
+        months, places = np.divmod(paid, max(1, len(order)))
+        dates = (np.datetime64(f"{year:04d}-{month:02d}", "M") + months).astype("datetime64[D]").astype(np.int32)
         return pa.table(
             {
-                "month": pa.array(np.repeat(dates, len(order)), pa.int32()).cast(pa.date32()),
+                "month": pa.array(dates, pa.int32()).cast(pa.date32()),
                 **{
-                    name: _tiled([getattr(lines[place], name) for place in order], months)
+                    name: _chosen([getattr(lines[place], name) for place in order], places)
                     for name in ("product", "stream", "part", "direction")
                 },
-                "amount": pa.array(amounts[order].T.reshape(-1) / 10**self.decimals, pa.float64()),
+                "amount": pa.array(flat[paid] / 10**self.decimals, pa.float64()),
             }
         )
 
@@ -128,8 +127,8 @@ def _grown(array: NDArray[Any], rows: int) -> NDArray[Any]:
     return np.concatenate((array, np.zeros((rows - len(array), array.shape[1]), dtype=array.dtype)))
 
 
-def _tiled(values: list[str], times: int) -> pa.Array:
-    """A column that repeats some texts, by reference to the distinct ones."""
+def _chosen(values: list[str], places: NDArray[np.int64]) -> pa.Array:
+    """A column of texts from a list, by reference to the distinct ones."""
     distinct = list(dict.fromkeys(values))
     codes = np.array([distinct.index(value) for value in values], dtype=np.int32)
-    return pa.DictionaryArray.from_arrays(np.tile(codes, times), pa.array(distinct, pa.string()))
+    return pa.DictionaryArray.from_arrays(codes[places], pa.array(distinct, pa.string()))

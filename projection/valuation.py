@@ -6,6 +6,7 @@ import os
 from collections import deque
 from collections.abc import Collection, Iterator
 from concurrent.futures import Future, ThreadPoolExecutor
+from contextlib import closing
 from dataclasses import dataclass
 from time import perf_counter
 from typing import Any
@@ -50,7 +51,7 @@ class Plan:
     group_by: tuple[str, ...] = ("product",)
     in_force: tuple[str, ...] = ("in force",)
     exceptions_limit: float = 1.0
-    sample: int = 40
+    sample: int = 24
     threads: int = 2
     chunk_rows: int = CHUNK_ROWS
 
@@ -64,7 +65,7 @@ def value_extract(
     group_by: Collection[str] = ("product",),
     in_force: Collection[str] = ("in force",),
     exceptions_limit: float = 1.0,
-    sample: int = 40,
+    sample: int = 24,
     sink: PolicySink | None = None,
     progress: Progress = no_progress,
     threads: int | None = None,
@@ -105,12 +106,16 @@ class _Valuation:
         """Read, value and add up."""
         began = perf_counter()
         plan = self.plan
-        duplicates = find_duplicates(self.extract, keep=plan.sample + SPARE)
+        self.engine = Engine(self.designs, self.basis, self.settings, self.needed, self.kinds, plan.in_force)
+        with ThreadPoolExecutor(1, thread_name_prefix="meet") as beside:
+            # The first chunk meets most of the curves; they are made while identifiers are looked through.
+            meeting = beside.submit(self._meet_first) if plan.threads > 1 else None
+            duplicates = find_duplicates(self.extract, keep=plan.sample + SPARE)
+            if meeting is not None:
+                meeting.result()
+        self.engine.checks.duplicates = duplicates
         self.sample = Sample(plan.sample, duplicates.smallest, self.designs, self.basis, self.settings)
         self.seconds["identifiers"] = perf_counter() - began
-        self.engine = Engine(
-            self.designs, self.basis, self.settings, self.needed, self.kinds, self.plan.in_force, duplicates
-        )
         tally = Tally(self.settings.decimals)
         for part in self._parts():
             tally.add(part)
@@ -125,6 +130,12 @@ class _Valuation:
         started = perf_counter()
         self.sample.take(part.sample)
         self.seconds["sample"] = self.seconds.get("sample", 0.0) + perf_counter() - started
+
+    def _meet_first(self) -> None:
+        with closing(self.extract.chunks(self.needed, self.plan.chunk_rows)) as chunks:
+            for chunk in chunks:
+                self.engine.meet(chunk)
+                return
 
     def _parts(self) -> Iterator[ChunkTally]:
         """Results of the chunks in their order; a few chunks are under way at any time."""
