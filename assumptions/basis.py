@@ -13,6 +13,7 @@ from typing import Any, Literal
 from pydantic import Field, field_validator
 
 from .expenses import Expense
+from .improvement import Scale, read_scale
 from .interest import Curve, Interest, curve_from
 from .items import Item, Sourced
 from .lapse import Lapse
@@ -80,6 +81,8 @@ class Basis:
     curves: tuple[Curve, ...]
     files: dict[str, str] = field(default_factory=dict)
     """SHA-256 of every table file read, by its path in the document."""
+    scales: tuple[Scale | None, ...] = ()
+    """Improvement of each mortality rule, None where there is none."""
 
     @cached_property
     def digest(self) -> str:
@@ -116,7 +119,10 @@ def prepare_basis(document: BasisDocument | dict[str, Any], folder: Path | str =
         spot = read_curve(folder / rule.spot) if isinstance(rule.spot, str) else rule.spot
         curves.append(curve_from(rule.flat, rule.forward, spot))
     _seal(files, folder, [rule.spot for rule in document.interest.rule if isinstance(rule.spot, str)])
-    return Basis(document, rates, lapses, tuple(curves), files)
+    improvements = [rule.improvement for rule in document.mortality.rule]
+    scales = tuple(read_scale(one, folder) if one else None for one in improvements)
+    _seal(files, folder, [one.table for one in improvements if one])
+    return Basis(document, rates, lapses, tuple(curves), files, scales)
 
 
 def _rates_of(rule: MortalityRule, folder: Path, files: dict[str, str]) -> Rates:

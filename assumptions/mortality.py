@@ -6,6 +6,7 @@ from typing import Any, Literal, Protocol
 
 from pydantic import Field, field_validator
 
+from .improvement import Improvement
 from .items import Item
 from .laws import Law
 from .rules import Rule
@@ -51,14 +52,17 @@ class TableFile(Item):
 class MortalityRule(Rule):
     """Rates for the policies that fit, with their adjustments.
 
-    The rate that counts is  q = min(1, multiple * q_table + extra)  with the table entered at the age at
-    entry plus ``added_years``.
+    The rate that counts is  q = min(1, multiple * q_table * R + extra)  with the table entered at the age at
+    entry plus ``added_years``; R is the factor of improvement.
     """
 
     table: str | TableFile | Law = Field(description="a file of rates, one table of it, or a law")
     multiple: float = Field(1.0, ge=0, le=100, description="factor on every rate")
     added_years: int = Field(0, ge=-50, le=50, description="years added to the age before the table is entered")
     extra: float = Field(0.0, ge=0, le=1, description="flat addition to every yearly rate")
+    improvement: Improvement | None = Field(
+        None, description="how the rates change with calendar time; absent: not at all"
+    )
     close: bool = Field(
         False,
         description="take the rate at the last age as 1 where the table ends below 1; "
@@ -89,13 +93,14 @@ class Mortality(Item):
     rule: list[MortalityRule] = Field(min_length=1, description="read top to bottom, the first that fits wins")
 
 
-def adjusted_rate(rule: MortalityRule, rates: Rates, entry_age: float, duration: int) -> float:
+def adjusted_rate(rule: MortalityRule, rates: Rates, entry_age: float, duration: int, improved: float = 1.0) -> float:
     """Return the yearly rate that counts for a life under a rule.
 
-    entry_age: age at commencement, before ``added_years``; duration: completed years since.
+    entry_age: age at commencement, before ``added_years``; duration: completed years since; improved: factor of
+    improvement.
     Raises ValueError where the table has no rate and is not closed.
     """
     entered = entry_age + rule.added_years
     if entered + duration >= rates.final_age - 1 and (rule.close or rates.closed):
         return 1.0
-    return min(1.0, rule.multiple * rates.rate(entered, duration) + rule.extra)
+    return min(1.0, rule.multiple * rates.rate(entered, duration) * improved + rule.extra)

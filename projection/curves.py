@@ -15,6 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from assumptions.basis import Basis, ClaimDelay
+from assumptions.improvement import Scale
 from assumptions.interest import Curve
 from assumptions.lapse import LapseRule, yearly_lapse
 from assumptions.laws import Law
@@ -34,11 +35,17 @@ IMPOSSIBLE = -1
 _SPANS = 367
 """Days of a year of age, and one more."""
 
+FIRST_YEAR, YEARS = 1800, 402
+"""Calendar years in which rates may begin."""
+
 NEVER = LONGEST + 1
 """Months until lapses stop where they never do."""
 
 Row = NDArray[np.float64]
 Keys = NDArray[np.int64]
+
+MOST_LISTED = 1 << 22
+"""Highest key for which a finder keeps a table of all keys."""
 
 _NEW = -2
 """Stands in a finder for the row of a key not met before."""
@@ -58,6 +65,9 @@ class Survival:
         self.exact = mortality.age == "exact"
         self.keys = 2 * _SPANS * 160 if self.exact else 256
         self.fractions = FRACTIONS[mortality.fractions]
+        self.improving = np.array([scale is not None for scale in self.basis.scales])
+        # Where a table of whole ages is entered at an exact one, its years begin on birthdays.
+        self.by_birthday = np.array([self.exact and rates.whole_ages_only for rates in self.basis.rates])
         for number, (rule, rates) in enumerate(zip(mortality.rule, self.basis.rates, strict=True), 1):
             if self.exact and getattr(rates, "select_years", False):
                 raise DocumentError(
@@ -65,8 +75,8 @@ class Survival:
                     "years; set the key 'age' to last, nearest or next birthday"
                 )
 
-    def codes(self, rule: Keys, ages: loops.Ages) -> Keys:
-        """Return the key of each life's row: rule and age at commencement."""
+    def codes(self, rule: Keys, ages: loops.Ages, commencement: NDArray[np.int32]) -> Keys:
+        """Return the key of each life's row: rule, age at commencement, and year where rates improve."""
         basis = self.basis.document.mortality.age
         key: Keys = ages.age.astype(np.int64)
         if self.exact:
@@ -77,24 +87,30 @@ class Survival:
             key += ages.since > ages.span - ages.since
         np.clip(key, 0, self.keys - 1, out=key)
         key += rule * self.keys
+        if self.improving.any():
+            began = commencement - np.where(self.by_birthday[rule], ages.since, 0)
+            year = began.astype("datetime64[D]").astype("datetime64[Y]").astype(np.int64) + 1970
+            key *= YEARS
+            key += np.where(self.improving[rule], np.clip(year - FIRST_YEAR, 0, YEARS - 1), 0)
         return key
 
     def row(self, code: int) -> int:
         """Return the row of a key, made on first meeting; IMPOSSIBLE where the rates do not cover the age."""
         if code not in self.known:
-            number, key = divmod(code, self.keys)
+            rest, year = divmod(code, YEARS) if self.improving.any() else (code, 0)
+            number, key = divmod(rest, self.keys)
             age = float(key)
             if self.exact:
                 halves, since = divmod(key, _SPANS)
                 age = halves // 2 + since / (365 + halves % 2)
-            self.known[code] = self._add(number, age)
+            self.known[code] = self._add(number, age, FIRST_YEAR + year)
         return self.known[code]
 
-    def _add(self, number: int, age: float) -> int:
+    def _add(self, number: int, age: float, year: int) -> int:
         rule, rates = self.basis.document.mortality.rule[number], self.basis.rates[number]
         whole = int(age) if rates.whole_ages_only else age
         try:
-            yearly = yearly_rates(rule, rates, whole)
+            yearly = yearly_rates(rule, rates, whole, self.basis.scales[number], year)
         except ValueError:
             return IMPOSSIBLE
         if len(yearly) == 0:
@@ -115,8 +131,10 @@ class Survival:
         return len(self.records) - 1
 
 
-def yearly_rates(rule: MortalityRule, rates: Rates, age: float) -> Row:
+def yearly_rates(rule: MortalityRule, rates: Rates, age: float, scale: Scale | None = None, year: int = 0) -> Row:
     """Adjusted rates of the years from an age at commencement to the end of a table, by year of age or duration.
+
+    year: the calendar year in which the first of them begins, for the improvement.
 
     Empty where the age lies beyond the table. Raises ValueError where it lies below, or a rate is missing.
     """
@@ -131,7 +149,8 @@ def yearly_rates(rule: MortalityRule, rates: Rates, age: float) -> Row:
     # The last rate of a table that closes is 1, whatever it says itself.
     known = years - closing
     source = rates.rates_from(entry, known) if known else np.zeros(0)  # type: ignore[attr-defined]
-    adjusted = np.minimum(1.0, rule.multiple * source + rule.extra)
+    improved = scale.cohort(int(np.floor(entered)), year, known) if scale is not None else 1.0
+    adjusted = np.minimum(1.0, rule.multiple * source * improved + rule.extra)
     if closing:
         adjusted = np.append(adjusted, 1.0)
     return np.asarray(adjusted)
@@ -293,10 +312,13 @@ class Finder:
     def __init__(self, row: Callable[[int], int]) -> None:
         self._row = row
         self._rows = np.zeros(0, dtype=np.int64)
+        self._scattered: dict[int, int] = {}
 
     def rows_for(self, codes: NDArray[np.int64]) -> NDArray[np.int64]:
         """Return the row of each key, a number from 0."""
         highest = int(codes.max(initial=0))
+        if highest > MOST_LISTED:
+            return self._look_up(codes)
         if highest >= len(self._rows):
             self._rows = np.concatenate((self._rows, np.full(highest + 1 - len(self._rows), _NEW)))
         rows = self._rows[codes]
@@ -305,3 +327,11 @@ class Finder:
                 self._rows[code] = self._row(code)
             rows = self._rows[codes]
         return rows
+
+    def _look_up(self, codes: NDArray[np.int64]) -> NDArray[np.int64]:
+        """The same where keys lie so far apart that a table of all of them would fill the memory."""
+        found, places = np.unique(codes, return_inverse=True)
+        for code in found.tolist():
+            if code not in self._scattered:
+                self._scattered[code] = self._row(code)
+        return np.array([self._scattered[code] for code in found.tolist()], dtype=np.int64)[places]

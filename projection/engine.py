@@ -195,7 +195,7 @@ class Engine:
         ages = loops.Ages(*(np.zeros(chunk.n, dtype=np.int32) for _ in loops.Ages._fields))
         days_of_age = self.basis.document.mortality.age in ("exact", "nearest birthday")
         loops.find_ages(birth, chunk.day("commencement_date"), fine, days_of_age, ages)
-        codes = self.survival.codes(mortality, ages)
+        codes = self.survival.codes(mortality, ages, chunk.day("commencement_date"))
         # No rows for the ages of others; the first one that counts stands in for them.
         codes[~fine] = codes[fine.argmax()]
         rows = self._survivals.rows_for(codes)

@@ -197,7 +197,9 @@ def _lives(policy: Policy, age: Fraction, position: Position, design: Design, ba
         if now == "none":
             # Nobody is left to look at rates, so that any age does.
             ages[life] = Fraction(table.first_age - rule.added_years)
-        rates = yearly_rates(rule, table, ages[life])
+        born = _date(policy, "second_birth_date" if life == "second" else "birth_date")
+        commenced, scale = _date(policy, "commencement_date"), basis.scales[place]
+        rates = yearly_rates(rule, table, ages[life], scale, commenced, born)
         found[life] = place, Survival(rates, mortality.fractions)
     place, first = found["second" if now == "second" else "first"]
     second = found["second"][1] if now == "both" else None

@@ -3,9 +3,11 @@
 from __future__ import annotations
 
 import math
+from datetime import date
 from fractions import Fraction
 from typing import NamedTuple
 
+from assumptions.improvement import Scale
 from assumptions.mortality import Fractions, MortalityRule, Rates, adjusted_rate
 
 from .plain_faults import NotValued
@@ -28,18 +30,27 @@ class YearlyRates(NamedTuple):
     """Adjusted yearly rates of one life.
 
     Year j starts j - ``offset`` years after commencement. ``offset`` is the part r of an exact age a + r that
-    enters a table of whole ages, 0 otherwise. ``entry`` is the age, before added years, of year 0.
+    enters a table of whole ages, 0 otherwise. ``entry`` is the age, before added years, of year 0, and
+    ``first_year`` the calendar year in which it begins, for the improvement.
     """
 
     rule: MortalityRule
     rates: Rates
     entry: float
     offset: Fraction
+    scale: Scale | None = None
+    first_year: int = 0
 
     @property
     def closed(self) -> bool:
         """Whether nobody is left after the last year."""
         return self.rule.close or self.rates.closed
+
+    def improved(self, j: int) -> float:
+        """Return the factor of improvement of year j."""
+        if self.scale is None:
+            return 1.0
+        return self.scale.factor(math.floor(self.entry + self.rule.added_years) + j, self.first_year + j)
 
     def rate(self, j: int) -> float:
         """Return q of year j. Raises NotValued after the last age of a table that is not closed."""
@@ -48,13 +59,20 @@ class YearlyRates(NamedTuple):
             rule = f"the table ends at age {self.rates.final_age} and is not closed"
             raise NotValued("table ends too early", "age", entered + j, rule)
         try:
-            return adjusted_rate(self.rule, self.rates, self.entry, j)
+            return adjusted_rate(self.rule, self.rates, self.entry, j, self.improved(j))
         except ValueError as error:
             raise NotValued("age outside the tables", "age", entered + j, str(error)) from error
 
 
-def yearly_rates(rule: MortalityRule, rates: Rates, age: Fraction) -> YearlyRates:
-    """Return the rates of a life by its age at commencement.
+def yearly_rates(
+    rule: MortalityRule,
+    rates: Rates,
+    age: Fraction,
+    scale: Scale | None = None,
+    commencement: date | None = None,
+    birth: date | None = None,
+) -> YearlyRates:
+    """Return the rates of a life by its age at commencement; the dates are needed for improvement.
 
     A law takes any age; a table is entered at the whole age, and the rest is the offset.
     Raises NotValued for an age outside the table, or one that is not whole in a select table.
@@ -69,7 +87,11 @@ def yearly_rates(rule: MortalityRule, rates: Rates, age: Fraction) -> YearlyRate
     if not rates.first_age <= entered < rates.final_age:
         held = f"the table holds ages {rates.first_age} to {rates.final_age - 1}"
         raise NotValued("age outside the tables", "age", entered, held)
-    return YearlyRates(rule, rates, entry, offset)
+    first_year = 0
+    if scale is not None and commencement is not None and birth is not None:
+        # Years of an exact age in a table of whole ages begin on birthdays, all others with the policy year.
+        first_year = birth.year + whole if offset else commencement.year
+    return YearlyRates(rule, rates, entry, offset, scale, first_year)
 
 
 class Survival:

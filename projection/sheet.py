@@ -23,7 +23,8 @@ def convention_sheet(basis: Basis, settings: Settings) -> Sheet:
          "then it runs with duration"),
         ("fractions of a year of age", document.mortality.fractions),
         ("select", "duration since commencement; select rates, then ultimate"),
-        ("improvement", "none"),
+        ("improvement", _improvement(basis)),
+        ("two lives", _two_lives(basis)),
         ("decrements in one step", _decrements(basis)),
         ("claims paid", _claims(basis)),
         ("interest", "annual effective; discount factors from the valuation date; constant forward rates between "
@@ -36,6 +37,22 @@ def convention_sheet(basis: Basis, settings: Settings) -> Sheet:
          "minor unit before adding, so that sums do not depend on the order"),
         ("personal data", "policy identifiers only"),
     )  # fmt: skip
+
+
+def _improvement(basis: Basis) -> str:
+    scales = [scale.document for scale in basis.scales if scale is not None]
+    if not scales:
+        return "none"
+    years = sorted({str(one.base_year) for one in scales})
+    some = "" if len(scales) == len(basis.scales) else f"for {len(scales)} of {len(basis.scales)} mortality rules; "
+    return f"{some}by age and calendar year from base year {' or '.join(years)}, each cohort followed exactly"
+
+
+def _two_lives(basis: Basis) -> str:
+    shock = basis.document.mortality.common_shock
+    if not shock:
+        return "independent"
+    return f"independent but for a common shock with a force of {shock:g} a year, which is part of the rates of each"
 
 
 def _due(settings: Settings) -> str:
@@ -64,5 +81,6 @@ def _decrements(basis: Basis) -> str:
 def _claims(basis: Basis) -> str:
     paid = basis.document.claims.paid
     if isinstance(paid, ClaimDelay):
-        return f"{paid.delay_months:g} months after the middle of the step of death"
+        months = "1 month" if paid.delay_months == 1 else f"{paid.delay_months:g} months"
+        return f"{months} after the middle of the step of death"
     return f"at the {paid} of death"

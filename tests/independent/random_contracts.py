@@ -77,6 +77,14 @@ def write_tables(folder: Path) -> None:
         ]
         rows += [f"{age},,,,{q(age) if age < 95 else last!r}" for age in range(90, 96)]
         (folder / f"{name}.csv").write_text("\n".join(["age,select_0,select_1,select_2,ultimate", *rows]) + "\n")
+    by_age = [f"{age},{0.02 - 0.0001 * (age - 20)!r}" for age in range(20, 110)]
+    (folder / "improving.csv").write_text("\n".join(["age,rate", *by_age]) + "\n")
+    for name, figure in (("improving_2d", 0.015), ("reducing", 0.97)):
+        rows = [
+            ",".join([str(age), *(repr(figure - 0.001 * n + 0.0001 * (age - 60)) for n in range(4))])
+            for age in range(40, 80)
+        ]
+        (folder / f"{name}.csv").write_text("\n".join(["age,2019,2020,2021,2022", *rows]) + "\n")
     (folder / "leaving.csv").write_text("year,rate\n1,0.15\n2,0.08\n3,0\n4,0.03\n")
     (folder / "spot.csv").write_text("maturity,rate\n0.5,0.01\n1,0.015\n2,0.02\n7.25,0.03\n30,0.028\n")
 
@@ -246,9 +254,26 @@ def mortality_rules(draw: Draw, exact: bool) -> dict[str, Any]:
         rule["multiple"] = 100 if chance(draw, 12) else one_of(draw, 0.8, 0.0, 1.0, 3)
     if chance(draw, 3):
         rule["added_years"] = one_of(draw, 5, -3, 0, 20)
+    if chance(draw, 3):
+        rule["improvement"] = draw(improvements())
     if chance(draw, 4):
         rule["extra"] = 1.0 if chance(draw, 12) else one_of(draw, 0.002, 0.0, 0.1)
     return rule
+
+
+@st.composite
+def improvements(draw: Draw) -> dict[str, Any]:
+    if chance(draw, 4):
+        return {"table": "reducing.csv", "base_year": 2018, "holds": "reduction factors"}
+    made: dict[str, Any] = {"base_year": one_of(draw, 2018, 2015, 2030)}
+    made |= one_of(draw, {"table": "improving.csv"}, {"table": "improving_2d.csv"}, {"rate": 0.012}, {"rate": -0.01})
+    if chance(draw, 3):
+        made["multiple"] = one_of(draw, 0.5, 2.0, 0.0)
+    if chance(draw, 2):
+        made["long_term"] = {"rate": 0.0125, "years": one_of(draw, 1, 20)}
+        if chance(draw, 2):
+            made["long_term"]["from"] = one_of(draw, 2021, 2025)
+    return made
 
 
 @st.composite

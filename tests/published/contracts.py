@@ -76,10 +76,11 @@ def value(
     passed: float = 0,
     other_age: int | None = None,
     step: str = "year",
+    commenced: int = COMMENCED,
     expenses: list[dict[str, Any]] | None = None,
     **mortality: Any,
 ) -> float:
-    """Reserve of one policy that commenced ``passed`` years ago at an age.
+    """Reserve of one policy that commenced ``passed`` years ago, in the year ``commenced``, at an age.
 
     rates: what a mortality rule holds under 'table', or a list of rules; interest: a flat rate or what a rule
     holds; other_age: of the second life at commencement; mortality: further keys of that part.
@@ -96,17 +97,18 @@ def value(
     states = "one life" if other_age is None else "two lives"
     design = {"code": "CASE", "states": states, "stream": [_scaled(n, stream) for n, stream in enumerate(streams)]}
     whole, months = int(passed), round(12 * (passed - int(passed)))
-    on = date(COMMENCED + whole, 1 + months, 1)
-    found = projection.value(_policy(age, other_age), [design], basis, on, step=step, due="outstanding", sample=0)
+    on = date(commenced + whole, 1 + months, 1)
+    policy = _policy(age, other_age, commenced)
+    found = projection.value(policy, [design], basis, on, step=step, due="outstanding", sample=0)
     assert found.exceptions.num_rows == 0, found.exceptions.to_pylist()
     return float(found.policies["reserve"].to_pylist()[0]) / SCALE
 
 
-def _policy(age: int, other_age: int | None) -> pa.Table:
+def _policy(age: int, other_age: int | None, commenced: int) -> pa.Table:
     columns: dict[str, Any] = {
-        "policy_id": ["Q1"], "product": ["CASE"], "status": ["in force"], "birth_date": [date(COMMENCED - age, 1, 1)],
-        "commencement_date": [date(COMMENCED, 1, 1)], "lives": ["both"],
-        "second_birth_date": [date(COMMENCED - (other_age or 30), 1, 1)],
+        "policy_id": ["Q1"], "product": ["CASE"], "status": ["in force"], "birth_date": [date(commenced - age, 1, 1)],
+        "commencement_date": [date(commenced, 1, 1)], "lives": ["both"],
+        "second_birth_date": [date(commenced - (other_age or 30), 1, 1)],
     }  # fmt: skip
     return pa.table(columns)
 
