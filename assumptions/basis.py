@@ -14,7 +14,7 @@ from pydantic import Field, field_validator
 
 from .expenses import Expense
 from .improvement import Scale, read_scale
-from .interest import Curve, Interest, curve_from
+from .interest import Interest, YieldCurve, curve_of
 from .items import Item, Sourced
 from .lapse import Lapse
 from .laws import Law
@@ -78,7 +78,7 @@ class Basis:
     document: BasisDocument
     rates: tuple[Rates, ...]
     lapses: tuple[tuple[float, ...], ...]
-    curves: tuple[Curve, ...]
+    curves: tuple[YieldCurve, ...]
     files: dict[str, str] = field(default_factory=dict)
     """SHA-256 of every table file read, by its path in the document."""
     scales: tuple[Scale | None, ...] = ()
@@ -116,9 +116,9 @@ def prepare_basis(document: BasisDocument | dict[str, Any], folder: Path | str =
         _seal(files, folder, [rule.table for rule in document.lapse.rule])
     curves = []
     for rule in document.interest.rule:
-        spot = read_curve(folder / rule.spot) if isinstance(rule.spot, str) else rule.spot
-        curves.append(curve_from(rule.flat, rule.forward, spot))
-    _seal(files, folder, [rule.spot for rule in document.interest.rule if isinstance(rule.spot, str)])
+        held = rule.smith_wilson.spot if rule.smith_wilson is not None else rule.spot
+        curves.append(curve_of(rule, read_curve(folder / held) if isinstance(held, str) else held))
+        _seal(files, folder, [held] if isinstance(held, str) else [])
     improvements = [rule.improvement for rule in document.mortality.rule]
     scales = tuple(read_scale(one, folder) if one else None for one in improvements)
     _seal(files, folder, [one.table for one in improvements if one])

@@ -1,7 +1,8 @@
 """The interest part of a basis: discount factors from the valuation date.
 
-All rates are annual effective. Whatever the form of the document, a curve comes down to the integral H(t) of
-the force of interest from 0 to t years, which is piecewise linear, and v(t) = exp(-H(t)).
+All rates are annual effective. Flat, forward and spot rates come down to the integral H(t) of the force of interest
+from 0 to t years, which is piecewise linear, and v(t) = exp(-H(t)); yield curves in closed form stand in a module of
+their own.
 """
 
 from __future__ import annotations
@@ -9,15 +10,22 @@ from __future__ import annotations
 import math
 from bisect import bisect_left
 from dataclasses import dataclass
+from typing import Protocol
 
+import numpy as np
+from numpy.typing import NDArray
 from pydantic import Field, field_validator, model_validator
 
 from .items import Item
 from .rules import Rule
+from .yield_curves import SmithWilson, Svensson, smith_wilson_curve, svensson_curve
+
+FORMS = ("flat", "forward", "spot", "svensson", "smith_wilson")
+"""Keys of an interest rule, of which each has one."""
 
 
 class InterestRule(Rule):
-    """A curve for the policies that fit: flat, yearly forwards, or spot rates by maturity."""
+    """A curve for the policies that fit: flat, yearly forwards, spot rates by maturity, or a yield curve's formula."""
 
     flat: float | None = Field(None, description="one rate for all times")
     forward: list[float] | None = Field(
@@ -29,6 +37,18 @@ class InterestRule(Rule):
         "constant forward rate between maturities, the last one held",
     )
 
+    svensson: Svensson | None = Field(None, description="spot rates by the formula of Svensson, or Nelson and Siegel")
+    smith_wilson: SmithWilson | None = Field(
+        None, description="spot rates by maturity, and an ultimate forward rate that the curve tends to"
+    )
+
+    @field_validator("smith_wilson", mode="before")
+    @classmethod
+    def _inner_keys(cls, value: object) -> object:
+        if isinstance(value, dict) and isinstance(value.get("spot"), dict):
+            return {**value, "spot": {float(key): rate for key, rate in value["spot"].items()}}
+        return value
+
     @field_validator("spot", mode="before")
     @classmethod
     def _keys(cls, value: object) -> object:
@@ -39,10 +59,10 @@ class InterestRule(Rule):
 
     @model_validator(mode="after")
     def _one_form(self) -> InterestRule:
-        given = [name for name in ("flat", "forward", "spot") if getattr(self, name) is not None]
+        given = [name for name in FORMS if getattr(self, name) is not None]
         if len(given) != 1:
             said = f"; {' and '.join(given)} are given" if given else ""
-            raise ValueError(f"an interest rule needs one of 'flat', 'forward' and 'spot'{said}")
+            raise ValueError(f"an interest rule needs one of {', '.join(map(repr, FORMS))}{said}")
         if self.flat is not None:
             _check_rate(self.flat, "flat")
         for year, rate in enumerate(self.forward or (), 1):
@@ -72,6 +92,17 @@ class Curve:
     integrals: tuple[float, ...]
     final_force: float
 
+    @property
+    def flat(self) -> bool:
+        """Whether the force is the same at all times."""
+        return len(self.times) == 1
+
+    def factors(self, years: NDArray[np.float64]) -> NDArray[np.float64]:
+        """Discount factors for many t >= 0 in years."""
+        beyond = np.maximum(years - self.times[-1], 0)
+        integral = np.interp(years, np.array(self.times), np.array(self.integrals)) + self.final_force * beyond
+        return np.asarray(np.exp(-integral))
+
     def integral(self, t: float) -> float:
         """H(t) for t >= 0 in years."""
         if t >= self.times[-1]:
@@ -84,6 +115,36 @@ class Curve:
     def factor(self, t: float) -> float:
         """Discount factor v(t) = exp(-H(t)) for t >= 0 in years."""
         return math.exp(-self.integral(t))
+
+
+class YieldCurve(Protocol):
+    """Discount factors from the valuation date."""
+
+    @property
+    def flat(self) -> bool:
+        """Whether the force is the same at all times."""
+
+    def integral(self, t: float) -> float:
+        """Integral of the force of interest from 0 to t >= 0 in years."""
+
+    def factor(self, t: float) -> float:
+        """Discount factor v(t)."""
+
+    def factors(self, years: NDArray[np.float64]) -> NDArray[np.float64]:
+        """Discount factors for many t."""
+
+
+def curve_of(rule: InterestRule, spot: dict[float, float] | None) -> YieldCurve:
+    """Return the curve of a rule; spot: the spot rates by maturity that it holds or names.
+
+    Raises ValueError for figures that make no curve.
+    """
+    if rule.svensson is not None:
+        return svensson_curve(rule.svensson)
+    if rule.smith_wilson is not None:
+        _check_spots(spot or {})
+        return smith_wilson_curve(rule.smith_wilson, spot or {})
+    return curve_from(rule.flat, rule.forward, spot)
 
 
 def curve_from(
@@ -106,7 +167,7 @@ def curve_from(
     return _from_spot(spot or {})
 
 
-def _from_spot(spot: dict[float, float]) -> Curve:
+def _check_spots(spot: dict[float, float]) -> list[float]:
     maturities = sorted(spot)
     if not maturities:
         raise ValueError("a spot curve needs at least one maturity")
@@ -114,6 +175,11 @@ def _from_spot(spot: dict[float, float]) -> Curve:
         raise ValueError(f"maturity {maturities[0]:g} is not above 0")
     for maturity in maturities:
         _check_rate(spot[maturity], f"the spot rate at maturity {maturity:g}")
+    return maturities
+
+
+def _from_spot(spot: dict[float, float]) -> Curve:
+    maturities = _check_spots(spot)
     times = [0.0, *maturities]
     integrals = [0.0, *(maturity * math.log1p(spot[maturity]) for maturity in maturities)]
     final = (integrals[-1] - integrals[-2]) / (times[-1] - times[-2])

@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 
 from assumptions.basis import Basis, ClaimDelay
 from assumptions.improvement import Scale
-from assumptions.interest import Curve
+from assumptions.interest import YieldCurve
 from assumptions.lapse import LapseRule, yearly_lapse
 from assumptions.laws import Law
 from assumptions.mortality import MortalityRule, Rates
@@ -273,18 +273,18 @@ class Discount:
                 claim_accrued = 1.0
                 begin = np.maximum(n - self.settings.step_months, passed)
                 delay = self.paid.delay_months if isinstance(self.paid, ClaimDelay) else 0.0
-                claim = self.pool.add(factors(curve, np.maximum((begin + n) / 2 + delay - passed, 0) / 12))
+                claim = self.pool.add(curve.factors(np.maximum((begin + n) / 2 + delay - passed, 0) / 12))
             self.places.append((payment, claim))
             self.accrued.append((accrued, claim_accrued))
         return self.known[code]
 
-    def _payment(self, rule: int, curve: Curve, n: Row, passed: float) -> tuple[int, float]:
+    def _payment(self, rule: int, curve: YieldCurve, n: Row, passed: float) -> tuple[int, float]:
         """Place of the factors of payments n months after the last point, and the factor to all of them."""
-        if len(curve.times) > 1:
-            return self.pool.add(factors(curve, np.maximum(n - passed, 0) / 12)), 1.0
+        if not curve.flat:
+            return self.pool.add(curve.factors(np.maximum(n - passed, 0) / 12)), 1.0
         if rule not in self.whole:
-            self.whole[rule] = self.pool.add(factors(curve, n / 12))
-        return self.whole[rule], float(np.exp(curve.final_force * passed / 12))
+            self.whole[rule] = self.pool.add(curve.factors(n / 12))
+        return self.whole[rule], float(np.exp(curve.integral(passed / 12)))
 
     def months_after_start(self) -> float:
         """Months from the start of a step to the payment of a death claim; below 0 where it is paid at its end."""
@@ -296,14 +296,6 @@ class Discount:
 
 _WHOLES = np.zeros(367, dtype=np.int64)
 _WHOLES[[28, 29, 30, 31, 365, 366]] = range(6)
-
-
-def factors(curve: Curve, years: Row) -> Row:
-    """Discount factors v(t) for many t >= 0 in years."""
-    times, integrals = np.array(curve.times), np.array(curve.integrals)
-    beyond = np.maximum(years - times[-1], 0)
-    integral = np.interp(years, times, integrals) + curve.final_force * beyond
-    return np.asarray(np.exp(-integral))
 
 
 class Finder:

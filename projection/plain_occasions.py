@@ -9,7 +9,7 @@ from fractions import Fraction
 from typing import Literal, NamedTuple
 
 from assumptions.basis import ClaimDelay, Claims
-from assumptions.interest import Curve
+from assumptions.interest import YieldCurve
 from portfolios.states import States
 
 from .plain_lapse import Persistency
@@ -71,7 +71,7 @@ class Course:
     lives: Lives
     lapses: Persistency
     claims: Claims
-    curve: Curve
+    curve: YieldCurve
     alive_now: float = field(init=False)
     """L(T)."""
     in_force_now: float = field(init=False)

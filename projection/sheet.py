@@ -27,8 +27,7 @@ def convention_sheet(basis: Basis, settings: Settings) -> Sheet:
         ("two lives", _two_lives(basis)),
         ("decrements in one step", _decrements(basis)),
         ("claims paid", _claims(basis)),
-        ("interest", "annual effective; discount factors from the valuation date; constant forward rates between "
-         "maturities, the last one held"),
+        ("interest", _interest(basis)),
         ("sign", "reserve = value of benefits, expenses and commission - value of premiums; cash flows are positive "
          "amounts with a direction"),
         ("money", f"double precision inside; each policy's results are rounded half-even to {settings.decimals} "
@@ -37,6 +36,20 @@ def convention_sheet(basis: Basis, settings: Settings) -> Sheet:
          "minor unit before adding, so that sums do not depend on the order"),
         ("personal data", "policy identifiers only"),
     )  # fmt: skip
+
+
+def _interest(basis: Basis) -> str:
+    rules = basis.document.interest.rule
+    words = ["annual effective; discount factors from the valuation date"]
+    if any(rule.forward is not None or rule.spot is not None for rule in rules):
+        words.append("constant forward rates between maturities, the last one held")
+    if any(rule.svensson is not None for rule in rules):
+        words.append("spot rates by Svensson's formula")
+    for rule, curve in zip(rules, basis.curves, strict=True):
+        if rule.smith_wilson is not None:
+            alpha = getattr(curve, "alpha", 0.0)
+            words.append(f"Smith-Wilson, ultimate forward rate {rule.smith_wilson.ultimate:.4%}, alpha {alpha:.6f}")
+    return "; ".join(words)
 
 
 def _improvement(basis: Basis) -> str:

@@ -300,6 +300,10 @@ def interest_rules(draw: Draw) -> dict[str, Any]:
         {"forward": [0.01, 0.05, 0.02, 0.03]},
         {"forward": [0.03]},
         {"spot": {"1": 0.01, "2.5": 0.03, "10": 0.02}},
+        {"svensson": {"beta0": 0.03, "beta1": -0.02, "beta2": 0.01, "beta3": 0.015, "tau1": 1.7, "tau2": 9.5}},
+        {"svensson": {"beta0": 0.02, "beta1": 0.01, "tau1": 3.0, "compounding": "continuous"}},
+        {"smith_wilson": {"spot": "spot.csv", "ultimate": 0.034, "convergence": 70.0}},
+        {"smith_wilson": {"spot": {"1": 0.01, "20": 0.03}, "ultimate": 0.042, "alpha": 0.12}},
         {"spot": {"0.25": 0.05}},
         {"spot": "spot.csv"},
     )
