@@ -5,8 +5,7 @@ Reserves, totals and cash flows are compared as bits, not as numbers that are ne
 
 from __future__ import annotations
 
-from collections import Counter, defaultdict
-from fractions import Fraction
+from collections import defaultdict
 from pathlib import Path
 from random import Random
 from typing import Any, ClassVar
@@ -15,6 +14,7 @@ import numpy as np
 import pyarrow as pa
 import pyarrow.parquet as pq
 import pytest
+from table_bits import bits
 
 import projection.valuation
 from assumptions.basis import Basis
@@ -29,6 +29,9 @@ from projection.tally import Tally
 
 POLICIES = 1_500
 GROUPS = ("product", "sex")
+Found = tuple[pa.Table, Outcome]
+"""Per-policy results, and the rest."""
+
 RUNS = ("month-end.toml", "month-end-best-estimate.toml")
 
 
@@ -42,8 +45,7 @@ class Office:
         self.settings = Settings(run.valuation_date, step, run.due, run.decimals)
         self.table: pa.Table = pq.read_table(folder / run.extract)
 
-    def value(self, extract: Any, *, chunk_rows: int = CHUNK_ROWS, threads: int = 1) -> tuple[pa.Table, Outcome]:
-        """Per-policy results, and the rest."""
+    def value(self, extract: Any, *, chunk_rows: int = CHUNK_ROWS, threads: int = 1) -> Found:
         pieces: list[pa.Table] = []
         found = projection.valuation.value_extract(
             open_extract(extract), self.designs, self.basis, self.settings, group_by=GROUPS, sample=2,
@@ -65,49 +67,39 @@ def office(request: pytest.FixtureRequest, folder: Path) -> Office:
 
 
 @pytest.fixture(scope="module")
-def whole(office: Office) -> tuple[pa.Table, Outcome]:
+def whole(office: Office) -> Found:
     found = office.value(office.table)
     assert found[0].num_rows > 0.9 * POLICIES
     assert found[1].exceptions.num_rows > 0
     return found
 
 
-def bits(table: pa.Table) -> list[tuple[Any, ...]]:
-    """The rows of a table, doubles as their bits."""
-    columns = []
-    for column in table.columns:
-        real = pa.types.is_floating(column.type)
-        columns.append(column.to_numpy().view(np.int64).tolist() if real else column.to_pylist())
-    return list(zip(*columns, strict=True))
-
-
-def check_same(one: tuple[pa.Table, Outcome], other: tuple[pa.Table, Outcome], *, ordered: bool = True) -> None:
+def check_same(one: Found, other: Found, *, ordered: bool = True) -> None:
     """Compare all figures; not ordered: the policies may come in another order, nothing else."""
-    if ordered:
-        assert bits(one[0]) == bits(other[0])
-        assert bits(one[1].exceptions) == bits(other[1].exceptions)
-    assert Counter(bits(one[0])) == Counter(bits(other[0]))
-    assert Counter(bits(one[1].exceptions)) == Counter(bits(other[1].exceptions))
-    assert bits(one[1].totals) == bits(other[1].totals)
-    assert sorted(bits(one[1].cash_flows)) == sorted(bits(other[1].cash_flows))
-    assert bits(one[1].cash_flows) == bits(other[1].cash_flows), "same lines, but in another order"
-    assert (one[1].total, set(one[1].control)) == (other[1].total, set(other[1].control))
+    by = [("policy_id", "ascending")]
+    for left, right in ((one[0], other[0]), (one[1].exceptions, other[1].exceptions)):
+        if ordered:
+            assert bits(left).equals(bits(right))
+        assert bits(left).sort_by(by).equals(bits(right).sort_by(by))
+    assert bits(one[1].totals).equals(bits(other[1].totals))
+    assert bits(one[1].cash_flows).equals(bits(other[1].cash_flows))
+    assert one[1].total == other[1].total
+    assert one[1].control == other[1].control
 
 
-@pytest.mark.parametrize("seed", [1, 2, 3])
-def test_shuffled_rows(office: Office, whole: tuple[pa.Table, Outcome], seed: int) -> None:
+@pytest.mark.parametrize("seed", [1, 2])
+def test_shuffled_rows(office: Office, whole: Found, seed: int) -> None:
     order = list(range(POLICIES))
     Random(seed).shuffle(order)
     check_same(whole, office.value(office.table.take(order)), ordered=False)
 
 
-@pytest.mark.parametrize("threads", [1, 2])
-@pytest.mark.parametrize("rows", [7, 64, 501, POLICIES])
-def test_chunks_and_threads(office: Office, whole: tuple[pa.Table, Outcome], rows: int, threads: int) -> None:
+@pytest.mark.parametrize(("rows", "threads"), [(13, 1), (64, 2), (501, 1), (501, 2), (POLICIES, 2)])
+def test_chunks_and_threads(office: Office, whole: Found, rows: int, threads: int) -> None:
     check_same(whole, office.value(office.table, chunk_rows=rows, threads=threads))
 
 
-def test_one_file_against_several(office: Office, whole: tuple[pa.Table, Outcome], tmp_path: Path) -> None:
+def test_one_file_against_several(office: Office, whole: Found, tmp_path: Path) -> None:
     (tmp_path / "several").mkdir()
     pq.write_table(office.table, tmp_path / "one.parquet", row_group_size=POLICIES)
     for number, (begin, end, group) in enumerate(
@@ -122,18 +114,16 @@ def test_one_file_against_several(office: Office, whole: tuple[pa.Table, Outcome
 
 
 class Kept(Tally):
-    """A tally that leaves behind the exact cash flows of its lines, before the table rounds them."""
+    """A tally that leaves behind the exact cash flows by line and share, before the table rounds them."""
 
-    exact: ClassVar[dict[tuple[str, str, int], Fraction]] = {}
+    exact: ClassVar[dict[Any, Any]] = {}
 
     def flows_table(self, plans: Plans, year: int, month: int) -> pa.Table:
-        Kept.exact = defaultdict(Fraction)
+        Kept.exact = defaultdict(int)
         lines = list(plans.lines)
         for (_, shares), account in plans.accounts.items():
-            for bin_ in np.flatnonzero(self.flows[account]).tolist():
-                for line, share in shares:
-                    key = (lines[line].product, lines[line].stream, bin_)
-                    Kept.exact[key] += Fraction(share) * int(self.flows[account, bin_])
+            for line, share in shares:
+                Kept.exact[lines[line].product, lines[line].stream, share] += self.flows[account]
         return super().flows_table(plans, year, month)
 
 
@@ -156,7 +146,7 @@ def test_two_parts_add_up_to_the_whole(office: Office, monkeypatch: pytest.Monke
     for key, figures in totals[0].items():
         assert np.array_equal(figures, totals[1].get(key, 0) + totals[2].get(key, 0)), key
     for key in exact[0].keys() | exact[1].keys() | exact[2].keys():
-        assert exact[0].get(key, 0) == exact[1].get(key, 0) + exact[2].get(key, 0), key
+        assert np.array_equal(exact[0][key], exact[1].get(key, 0) + exact[2].get(key, 0)), key
     # The table rounds a line to the minor unit in the whole and in either part: three times a half.
     for key in tables[0].keys() | tables[1].keys() | tables[2].keys():
         assert abs(tables[0].get(key, 0) - tables[1].get(key, 0) - tables[2].get(key, 0)) <= 1, key
