@@ -122,11 +122,26 @@ class Engine:
         clock.lap("curves")
         results = _room_for(chunk.n, checked, tables, len(self.plans.accounts))
         loops.value_policies(order, policies, tables, self.rules, results)
+        self._take_back(order, policies, tables, results)
         clock.lap("loops")
         self._name_faults(checked, results.fault, tables.segments)
         valued = Valued(checked, results, int(results.months[0]))
         valued.seconds = clock.seconds
         return valued
+
+    def _take_back(
+        self, order: NDArray[np.int64], policies: NDArray[Any], tables: loops.Tables, results: loops.Results
+    ) -> None:
+        """Take back the cash flows of policies whose result turned out to be no amount of money.
+
+        The same payments with the other sign, each rounded to the same whole number, leave nothing behind.
+        """
+        reason = results.reason
+        if not (reason == Reason.RESULT_NOT_FINITE).any():
+            return
+        others = np.where(reason == Reason.RESULT_NOT_FINITE, 0, reason | 1).astype(reason.dtype)
+        again = results._replace(reason=others)
+        loops.value_policies(order, policies, tables, self.rules._replace(sign=-1.0), again)
 
     def _locate(self, chunk: Chunk, checked: Checked) -> loops.Places:
         places = loops.Places(*(np.zeros(chunk.n, dtype=np.int32) for _ in loops.Places._fields))

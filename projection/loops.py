@@ -40,6 +40,15 @@ ROOM: Final = TOGETHER + 1
 MAGIC = 6755399441055744.0
 """1.5 * 2^52: a number added to it is rounded to a whole one, half to even, which then stands in its last bits."""
 
+FAST = 2.0**50
+"""Quanta up to which payments are rounded in this way."""
+
+MOST = 4e18
+"""Quanta that one payment may come to; a policy with a larger one is not valued."""
+
+BEYOND: Final = 1e30
+"""Value of a stream with such a payment: more than a policy's results may reach."""
+
 MAGIC_BITS = int(np.float64(MAGIC).view(np.int64))
 
 _NO_SURVIVAL = int(Reason.NO_SURVIVAL)
@@ -73,7 +82,7 @@ class Rules(NamedTuple):
     step: months; outstanding: 1 if payments due on T are to come; fractions: 0 constant force, 1 uniform
     deaths, 2 Balducci; dependent: 1 for decrements uniform in their single tables; quantum: cash flows are
     rounded to whole multiples of 1 / quantum; minor: minor units in one of currency; shock: force of a cause from
-    which both lives die at once.
+    which both lives die at once; sign: -1 to take cash flows back.
     """
 
     step: int
@@ -83,6 +92,7 @@ class Rules(NamedTuple):
     quantum: float
     minor: float
     shock: float
+    sign: float = 1.0
 
 
 class Tables(NamedTuple):
@@ -257,6 +267,12 @@ def records(array: Any) -> Any:
 def quanta(amount):
     """An amount rounded to a whole number, half to even; below 2^51 in absolute value."""
     return bits(amount + MAGIC) - MAGIC_BITS
+
+
+@inner
+def exact_quanta(amount):
+    """The same for amounts of any size; 0 for one that is beyond all bounds."""
+    return np.int64(np.rint(amount)) if abs(amount) <= MOST else np.int64(0)
 
 
 @inner
@@ -528,8 +544,13 @@ def sum_monthly(room, weight, pool, relative, discount, flows, flow, count, amou
 
 
 @inner
-def sum_apart(lives, pool, living, held, relative, discount, a, b, flows, flow, count, hop, amount, quantum):
-    """The same for payments ``hop`` points from one another, with a and b times survival at both ends as occupancy."""
+def sum_apart(lives, pool, living, held, relative, discount, a, b, flows, flow, count, hop, amount, quantum, large):
+    """The same for payments ``hop`` points from one another, with a and b times survival at both ends as occupancy.
+
+    large: whether payments may be too large to be rounded fast.
+    """
+    if large:
+        return sum_large(lives, pool, living, held, relative, discount, a, b, flows, flow, count, hop, amount, quantum)
     scale = amount * quantum
     o, h, r, d, f = np.uint64(living), np.uint64(held), np.uint64(relative), np.uint64(discount), np.uint64(flow)
     e = np.uint64(living - hop) if a != 0.0 else o
@@ -541,6 +562,20 @@ def sum_apart(lives, pool, living, held, relative, discount, a, b, flows, flow, 
         total += x * pool[d]
         e, o, h, r, d, f = e + hop, o + hop, h + hop, r + hop, d + hop, f + hop
     return amount * total
+
+
+@inner
+def sum_large(lives, pool, living, held, relative, discount, a, b, flows, flow, count, hop, amount, quantum):
+    """The same for payments of any size; too much for a policy's results if one is beyond all bounds."""
+    total, beyond = 0.0, False
+    for n in range(count):
+        at = n * hop
+        x = (a * lives[living + at - hop if a != 0.0 else living + at] + b * lives[living + at]) * pool[held + at]
+        x *= pool[relative + at]
+        flows[flow + at] += exact_quanta(x * amount * quantum)
+        beyond = beyond or abs(x * amount * quantum) > MOST
+        total += x * pool[discount + at]
+    return BEYOND if beyond else amount * total
 
 
 @inlined
@@ -742,6 +777,15 @@ def due_today(stream, whole, j, p, rules):
 
 
 @inlined
+def largest_relative(stream, whole, j, pool):
+    """Largest relative amount of a segment at any time; that of a row per policy stands in front of the row."""
+    if stream.changing < 0:
+        return stream.largest
+    row = entry(whole, stream.changing, j)
+    return stream.largest if row == ONES else stream.largest * pool[row - 1]
+
+
+@inlined
 def relative_place(stream, whole, j, month, calendar):
     """Place of the relative amount of a month on the stream's clock, or of a calendar month."""
     if stream.calendar >= 0:
@@ -877,7 +921,7 @@ def value_policies(order, policies, tables, rules, results):
                 benefits += stream.benefits * value
                 expenses += stream.expenses * value
                 premiums += stream.premiums * value
-        results.months[0] += furthest - p.k
+        results.months[0] += (furthest - p.k) * np.int64(rules.sign)
         keep_results(i, benefits, expenses, premiums, rules.minor, results)
 
 
@@ -899,30 +943,32 @@ def value_segment(
     stream, p, life, lives, whole, j, money, pool, inforce, first, count, today, rules, flows, room, filled
 ):
     """Value of a segment for one policy; life: whose survival it depends on, and lives the array that holds it."""
-    amount = stream.factor
+    amount = rules.sign * stream.factor
     if stream.amount >= 0:
         amount *= money[np.uint64(stream.amount), np.uint64(j)]
     for _ in range(stream.power):
         amount *= entry(whole, stream.period, j) / 12.0
     if amount == 0.0:
         return 0.0
+    large = abs(amount) * rules.quantum * largest_relative(stream, whole, j, pool) > FAST
     value = 0.0
     if today:
         due, month = due_today(stream, whole, j, p, rules)
         if due:
             # Survival and discount do not come in; the payment is certain.
             value = amount * pool[relative_place(stream, whole, j, month, p.k + p.shift)]
-            flows[stream.account * BINS + max(0, p.k + p.shift)] += quanta(value * rules.quantum)
+            paid = value * rules.quantum
+            flows[stream.account * BINS + max(0, p.k + p.shift)] += exact_quanta(paid) if large else quanta(paid)
     if count > 0:
         if stream.when == s.DEATH or stream.when == s.LAPSE:
             value += value_moves(
-                stream, p, life, lives, whole, j, pool, inforce, first, count, amount, rules, flows, room, filled
+                stream, p, life, lives, whole, j, pool, inforce, first, count, amount, rules, flows, room, filled, large
             )
         elif stream.when == s.THIRD_TERM:
             value += third_term(stream, p, life, whole, j, pool, inforce, first, count, amount, rules)
         else:
             value += value_payments(
-                stream, p, life, lives, whole, j, pool, inforce, first, count, amount, rules, flows, room, filled
+                stream, p, life, lives, whole, j, pool, inforce, first, count, amount, rules, flows, room, filled, large
             )
     return value
 
@@ -949,7 +995,9 @@ def apart(stream, whole, j, rules):
 
 
 @inlined
-def value_payments(stream, p, life, lives, whole, j, pool, inforce, first, count, amount, rules, flows, room, filled):
+def value_payments(
+    stream, p, life, lives, whole, j, pool, inforce, first, count, amount, rules, flows, room, filled, large
+):
     """Value of payments while alive, for certain, or guaranteed, at their own dates after T."""
     there = life.alive * inforce
     period = apart(stream, whole, j, rules)
@@ -972,7 +1020,7 @@ def value_payments(stream, p, life, lives, whole, j, pool, inforce, first, count
         if start > life.over:  # nobody lives to see its start
             return 0.0
         amount *= lives[life.living + start] * pool[p.held + start] / there
-    if period > 1 or count < 4:
+    if period > 1 or count < 4 or large:
         place, held = (life.living + first, p.held + first - before) if alive else (ONES, ONES)
         return p.payment_accrued * sum_apart(
             lives if alive else pool,
@@ -989,6 +1037,7 @@ def value_payments(stream, p, life, lives, whole, j, pool, inforce, first, count
             period,
             amount,
             rules.quantum,
+            large,
         )
     weight = CERTAINLY * BINS
     if alive:
@@ -998,7 +1047,9 @@ def value_payments(stream, p, life, lives, whole, j, pool, inforce, first, count
 
 
 @inlined
-def value_moves(stream, p, life, lives, whole, j, pool, inforce, first, count, amount, rules, flows, room, filled):
+def value_moves(
+    stream, p, life, lives, whole, j, pool, inforce, first, count, amount, rules, flows, room, filled, large
+):
     """Value of payments on death or lapse, step by step; the broken first step on its own."""
     step = rules.step
     death = stream.when == s.DEATH
@@ -1023,7 +1074,8 @@ def value_moves(stream, p, life, lives, whole, j, pool, inforce, first, count, a
         elif not death:
             share = inforce - pool[p.held + first]
         x = (a * life.alive + b * lives[life.living + first]) * share * pool[relative]
-        flows[stream.account * BINS + max(0, calendar + claim_first)] += quanta(x * amount * rules.quantum)
+        paid = x * amount * rules.quantum
+        flows[stream.account * BINS + max(0, calendar + claim_first)] += exact_quanta(paid) if large else quanta(paid)
         value = amount * x * pool[discount]
         count -= 1
         first, calendar, discount = first + step, calendar + step, discount + step
@@ -1031,7 +1083,7 @@ def value_moves(stream, p, life, lives, whole, j, pool, inforce, first, count, a
     if count <= 0:
         return accrued * value
     flow = stream.account * BINS + max(0, calendar + claim_shift)
-    if step > 1 or count < 4:
+    if step > 1 or count < 4 or large:
         value += sum_apart(
             lives,
             pool,
@@ -1047,6 +1099,7 @@ def value_moves(stream, p, life, lives, whole, j, pool, inforce, first, count, a
             step,
             amount,
             rules.quantum,
+            large,
         )
         return accrued * value
     weight = weights(stream.life * KINDS + kind, lives, pool, life.living, held, first, count, filled, room)

@@ -77,7 +77,7 @@ class _Record:
 _PARTS = ("benefits", "expenses", "premiums")
 """Fields with the shares of the parts, by their codes."""
 
-_SHARED = [name for name in s.SEGMENT.names or () if name not in ("account", *_PARTS)]
+_SHARED = [name for name in s.SEGMENT.names or () if name not in ("account", "largest", *_PARTS)]
 """Fields that a segment takes from its records."""
 
 
@@ -120,6 +120,7 @@ class Plans:
             row[name] = getattr(shape, name)
         shares = tuple((record.line, record.factor / shape.factor) for record in charged)
         row["account"] = self.accounts.setdefault((shape, shares), len(self.accounts))
+        row["largest"] = self.relative.largest(shape.relative) * self.relative.largest(shape.calendar)
         for record in charged:
             row[_PARTS[record.part]] += record.factor / shape.factor
 

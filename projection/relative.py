@@ -115,6 +115,10 @@ class RelativeRows:
 
         return self._place((inflation.rate, inflation.from_), build)
 
+    def largest(self, place: int) -> float:
+        """Return the largest amount of a row; 1 where there is none."""
+        return 1.0 if place in (-1, ONES) else float(self.pool.numbers[place - 1])
+
     def per_policy(self, shape: Shape, start: int, end: int) -> int:
         """Return the number of a shape whose row depends on the policy; start, end: columns of months."""
         return self.changing.setdefault((shape, start, end), len(self.changing))
@@ -156,5 +160,7 @@ class RelativeRows:
 
     def _place(self, key: Hashable, build: Callable[[], NDArray[np.float64]]) -> int:
         if key not in self.known:
-            self.known[key] = self.pool.add(build())
+            row = build()
+            # The largest amount stands in front of its row.
+            self.known[key] = self.pool.add(np.concatenate(([np.abs(row).max()], row))) + 1
         return self.known[key]

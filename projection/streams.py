@@ -64,6 +64,7 @@ SEGMENT = np.dtype(
         ("clock", "i8"),  # 0: the stream's start, 1: commencement
         ("relative", "i8"),  # place of its row of relative amounts by months of the clock
         ("changing", "i8"),  # row with the place of that row per policy; -1: the same for all
+        ("largest", "f8"),  # largest relative amount at any time, without that of a row per policy
         ("calendar", "i8"),  # place of a row of relative amounts by calendar month; -1: none
         ("span_from", "i8"),  # payments whose relative month is at least this many months after the stream's start
         ("span_to", "i8"),  # ... and less than this many
