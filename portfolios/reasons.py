@@ -99,5 +99,8 @@ _WORDS: dict[Reason, tuple[str, str]] = {
         "survival and persistency to the valuation date must be above zero under the basis",
     ),
     Reason.TOO_LONG: ("contract too long", "a contract may run for 120 years"),
-    Reason.RESULT_NOT_FINITE: ("result not a number, or too large", "the value must be a finite amount below 10,000,000,000,000"),
+    Reason.RESULT_NOT_FINITE: (
+        "result not a number, or too large",
+        "the value must be a finite amount, in minor units below 1,000,000,000,000,000",
+    ),
 }
