@@ -43,8 +43,8 @@ MAGIC = 6755399441055744.0
 FAST = 2.0**50
 """Quanta up to which payments are rounded in this way."""
 
-MOST = 4e18
-"""Quanta that one payment may come to; a policy with a larger one is not valued."""
+PIECES: Final = 4096
+"""Most pieces that a larger payment is cut into; a policy with one beyond that is not valued."""
 
 BEYOND: Final = 1e30
 """Value of a stream with such a payment: more than a policy's results may reach."""
@@ -267,12 +267,6 @@ def records(array: Any) -> Any:
 def quanta(amount):
     """An amount rounded to a whole number, half to even; below 2^51 in absolute value."""
     return bits(amount + MAGIC) - MAGIC_BITS
-
-
-@inner
-def exact_quanta(amount):
-    """The same for amounts of any size; 0 for one that is beyond all bounds."""
-    return np.int64(np.rint(amount)) if abs(amount) <= MOST else np.int64(0)
 
 
 @inner
@@ -544,13 +538,8 @@ def sum_monthly(room, weight, pool, relative, discount, flows, flow, count, amou
 
 
 @inner
-def sum_apart(lives, pool, living, held, relative, discount, a, b, flows, flow, count, hop, amount, quantum, large):
-    """The same for payments ``hop`` points from one another, with a and b times survival at both ends as occupancy.
-
-    large: whether payments may be too large to be rounded fast.
-    """
-    if large:
-        return sum_large(lives, pool, living, held, relative, discount, a, b, flows, flow, count, hop, amount, quantum)
+def sum_apart(lives, pool, living, held, relative, discount, a, b, flows, flow, count, hop, amount, quantum):
+    """The same for payments ``hop`` points from one another, with a and b times survival at both ends as occupancy."""
     scale = amount * quantum
     o, h, r, d, f = np.uint64(living), np.uint64(held), np.uint64(relative), np.uint64(discount), np.uint64(flow)
     e = np.uint64(living - hop) if a != 0.0 else o
@@ -562,20 +551,6 @@ def sum_apart(lives, pool, living, held, relative, discount, a, b, flows, flow, 
         total += x * pool[d]
         e, o, h, r, d, f = e + hop, o + hop, h + hop, r + hop, d + hop, f + hop
     return amount * total
-
-
-@inner
-def sum_large(lives, pool, living, held, relative, discount, a, b, flows, flow, count, hop, amount, quantum):
-    """The same for payments of any size; too much for a policy's results if one is beyond all bounds."""
-    total, beyond = 0.0, False
-    for n in range(count):
-        at = n * hop
-        x = (a * lives[living + at - hop if a != 0.0 else living + at] + b * lives[living + at]) * pool[held + at]
-        x *= pool[relative + at]
-        flows[flow + at] += exact_quanta(x * amount * quantum)
-        beyond = beyond or abs(x * amount * quantum) > MOST
-        total += x * pool[discount + at]
-    return BEYOND if beyond else amount * total
 
 
 @inlined
@@ -785,6 +760,19 @@ def largest_relative(stream, whole, j, pool):
     return stream.largest if row == ONES else stream.largest * pool[row - 1]
 
 
+@inner
+def largest_so_far(stream, whole, j, pool, last, shift):
+    """The same up to a point; the largest amounts so far stand behind the rows."""
+    row = stream.relative if stream.changing < 0 else entry(whole, stream.changing, j)
+    largest = 1.0
+    if row != ONES:
+        clock = entry(whole, stream.start, j) if stream.clock == 0 else np.int64(0)
+        largest = pool[row + s.WIDE + min(max(0, last - clock), s.WIDE - 1)]
+    if stream.calendar >= 0:
+        largest *= pool[stream.calendar + s.WIDE + min(max(0, last + shift), s.WIDE - 1)]
+    return largest
+
+
 @inlined
 def relative_place(stream, whole, j, month, calendar):
     """Place of the relative amount of a month on the stream's clock, or of a calendar month."""
@@ -950,26 +938,37 @@ def value_segment(
         amount *= entry(whole, stream.period, j) / 12.0
     if amount == 0.0:
         return 0.0
-    large = abs(amount) * rules.quantum * largest_relative(stream, whole, j, pool) > FAST
+    # A payment that is too large to be rounded at once is paid in equal pieces.
+    size = abs(amount) * rules.quantum * largest_relative(stream, whole, j, pool)
+    pieces = np.int64(1)
+    if size > FAST:
+        last = p.k if count == 0 else first + (count - 1) * apart(stream, whole, j, rules)
+        size = abs(amount) * rules.quantum * largest_so_far(stream, whole, j, pool, last, p.shift)
+    if size > FAST:
+        if size > FAST * PIECES:
+            return BEYOND
+        pieces = np.int64(np.ceil(size / FAST))
+        amount /= pieces
     value = 0.0
-    if today:
-        due, month = due_today(stream, whole, j, p, rules)
-        if due:
-            # Survival and discount do not come in; the payment is certain.
-            value = amount * pool[relative_place(stream, whole, j, month, p.k + p.shift)]
-            paid = value * rules.quantum
-            flows[stream.account * BINS + max(0, p.k + p.shift)] += exact_quanta(paid) if large else quanta(paid)
-    if count > 0:
-        if stream.when == s.DEATH or stream.when == s.LAPSE:
-            value += value_moves(
-                stream, p, life, lives, whole, j, pool, inforce, first, count, amount, rules, flows, room, filled, large
-            )
-        elif stream.when == s.THIRD_TERM:
-            value += third_term(stream, p, life, whole, j, pool, inforce, first, count, amount, rules)
-        else:
-            value += value_payments(
-                stream, p, life, lives, whole, j, pool, inforce, first, count, amount, rules, flows, room, filled, large
-            )
+    for _ in range(pieces):
+        if today:
+            due, month = due_today(stream, whole, j, p, rules)
+            if due:
+                # Survival and discount do not come in; the payment is certain.
+                paid = amount * pool[relative_place(stream, whole, j, month, p.k + p.shift)]
+                flows[stream.account * BINS + max(0, p.k + p.shift)] += quanta(paid * rules.quantum)
+                value += paid
+        if count > 0:
+            if stream.when == s.DEATH or stream.when == s.LAPSE:
+                value += value_moves(
+                    stream, p, life, lives, whole, j, pool, inforce, first, count, amount, rules, flows, room, filled
+                )
+            elif stream.when == s.THIRD_TERM:
+                value += third_term(stream, p, life, whole, j, pool, inforce, first, count, amount, rules)
+            else:
+                value += value_payments(
+                    stream, p, life, lives, whole, j, pool, inforce, first, count, amount, rules, flows, room, filled
+                )
     return value
 
 
@@ -995,9 +994,7 @@ def apart(stream, whole, j, rules):
 
 
 @inlined
-def value_payments(
-    stream, p, life, lives, whole, j, pool, inforce, first, count, amount, rules, flows, room, filled, large
-):
+def value_payments(stream, p, life, lives, whole, j, pool, inforce, first, count, amount, rules, flows, room, filled):
     """Value of payments while alive, for certain, or guaranteed, at their own dates after T."""
     there = life.alive * inforce
     period = apart(stream, whole, j, rules)
@@ -1020,7 +1017,7 @@ def value_payments(
         if start > life.over:  # nobody lives to see its start
             return 0.0
         amount *= lives[life.living + start] * pool[p.held + start] / there
-    if period > 1 or count < 4 or large:
+    if period > 1 or count < 4:
         place, held = (life.living + first, p.held + first - before) if alive else (ONES, ONES)
         return p.payment_accrued * sum_apart(
             lives if alive else pool,
@@ -1037,7 +1034,6 @@ def value_payments(
             period,
             amount,
             rules.quantum,
-            large,
         )
     weight = CERTAINLY * BINS
     if alive:
@@ -1047,9 +1043,7 @@ def value_payments(
 
 
 @inlined
-def value_moves(
-    stream, p, life, lives, whole, j, pool, inforce, first, count, amount, rules, flows, room, filled, large
-):
+def value_moves(stream, p, life, lives, whole, j, pool, inforce, first, count, amount, rules, flows, room, filled):
     """Value of payments on death or lapse, step by step; the broken first step on its own."""
     step = rules.step
     death = stream.when == s.DEATH
@@ -1075,7 +1069,7 @@ def value_moves(
             share = inforce - pool[p.held + first]
         x = (a * life.alive + b * lives[life.living + first]) * share * pool[relative]
         paid = x * amount * rules.quantum
-        flows[stream.account * BINS + max(0, calendar + claim_first)] += exact_quanta(paid) if large else quanta(paid)
+        flows[stream.account * BINS + max(0, calendar + claim_first)] += quanta(paid)
         value = amount * x * pool[discount]
         count -= 1
         first, calendar, discount = first + step, calendar + step, discount + step
@@ -1083,7 +1077,7 @@ def value_moves(
     if count <= 0:
         return accrued * value
     flow = stream.account * BINS + max(0, calendar + claim_shift)
-    if step > 1 or count < 4 or large:
+    if step > 1 or count < 4:
         value += sum_apart(
             lives,
             pool,
@@ -1099,7 +1093,6 @@ def value_moves(
             step,
             amount,
             rules.quantum,
-            large,
         )
         return accrued * value
     weight = weights(stream.life * KINDS + kind, lives, pool, life.living, held, first, count, filled, room)

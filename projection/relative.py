@@ -14,12 +14,12 @@ from portfolios.designs import Increase, Share, Stream
 
 from .cells import distinct
 from .pool import ONES, Pool
-from .streams import LONGEST
+from .streams import LONGEST, WIDE
 
 Pattern = tuple[tuple[int | None, float], ...]
 """Pieces of a pattern: years (None for ever) and share."""
 
-_MONTHS = np.arange(LONGEST + 2)
+_MONTHS = np.arange(WIDE)
 _WIDE = LONGEST + 1
 
 
@@ -161,6 +161,7 @@ class RelativeRows:
     def _place(self, key: Hashable, build: Callable[[], NDArray[np.float64]]) -> int:
         if key not in self.known:
             row = build()
-            # The largest amount stands in front of its row.
-            self.known[key] = self.pool.add(np.concatenate(([np.abs(row).max()], row))) + 1
+            # The largest amount stands in front of its row, the largest so far of every month behind it.
+            so_far = np.maximum.accumulate(np.abs(row))
+            self.known[key] = self.pool.add(np.concatenate((so_far[-1:], row, so_far))) + 1
         return self.known[key]

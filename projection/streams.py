@@ -43,6 +43,9 @@ PREMIUMS: Final = 2
 LONGEST: Final = 12 * 152
 """Months that any curve covers: the highest age that a table may reach, in months, and a year to spare."""
 
+WIDE: Final = LONGEST + 2
+"""Months of a row of relative amounts."""
+
 FOR_EVER: Final = 1 << 20
 """An end of a span or clip that never bites."""
 
