@@ -35,7 +35,7 @@ from .settings import Settings
 from .sheet import convention_sheet
 from .tally import ChunkTally, Tally
 
-SPARE = 64
+SPARE = 24
 """Policies that may step in where others of the sample turn out to be exceptions."""
 
 
