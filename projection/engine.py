@@ -7,6 +7,7 @@ came first.
 
 from __future__ import annotations
 
+from calendar import monthrange
 from collections.abc import Collection
 from datetime import date
 from threading import Lock
@@ -82,7 +83,7 @@ class Engine:
         self._survivals = Finder(self.survival.row)
         self._persistencies = Finder(self.persistency.row)
         self._discounts = Finder(self.discount.row)
-        self._today = (today - date(1970, 1, 1)).days
+        self._today = _today(today)
         self._until = _Until(basis)
         self._on_two = on_two(designs)
         self._lock = Lock()
@@ -283,6 +284,13 @@ def _room_for(policies: int, checked: Checked, tables: loops.Tables, accounts: i
         counts=np.empty(len(tables.segments) + 1, dtype=np.int64),
         lives=loops.records(np.zeros(3, LIFE)),
     )
+
+
+def _today(today: date) -> loops.Today:
+    year, month = today.year, today.month
+    neighbours = [divmod(12 * year + month - 1 + later, 12) for later in (-1, 0, 1)]
+    lengths = (monthrange(y, m + 1)[1] for y, m in neighbours)
+    return loops.Today((today - date(1970, 1, 1)).days, year, month, today.day, *lengths)
 
 
 class _Until:

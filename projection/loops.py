@@ -326,6 +326,18 @@ class Places(NamedTuple):
     day: Any
 
 
+class Today(NamedTuple):
+    """The valuation date: days since 1970-01-01, its date, and the lengths of the months before, at and after it."""
+
+    count: int
+    year: int
+    month: int
+    day: int
+    before: int
+    current: int
+    after: int
+
+
 class Ages(NamedTuple):
     """Ages of lives at commencement, one array each, in the order of the extract.
 
@@ -340,18 +352,13 @@ class Ages(NamedTuple):
 
 @compiled
 def locate(commencement, reason, today, step, places):
-    """Fill in the places of all policies that have no reason against them yet; days since 1970-01-01."""
-    ty, tm, td = civil(today)
-    first = today - td + 1
-    # Lengths of the months before, at and after T: for monthly steps they are all that is needed.
-    before = first - months_later(ty, tm, 1, -1)
-    current = months_later(ty, tm, 1, 1) - first
-    after = months_later(ty, tm, 1, 2) - first - current
+    """Fill in the places of all policies that have no reason against them yet; today: Today, the valuation date."""
+    td, before, current, after = today.day, today.before, today.current, today.after
     for i in range(len(reason)):
         if reason[i] != 0:
             continue
         cy, cm, cd = civil(np.int64(commencement[i]))
-        shift = (cy - ty) * 12 + cm - tm
+        shift = (cy - today.year) * 12 + cm - today.month
         if step == 1:
             due = min(cd, current)
             if due <= td:
@@ -361,11 +368,12 @@ def locate(commencement, reason, today, step, places):
                 k, passed, whole = -shift - 1, before - earlier + td, before - earlier + due
         else:
             k = -shift // 12 * 12
-            if months_later(cy, cm, cd, k) > today:
-                k -= 12
             last = months_later(cy, cm, cd, k)
+            if last > today.count:
+                k -= 12
+                last = day_count(cy + k // 12, cm, cd)
             whole = months_later(cy, cm, cd, k + 12) - last
-            passed = (today - last) * 12
+            passed = (today.count - last) * 12
             k += passed // whole
             passed = passed % whole
         places.k[i], places.part[i], places.whole[i] = k, passed, whole
