@@ -123,12 +123,23 @@ class Survival:
         record["living"], record["over"] = living, count - 1
         record["yearly"], record["reached"] = self.pool.add(yearly), self.pool.add(reached)
         record["years"], record["passed"] = len(yearly), passed
-        record["lasts"] = self.pool.space(count)
-        loops.fill_lasts(self.pool.row(living, count), self.pool.row(int(record["lasts"][0]), count))
+        record["lasts"] = self.pool.add(lasts(self.pool.row(living, count)))
         # A multiple or an extra may bring a rate to 1 before the table ends; then too nobody is left.
         record["closed"] = rule.close or rates.closed or bool((yearly >= 1).any())
         self.records = np.concatenate((self.records, record))
         return len(self.records) - 1
+
+
+def lasts(living: Row) -> Row:
+    """Return, per point, the first later point at which survival no longer counts in a double beside it.
+
+    Deaths of the step up to there still do. Survival at the point after it is looked at, since the valuation date
+    may lie between the two.
+    """
+    over = len(living) - 1
+    least = np.append(living[1:], living[-1]) * 1e-18
+    counting = len(living) - np.searchsorted(living[::-1], least)
+    return np.clip(np.maximum(counting, np.arange(1, over + 2)), 0, over).astype(np.float64)
 
 
 def yearly_rates(rule: MortalityRule, rates: Rates, age: float, scale: Scale | None = None, year: int = 0) -> Row:

@@ -504,21 +504,6 @@ def fill_living(yearly, reached, passed, rule, living):
             living[g] = reached[year] * fraction_survived(yearly[year], part, rule) / base
 
 
-@compiled
-def fill_lasts(living, lasts):
-    """Fill in, per point, the first later point at which survival no longer counts in a double beside it.
-
-    Deaths of the step up to there still do. Survival at the point after it is looked at, since the valuation date
-    may lie between the two.
-    """
-    last, over = 0, len(living) - 1
-    for g in range(over + 1):
-        least = living[min(g + 1, over)] * 1e-18
-        while last < over and (last <= g or living[last] >= least):
-            last += 1
-        lasts[g] = last
-
-
 @inner
 def survival_at(survival, pool, months, rule):
     """Survival L from commencement to any real number of months later."""

@@ -8,6 +8,7 @@ from itertools import groupby
 from typing import Any, Literal
 
 from assumptions.basis import Basis
+from assumptions.interest import in_words
 from assumptions.laws import Law
 from assumptions.mortality import MortalityRule, TableFile
 from portfolios.designs import Design
@@ -146,9 +147,8 @@ def _other_rules(basis: Basis, value: PlainValue) -> Iterator[tuple[str, str]]:
         yield "lapse", "none"
     yield "persistency to valuation", f"P(T) = {value.persistency:.12f} from commencement"
     interest = document.interest.rule[rules.interest - 1]
-    form = next(form for form in ("flat", "forward", "spot") if getattr(interest, form) is not None)
-    detail = f" {interest.flat:.6g} a year" if interest.flat is not None else ""
-    yield "interest", f"rule {rules.interest}{_titled(interest.title)}: {form}{detail}"
+    said = in_words(interest, basis.curves[rules.interest - 1])
+    yield "interest", f"rule {rules.interest}{_titled(interest.title)}: {said}"
     paid = document.claims.paid
     delayed = "" if isinstance(paid, str) else f"{paid.delay_months:g} months after the middle of the step"
     yield "death claims paid", delayed or str(paid)
