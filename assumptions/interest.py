@@ -1,7 +1,7 @@
 """The interest part of a basis: discount factors from the valuation date.
 
 All rates are annual effective. Flat, forward and spot rates come down to the integral H(t) of the force of interest
-from 0 to t years, which is piecewise linear, and v(t) = exp(-H(t)); yield curves in closed form stand in modules of
+from 0 to t years, which is piecewise linear, and v(t) = exp(-H(t)); yield curves in closed form stand in a module of
 their own.
 """
 
@@ -18,9 +18,7 @@ from pydantic import Field, field_validator, model_validator
 
 from .items import Item
 from .rules import Rule
-from .smith_wilson import SmithWilson, SmithWilsonCurve, smith_wilson_curve
-from .spot_rates import by_maturity, check_rate, check_spots
-from .svensson import Svensson, SvenssonCurve
+from .yield_curves import SmithWilson, Svensson, smith_wilson_curve, svensson_curve
 
 FORMS = ("flat", "forward", "spot", "svensson", "smith_wilson")
 """Keys of an interest rule, of which each has one."""
@@ -38,12 +36,26 @@ class InterestRule(Rule):
         description="rates by maturity in years, inline or a CSV or Parquet file with columns 'maturity' and 'rate'; "
         "constant forward rate between maturities, the last one held",
     )
+
     svensson: Svensson | None = Field(None, description="spot rates by the formula of Svensson, or Nelson and Siegel")
     smith_wilson: SmithWilson | None = Field(
         None, description="spot rates by maturity, and an ultimate forward rate that the curve tends to"
     )
 
-    _keys = field_validator("spot", mode="before")(by_maturity)
+    @field_validator("smith_wilson", mode="before")
+    @classmethod
+    def _inner_keys(cls, value: object) -> object:
+        if isinstance(value, dict) and isinstance(value.get("spot"), dict):
+            return {**value, "spot": {float(key): rate for key, rate in value["spot"].items()}}
+        return value
+
+    @field_validator("spot", mode="before")
+    @classmethod
+    def _keys(cls, value: object) -> object:
+        # TOML keys are text; maturities are numbers.
+        if isinstance(value, dict):
+            return {float(key): rate for key, rate in value.items()}
+        return value
 
     @model_validator(mode="after")
     def _one_form(self) -> InterestRule:
@@ -52,12 +64,15 @@ class InterestRule(Rule):
             said = f"; {' and '.join(given)} are given" if given else ""
             raise ValueError(f"an interest rule needs one of {', '.join(map(repr, FORMS))}{said}")
         if self.flat is not None:
-            check_rate(self.flat, "flat")
+            _check_rate(self.flat, "flat")
         for year, rate in enumerate(self.forward or (), 1):
-            check_rate(rate, f"the forward of year {year}")
-        if isinstance(self.spot, dict):
-            check_spots(self.spot)
+            _check_rate(rate, f"the forward of year {year}")
         return self
+
+
+def _check_rate(rate: float, what: str) -> None:
+    if not -0.5 < rate <= 1:
+        raise ValueError(f"{what} is {rate:g}; a yearly rate must lie above -0.5 and not above 1")
 
 
 class Interest(Item):
@@ -125,22 +140,11 @@ def curve_of(rule: InterestRule, spot: dict[float, float] | None) -> YieldCurve:
     Raises ValueError for figures that make no curve.
     """
     if rule.svensson is not None:
-        return SvenssonCurve(rule.svensson)
+        return svensson_curve(rule.svensson)
     if rule.smith_wilson is not None:
+        _check_spots(spot or {})
         return smith_wilson_curve(rule.smith_wilson, spot or {})
     return curve_from(rule.flat, rule.forward, spot)
-
-
-def in_words(rule: InterestRule, curve: YieldCurve) -> str:
-    """Say which curve a rule gives, in a few words."""
-    if rule.flat is not None:
-        return f"flat {rule.flat:.6g} a year"
-    if rule.svensson is not None:
-        name = "Svensson" if rule.svensson.beta3 else "Nelson-Siegel"
-        return f"{name}, {rule.svensson.compounding} spot rates"
-    if isinstance(curve, SmithWilsonCurve) and rule.smith_wilson is not None:
-        return f"Smith-Wilson, ultimate forward rate {rule.smith_wilson.ultimate:.4%}, alpha {curve.alpha:.6f}"
-    return next(form for form in FORMS if getattr(rule, form) is not None)
 
 
 def curve_from(
@@ -163,8 +167,19 @@ def curve_from(
     return _from_spot(spot or {})
 
 
+def _check_spots(spot: dict[float, float]) -> list[float]:
+    maturities = sorted(spot)
+    if not maturities:
+        raise ValueError("a spot curve needs at least one maturity")
+    if maturities[0] <= 0:
+        raise ValueError(f"maturity {maturities[0]:g} is not above 0")
+    for maturity in maturities:
+        _check_rate(spot[maturity], f"the spot rate at maturity {maturity:g}")
+    return maturities
+
+
 def _from_spot(spot: dict[float, float]) -> Curve:
-    maturities = check_spots(spot)
+    maturities = _check_spots(spot)
     times = [0.0, *maturities]
     integrals = [0.0, *(maturity * math.log1p(spot[maturity]) for maturity in maturities)]
     final = (integrals[-1] - integrals[-2]) / (times[-1] - times[-2])

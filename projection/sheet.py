@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from assumptions.basis import Basis, ClaimDelay
-from assumptions.interest import in_words
 
 from .settings import Settings
 
@@ -44,9 +43,12 @@ def _interest(basis: Basis) -> str:
     words = ["annual effective; discount factors from the valuation date"]
     if any(rule.forward is not None or rule.spot is not None for rule in rules):
         words.append("constant forward rates between maturities, the last one held")
+    if any(rule.svensson is not None for rule in rules):
+        words.append("spot rates by Svensson's formula")
     for rule, curve in zip(rules, basis.curves, strict=True):
-        if rule.svensson is not None or rule.smith_wilson is not None:
-            words.append(in_words(rule, curve))
+        if rule.smith_wilson is not None:
+            alpha = getattr(curve, "alpha", 0.0)
+            words.append(f"Smith-Wilson, ultimate forward rate {rule.smith_wilson.ultimate:.4%}, alpha {alpha:.6f}")
     return "; ".join(words)
 
 

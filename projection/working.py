@@ -8,13 +8,14 @@ from itertools import groupby
 from typing import Any, Literal
 
 from assumptions.basis import Basis
-from assumptions.interest import in_words
+from assumptions.interest import FORMS
 from assumptions.laws import Law
 from assumptions.mortality import MortalityRule, TableFile
 from portfolios.designs import Design
 
 from .plain import Payment, PlainValue, plain_value
 from .plain_layout import money, pairs, plain, table
+from .plain_life import Survival
 from .settings import Settings
 
 Listing = Literal["yearly", "all"]
@@ -60,7 +61,9 @@ def working(
     lines = [f"Working of policy {plain(policy.get('policy_id'))}", ""]
     lines += pairs(_heading(design, basis, settings))
     lines += ["", "Dates", *pairs(_dates(policy, value, settings))]
-    lines += ["", "Mortality", *pairs(_mortality(basis, value)), *_rates(value)]
+    lines += ["", "Mortality", *pairs(_mortality(basis, value)), *_rates(value.life, value)]
+    if value.second is not None:
+        lines += ["", "Second life", *pairs(_second(policy, basis, value)), *_rates(value.second, value)]
     lines += ["", "Lapse, interest and expenses", *pairs(_other_rules(basis, value)), *_lapses(value)]
     lines += ["", "Symbols", *pairs(LEGEND)]
     for name, group in groupby(value.payments, lambda payment: payment.stream):
@@ -101,13 +104,31 @@ def _mortality(basis: Basis, value: PlainValue) -> Iterator[tuple[str, str]]:
     rule = part.rule[number - 1]
     yield "age at commencement", f"{float(value.age):.6f}, {part.age}"
     yield "rule", f"{number}{_titled(rule.title)}: {_source(rule)}"
-    close = "; 1 at the last age" if value.life.rates.closed else ""
-    yield (
-        "rate",
-        f"q = min(1, {rule.multiple:g} x table + {rule.extra:g}); age {rule.added_years:+d} years{close}",
-    )
+    yield "rate", _rate(value.life)
     yield "fractions of a year", part.fractions
-    yield "survival to valuation", f"L(T) = {value.survival:.12f} from commencement"
+    both = "" if value.second is None else ", of both lives but for a common shock"
+    yield "survival to valuation", f"L(T) = {value.survival:.12f} from commencement{both}"
+
+
+def _second(policy: Mapping[str, Any], basis: Basis, value: PlainValue) -> Iterator[tuple[str, str]]:
+    """What the second life is subject to, and how both make the probabilities of the streams."""
+    assert value.second is not None
+    yield "birth", str(policy["second_birth_date"])
+    yield "age at commencement", f"{float(value.second.rates.entry + value.second.rates.offset):.6f}"
+    yield "rule", _source(value.second.rates.rule)
+    yield "rate", _rate(value.second)
+    shock = basis.document.mortality.common_shock
+    both = "l1 x l2" if not shock else f"l1 x l2 x exp({shock:g} x t), with the common shock"
+    yield "both live", f"{both}; l1 and l2 survival of each life from the valuation date"
+    yield "one of them only", "l1, or l2, less the probability that both live; either: the sum of the three"
+
+
+def _rate(life: Survival) -> str:
+    rule = life.rates.rule
+    scale = life.rates.scale
+    improved = "" if scale is None else f" x improvement from {scale.document.base_year}, listed with it"
+    close = "; 1 at the last age" if life.rates.closed else ""
+    return f"q = min(1, {rule.multiple:g} x table{improved} + {rule.extra:g}); age {rule.added_years:+d} years{close}"
 
 
 def _titled(title: str) -> str:
@@ -125,13 +146,13 @@ def _source(rule: MortalityRule) -> str:
     return plain(rule.table)
 
 
-def _rates(value: PlainValue) -> list[str]:
-    """List the yearly rates in use from the valuation date on."""
-    rates = value.life.rates
+def _rates(life: Survival, value: PlainValue) -> list[str]:
+    """List the yearly rates of a life in use from the valuation date on."""
+    rates = life.rates
     first = int(rates.offset + value.position.u / 12)
     rows = [
-        (str(year), f"{float(rates.entry) + year:g}", f"{value.life.yearly[year]:.9f}")
-        for year in range(first, len(value.life.yearly))
+        (str(year), f"{float(rates.entry) + year:g}", f"{life.yearly[year]:.9f}")
+        for year in range(first, len(life.yearly))
     ]
     return table(("year", "from age", "q"), rows) if rows else []
 
@@ -147,8 +168,9 @@ def _other_rules(basis: Basis, value: PlainValue) -> Iterator[tuple[str, str]]:
         yield "lapse", "none"
     yield "persistency to valuation", f"P(T) = {value.persistency:.12f} from commencement"
     interest = document.interest.rule[rules.interest - 1]
-    said = in_words(interest, basis.curves[rules.interest - 1])
-    yield "interest", f"rule {rules.interest}{_titled(interest.title)}: {said}"
+    form = next(form for form in FORMS if getattr(interest, form) is not None).replace("smith_wilson", "Smith-Wilson")
+    detail = f" {interest.flat:.6g} a year" if interest.flat is not None else ""
+    yield "interest", f"rule {rules.interest}{_titled(interest.title)}: {form}{detail}"
     paid = document.claims.paid
     delayed = "" if isinstance(paid, str) else f"{paid.delay_months:g} months after the middle of the step"
     yield "death claims paid", delayed or str(paid)

@@ -14,6 +14,10 @@ import pyarrow as pa
 import pytest
 
 import projection
+from assumptions.basis import prepare_basis
+from portfolios.designs import Design
+from projection.settings import Settings
+from projection.working import working
 
 COMMENCED = date(2020, 1, 1)
 INTEREST = 0.03
@@ -139,3 +143,26 @@ def test_two_equal_ways_to_say_last_survivor() -> None:
     assert reserve(pieces, assumed, on) == pytest.approx(either, abs=0.01)
     reversed_ = design(annuity("first", to=30), annuity("second only", to=30))
     assert reserve(reversed_, assumed, on) == pytest.approx(either, abs=0.01)
+
+
+@pytest.mark.parametrize(
+    "interest",
+    [
+        {"svensson": {"beta0": 0.03, "tau1": 2.0}},
+        {"smith_wilson": {"spot": {"1": 0.01, "20": 0.03}, "ultimate": 0.04, "alpha": 0.1}},
+    ],
+)  # fmt: skip
+def test_the_working_shows_both_lives_and_ends_in_the_reserve(interest: dict[str, Any]) -> None:
+    contract, assumed = design(annuity("first"), annuity("second only")), basis(0.02, 0.035, 0.001)
+    assumed["interest"] = {"rule": [interest]}
+    row = {
+        "policy_id": "Q1", "product": "PAIR", "status": "in force", "lives": "both", "sex": "F", "second_sex": "M",
+        "birth_date": date(1960, 1, 1), "commencement_date": COMMENCED, "second_birth_date": date(1965, 1, 1),
+    }  # fmt: skip
+    settings = Settings(date(2024, 5, 17), "year", "outstanding", 2)
+    text = working(row, Design.model_validate(contract), prepare_basis(assumed), settings)
+    assert "Second life" in text
+    assert "1965-01-01" in text
+    assert "exp(0.001 x t)" in text
+    found = reserve(contract, assumed, date(2024, 5, 17))
+    assert text.rstrip().splitlines()[-1].split()[-1] == f"{found:,.2f}"
