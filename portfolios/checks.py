@@ -42,6 +42,10 @@ class Checked(NamedTuple):
     reason: npt.NDArray[np.uint8]
     field: npt.NDArray[np.int16]
 
+    def again(self) -> Checked:
+        """Return a copy to which further reasons can be added."""
+        return Checked(self.product, self.reason.copy(), self.field.copy())
+
 
 class Checks:
     """The checks of one run, prepared; may be used by several threads on different chunks.

@@ -20,7 +20,12 @@ Model = TypeVar("Model", bound=BaseModel)
 
 
 class DocumentError(ValueError):
-    """A document or table that stops the run: names the file, the place, the value and the remedy."""
+    """A document or table that stops the run: names the file, the place, the value and the remedy.
+
+    side: name of the further basis that is at odds with the rest, nothing for the run's own.
+    """
+
+    side = ""
 
 
 def read_run(path: Path | str) -> RunDocument:

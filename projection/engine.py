@@ -42,11 +42,16 @@ Mask = NDArray[np.bool_]
 class Valued:
     """A chunk after the loops: the checks' result brought up to date, and the loops' results."""
 
-    def __init__(self, checked: Checked, results: loops.Results, months: int) -> None:
+    def __init__(self, checked: Checked, places: loops.Places, results: loops.Results, months: int) -> None:
         self.checked = checked
+        self.places = places
         self.results = results
         self.months = months
         self.seconds: dict[str, float] = {}
+
+    def add_seconds(self, seconds: dict[str, float]) -> None:
+        """Add the seconds of the phases of an earlier attempt."""
+        self.seconds = {phase: taken + seconds.get(phase, 0.0) for phase, taken in self.seconds.items()}
 
     @property
     def valued(self) -> NDArray[np.bool_]:
@@ -104,12 +109,16 @@ class Engine:
         with self._lock:
             self._find(chunk, checked, self._cells(chunk, checked), places)
 
-    def value(self, chunk: Chunk) -> Valued:
-        """Value the policies of a chunk."""
+    def value(self, chunk: Chunk, before: Valued | None = None) -> Valued:
+        """Value the policies of a chunk.
+
+        before: the same chunk as valued on another basis with the same designs and settings; what was found against a
+        policy then holds here too, and checks and dates are not gone through again.
+        """
         clock = _Clock()
-        checked = self.checks.check(chunk)
+        checked = self.checks.check(chunk) if before is None else before.checked.again()
         clock.lap("check")
-        places = self._locate(chunk, checked)
+        places = self._locate(chunk, checked) if before is None else before.places
         clock.lap("dates")
         with self._lock:
             cell = self._cells(chunk, checked)
@@ -126,7 +135,7 @@ class Engine:
         self._take_back(order, policies, tables, results)
         clock.lap("loops")
         self._name_faults(checked, results.fault, tables.segments)
-        valued = Valued(checked, results, int(results.months[0]))
+        valued = Valued(checked, places, results, int(results.months[0]))
         valued.seconds = clock.seconds
         return valued
 

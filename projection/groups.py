@@ -17,12 +17,16 @@ from .documents import DocumentError
 from .results import MONEY_COLUMNS
 
 RESULT_COLUMNS = ("policies", *MONEY_COLUMNS, "rounding")
-"""Names that the tables of a run use themselves."""
+"""Names that the tables of a run use themselves; for further bases with the basis's name behind them."""
 
 
-def check_names(group_by: Sequence[str]) -> None:
-    """Raise DocumentError where a column of the extract would stand beside a result of the same name."""
-    taken = [name for name in group_by if name in RESULT_COLUMNS]
+def check_names(group_by: Sequence[str], further: Sequence[str] = ()) -> None:
+    """Raise DocumentError where a column of the extract would stand beside a result of the same name.
+
+    further: names of the further bases.
+    """
+    results = {*RESULT_COLUMNS, *(f"{column}_{name}" for name in further for column in RESULT_COLUMNS)}
+    taken = [name for name in group_by if name in results]
     if taken:
         raise DocumentError(
             f"key 'group_by': '{taken[0]}' is the name of a column of the results; give the extract's "

@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from datetime import date
 from pathlib import Path
+from types import MappingProxyType
 from typing import Any
 
 import pyarrow as pa
@@ -19,6 +20,7 @@ from .results import Outcome
 from .settings import Due, Settings, Step
 from .valuation import value_extract
 
+BasisLike = Basis | str | Path | dict[str, Any]
 Designs = str | Path | Design | dict[str, Any] | Sequence[Design | dict[str, Any]]
 
 
@@ -27,8 +29,8 @@ class Valuation:
     """What a valuation found.
 
     policies: one row per valued policy in the order of the extract, with policy_id, product, the groups,
-    reserve, value_of_benefits, value_of_expenses and value_of_premiums in currency; outcome: everything else,
-    for the record.
+    reserve, value_of_benefits, value_of_expenses and value_of_premiums in currency, and the same with ``_`` and the
+    name of each further basis; outcome: everything else, for the record.
     """
 
     policies: pa.Table
@@ -53,9 +55,10 @@ class Valuation:
 def value(
     extract: Any,
     designs: Designs,
-    basis: Basis | str | Path | dict[str, Any],
+    basis: BasisLike,
     valuation_date: date | str,
     *,
+    further_bases: Mapping[str, BasisLike] = MappingProxyType({}),
     step: Step = "month",
     due: Due = "settled",
     decimals: int = 2,
@@ -69,9 +72,9 @@ def value(
 
     extract: a Parquet file, folder, pattern or URI, an Arrow table, or a DataFrame, with the columns that
     ``portfolios.columns`` lists; designs: a folder or document, or designs (objects or dictionaries as in
-    TOML); basis: a document, a dictionary as in TOML, or what ``read_basis`` returned; the rest as in a run
-    document. exceptions_limit: at the default of 1 no share of exceptions stops the run; look at
-    ``.exceptions``.
+    TOML); basis: a document, a dictionary as in TOML, or what ``read_basis`` returned; further_bases: more of them
+    by name; the rest as in a run document. exceptions_limit: at the default of 1 no share of exceptions stops the
+    run; look at ``.exceptions``.
 
     Raises DocumentError, ExtractError (what is given is wrong) and RunStopped (the run must not go on), all
     ValueErrors.
@@ -82,6 +85,7 @@ def value(
         _designs(designs),
         _basis(basis),
         Settings(date.fromisoformat(str(valuation_date)), step, due, decimals),
+        further={name: _basis(one) for name, one in further_bases.items()},
         group_by=tuple(group_by),
         in_force=tuple(in_force),
         exceptions_limit=exceptions_limit,
@@ -102,7 +106,7 @@ def _designs(designs: Designs) -> list[Design]:
     ]
 
 
-def _basis(basis: Basis | str | Path | dict[str, Any]) -> Basis:
+def _basis(basis: BasisLike) -> Basis:
     if isinstance(basis, Basis):
         return basis
     if isinstance(basis, dict):

@@ -55,13 +55,30 @@ class SampleCheck:
 
 
 @dataclass(frozen=True)
+class OnBasis:
+    """What a further basis gave, for the same policies; fields as in ``Outcome``.
+
+    name: as the run document calls it; its columns of the policies and totals end in it.
+    """
+
+    name: str
+    title: str
+    cash_flows: pa.Table
+    total: dict[str, int]
+    sample: SampleCheck
+    conventions: tuple[tuple[str, str], ...]
+    counts: dict[str, int] = field(default_factory=dict)
+
+
+@dataclass(frozen=True)
 class Outcome:
     """A finished valuation.
 
     totals: one row per group with ``policies``, the money columns and ``rounding``, money in currency rounded
-    to the minor unit. cash_flows: month (first day), product, stream, part, direction, amount; undiscounted
-    expected amounts. exceptions: policy_id, product, reason, field, value, rule; one row per policy not
-    valued. total: sums over all policies in minor units, by money column.
+    to the minor unit, then the same columns for each further basis with its name behind theirs. cash_flows: month
+    (first day), product, stream, part, direction, amount; undiscounted expected amounts. exceptions: policy_id,
+    product, reason, field, value, rule; one row per policy not valued. total: sums over all policies in minor units,
+    by money column. further: what the further bases gave.
     """
 
     settings: Settings
@@ -79,6 +96,7 @@ class Outcome:
     """Seconds by phase."""
     notes: tuple[str, ...] = ()
     """Counted peculiarities for the first page: closed tables, held rates and the like."""
+    further: tuple[OnBasis, ...] = ()
 
     @property
     def read(self) -> int:

@@ -4,8 +4,9 @@ from __future__ import annotations
 
 from datetime import date
 
-from pydantic import BaseModel, ConfigDict, Field
+from pydantic import BaseModel, ConfigDict, Field, field_validator
 
+from .basis_names import check_name
 from .settings import Due, Settings, Step
 
 
@@ -19,6 +20,11 @@ class RunDocument(BaseModel):
     extract: str = Field(description="Parquet file, folder, pattern or URI of the policies")
     designs: str = Field(description="folder of product designs, or one of them")
     basis: str = Field(description="document of the basis")
+    further_bases: dict[str, str] = Field(
+        default_factory=dict,
+        description="more bases to value on in the same run: a name of small letters, digits and '_' for each, which "
+        "stands behind those of its columns, and its document",
+    )
     step: Step = Field("month", description="length of a projection step")
     due: Due = Field("settled", description="whether cash flows due on the valuation date are settled or outstanding")
     group_by: list[str] = Field(
@@ -33,6 +39,13 @@ class RunDocument(BaseModel):
         0.01, ge=0, le=1, description="share of policies that may be exceptions before the run stops"
     )
     sample: int = Field(24, ge=1, le=10000, description="policies valued a second time by the plain twin")
+
+    @field_validator("further_bases")
+    @classmethod
+    def _named(cls, value: dict[str, str]) -> dict[str, str]:
+        for name in value:
+            check_name(name)
+        return value
 
     @property
     def settings(self) -> Settings:

@@ -19,13 +19,16 @@ QUANTA = 1000
 
 @dataclass
 class ChunkTally:
-    """What one chunk adds: money by group, cash flows by line and month, control totals, curiosities."""
+    """What one chunk adds on one basis: money by group, cash flows by line and month.
+
+    Control totals, exceptions and policies are the same for all bases; they come with those of the run's own.
+    """
 
     totals: NDArray[np.int64]
     flows: NDArray[np.int64]
-    control: dict[str, tuple[int, int, int]]
-    exceptions: pa.Table
-    policies: pa.Table
+    control: dict[str, tuple[int, int, int]] = field(default_factory=dict)
+    exceptions: pa.Table | None = None
+    policies: pa.Table | None = None
     months: int = 0
     seconds: dict[str, float] = field(default_factory=dict)
     totals_read: int = 0
@@ -54,7 +57,7 @@ class Tally:
             sums = self.control.setdefault(name, [0, 0, 0])
             for place, figure in enumerate(figures):
                 sums[place] += figure
-        if len(part.exceptions):
+        if part.exceptions is not None and len(part.exceptions):
             self.exceptions.append(part.exceptions)
         self.months += part.months
         for phase, seconds in part.seconds.items():

@@ -4,14 +4,13 @@ from __future__ import annotations
 
 import os
 from collections import deque
-from collections.abc import Collection, Iterator
+from collections.abc import Collection, Iterator, Mapping
 from concurrent.futures import Future, ThreadPoolExecutor
 from contextlib import closing
 from dataclasses import dataclass
 from time import perf_counter
-from typing import Any
+from types import MappingProxyType
 
-import numpy as np
 import pyarrow as pa
 
 from assumptions.basis import Basis
@@ -19,20 +18,22 @@ from portfolios.checks import needed_columns, number_columns
 from portfolios.chunk import Chunk
 from portfolios.columns import BY_NAME
 from portfolios.designs import Design
-from portfolios.exception_rows import exception_rows, no_exceptions
+from portfolios.exception_rows import no_exceptions
 from portfolios.extract import CHUNK_ROWS, Extract
 from portfolios.identifiers import find_duplicates
-from portfolios.reasons import Reason
 
-from . import loops
-from .engine import Engine, Valued
+from .basis_names import OWN, column_on
+from .chunk_results import ChunkResults
+from .documents import DocumentError
+from .engine import Engine
 from .gate import RunStopped, check_gate
 from .groups import Groups, check_names
 from .lives import rule_columns
 from .plain_check import Sample
-from .results import MONEY_COLUMNS, Outcome, PolicySink, Progress, no_progress
+from .results import MONEY_COLUMNS, OnBasis, Outcome, PolicySink, Progress, SampleCheck, no_progress
 from .settings import Settings
 from .sheet import convention_sheet
+from .sides import Side, named_bases, value_on_all
 from .tally import ChunkTally, Tally
 
 SPARE = 24
@@ -62,6 +63,7 @@ def value_extract(
     basis: Basis,
     settings: Settings,
     *,
+    further: Mapping[str, Basis] = MappingProxyType({}),
     group_by: Collection[str] = ("product",),
     in_force: Collection[str] = ("in force",),
     exceptions_limit: float = 1.0,
@@ -71,27 +73,32 @@ def value_extract(
     threads: int | None = None,
     chunk_rows: int = CHUNK_ROWS,
 ) -> Outcome:
-    """Value every policy of an extract.
+    """Value every policy of an extract, on one basis or on several side by side.
 
-    sink takes the per-policy results in the order of the extract: policy_id, product, the groups, and the
-    money columns in currency. Raises ExtractError or DocumentError for input that does not fit together,
-    RunStopped where more than ``exceptions_limit`` of the policies cannot be valued, the in-force gate does
-    not close, or the plain twin disagrees.
+    further: more bases by name. sink takes the per-policy results in the order of the extract: policy_id, product,
+    the groups, and the money columns in currency, for further bases with their name behind. Raises ExtractError or
+    DocumentError for input that does not fit together, RunStopped where more than ``exceptions_limit`` of the
+    policies cannot be valued, the in-force gate does not close, or the plain twin disagrees.
     """
     plan = Plan(tuple(group_by), tuple(in_force), exceptions_limit, sample, threads or usable_cores(), chunk_rows)
-    return _Valuation(extract, designs, basis, settings, plan).run(sink, progress)
+    return _Valuation(extract, designs, named_bases(basis, further), settings, plan).run(sink, progress)
 
 
 class _Valuation:
     """One valuation under way."""
 
-    def __init__(self, extract: Extract, designs: list[Design], basis: Basis, settings: Settings, plan: Plan) -> None:
-        self.extract, self.designs, self.basis, self.settings, self.plan = extract, designs, basis, settings, plan
-        check_names(plan.group_by)
+    def __init__(
+        self, extract: Extract, designs: list[Design], bases: dict[str, Basis], settings: Settings, plan: Plan
+    ) -> None:
+        self.extract, self.designs, self.bases, self.settings, self.plan = extract, designs, bases, settings, plan
+        check_names(plan.group_by, [name for name in bases if name != OWN])
         self.group_by = plan.group_by
-        until = [rule.until for rule in basis.document.lapse.rule] if basis.document.lapse else []
-        numbers = [*number_columns(designs), *(column for column in until if isinstance(column, str))]
-        asked = rule_columns(basis, designs, extract.column_names)
+        numbers = [*number_columns(designs), *dict.fromkeys(column for one in bases.values() for column in _until(one))]
+        asked = list(
+            dict.fromkeys(
+                column for one in bases.values() for column in rule_columns(one, designs, extract.column_names)
+            )
+        )
         self.needed = needed_columns(designs, [*numbers, *asked, *self.group_by])
         extract.need(self.needed, numbers=numbers)
         self.amounts = [name for name in extract.column_names if name in BY_NAME and BY_NAME[name].kind == "money"]
@@ -106,44 +113,64 @@ class _Valuation:
         """Read, value and add up."""
         began = perf_counter()
         plan = self.plan
-        self.engine = Engine(self.designs, self.basis, self.settings, self.needed, self.kinds, plan.in_force)
+        engines = {name: self._engine(name, basis) for name, basis in self.bases.items()}
+        self.engine = engines[OWN]
         with ThreadPoolExecutor(1, thread_name_prefix="meet") as beside:
             # The first chunk meets most of the curves; they are made while identifiers are looked through.
-            meeting = beside.submit(self._meet_first) if plan.threads > 1 else None
+            meeting = beside.submit(self._meet_first, list(engines.values())) if plan.threads > 1 else None
             duplicates = find_duplicates(self.extract, keep=plan.sample + SPARE)
             if meeting is not None:
                 meeting.result()
         self.engine.checks.duplicates = duplicates
-        self.sample = Sample(plan.sample, duplicates.smallest, self.designs, self.basis, self.settings)
+        self.sides = [
+            Side(
+                name,
+                self.bases[name],
+                engine,
+                Tally(self.settings.decimals),
+                Sample(plan.sample, duplicates.smallest, self.designs, self.bases[name], self.settings),
+            )
+            for name, engine in engines.items()
+        ]
+        self.results = ChunkResults(self.sides, self.groups, self.needed, self.amounts)
         self.seconds["identifiers"] = perf_counter() - began
-        tally = Tally(self.settings.decimals)
-        for part in self._parts():
-            tally.add(part)
-            if sink is not None and part.policies.num_rows:
-                sink(part.policies)
-            self._check_sample(part)
-            self.read += part.totals_read
+        for parts in self._parts():
+            for side, part in zip(self.sides, parts, strict=True):
+                side.tally.add(part)
+                self._check_sample(side, part)
+            first = parts[0]
+            if sink is not None and first.policies is not None and first.policies.num_rows:
+                sink(first.policies)
+            self.read += first.totals_read
             progress(self.read, self.extract.rows)
-        return self._outcome(tally, began)
+        return self._outcome(began)
 
-    def _check_sample(self, part: ChunkTally) -> None:
+    def _engine(self, name: str, basis: Basis) -> Engine:
+        try:
+            return Engine(self.designs, basis, self.settings, self.needed, self.kinds, self.plan.in_force)
+        except DocumentError as error:
+            error.side = name
+            raise
+
+    def _check_sample(self, side: Side, part: ChunkTally) -> None:
         started = perf_counter()
-        self.sample.take(part.sample)
+        side.sample.take(part.sample)
         self.seconds["sample"] = self.seconds.get("sample", 0.0) + perf_counter() - started
 
-    def _meet_first(self) -> None:
+    def _meet_first(self, engines: list[Engine]) -> None:
         with closing(self.extract.chunks(self.needed, self.plan.chunk_rows)) as chunks:
             for chunk in chunks:
-                self.engine.meet(chunk)
+                for engine in engines:
+                    engine.meet(chunk)
                 return
 
-    def _parts(self) -> Iterator[ChunkTally]:
+    def _parts(self) -> Iterator[list[ChunkTally]]:
         """Results of the chunks in their order; a few chunks are under way at any time."""
         chunks = self._chunks()
         if self.plan.threads <= 1:
             yield from map(self._work, chunks)
             return
-        waiting: deque[Future[ChunkTally]] = deque()
+        waiting: deque[Future[list[ChunkTally]]] = deque()
         with ThreadPoolExecutor(self.plan.threads, thread_name_prefix="value") as pool:
             try:
                 for chunk in chunks:
@@ -166,96 +193,86 @@ class _Valuation:
                 return
             yield chunk
 
-    def _work(self, chunk: Chunk) -> ChunkTally:
-        valued = self.engine.value(chunk)
-        began = perf_counter()
-        checked, results = valued.checked, valued.results
-        groups = self.groups.of(chunk)
-        totals = np.zeros((len(self.groups.keys), 1 + len(MONEY_COLUMNS)), dtype=np.int64)
-        loops.add_totals(groups, checked.reason, results.minor, totals)
-        exceptions = self._exceptions(chunk, valued)
-        part = ChunkTally(
-            totals=totals,
-            flows=results.flows.reshape(-1, loops.BINS),
-            control=self._control(chunk, valued),
-            exceptions=exceptions,
-            policies=self._policies(chunk, valued),
-            months=valued.months,
-            seconds=valued.seconds,
-            totals_read=chunk.n,
-            sample=self.sample.candidates(chunk, valued),
-        )
-        part.seconds["results"] = perf_counter() - began
-        return part
+    def _work(self, chunk: Chunk) -> list[ChunkTally]:
+        return self.results.of(chunk, *value_on_all(self.sides, chunk))
 
-    def _exceptions(self, chunk: Chunk, valued: Valued) -> pa.Table:
-        if not valued.checked.reason.any():
-            return no_exceptions()
-        rows = exception_rows(chunk, valued.checked, self.needed)
-        unfitted = valued.checked.reason[valued.checked.reason != 0] == Reason.NO_RULE_FITS
-        if not unfitted.any():
-            return rows
-        # The rules are the basis's; say which part of it has none for the policy.
-        cells = self.engine.cells.of(chunk, valued.checked.product)[valued.checked.reason != 0]
-        texts = rows.column("rule").to_pylist()
-        for place in np.flatnonzero(unfitted).tolist():
-            texts[place] = f"a rule of {self.engine.cells.cells[cells[place]].missing} must fit"
-        return rows.set_column(rows.schema.get_field_index("rule"), "rule", pa.array(texts, pa.string()))
-
-    def _control(self, chunk: Chunk, valued: Valued) -> dict[str, tuple[int, int, int]]:
-        """Read, valued and exceptions: policies, and each amount of the extract in minor units."""
-        good = valued.valued
-        control = {"policies": (chunk.n, int(good.sum()), int((~good).sum()))}
-        for name in self.amounts:
-            sums = np.zeros(3, dtype=np.int64)
-            loops.control_sums(chunk.number(name), valued.checked.reason, self.engine.rules.minor, sums)
-            control[name] = (int(sums[0]), int(sums[1]), int(sums[2]))
-        return control
-
-    def _policies(self, chunk: Chunk, valued: Valued) -> pa.Table:
-        minor = valued.results.minor / self.engine.rules.minor
-        names = dict.fromkeys(["product", *self.group_by])
-        columns: dict[str, Any] = {"policy_id": chunk.ids}
-        columns.update({name: _plain(chunk.raw(name)) for name in names if name != "policy_id"})
-        columns.update(
-            {name: pa.array(np.ascontiguousarray(minor[:, place])) for place, name in enumerate(MONEY_COLUMNS)}
-        )
-        table = pa.table(columns)
-        return table if not valued.checked.reason.any() else table.filter(pa.array(valued.valued))
-
-    def _outcome(self, tally: Tally, began: float) -> Outcome:
-        control = tally.control_totals()
-        exceptions = pa.concat_tables([no_exceptions(), *tally.exceptions])
+    def _outcome(self, began: float) -> Outcome:
+        own, *others = self.sides
+        control = own.tally.control_totals()
+        exceptions = pa.concat_tables([no_exceptions(), *own.tally.exceptions])
         check_gate(control, exceptions, self.extract.rows, self.plan.exceptions_limit)
-        result = self.sample.result()
-        if not result.passes:
-            raise RunStopped(
-                f"policy {result.policy_id}: the engine and the plain twin differ by {result.largest_difference:.6g} "
-                f"({result.largest_relative:.1e} of the value); this is a fault of the program, please report it"
-            )
-        today = self.settings.valuation_date
-        seconds = {**self.seconds, **tally.seconds, "total": perf_counter() - began}
-        engine = self.engine
+        samples = [_agreeing(side) for side in self.sides]
+        totals = own.tally.totals_table(self.group_by, self.groups.keys)
+        for side in others:
+            table = side.tally.totals_table(self.group_by, self.groups.keys)
+            for name in (*MONEY_COLUMNS, "rounding"):
+                totals = totals.append_column(column_on(name, side.name), table.column(name))
         return Outcome(
             settings=self.settings,
-            totals=tally.totals_table(self.group_by, self.groups.keys),
-            cash_flows=tally.flows_table(engine.plans, today.year, today.month),
+            totals=totals,
+            cash_flows=self._cash_flows(own),
             exceptions=exceptions,
             control=control,
-            total=tally.total(),
-            sample=result,
+            total=own.tally.total(),
+            sample=samples[0],
             group_by=self.group_by,
-            conventions=convention_sheet(self.basis, self.settings),
-            counts={
-                "policy-months": tally.months,
-                "sets of policies that rules treat alike": len(engine.cells.cells),
-                "survival curves": len(engine.survival.records),
-                "persistency curves": len(engine.persistency.known),
-                "discount curves": len(engine.discount.known),
-                "rows of relative amounts": len(engine.plans.relative.known),
-            },
-            timings=seconds,
+            conventions=convention_sheet(own.basis, self.settings),
+            counts=_counts(own),
+            timings=self._timings(began),
+            further=tuple(
+                OnBasis(
+                    name=side.name,
+                    title=side.basis.title,
+                    cash_flows=self._cash_flows(side),
+                    total=side.tally.total(),
+                    sample=sample,
+                    conventions=convention_sheet(side.basis, self.settings),
+                    counts=_counts(side),
+                )
+                for side, sample in zip(others, samples[1:], strict=True)
+            ),
         )
+
+    def _cash_flows(self, side: Side) -> pa.Table:
+        today = self.settings.valuation_date
+        return side.tally.flows_table(side.engine.plans, today.year, today.month)
+
+    def _timings(self, began: float) -> dict[str, float]:
+        seconds = dict(self.seconds)
+        for side in self.sides:
+            for phase, taken in side.tally.seconds.items():
+                seconds[phase] = seconds.get(phase, 0.0) + taken
+        return {**seconds, "total": perf_counter() - began}
+
+
+def _agreeing(side: Side) -> SampleCheck:
+    """Return the result of a basis's sample. Raises RunStopped where engine and twin differ."""
+    result = side.checked()
+    if not result.passes:
+        raise RunStopped(
+            f"policy {result.policy_id}: {side.said}the engine and the plain twin differ by "
+            f"{result.largest_difference:.6g} ({result.largest_relative:.1e} of the value); this is a fault of the "
+            "program, please report it"
+        )
+    return result
+
+
+def _counts(side: Side) -> dict[str, int]:
+    engine = side.engine
+    return {
+        "policy-months": side.tally.months,
+        "sets of policies that rules treat alike": len(engine.cells.cells),
+        "survival curves": len(engine.survival.records),
+        "persistency curves": len(engine.persistency.known),
+        "discount curves": len(engine.discount.known),
+        "rows of relative amounts": len(engine.plans.relative.known),
+    }
+
+
+def _until(basis: Basis) -> list[str]:
+    """Columns that say when lapses stop."""
+    rules = basis.document.lapse.rule if basis.document.lapse else []
+    return [rule.until for rule in rules if isinstance(rule.until, str)]
 
 
 def usable_cores() -> int:
@@ -263,7 +280,3 @@ def usable_cores() -> int:
     if hasattr(os, "sched_getaffinity"):
         return len(os.sched_getaffinity(0))
     return os.cpu_count() or 1
-
-
-def _plain(column: pa.Array) -> pa.Array:
-    return column.combine_chunks() if isinstance(column, pa.ChunkedArray) else column

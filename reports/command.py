@@ -132,6 +132,9 @@ def explain(
         Path | None,
         typer.Option(metavar="FILE", help="Write the working to this file: a workbook if it ends in .xlsx, else text."),
     ] = None,
+    basis: Annotated[
+        str, typer.Option(metavar="NAME", help="One of the run's further bases, in place of its own.")
+    ] = "",
 ) -> None:
     """Show the working of one policy: every date, age, rate, probability, discount factor and payment.
 
@@ -146,9 +149,10 @@ def explain(
     from .explain import explain as explain_policy
 
     if out is None:
-        print(explain_policy(run, policy), end="")
+        print(explain_policy(run, policy, basis), end="")
         return
-    content = explain_in_workbook(run, policy) if as_workbook(out) else explain_policy(run, policy).encode()
+    as_book = as_workbook(out)
+    content = explain_in_workbook(run, policy, basis) if as_book else explain_policy(run, policy, basis).encode()
     write_whole(out, content)
     print(visible(f"The working of {short(policy)} is in {out}."))
 

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from projection.results import MONEY_COLUMNS
+
 from .figures import amount, count, counted, lines_up, seconds, short, shown, words
 from .report import Report
 
@@ -15,6 +17,7 @@ def summary(report: Report, out: str) -> str:
         [f"{report.title}  (valuation date {settings.valuation_date.isoformat()}, {report.currency})"],
         _gate(report),
         _groups(report),
+        _bases(report),
         _exceptions(report),
         [_sample(report)],
         _speed(report),
@@ -58,6 +61,18 @@ def _total_row(report: Report, groups: int) -> list[str]:
     return [*labels, count(report.outcome.valued), *(report.money(total[name]) for name in names)]
 
 
+def _bases(report: Report) -> list[str]:
+    if not report.outcome.further:
+        return []
+    own = report.outcome.total["reserve"]
+    rows = [["basis", "reserve", "benefits", "expenses", "premiums", "reserve less the first"]]
+    for name, title, total in report.basis_rows:
+        figures = [report.money(total[column]) for column in MONEY_COLUMNS]
+        less = report.money(total["reserve"] - own) if name else ""
+        rows.append([short(f"{name}: {title}" if name else title), *figures, less])
+    return lines_up(rows, right=range(1, 6))
+
+
 def _exceptions(report: Report) -> list[str]:
     found = report.record["exceptions_by_reason"]
     if not found:
@@ -70,10 +85,11 @@ def _exceptions(report: Report) -> list[str]:
 
 
 def _sample(report: Report) -> str:
-    sample = report.outcome.sample
+    sample = report.widest_sample
     verdict = "agree" if sample.passes else "DIFFER"
+    several = f" on {len(report.basis_rows)} bases" if report.outcome.further else ""
     return (
-        f"Sample: {counted(sample.policies, 'policy', 'policies')} valued a second time by the plain "
+        f"Sample: {counted(sample.policies, 'policy', 'policies')} valued a second time{several} by the plain "
         f"implementation {verdict}; largest difference {sample.largest_difference:.2e} {report.currency}."
     )
 

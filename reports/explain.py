@@ -36,30 +36,31 @@ class Asked:
     policy: dict[str, Any]
     design: Design
     prepared: Prepared
+    basis: Basis
 
     @property
     def parts(self) -> tuple[dict[str, Any], Design, Basis, Settings]:
         """What a valuation by the plain implementation is asked."""
-        return self.policy, self.design, self.prepared.basis, self.prepared.document.settings
+        return self.policy, self.design, self.basis, self.prepared.document.settings
 
 
-def explain(run: Path, policy_id: str) -> str:
-    """Return the working of a policy as text.
+def explain(run: Path, policy_id: str, basis: str = "") -> str:
+    """Return the working of a policy as text, on the run's own basis or on one of the further ones.
 
     Raises DocumentError and ExtractError for wrong input, and ExplainError if the policy is not in the
     extract, or the run would list it as an exception: what a run does not value has no working either.
     """
-    asked = look_up(run, policy_id)
+    asked = look_up(run, policy_id, basis)
     with _said_plainly(policy_id):
         return working(*asked.parts)
 
 
-def explain_in_workbook(run: Path, policy_id: str) -> bytes:
+def explain_in_workbook(run: Path, policy_id: str, basis: str = "") -> bytes:
     """Return the working of a policy as a workbook. Raises what ``explain`` does."""
     from .working_book import working_bytes
     from .working_facts import work_out
 
-    asked = look_up(run, policy_id)
+    asked = look_up(run, policy_id, basis)
     with _said_plainly(policy_id):
         return working_bytes(work_out(*asked.parts), asked.prepared.document.currency)
 
@@ -71,15 +72,19 @@ def as_workbook(out: Path) -> bool:
     return out.suffix.lower() == ".xlsx"
 
 
-def look_up(run: Path, policy_id: str) -> Asked:
+def look_up(run: Path, policy_id: str, basis: str = "") -> Asked:
     """Return a policy and what it is valued by. Raises what ``explain`` does."""
     prepared = prepare(run)
-    asked = rule_columns(prepared.basis, prepared.designs, prepared.extract.column_names)
+    known = {"": prepared.basis, **prepared.further}
+    if basis not in known:
+        choice = ", ".join(f"'{name}'" for name in prepared.further) or "none but its own"
+        raise ExplainError(f"{run}: the run has no further basis '{basis}'; it has {choice}")
+    asked = rule_columns(known[basis], prepared.designs, prepared.extract.column_names)
     needed = needed_columns(prepared.designs, asked)
     prepared.extract.need(needed)
     policy = find_policy(prepared.extract, policy_id)
     place = _checked(prepared, policy, needed, policy_id)
-    return Asked(policy.policy(0), prepared.designs[place], prepared)
+    return Asked(policy.policy(0), prepared.designs[place], prepared, known[basis])
 
 
 @contextlib.contextmanager

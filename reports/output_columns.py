@@ -15,6 +15,11 @@ OUTPUT_TABLES: dict[str, tuple[tuple[str, str, str], ...]] = {
         ("value_of_benefits", "currency", "present value of the benefits, rounded"),
         ("value_of_expenses", "currency", "present value of expenses and commission, rounded"),
         ("value_of_premiums", "currency", "present value of the premiums, rounded"),
+        (
+            "*the same with `_` and the name of each of the `further_bases`*",
+            "currency",
+            "the same policy on that basis, such as `reserve_best_estimate`",
+        ),
     ),
     "totals.parquet": (
         ("*the columns of `group_by`*", "text", "the group"),
@@ -28,6 +33,7 @@ OUTPUT_TABLES: dict[str, tuple[tuple[str, str, str], ...]] = {
             "currency",
             "reserve less (benefits + expenses - premiums), because each is rounded by policy",
         ),
+        ("*the same with `_` and the name of each of the `further_bases`*", "currency", "the same on that basis"),
     ),
     "cash_flows.parquet": (
         ("month", "date", "first day of the calendar month"),
@@ -36,6 +42,11 @@ OUTPUT_TABLES: dict[str, tuple[tuple[str, str, str], ...]] = {
         ("part", "text", "part of the reserve that the stream belongs to"),
         ("direction", "text", "`in`: the office receives, `out`: it pays"),
         ("amount", "currency", "expected amount, not discounted, not negative"),
+        (
+            "*a file `cash_flows_` and the name for each of the `further_bases`*",
+            "",
+            "the same columns, on that basis",
+        ),
     ),
     "exceptions.parquet": (
         ("policy_id", "text", "identifier of the policy, as in the extract"),

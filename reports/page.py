@@ -29,7 +29,7 @@ def page(report: Report) -> str:
         settings=report.outcome.settings,
         asked=report.record["settings"],
         total=report.outcome.total,
-        sample=report.outcome.sample,
+        sample=report.widest_sample,
         counted_cautions=[text for text in report.record["cautions"] if text in counts],
         standing_cautions=[text for text in report.record["cautions"] if text not in counts],
         groups=report.outcome.group_by,

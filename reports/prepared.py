@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import os
-from dataclasses import dataclass
+from collections.abc import Iterator
+from dataclasses import dataclass, field
 from pathlib import Path
 
 from assumptions.basis import Basis
@@ -29,7 +30,10 @@ class Input:
 
 @dataclass(frozen=True)
 class Prepared:
-    """A run before it starts. ``design_digests`` holds the SHA-256 of each design's document, in order."""
+    """A run before it starts. ``design_digests`` holds the SHA-256 of each design's document, in order.
+
+    further: the further bases by name.
+    """
 
     run: Path
     document: RunDocument
@@ -39,6 +43,7 @@ class Prepared:
     documents: tuple[Input, ...]
     design_digests: tuple[str, ...]
     stamps: dict[str, tuple[int, int]]
+    further: dict[str, Basis] = field(default_factory=dict)
 
     @property
     def folder(self) -> Path:
@@ -69,25 +74,28 @@ def prepare(run: Path) -> Prepared:
     document = read_run(run)
     check_groups(run, document)
     folder = run.parent
-    designs_path, basis_path = folder / document.designs, folder / document.basis
+    designs_path = folder / document.designs
     designs = read_designs(designs_path)
-    basis = read_basis(basis_path)
+    basis = read_basis(folder / document.basis)
+    further = {name: read_basis(folder / path) for name, path in document.further_bases.items()}
+    bases = [(document.basis, basis), *zip(document.further_bases.values(), further.values(), strict=True)]
     named = [
         ("run document", run.name),
         *(("design", design) for design in _design_names(document.designs, designs_path)),
-        ("basis", document.basis),
-        *(("table of the basis", os.path.join(os.path.dirname(document.basis), name)) for name in basis.files),
+        # A file that two bases share is one input.
+        *dict.fromkeys(file for path, one in bases for file in _basis_files(path, one)),
     ]
     sealed = [_sealed(role, os.path.normpath(path), folder) for role, path in named]
     extract = open_extract(document.extract, folder)
     digests = tuple(item.sha256 for item in sealed if item.role == "design")
-    return Prepared(run, document, designs, basis, extract, tuple(sealed), digests, _stamps(extract, folder))
+    stamps = _stamps(extract, folder)
+    return Prepared(run, document, designs, basis, extract, tuple(sealed), digests, stamps, further)
 
 
 def check_groups(run: Path, document: RunDocument) -> None:
     """Raise DocumentError where a column of the extract would stand beside a result of the same name."""
     try:
-        check_names(document.group_by)
+        check_names(document.group_by, list(document.further_bases))
     except DocumentError as error:
         raise DocumentError(f"{run}: {error}") from None
 
@@ -97,6 +105,13 @@ def _design_names(written: str, path: Path) -> list[str]:
     if not path.is_dir():
         return [written]
     return [os.path.join(written, file.name) for file in sorted(path.glob("*.toml"))]
+
+
+def _basis_files(path: str, basis: Basis) -> Iterator[tuple[str, str]]:
+    """Yield the part in the run and the path of a basis's document and of its tables."""
+    yield "basis", path
+    for name in basis.files:
+        yield "table of the basis", os.path.normpath(os.path.join(os.path.dirname(path), name))
 
 
 def _sealed(role: str, path: str, folder: Path) -> Input:

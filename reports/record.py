@@ -20,7 +20,8 @@ from importlib import metadata
 from pathlib import Path, PurePath
 from typing import Any
 
-from projection.results import JSON, ControlTotal, Outcome
+from projection.basis_names import column_on
+from projection.results import JSON, ControlTotal, OnBasis, Outcome
 
 from .cautions import cautions
 from .figures import decimal_text
@@ -78,13 +79,34 @@ def build_record(
             for design, digest in zip(prepared.designs, prepared.design_digests, strict=True)
         ],
         "control": [_control(total, outcome.settings.decimals) for total in outcome.control],
-        "totals": {name: decimal_text(minor, outcome.settings.decimals) for name, minor in outcome.total.items()},
+        "further_bases": [_further(one, prepared) for one in outcome.further],
+        "totals": {name: decimal_text(minor, outcome.settings.decimals) for name, minor in all_totals(outcome).items()},
         "exceptions_by_reason": reasons(outcome),
         "sample": {**asdict(outcome.sample), "passes": outcome.sample.passes},
         "counts": dict(outcome.counts),
         "cautions": list(cautions(outcome)),
         "timings": {name: round(taken, 4) for name, taken in outcome.timings.items()},
         "outputs": [],
+    }
+
+
+def all_totals(outcome: Outcome) -> dict[str, int]:
+    """Return the sums over all policies in minor units by column of money, those of the further bases behind."""
+    further = {column_on(name, one.name): minor for one in outcome.further for name, minor in one.total.items()}
+    return {**outcome.total, **further}
+
+
+def _further(one: OnBasis, prepared: Prepared) -> JSON:
+    """What the record says of a further basis; of its conventions those that differ are shown to people."""
+    basis = prepared.further[one.name]
+    return {
+        "name": one.name,
+        "title": basis.title,
+        "reference": basis.document.reference,
+        "sha256": basis.digest,
+        "conventions": [{"matter": matter, "rule": rule} for matter, rule in one.conventions],
+        "sample": {**asdict(one.sample), "passes": one.sample.passes},
+        "counts": dict(one.counts),
     }
 
 

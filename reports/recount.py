@@ -12,7 +12,7 @@ import pyarrow as pa
 import pyarrow.compute as pc
 import pyarrow.parquet as pq
 
-from projection.results import JSON, MONEY_COLUMNS
+from projection.results import JSON
 
 from .figures import decimal_text, minor_units
 
@@ -34,7 +34,8 @@ def recount(folder: Path, record: JSON) -> Recounted:
     groups = list(record["settings"]["group_by"])
     sums = _sums_by_group(folder, record, groups, decimals)
     result = Recounted(sum(group["policies"] for group in sums.values()))
-    result.faults += _against_totals(folder / "totals.parquet", sums, groups, decimals)
+    names = list(record["totals"])
+    result.faults += _against_totals(folder / "totals.parquet", sums, groups, names, decimals)
     result.faults += _against_record(record, sums, decimals)
     result.faults += _against_exceptions(folder / "exceptions.parquet", record, result.policies)
     return result
@@ -46,36 +47,39 @@ def minor(column: Any, decimals: int) -> Any:
 
 
 def _sums_by_group(folder: Path, record: JSON, groups: list[str], decimals: int) -> dict[Key, Sums]:
-    sums: dict[Key, Sums] = defaultdict(lambda: dict.fromkeys(("policies", *MONEY_COLUMNS), 0))
-    for batch in _batches(folder, record, groups):
+    names = list(record["totals"])
+    sums: dict[Key, Sums] = defaultdict(lambda: dict.fromkeys(("policies", *names), 0))
+    for batch in _batches(folder, record, [*groups, *names]):
         table = pa.table(
             {name: batch.column(name) for name in groups}
-            | {name: minor(batch.column(name), decimals) for name in MONEY_COLUMNS}
+            | {name: minor(batch.column(name), decimals) for name in names}
         )
-        wanted: list[Any] = [(name, "sum") for name in MONEY_COLUMNS]
+        wanted: list[Any] = [(name, "sum") for name in names]
         for row in table.group_by(groups).aggregate([*wanted, ([], "count_all")]).to_pylist():
             group = sums[tuple(row[name] for name in groups)]
             group["policies"] += row["count_all"]
-            for name in MONEY_COLUMNS:
+            for name in names:
                 group[name] += row[f"{name}_sum"] or 0
     return sums
 
 
-def _batches(folder: Path, record: JSON, groups: list[str]) -> Iterator[pa.RecordBatch]:
-    columns = list(dict.fromkeys([*groups, *MONEY_COLUMNS]))
+def _batches(folder: Path, record: JSON, names: list[str]) -> Iterator[pa.RecordBatch]:
+    columns = list(dict.fromkeys(names))
     for output in record["outputs"]:
         if output["path"].startswith("policies/"):
             with pq.ParquetFile(folder / PurePosixPath(output["path"])) as file:
                 yield from file.iter_batches(1 << 17, columns=columns)
 
 
-def _against_totals(path: Path, sums: dict[Key, Sums], groups: list[str], decimals: int) -> Iterator[str]:
+def _against_totals(
+    path: Path, sums: dict[Key, Sums], groups: list[str], names: list[str], decimals: int
+) -> Iterator[str]:
     totals = pq.read_table(path)
     left = dict(sums)
     for row in totals.to_pylist():
         key = tuple(row[name] for name in groups)
-        found = left.pop(key, dict.fromkeys(("policies", *MONEY_COLUMNS), 0))
-        said = {"policies": row["policies"]} | {name: round(float(row[name]) * 10**decimals) for name in MONEY_COLUMNS}
+        found = left.pop(key, dict.fromkeys(("policies", *names), 0))
+        said = {"policies": row["policies"]} | {name: round(float(row[name]) * 10**decimals) for name in names}
         for name, value in said.items():
             if value != found[name]:
                 where = f"totals.parquet: {_place(groups, key)}{name}"
@@ -86,8 +90,6 @@ def _against_totals(path: Path, sums: dict[Key, Sums], groups: list[str], decima
 
 def _against_record(record: JSON, sums: dict[Key, Sums], decimals: int) -> Iterator[str]:
     for name, text in record["totals"].items():
-        if name not in MONEY_COLUMNS:
-            continue
         found = sum(group[name] for group in sums.values())
         if minor_units(text, decimals) != found:
             yield f"run.json: {name} is {text} in all, the policies add up to {decimal_text(found, decimals)}"

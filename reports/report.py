@@ -6,7 +6,8 @@ from collections import defaultdict
 from dataclasses import dataclass
 from functools import cached_property
 
-from projection.results import JSON, Outcome
+from projection.basis_names import OWN, column_on
+from projection.results import JSON, Outcome, SampleCheck
 
 from .figures import money, shown, words
 from .record import is_count
@@ -63,6 +64,12 @@ class Report:
         parts = total["value_of_benefits"] + total["value_of_expenses"] - total["value_of_premiums"]
         return total["reserve"] - parts
 
+    @property
+    def widest_sample(self) -> SampleCheck:
+        """The sample of the basis on which engine and plain twin lie furthest apart."""
+        samples = [self.outcome.sample, *(one.sample for one in self.outcome.further)]
+        return max(samples, key=lambda sample: sample.largest_relative)
+
     @cached_property
     def control_rows(self) -> list[tuple[str, str, str, str, bool]]:
         """The in-force gate: quantity, read, valued, exceptions, closes."""
@@ -89,6 +96,31 @@ class Report:
         for row in self.total_rows:
             sums[shown(row[name])] += round(float(str(row["reserve"])) * 10**self.decimals)
         return [(group, minor / 10**self.decimals) for group, minor in sums.items()]
+
+    @property
+    def basis_rows(self) -> list[tuple[str, str, dict[str, int]]]:
+        """The bases side by side: name, title and sums in minor units; the run's own first, without a name."""
+        own = (OWN, str(self.record["basis"]["title"]), self.outcome.total)
+        return [own, *((one.name, one.title, one.total) for one in self.outcome.further)]
+
+    @cached_property
+    def reserves_by_group(self) -> list[tuple[str, list[float]]]:
+        """Reserve on each basis by product, or by the first group where product is not among the groups."""
+        if self.bar_group is None:
+            return []
+        columns = [column_on("reserve", name) for name, _, _ in self.basis_rows]
+        sums: dict[str, list[int]] = defaultdict(lambda: [0] * len(columns))
+        for row in self.total_rows:
+            figures = sums[shown(row[self.bar_group])]
+            for place, column in enumerate(columns):
+                figures[place] += round(float(str(row[column])) * 10**self.decimals)
+        return [(group, [minor / 10**self.decimals for minor in minors]) for group, minors in sums.items()]
+
+    @cached_property
+    def other_conventions(self) -> list[tuple[str, str, str]]:
+        """Conventions of the further bases that differ from those of the run's own: basis, matter, rule."""
+        own = set(self.outcome.conventions)
+        return [(one.name, *line) for one in self.outcome.further for line in one.conventions if line not in own]
 
     @property
     def bar_group(self) -> str | None:

@@ -75,6 +75,7 @@ def value_prepared(
     """
     document = prepared.document
     asked: dict[str, Any] = {
+        "further": prepared.further,
         "group_by": tuple(document.group_by),
         "in_force": tuple(document.in_force),
         "exceptions_limit": document.exceptions_limit,
@@ -86,7 +87,8 @@ def value_prepared(
     try:
         return value_extract(prepared.extract, prepared.designs, prepared.basis, document.settings, **(asked | changes))
     except DocumentError as error:
-        raise DocumentError(f"{prepared.folder / document.basis}: {error}") from error
+        path = document.further_bases.get(error.side, document.basis)
+        raise DocumentError(f"{prepared.folder / path}: {error}") from error
 
 
 def write_tables(folder: Path, outcome: Outcome) -> list[WrittenFile]:
@@ -95,6 +97,7 @@ def write_tables(folder: Path, outcome: Outcome) -> list[WrittenFile]:
         write_table(folder, "totals.parquet", outcome.totals),
         write_table(folder, "cash_flows.parquet", outcome.cash_flows),
         write_table(folder, "exceptions.parquet", outcome.exceptions),
+        *(write_table(folder, f"cash_flows_{one.name}.parquet", one.cash_flows) for one in outcome.further),
     ]
 
 

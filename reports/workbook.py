@@ -10,6 +10,7 @@ import xlsxwriter
 
 from .figures import short, visible, words
 from .report import Report
+from .workbook_bases import add_bases
 from .workbook_flows import add_cash_flows, add_monthly
 from .workbook_sheets import OPTIONS, Formats, Table, formats_for, put_table, text
 from .workbook_summary import fill_summary
@@ -26,6 +27,8 @@ def workbook_bytes(report: Report) -> bytes:
         formats = formats_for(book, report.decimals)
         summary = book.add_worksheet("Summary")
         bars = _totals(book, report, formats)
+        if report.outcome.further:
+            add_bases(book, report, formats)
         chart = add_cash_flows(book, report, formats)
         fill_summary(summary, report, formats, [item for item in (bars, chart) if item is not None])
         add_monthly(book, report, formats)
@@ -122,6 +125,10 @@ def _inputs(book: Any, report: Report, formats: Formats) -> None:
             for item in report.record["inputs"]
         ),
         ("basis with its tables", basis["title"], basis["sha256"], None, None),
+        *(
+            (f"basis {other['name']} with its tables", other["title"], other["sha256"], None, None)
+            for other in report.record["further_bases"]
+        ),
     ]
     put_table(
         book.add_worksheet("Inputs"),
