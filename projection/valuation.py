@@ -22,6 +22,7 @@ from portfolios.exception_rows import no_exceptions
 from portfolios.extract import CHUNK_ROWS, Extract
 from portfolios.identifiers import find_duplicates
 
+from .basis_columns import until_columns
 from .basis_names import OWN, column_on
 from .chunk_results import ChunkResults
 from .documents import DocumentError
@@ -93,12 +94,9 @@ class _Valuation:
         self.extract, self.designs, self.bases, self.settings, self.plan = extract, designs, bases, settings, plan
         check_names(plan.group_by, [name for name in bases if name != OWN])
         self.group_by = plan.group_by
-        numbers = [*number_columns(designs), *dict.fromkeys(column for one in bases.values() for column in _until(one))]
-        asked = list(
-            dict.fromkeys(
-                column for one in bases.values() for column in rule_columns(one, designs, extract.column_names)
-            )
-        )
+        numbers = [*number_columns(designs), *(column for one in bases.values() for column in until_columns(one))]
+        looked_at = [column for one in bases.values() for column in rule_columns(one, designs, extract.column_names)]
+        asked = list(dict.fromkeys(looked_at))
         self.needed = needed_columns(designs, [*numbers, *asked, *self.group_by])
         extract.need(self.needed, numbers=numbers)
         self.amounts = [name for name in extract.column_names if name in BY_NAME and BY_NAME[name].kind == "money"]
@@ -267,12 +265,6 @@ def _counts(side: Side) -> dict[str, int]:
         "discount curves": len(engine.discount.known),
         "rows of relative amounts": len(engine.plans.relative.known),
     }
-
-
-def _until(basis: Basis) -> list[str]:
-    """Columns that say when lapses stop."""
-    rules = basis.document.lapse.rule if basis.document.lapse else []
-    return [rule.until for rule in rules if isinstance(rule.until, str)]
 
 
 def usable_cores() -> int:
