@@ -10,7 +10,7 @@ import pyarrow as pa
 
 from .documents import DocumentError
 from .plain_dates import monthiversary
-from .premium_document import PremiumDocument
+from .premium_document import PremiumDocument, SameAs, ToAge
 
 AGES = {"age": "birth_date", "second_age": "second_birth_date"}
 """Axes that stand for a date: the age on the day of sale, which is a birthday."""
@@ -41,7 +41,7 @@ def policies_of(document: PremiumDocument, cells: pa.Table) -> pa.Table:
         **document.policy,
     }
     columns: dict[str, Any] = {"policy_id": pa.array([f"cell {row + 1}" for row in range(n)])}
-    columns |= {name: pa.array([_number(value)] * n) for name, value in same.items()}
+    columns |= {name: _given(name, value, cells) for name, value in same.items()}
     for axis in document.grid:
         if axis in AGES:
             columns[AGES[axis]] = _births(document, axis, cells)
@@ -70,5 +70,14 @@ def _column(name: str, values: list[Any]) -> pa.Array:
     raise DocumentError(f"grid: axis '{name}' mixes numbers and text")
 
 
-def _number(value: Any) -> Any:
-    return float(value) if isinstance(value, int) and not isinstance(value, bool) else value
+def _given(name: str, value: Any, cells: pa.Table) -> pa.Array:
+    """A column that is no axis: one value for all cells, or worked out from an axis."""
+    if isinstance(value, SameAs):
+        return cells.column(value.as_)
+    if isinstance(value, ToAge):
+        years = [value.to_age - age for age in cells.column("age").to_pylist()]
+        if min(years) < 0:
+            raise DocumentError(f"policy: '{name}' runs to age {value.to_age:g}, but the grid has higher ages")
+        return pa.array(years, pa.float64())
+    whole = isinstance(value, int) and not isinstance(value, bool)
+    return pa.array([float(value) if whole else value] * cells.num_rows)

@@ -33,7 +33,7 @@ def findings_of(document: PremiumDocument, rates: Numbers, price: bool) -> Itera
         yield from _falls(axes, cube, axis, "rises", 1.0)
     for axis in document.checks.falls_with:
         yield from _falls(axes, cube, axis, "falls", -1.0)
-    for axis in document.grid:
+    for axis in document.smooth_axes:
         yield from _bends(axes, cube, axis, document.checks.smooth)
     if document.size is not None:
         yield from _edges(axes, cube, document, price)
@@ -56,6 +56,7 @@ class _Axes:
 
 
 def _falls(axes: _Axes, cube: Numbers, axis: str, word: str, sign: float) -> Iterator[Finding]:
+    """Steps along an axis of numbers in the wrong direction."""
     along = axes.names.index(axis)
     steps = sign * np.diff(cube, axis=along)
     for place in zip(*np.nonzero(steps < 0), strict=True):
@@ -63,7 +64,7 @@ def _falls(axes: _Axes, cube: Numbers, axis: str, word: str, sign: float) -> Ite
         values = axes.values[along]
         said = (
             f"the rate should be one that {word} with {axis}, but goes from {cube[place]:,.10g} at "
-            f"{values[place[along]]} to {cube[after]:,.10g} at {values[after[along]]}"
+            f"{values[place[along]]:,.10g} to {cube[after]:,.10g} at {values[after[along]]:,.10g}"
         )
         yield Finding(f"{word} with {axis}", axis, axes.cell(after), said)
 
@@ -72,11 +73,9 @@ def _bends(axes: _Axes, cube: Numbers, axis: str, limit: float) -> Iterator[Find
     """The logarithm of a rate against the straight line between its neighbours, twice, as a second difference."""
     along = axes.names.index(axis)
     values = axes.values[along]
-    if len(values) < 3 or not all(isinstance(value, int | float) for value in values):
+    if len(values) < 3:
         return
     at = np.array(values, dtype=np.float64)
-    if not (np.diff(at) > 0).all():
-        return
     share = (at[1:-1] - at[:-2]) / (at[2:] - at[:-2])
     with np.errstate(divide="ignore", invalid="ignore"):
         logs = np.moveaxis(np.log(cube), along, -1)
@@ -102,7 +101,9 @@ def _edges(axes: _Axes, cube: Numbers, document: PremiumDocument, price: bool) -
                 least = max(band.from_, edge * above[place] / below[place])
                 said = f"from {least:,.2f} up to {edge:,.2f} of {size.column}, a policy of {edge:,.2f} costs less"
             else:
-                said = f"at {edge:,.2f} of {size.column} the rate falls from {below[place]:,.10g} to {above[place]:,.10g}"
+                said = (
+                    f"at {edge:,.2f} of {size.column} the rate falls to {above[place]:,.10g} from {below[place]:,.10g}"
+                )
             yield Finding("neighbouring sizes", "size_from", cell, said)
 
 

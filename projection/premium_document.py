@@ -35,6 +35,18 @@ class Steps(_Part):
         return [self.from_ + self.step * place for place in range(count)]
 
 
+class SameAs(_Part):
+    """A column that holds in every cell what an axis holds, such as a premium term that is the term."""
+
+    as_: str = Field(alias="as", description="the axis")
+
+
+class ToAge(_Part):
+    """A column of years that run to an age, counted from the axis 'age'."""
+
+    to_age: float = Field(gt=0, le=130, description="age at the end")
+
+
 class SizeBand(_Part):
     """Policies of a size from one amount on, up to the next band, that share a rate."""
 
@@ -76,7 +88,10 @@ class RateChecks(_Part):
     rises_with: list[str] = Field(default_factory=list, description="axes along which no rate may fall")
     falls_with: list[str] = Field(default_factory=list, description="axes along which no rate may rise")
     smooth: float = Field(
-        0.05, gt=0, description="largest second difference of the logarithm of rates along an axis of numbers"
+        0.05, gt=0, description="largest second difference of the logarithm of rates, by the axes of 'smooth_along'"
+    )
+    smooth_along: list[str] | None = Field(
+        None, description="axes along which rates must be smooth; absent: those of ages and of years"
     )
 
 
@@ -93,8 +108,9 @@ class PremiumDocument(_Part):
         "gross", description="with expenses and commission of basis and design, or without"
     )
     step: Step = Field("month", description="length of a projection step")
-    policy: dict[str, str | float | int | date] = Field(
-        default_factory=dict, description="columns of the extract that are the same in every cell"
+    policy: dict[str, str | float | int | date | SameAs | ToAge] = Field(
+        default_factory=dict,
+        description="further columns of the extract: a value for all cells, { as = axis }, or { to_age = years }",
     )
     grid: dict[str, Steps | list[str | float | int]] = Field(
         description="axes of the table: a column and its values, as a list or in steps; 'age' is the age on the day "
@@ -120,16 +136,23 @@ class PremiumDocument(_Part):
                 raise ValueError(f"grid: axis '{axis}' is empty")
             if axis in self.policy:
                 raise ValueError(f"'{axis}' stands both in grid and in policy")
+        for column, value in self.policy.items():
+            asked = value.as_ if isinstance(value, SameAs) else "age" if isinstance(value, ToAge) else None
+            if asked is not None and asked not in self.grid:
+                raise ValueError(f"policy: '{column}' goes by the axis '{asked}', which the grid does not have")
         sized = {self.size.column} if self.size else set()
         for column in (self.unknown, *sized):
             if column in self.grid or column in self.policy:
                 raise ValueError(f"'{column}' is worked out or given by size; leave it out of grid and policy")
         if self.unknown in sized:
             raise ValueError(f"rates for '{self.unknown}' cannot be per unit of itself")
-        for name in ("rises_with", "falls_with"):
-            for axis in getattr(self.checks, name):
+        for name in ("rises_with", "falls_with", "smooth_along"):
+            for axis in getattr(self.checks, name) or ():
                 if axis not in self.grid:
                     raise ValueError(f"checks: '{axis}' in {name} is no axis of the grid")
+                values = self.values(axis)
+                if not all(isinstance(value, int | float) for value in values) or values != sorted(values):
+                    raise ValueError(f"checks: '{axis}' in {name} is no axis of rising numbers")
         if self.policy_fee and self.size is None:
             raise ValueError("a policy fee needs 'size', since it is what does not depend on the size")
         cells = len(self.size.band) if self.size else 1
@@ -143,6 +166,14 @@ class PremiumDocument(_Part):
         """Return the values of an axis in order."""
         written = self.grid[axis]
         return written.numbers() if isinstance(written, Steps) else list(written)
+
+    @property
+    def smooth_axes(self) -> list[str]:
+        """Axes along which rates must be smooth: those stated, or those of rising ages and years."""
+        if self.checks.smooth_along is not None:
+            return list(self.checks.smooth_along)
+        named = [axis for axis in self.grid if axis in ("age", "second_age") or axis.endswith("_years")]
+        return [axis for axis in named if self.values(axis) == sorted(self.values(axis))]
 
     @property
     def settings(self) -> Settings:

@@ -10,10 +10,11 @@ from numpy.typing import NDArray
 
 from assumptions.basis import Basis
 from portfolios.designs import Design
+from portfolios.extract import ExtractError
 
 from .documents import DocumentError
 from .equivalence import Solved, solve
-from .premium_cells import BAND, cells_of, policies_of
+from .premium_cells import cells_of, policies_of
 from .premium_checks import Finding, findings_of
 from .premium_document import PremiumDocument, Rounding
 from .sheet import convention_sheet
@@ -57,13 +58,22 @@ def premiums(document: PremiumDocument, designs: list[Design], basis: Basis) -> 
     """Work out a rate table. Raises DocumentError where document, design and basis do not fit together."""
     design = next((one for one in designs if one.code == document.design), None)
     if design is None:
-        known = ", ".join(one.code for one in designs)
-        raise DocumentError(f"key 'design': no design has the code '{document.design}'; there are {known}")
+        codes = ", ".join(one.code for one in designs)
+        raise DocumentError(f"key 'design': no design has the code '{document.design}'; there are {codes}")
+    known = sorted({one.amount for one in design.stream if isinstance(one.amount, str)})
+    for key, column in (("unknown", document.unknown), ("size", document.size and document.size.column)):
+        if column and column not in known:
+            listed = ", ".join(f"'{name}'" for name in known)
+            raise DocumentError(f"key '{key}': '{column}' is no amount of the design {design.code}; it has {listed}")
     if document.policy_fee and not is_price(document, design):
         raise DocumentError(f"key 'policy_fee': the unknown '{document.unknown}' is not what the office receives")
     cells = cells_of(document)
     policies = policies_of(document, cells)
-    valuer = Valuer(_with_unknown(policies, document.unknown), [design], basis, document.settings)
+    try:
+        valuer = Valuer(_with_unknown(policies, document.unknown), [design], basis, document.settings)
+    except ExtractError as error:
+        faults = str(error).replace("in memory: ", "").splitlines()
+        raise DocumentError("\n".join(f"{fault}; give it in grid or policy" for fault in faults)) from None
     found = solve(valuer, policies, document.unknown, net=document.equivalence == "net")
     table = _table(document, cells, policies, found)
     rates = table.column("rate").to_numpy()

@@ -124,6 +124,36 @@ def reserve(
     print(visible(summary(report, str(out))))
 
 
+@app.command(short_help="Premiums and rate tables by equivalence.")
+def premium(
+    run: RunDocumentPath,
+    out: Annotated[Path, typer.Option(metavar="FOLDER", help="Run folder to write: complete, or not at all.")],
+    replace: Annotated[bool, typer.Option("--replace", help="Replace a finished run of this name.")] = False,
+    no_workbook: Annotated[bool, typer.Option("--no-workbook", help="Leave out report.xlsx.")] = False,
+) -> None:
+    """Work out the amount at which a new contract's benefits and premiums are worth the same, cell by cell.
+
+    The premium document names the design, the basis, the amount asked for, and the axes of the table: ages, terms,
+    frequencies or any other columns. Rates are per unit of size, rounded, and checked against one another.
+
+    
+    The run folder holds
+        rates.parquet         every cell: rate, amount, values
+        findings.parquet      rates that do not rise, fall or bend as they should
+        run.json              the record: inputs and outputs with SHA-256, settings, cautions
+        report.html, report.xlsx    rate tables and heat maps for people
+
+    
+    Example:
+        duecourse premium office/premium.toml --out office/rates
+    """
+    from .premium_console import premium_summary
+    from .premium_run import premium_run
+
+    report = premium_run(run, out, replace_finished=replace, workbook=not no_workbook)
+    print(visible(premium_summary(report, str(out))))
+
+
 @app.command(short_help="Show the working of one policy.")
 def explain(
     run: RunDocumentPath,
@@ -155,6 +185,33 @@ def explain(
     content = explain_in_workbook(run, policy, basis) if as_book else explain_policy(run, policy, basis).encode()
     write_whole(out, content)
     print(visible(f"The working of {short(policy)} is in {out}."))
+
+
+@app.command(short_help="Alter one policy at equal value.")
+def alter(
+    run: RunDocumentPath,
+    policy: Annotated[str, typer.Argument(metavar="POLICY", help="Identifier of the policy, as in the extract.")],
+    solve: Annotated[str, typer.Option(metavar="COLUMN", help="The amount to find.")],
+    change: Annotated[
+        list[str] | None, typer.Option("--set", metavar="COLUMN=VALUE", help="A change; may be given several times.")
+    ] = None,
+    charge: Annotated[float, typer.Option(metavar="AMOUNT", help="Taken from the reserve.")] = 0.0,
+    basis: Annotated[
+        str, typer.Option(metavar="NAME", help="One of the run's further bases, in place of its own.")
+    ] = "",
+) -> None:
+    """Change a policy and find the amount at which its reserve stays what it is, less a charge.
+
+    Paid-up sums, changed terms and sums, and changes of product are worked out in this way; the extract is not
+    touched.
+
+    \b
+    Example:
+        duecourse alter office/month-end.toml QM-000000011-5 --set premium_pa=0 --solve sum_assured
+    """
+    from .alter import alter_policy
+
+    print(visible(alter_policy(run, policy, change or [], solve, charge, basis)), end="")
 
 
 @app.command(short_help="Check a finished run folder against its record.")

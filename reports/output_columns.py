@@ -56,5 +56,24 @@ OUTPUT_TABLES: dict[str, tuple[tuple[str, str, str], ...]] = {
         ("value", "text", "what stands there"),
         ("rule", "text", "the rule that is broken"),
     ),
+    "rates.parquet": (
+        ("*the axes of the `grid`*", "as in the document", "the cell"),
+        ("size_from", "currency", "smallest size of the cell's band, where there are sizes"),
+        ("size_at", "currency", "size for which the cell is worked out"),
+        ("rate", "currency", "amount of the unknown per unit of size, less the policy fee, rounded"),
+        ("rate_unrounded", "currency", "the same before it is rounded"),
+        ("amount", "currency", "amount of the unknown at which the value is what was asked for, not rounded"),
+        ("charged", "currency", "the same at the rounded rate, with the policy fee"),
+        ("value_of_benefits", "currency", "at `amount`, not rounded"),
+        ("value_of_expenses", "currency", "at `amount`, not rounded"),
+        ("value_of_premiums", "currency", "at `amount`, not rounded"),
+        ("why", "text", "why the cell has no rate; empty where it has one"),
+    ),
+    "findings.parquet": (
+        ("check", "text", "the check of the premium document that is broken"),
+        ("axis", "text", "the axis along which it is"),
+        ("cell", "text", "the cell, axis by axis"),
+        ("finding", "text", "what was found, in words"),
+    ),
 }
 """By file: the name, the unit and the meaning of each column."""

@@ -2,16 +2,12 @@
 
 from __future__ import annotations
 
-from functools import cache
-from pathlib import Path
-from typing import Any
-
-import jinja2
 from markupsafe import Markup
 
 from .cautions import counted_cautions
 from .charts import bar_chart, run_off_chart
-from .figures import amount, count, counted, seconds, shown, size, visible, words
+from .figures import count, visible, words
+from .page_templates import template
 from .report import Report, in_blocks
 
 MOST_GROUPS = 500
@@ -23,7 +19,7 @@ MOST_INPUTS = 200
 def page(report: Report) -> str:
     """Return the page. Every text from the inputs is escaped, and its control characters become '?'."""
     counts = set(counted_cautions(report.outcome))
-    text = template().render(
+    text = template("report.html").render(
         report=report,
         record=report.record,
         settings=report.outcome.settings,
@@ -77,26 +73,3 @@ def _run_off(report: Report) -> Markup:
         report.currency,
     )
     return Markup(chart)
-
-
-@cache
-def template() -> jinja2.Template:
-    """Return the page's template, compiled when it is first asked for."""
-    environment = jinja2.Environment(
-        loader=jinja2.FileSystemLoader(Path(__file__).with_name("templates")),
-        autoescape=True,
-        trim_blocks=True,
-        lstrip_blocks=True,
-        undefined=jinja2.StrictUndefined,
-    )
-    filters: dict[str, Any] = {
-        "amount": amount,
-        "count": count,
-        "counted": counted,
-        "seconds": seconds,
-        "shown": shown,
-        "size": size,
-        "words": words,
-    }
-    environment.filters.update(filters)
-    return environment.get_template("report.html")

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import os
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from dataclasses import dataclass, field
 from pathlib import Path
 
@@ -81,15 +81,15 @@ def prepare(run: Path) -> Prepared:
     bases = [(document.basis, basis), *zip(document.further_bases.values(), further.values(), strict=True)]
     named = [
         ("run document", run.name),
-        *(("design", design) for design in _design_names(document.designs, designs_path)),
+        *(("design", design) for design in design_names(document.designs, designs_path)),
         # A file that two bases share is one input.
-        *dict.fromkeys(file for path, one in bases for file in _basis_files(path, one)),
+        *dict.fromkeys(file for path, one in bases for file in basis_files(path, one)),
     ]
-    sealed = [_sealed(role, os.path.normpath(path), folder) for role, path in named]
+    documents = seal_all(named, folder)
     extract = open_extract(document.extract, folder)
-    digests = tuple(item.sha256 for item in sealed if item.role == "design")
+    digests = tuple(item.sha256 for item in documents if item.role == "design")
     stamps = _stamps(extract, folder)
-    return Prepared(run, document, designs, basis, extract, tuple(sealed), digests, stamps, further)
+    return Prepared(run, document, designs, basis, extract, documents, digests, stamps, further)
 
 
 def check_groups(run: Path, document: RunDocument) -> None:
@@ -100,18 +100,23 @@ def check_groups(run: Path, document: RunDocument) -> None:
         raise DocumentError(f"{run}: {error}") from None
 
 
-def _design_names(written: str, path: Path) -> list[str]:
+def design_names(written: str, path: Path) -> list[str]:
     """Return the designs' files in the order in which they are read, as the run document would write them."""
     if not path.is_dir():
         return [written]
     return [os.path.join(written, file.name) for file in sorted(path.glob("*.toml"))]
 
 
-def _basis_files(path: str, basis: Basis) -> Iterator[tuple[str, str]]:
+def basis_files(path: str, basis: Basis) -> Iterator[tuple[str, str]]:
     """Yield the part in the run and the path of a basis's document and of its tables."""
     yield "basis", path
     for name in basis.files:
         yield "table of the basis", os.path.normpath(os.path.join(os.path.dirname(path), name))
+
+
+def seal_all(named: Iterable[tuple[str, str]], folder: Path) -> tuple[Input, ...]:
+    """Return the seals of files: part in the run and path, relative to the folder. Raises DocumentError."""
+    return tuple(_sealed(role, os.path.normpath(path), folder) for role, path in named)
 
 
 def _sealed(role: str, path: str, folder: Path) -> Input:

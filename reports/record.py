@@ -20,6 +20,8 @@ from importlib import metadata
 from pathlib import Path, PurePath
 from typing import Any
 
+from assumptions.basis import Basis
+from portfolios.designs import Design
 from projection.basis_names import column_on
 from projection.results import JSON, ControlTotal, OnBasis, Outcome
 
@@ -54,30 +56,13 @@ def build_record(
     """Return the record without its outputs, which ``complete`` adds."""
     document = prepared.document
     return {
-        "record": FORMAT,
-        "question": "reserve",
-        "title": document.title or "Reserve run",
-        "status": "unfinished",
-        "approval": "unsigned",
-        "command": command,
-        "started": stamp(started),
-        "finished": "",
-        "versions": versions(),
-        "python": f"{platform.python_implementation()} {platform.python_version()}",
-        "platform": f"{platform.system()} {platform.machine()}",
+        **opening("reserve", document.title or "Reserve run", command, started),
         "inputs_from": from_folder_to(out, str(prepared.folder)),
-        "inputs": [_without_none(item) for item in prepared.sources(digests)],
+        "inputs": [without_none(item) for item in prepared.sources(digests)],
         "settings": document.model_dump(mode="json", by_alias=True),
         "conventions": [{"matter": matter, "rule": rule} for matter, rule in outcome.conventions],
-        "basis": {
-            "title": prepared.basis.title,
-            "reference": prepared.basis.document.reference,
-            "sha256": prepared.basis.digest,
-        },
-        "designs": [
-            {"code": design.code, "title": design.title, "sha256": digest}
-            for design, digest in zip(prepared.designs, prepared.design_digests, strict=True)
-        ],
+        "basis": basis_entry(prepared.basis),
+        "designs": design_entries(prepared.designs, prepared.design_digests),
         "control": [_control(total, outcome.settings.decimals) for total in outcome.control],
         "further_bases": [_further(one, prepared) for one in outcome.further],
         "totals": {name: decimal_text(minor, outcome.settings.decimals) for name, minor in all_totals(outcome).items()},
@@ -90,6 +75,36 @@ def build_record(
     }
 
 
+def opening(question: str, title: str, command: str, started: datetime) -> JSON:
+    """Return what every record begins with, whatever the run was asked."""
+    return {
+        "record": FORMAT,
+        "question": question,
+        "title": title,
+        "status": "unfinished",
+        "approval": "unsigned",
+        "command": command,
+        "started": stamp(started),
+        "finished": "",
+        "versions": versions(),
+        "python": f"{platform.python_implementation()} {platform.python_version()}",
+        "platform": f"{platform.system()} {platform.machine()}",
+    }
+
+
+def basis_entry(basis: Basis) -> JSON:
+    """Return what a record says of a basis."""
+    return {"title": basis.title, "reference": basis.document.reference, "sha256": basis.digest}
+
+
+def design_entries(designs: Iterable[Design], digests: Iterable[str]) -> list[JSON]:
+    """Return what a record says of designs."""
+    return [
+        {"code": design.code, "title": design.title, "sha256": digest}
+        for design, digest in zip(designs, digests, strict=True)
+    ]
+
+
 def all_totals(outcome: Outcome) -> dict[str, int]:
     """Return the sums over all policies in minor units by column of money, those of the further bases behind."""
     further = {column_on(name, one.name): minor for one in outcome.further for name, minor in one.total.items()}
@@ -98,12 +113,9 @@ def all_totals(outcome: Outcome) -> dict[str, int]:
 
 def _further(one: OnBasis, prepared: Prepared) -> JSON:
     """What the record says of a further basis; of its conventions those that differ are shown to people."""
-    basis = prepared.further[one.name]
     return {
         "name": one.name,
-        "title": basis.title,
-        "reference": basis.document.reference,
-        "sha256": basis.digest,
+        **basis_entry(prepared.further[one.name]),
         "conventions": [{"matter": matter, "rule": rule} for matter, rule in one.conventions],
         "sample": {**asdict(one.sample), "passes": one.sample.passes},
         "counts": dict(one.counts),
@@ -116,7 +128,7 @@ def complete(record: JSON, outputs: Iterable[WrittenFile], timings: dict[str, fl
         "status": "complete",
         "finished": stamp(finished),
         "timings": {name: round(taken, 4) for name, taken in timings.items()},
-        "outputs": [_without_none(file) for file in outputs],
+        "outputs": [without_none(file) for file in outputs],
     }
 
 
@@ -188,7 +200,8 @@ def _quoted(word: str) -> str:
     return f"'{word}'" if " " in word else word
 
 
-def _without_none(item: Input | WrittenFile) -> JSON:
+def without_none(item: Input | WrittenFile) -> JSON:
+    """Return what a record says of a file."""
     return {name: value for name, value in asdict(item).items() if value is not None}
 
 

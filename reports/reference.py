@@ -18,11 +18,20 @@ from pydantic.fields import FieldInfo
 from assumptions.basis import BasisDocument
 from portfolios.columns import COLUMNS, Column
 from portfolios.designs import Design
+from projection.premium_document import PremiumDocument
 from projection.run_document import RunDocument
 
 from .output_columns import OUTPUT_TABLES
 
 FOLDER = Path(__file__).with_name("reference")
+MODELS: tuple[tuple[str, type[BaseModel]], ...] = (
+    ("Run document", RunDocument),
+    ("Basis", BasisDocument),
+    ("Product design", Design),
+    ("Premium document", PremiumDocument),
+)
+"""Every document, by its name."""
+
 _PLAIN = {str: "text", int: "whole number", float: "number", bool: "true or false", date: "date"}
 _WRITTEN = "Written by `python -m reports.reference` from the program's own definitions; do not edit."
 
@@ -34,7 +43,7 @@ def documents_page() -> str:
         "Every document is TOML. An unknown key is an error. A key without a default must be given. Paths "
         "are relative to the folder of the document that they stand in."
     )
-    for title, model in (("Run document", RunDocument), ("Basis", BasisDocument), ("Product design", Design)):
+    for title, model in MODELS:
         parts += [f"## {title}", *_sections(model, set())]
     return "\n\n".join(parts) + "\n"
 

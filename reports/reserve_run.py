@@ -118,7 +118,7 @@ def write_reports(folder: Path, report: Report, watch: Stopwatch, workbook: bool
 
 def _load_writers(workbook: bool) -> None:
     """Import what page and workbook need, and compile the page's template, while the engine computes."""
-    import_module(".page", __package__).template()
+    import_module(".page_templates", __package__).template("report.html")
     if workbook:
         import_module(".workbook", __package__)
 

@@ -64,10 +64,7 @@ def test_select_columns_need_a_word_on_their_ages(tmp_path: Path) -> None:
     with pytest.raises(TableError, match=r"rates\.csv: select rates.*select_by = 'entry age'"):
         read_rates(path)
     # One select year has one meaning, and the ultimate column alone has no select rates.
-    assert (
-        read_rates(csv(tmp_path, "age,select_0,ultimate\n60,0.1,0.2\n61,0.3,1\n", "one.csv")).select_years
-        == 1
-    )
+    assert read_rates(csv(tmp_path, "age,select_0,ultimate\n60,0.1,0.2\n61,0.3,1\n", "one.csv")).select_years == 1
     assert read_rates(path, column="ultimate").ultimate.tolist() == [0.7, 1.0]
 
 
@@ -214,9 +211,7 @@ FOLDER = settings(max_examples=40, deadline=None, suppress_health_check=[HealthC
 
 @FOLDER
 @given(rates=RATES, first=st.integers(0, 90), ending=st.sampled_from(["\n", "\r\n"]))
-def test_written_rates_are_read_to_the_last_bit(
-    tmp_path: Path, rates: list[float], first: int, ending: str
-) -> None:
+def test_written_rates_are_read_to_the_last_bit(tmp_path: Path, rates: list[float], first: int, ending: str) -> None:
     ages = list(range(first, first + len(rates)))
     lines = ["age,rate", *(f"{age},{rate!r}" for age, rate in zip(ages, rates, strict=True))]
     for path in (csv(tmp_path, ending.join(lines)), parquet(tmp_path, {"age": ages, "rate": rates})):
@@ -250,16 +245,12 @@ def test_both_keyings_of_written_select_rates(
 
 @settings(max_examples=200, deadline=None, derandomize=True, suppress_health_check=list(HealthCheck))
 @given(data=st.data())
-def test_a_damaged_parquet_file_is_read_or_refused_in_plain_words(
-    tmp_path: Path, data: st.DataObject
-) -> None:
+def test_a_damaged_parquet_file_is_read_or_refused_in_plain_words(tmp_path: Path, data: st.DataObject) -> None:
     path = parquet(tmp_path, {"age": list(range(60, 80)), "rate": [0.1] * 20})
     content = bytearray(path.read_bytes())
     for _ in range(data.draw(st.integers(1, 3))):
         content[data.draw(st.integers(0, len(content) - 1))] = data.draw(st.integers(0, 255))
-    path.write_bytes(
-        content[: data.draw(st.integers(0, len(content)))] if data.draw(st.booleans()) else content
-    )
+    path.write_bytes(content[: data.draw(st.integers(0, len(content)))] if data.draw(st.booleans()) else content)
     said = ""
     try:
         rates = read_rates(path)

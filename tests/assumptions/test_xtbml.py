@@ -73,9 +73,7 @@ def test_one_table_of_several_by_number_and_by_title(tmp_path: Path) -> None:
     with pytest.raises(TableError, match=f"several tables; name one.*{listed}"):
         read_rates(path)
     for wanted in (0, 3, "work"):
-        with pytest.raises(
-            TableError, match=f"no table with number or title '{wanted}'; there are: {listed}"
-        ):
+        with pytest.raises(TableError, match=f"no table with number or title '{wanted}'; there are: {listed}"):
             read_rates(path, table=wanted)
     twins = save(tmp_path, document(by_age({60: 0.1}, "Work"), by_age({60: 0.2}, "work")))
     with pytest.raises(TableError, match="several tables with number or title 'work'"):
@@ -112,9 +110,7 @@ def test_axes_in_either_order_and_durations_from_0_or_1(tmp_path: Path) -> None:
         rates = read_rates(save(tmp_path, text))
         assert rates.select.tolist() == [[0.1, 0.2], [0.3, 0.4]]
     with pytest.raises(TableError, match=r"durations go 2, 3, not 1, 2, 3"):
-        read_rates(
-            save(tmp_path, document(by_age_and_duration({60: {2: 0.1, 3: 0.2}}))), select_by="entry age"
-        )
+        read_rates(save(tmp_path, document(by_age_and_duration({60: {2: 0.1, 3: 0.2}}))), select_by="entry age")
 
 
 def test_scaling_factors(tmp_path: Path) -> None:

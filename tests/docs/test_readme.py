@@ -82,7 +82,7 @@ def test_the_documents_shown_are_those_of_the_demo() -> None:
     office = ROOT / "portfolios" / "office"
     sources = [path.read_text(encoding="utf-8") for path in office.rglob("*.toml")]
     shown = [one.content for one in blocks(PAGE) if one.language == "toml"]
-    assert len(shown) == 3
+    assert len(shown) == 4
     for content in shown:
         assert any(all(piece.strip() in source for piece in content.split("\n\n")) for source in sources), content
 

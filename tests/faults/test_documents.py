@@ -125,7 +125,7 @@ def test_what_is_not_toml(office: Office, name: str) -> None:
     lines = len((office.folder / name).read_text().splitlines())
     message = office.refused()
     assert f"{office.folder / name}: not valid TOML: Invalid value (at line {lines}, column" in message
-    (office.folder / name).write_bytes(b"title = \"\xff\xfe\"\n")
+    (office.folder / name).write_bytes(b'title = "\xff\xfe"\n')
     assert f"{office.folder / name}: not valid TOML: " in office.refused()
 
 

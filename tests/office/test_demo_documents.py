@@ -46,9 +46,7 @@ def test_every_basis_reads(name: str) -> None:
     assert all(rates.closed for rates in basis.rates)
 
 
-@pytest.mark.parametrize(
-    ("name", "basis"), [("month-end", "statutory"), ("month-end-best-estimate", "best_estimate")]
-)
+@pytest.mark.parametrize(("name", "basis"), [("month-end", "statutory"), ("month-end-best-estimate", "best_estimate")])
 def test_every_run_document_reads(name: str, basis: str) -> None:
     run = read_run(OFFICE / f"{name}.toml")
     assert run.valuation_date == date(2026, 11, 30)
@@ -100,9 +98,7 @@ def test_curve_and_lapses_read() -> None:
 
 
 def test_every_table_is_named_by_a_basis() -> None:
-    named = {
-        Path(name).name for basis in BASES for name in read_basis(OFFICE / "bases" / f"{basis}.toml").files
-    }
+    named = {Path(name).name for basis in BASES for name in read_basis(OFFICE / "bases" / f"{basis}.toml").files}
     assert named == {path.name for path in (OFFICE / "tables").iterdir()}
 
 

@@ -94,15 +94,11 @@ def test_what_the_checks_cannot_see_the_projection_does(
     place = next(place for place, fault in enumerate(FAULTS) if fault.meaning == meaning)
     policy = table.slice(fault_rows(ROWS)[place], 1).to_pylist()[0]
     with pytest.raises(NotValued):
-        plain_value(
-            policy, designs[policy["product"]], read_basis(OFFICE / "bases" / f"{basis}.toml"), Settings(T)
-        )
+        plain_value(policy, designs[policy["product"]], read_basis(OFFICE / "bases" / f"{basis}.toml"), Settings(T))
 
 
 @pytest.mark.parametrize("basis", ["statutory", "best_estimate"])
-def test_right_policies_are_valued_and_look_right(
-    right: pa.Table, designs: dict[str, Design], basis: str
-) -> None:
+def test_right_policies_are_valued_and_look_right(right: pa.Table, designs: dict[str, Design], basis: str) -> None:
     assumed = read_basis(OFFICE / "bases" / f"{basis}.toml")
     for code, design in designs.items():
         policies = right.filter(pc.equal(right["product"].cast(pa.string()), code)).slice(0, 4).to_pylist()

@@ -28,9 +28,7 @@ INF, NAN = float("inf"), float("nan")
 def checked(table: pa.Table, duplicates: Duplicates | None = None) -> tuple[Chunk, Checked]:
     (batch,) = table.combine_chunks().to_batches()
     chunk = Chunk(batch)
-    return chunk, check_chunk(
-        chunk, DESIGNS, VALUATION_DATE, ["in force"], duplicates or Duplicates(), NEEDED
-    )
+    return chunk, check_chunk(chunk, DESIGNS, VALUATION_DATE, ["in force"], duplicates or Duplicates(), NEEDED)
 
 
 def outcome(table: pa.Table) -> tuple[Reason, str]:
@@ -112,9 +110,7 @@ def test_made_policies_are_fine() -> None:
     chunk, result = checked(made_policies(2000))
     assert not result.reason.any()
     assert (result.field == -1).all()
-    assert [DESIGNS[place].code for place in result.product] == [
-        chunk.value("product", row) for row in range(2000)
-    ]
+    assert [DESIGNS[place].code for place in result.product] == [chunk.value("product", row) for row in range(2000)]
     assert (result.product.dtype, result.reason.dtype, result.field.dtype) == (np.int32, np.uint8, np.int16)
 
 

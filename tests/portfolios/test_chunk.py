@@ -61,9 +61,7 @@ def test_text(cells: list[str | None], dictionary: bool) -> None:
 
 
 def test_dictionaries_with_repeats_and_nulls_are_put_right() -> None:
-    array = pa.DictionaryArray.from_arrays(
-        pa.array([0, 1, 2, 3, None], pa.uint8()), pa.array(["a", "b", "a", None])
-    )
+    array = pa.DictionaryArray.from_arrays(pa.array([0, 1, 2, 3, None], pa.uint8()), pa.array(["a", "b", "a", None]))
     codes, values = chunk_of(array).text("x")
     assert values == ["a", "b"]
     assert codes.tolist() == [0, 1, 0, -1, -1]

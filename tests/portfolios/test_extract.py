@@ -72,16 +72,12 @@ def test_layout_does_not_matter(
     whole = next(iter(open_extract(POLICIES).chunks(POLICIES.column_names)))
     np.testing.assert_array_equal(np.concatenate([chunk.hashes for chunk in chunks]), whole.hashes)
     for name in ("premium_pa", "term_years", "guarantee_years", "deferral_years"):
-        np.testing.assert_array_equal(
-            np.concatenate([chunk.number(name) for chunk in chunks]), whole.number(name)
-        )
+        np.testing.assert_array_equal(np.concatenate([chunk.number(name) for chunk in chunks]), whole.number(name))
     np.testing.assert_array_equal(
         np.concatenate([chunk.day("birth_date") for chunk in chunks]), whole.day("birth_date")
     )
     regions = [
-        None if code < 0 else chunk.text("region")[1][code]
-        for chunk in chunks
-        for code in chunk.text("region")[0]
+        None if code < 0 else chunk.text("region")[1][code] for chunk in chunks for code in chunk.text("region")[0]
     ]
     assert regions == POLICIES["region"].to_pylist()
 
@@ -288,9 +284,7 @@ def test_no_rows(tmp_path: Path) -> None:
 
 def test_digests(tmp_path: Path) -> None:
     path = write(tmp_path)
-    assert open_extract("a.parquet", tmp_path).digests() == {
-        "a.parquet": hashlib.sha256(path.read_bytes()).hexdigest()
-    }
+    assert open_extract("a.parquet", tmp_path).digests() == {"a.parquet": hashlib.sha256(path.read_bytes()).hexdigest()}
     again = pa.concat_tables([POLICIES.slice(0, 10), POLICIES.slice(10)])
     one, two = open_extract(POLICIES).digests(), open_extract(again).digests()
     assert one == two

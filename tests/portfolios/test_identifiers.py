@@ -35,9 +35,7 @@ def plain_hash(text: str) -> int:
     return mixed(mixed(value ^ len(content) * odd & MASK, 0xD6E8FEB86659FD93), odd)
 
 
-IDS = st.lists(
-    st.none() | st.text(max_size=30) | st.sampled_from(["A-0000001", "A-0000002", "=1+1", "<script>"])
-)
+IDS = st.lists(st.none() | st.text(max_size=30) | st.sampled_from(["A-0000001", "A-0000002", "=1+1", "<script>"]))
 
 
 @given(IDS, st.integers(0, 5))
@@ -54,9 +52,7 @@ def test_equal_lengths_take_the_short_way_to_the_same_hash(length: int, count: i
 
 def test_hash_is_frozen() -> None:
     # Samples of old runs are chosen by these figures; a change of them is a change of the sample.
-    assert [
-        hex(value) for value in identifier_hashes(pa.array(["", "A-1", "TM-0000001-7"])).tolist()
-    ] == FROZEN
+    assert [hex(value) for value in identifier_hashes(pa.array(["", "A-1", "TM-0000001-7"])).tolist()] == FROZEN
 
 
 FROZEN = ["0xc19c9036a9f49a47", "0x776e401140851d93", "0xd32d69474648af82"]
@@ -97,23 +93,13 @@ def test_members(some: list[int], wanted: list[int]) -> None:
     assert got.tolist() == [value in wanted for value in some]
 
 
-@given(
-    st.lists(
-        st.none() | st.sampled_from(["", "a", "b", "c", "d" * 20, "e"]) | st.text(max_size=3), max_size=40
-    )
-)
+@given(st.lists(st.none() | st.sampled_from(["", "a", "b", "c", "d" * 20, "e"]) | st.text(max_size=3), max_size=40))
 def test_duplicates(ids: list[str | None]) -> None:
     extract = open_extract(pa.table({"policy_id": pa.array(ids, pa.string())}))
     duplicates = find_duplicates(extract)
     times = Counter(text for text in ids if text)
-    marks = [
-        flag
-        for chunk in extract.chunks(["policy_id"], 3)
-        for flag in duplicates.mask(chunk.ids, chunk.hashes)
-    ]
-    assert [mark for mark, text in zip(marks, ids, strict=True) if text] == [
-        times[text] > 1 for text in ids if text
-    ]
+    marks = [flag for chunk in extract.chunks(["policy_id"], 3) for flag in duplicates.mask(chunk.ids, chunk.hashes)]
+    assert [mark for mark, text in zip(marks, ids, strict=True) if text] == [times[text] > 1 for text in ids if text]
     assert len(duplicates) == sum(count > 1 for count in times.values())
 
 

@@ -76,9 +76,7 @@ TERMS: dict[str, Any] = {"term_years": 10.0, "premium_pa": 900.0, "sum_assured":
 def test_thiele_year_by_year() -> None:
     # (V(t) + P)(1 + i) = q S + p V(t + 1), with the reserve just before the premium.
     assumed = basis()
-    reserves = [
-        value(ENDOWMENT, assumed, monthiversary(COMMENCED, 12 * year), **TERMS).reserve for year in range(11)
-    ]
+    reserves = [value(ENDOWMENT, assumed, monthiversary(COMMENCED, 12 * year), **TERMS).reserve for year in range(11)]
     for year in range(10):
         q = assumed.rates[0].rate(40, year)
         ahead = q * 10000 + (1 - q) * reserves[year + 1]
@@ -141,9 +139,7 @@ def test_steps_agree_for_yearly_payments_on_an_anniversary(year: int, due: str) 
 
 
 def test_settled_and_outstanding_differ_by_what_is_due_on_the_day() -> None:
-    contract = design(
-        {**PREMIUM, "a_year": 12}, DEATH, MATURITY, stream("bonus", 50.0, to=10, paid="arrears")
-    )
+    contract = design({**PREMIUM, "a_year": 12}, DEATH, MATURITY, stream("bonus", 50.0, to=10, paid="arrears"))
     assumed = basis(lapse={"rule": [{"rates": [0.3]}]})
     on = date(2027, 3, 10)
     outstanding = value(contract, assumed, on, "month", "outstanding", **TERMS)
@@ -153,8 +149,7 @@ def test_settled_and_outstanding_differ_by_what_is_due_on_the_day() -> None:
     due_now = [payment for payment in outstanding.payments if payment.t == 0]
     assert [(payment.survival, payment.persistency) for payment in due_now] == [(1, 1), (1, 1)]
     off_the_day = [
-        value(contract, assumed, date(2027, 3, 11), "month", due, **TERMS)
-        for due in ("settled", "outstanding")
+        value(contract, assumed, date(2027, 3, 11), "month", due, **TERMS) for due in ("settled", "outstanding")
     ]
     assert off_the_day[0].reserve == off_the_day[1].reserve
 
@@ -196,9 +191,7 @@ def test_guarantee_in_arrears_ends_with_its_last_payment() -> None:
 def test_when_claims_are_paid(claims: Any, years: float) -> None:
     contract = design(stream("death", 1.0, on="death", to=30))
     end = value(contract, basis())
-    assert value(contract, basis(claims={"paid": claims})).reserve == approx(
-        end.reserve * V**years, rel=1e-13
-    )
+    assert value(contract, basis(claims={"paid": claims})).reserve == approx(end.reserve * V**years, rel=1e-13)
 
 
 def test_a_claim_of_the_broken_step_is_paid_in_the_middle_of_what_is_left() -> None:
@@ -336,9 +329,7 @@ def test_for_certain_depends_on_nobody() -> None:
 @given(days=st.integers(0, 1800), step=MONTH_STEPS)
 @settings(max_examples=12, deadline=None)
 def test_everybody_dies_lapses_or_stays(competing: str, days: int, step: tuple[str, int]) -> None:
-    assumed = basis(
-        lapse={"competing": competing, "rule": [{"rates": [0.2, 0.1]}]}, fractions="uniform deaths"
-    )
+    assumed = basis(lapse={"competing": competing, "rule": [{"rates": [0.2, 0.1]}]}, fractions="uniform deaths")
     contract = design(stream("death", 1.0, on="death", to=6), stream("lapse", 1.0, on="lapse", to=6))
     on = date.fromordinal(COMMENCED.toordinal() + days)
     found = value(contract, assumed, on, step[0])
@@ -440,9 +431,7 @@ def test_values_are_sums_of_payments_and_grow_with_the_amounts(
         total = sum(payment.value for payment in found.payments if payment.part == part)
         assert total == approx(getattr(found, part), rel=1e-12)
     bigger = {**terms, "premium_pa": 900.0 * factor, "sum_assured": 10000.0 * factor}
-    assert value(ENDOWMENT, assumed, on, step[0], due, **bigger).reserve == approx(
-        found.reserve * factor, rel=1e-9
-    )
+    assert value(ENDOWMENT, assumed, on, step[0], due, **bigger).reserve == approx(found.reserve * factor, rel=1e-9)
     for payment in found.payments:
         assert payment.value == approx(payment.expected * assumed.curves[0].factor(payment.t), rel=1e-14)
         assert 0 <= payment.survival <= 1
@@ -468,9 +457,7 @@ def test_rules_used_and_the_policy_of_another_rule() -> None:
 def two_rules() -> Basis:
     made = basis(mortality_rule={"for": {"sex": "F"}})
     document = made.document.model_dump(by_alias=True)
-    document["mortality"]["rule"].append(
-        {**document["mortality"]["rule"][0], "for": {"sex": "M"}, "multiple": 1.2}
-    )
+    document["mortality"]["rule"].append({**document["mortality"]["rule"][0], "for": {"sex": "M"}, "multiple": 1.2})
     return prepare_basis(document)
 
 

@@ -76,9 +76,7 @@ def test_no_rule_fits(part: str) -> None:
         "lapse": {"lapse": {"rule": [{"rates": [0.1], **only}]}},
         "interest": {"interest": {"rule": [{"flat": 0.03, **only}]}},
         "expense": {
-            "expense": [
-                {"name": "care", "per": "policy", "rule": [{"first_year": 1, "later_years": 1, **only}]}
-            ]
+            "expense": [{"name": "care", "per": "policy", "rule": [{"first_year": 1, "later_years": 1, **only}]}]
         },
     }
     assumed = basis(**rules[part])

@@ -24,9 +24,7 @@ RATES = st.lists(st.floats(0, 0.9), min_size=3, max_size=8)
 FRACTIONS = st.sampled_from(["constant force", "uniform deaths", "Balducci"])
 
 
-def life(
-    rates: Rates, age: Fraction | int, fractions: str = "constant force", **adjusted: object
-) -> Survival:
+def life(rates: Rates, age: Fraction | int, fractions: str = "constant force", **adjusted: object) -> Survival:
     rule = MortalityRule.model_validate({"table": "listed", **adjusted})
     return Survival(yearly_rates(rule, rates, Fraction(age)), fractions)  # type: ignore[arg-type]
 
@@ -43,9 +41,7 @@ def test_part_of_a_year(fractions: str, expected: float) -> None:
     assert through(0.36, 0.25, fractions) == approx(expected, rel=1e-15)  # type: ignore[arg-type]
 
 
-@pytest.mark.parametrize(
-    ("fractions", "left"), [("constant force", 0), ("uniform deaths", 0.75), ("Balducci", 0)]
-)
+@pytest.mark.parametrize(("fractions", "left"), [("constant force", 0), ("uniform deaths", 0.75), ("Balducci", 0)])
 def test_the_last_year(fractions: str, left: float) -> None:
     assert through(1.0, 0.25, fractions) == left  # type: ignore[arg-type]
     assert through(1.0, 0.0, fractions) == 1  # type: ignore[arg-type]
@@ -133,9 +129,7 @@ def test_survival_falls_from_one_to_nothing(rates: list[float], fractions: str, 
 
 @given(RATES)
 def test_fractions_agree_at_whole_years(rates: list[float]) -> None:
-    lives = [
-        life(Listed((*rates, 1.0), 60), 60, kind) for kind in ("constant force", "uniform deaths", "Balducci")
-    ]
+    lives = [life(Listed((*rates, 1.0), 60), 60, kind) for kind in ("constant force", "uniform deaths", "Balducci")]
     for year in range(len(rates) + 1):
         assert len({one.at(12 * year) for one in lives}) == 1
 

@@ -51,9 +51,7 @@ AM92_SELECT = [
 
 
 @pytest.mark.parametrize(("i", "age", "years", "annuity", "assurance"), AM92_SELECT)
-def test_am92_select_values(
-    i: float, age: int, years: int | None, annuity: float, assurance: float | None
-) -> None:
+def test_am92_select_values(i: float, age: int, years: int | None, annuity: float, assurance: float | None) -> None:
     found = life_values(am92(), age, i, years)
     assert found[0] == pytest.approx(annuity, abs=0.0005)
     if assurance is not None:

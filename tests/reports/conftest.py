@@ -33,9 +33,7 @@ def prepared(office: Path) -> Prepared:
 def report(prepared: Prepared) -> Report:
     outcome = examples.outcome(examples.policies(500), examples.exceptions(9))
     started = datetime(2026, 12, 1, 4, 30, tzinfo=UTC)
-    record = build_record(
-        prepared, outcome, {}, "duecourse reserve month-end.toml --out november", "november", started
-    )
+    record = build_record(prepared, outcome, {}, "duecourse reserve month-end.toml --out november", "november", started)
     return Report(outcome, record)
 
 

@@ -60,9 +60,7 @@ def exceptions(number: int) -> pa.Table:
 
 def totals(results: pa.Table, group_by: tuple[str, ...]) -> tuple[pa.Table, dict[str, int]]:
     """Totals by group with exact sums, and the sums over all policies in minor units."""
-    groups: dict[tuple[Any, ...], dict[str, int]] = defaultdict(
-        lambda: dict.fromkeys(("policies", *MONEY_COLUMNS), 0)
-    )
+    groups: dict[tuple[Any, ...], dict[str, int]] = defaultdict(lambda: dict.fromkeys(("policies", *MONEY_COLUMNS), 0))
     for row in results.to_pylist():
         group = groups[tuple(row[name] for name in group_by)]
         group["policies"] += 1
@@ -79,17 +77,13 @@ def totals(results: pa.Table, group_by: tuple[str, ...]) -> tuple[pa.Table, dict
 
 
 def _rounding(group: dict[str, int]) -> int:
-    benefits, expenses, premiums = (
-        group[f"value_of_{part}"] for part in ("benefits", "expenses", "premiums")
-    )
+    benefits, expenses, premiums = (group[f"value_of_{part}"] for part in ("benefits", "expenses", "premiums"))
     return group["reserve"] - (benefits + expenses - premiums)
 
 
 def cash_flows(years: int = 60, products: tuple[str, ...] = PRODUCTS) -> pa.Table:
     """Expected cash flows by month from December 2026 that fade away."""
-    rows: dict[str, list[Any]] = {
-        name: [] for name in ("month", "product", "stream", "part", "direction", "amount")
-    }
+    rows: dict[str, list[Any]] = {name: [] for name in ("month", "product", "stream", "part", "direction", "amount")}
     for month in range(12 * years):
         for product in products:
             for place, (stream, part, way) in enumerate(STREAMS):

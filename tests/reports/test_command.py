@@ -16,7 +16,7 @@ from reports.command import MOST_FAULTS, main, run_command
 from reports.installation import PACKAGES, strangers
 
 ROOT = Path(__file__).resolve().parents[2]
-COMMANDS = ("demo", "check", "reserve", "explain", "verify")
+COMMANDS = ("demo", "check", "reserve", "premium", "explain", "alter", "verify")
 HEAVY = ("pyarrow", "numba", "pandas", "numpy", "jinja2", "xlsxwriter", "pydantic", "rich")
 
 
@@ -74,9 +74,7 @@ def test_wrong_input_is_said_plainly(
     assert list(tmp_path.iterdir()) == []
 
 
-def test_unknown_keys_and_missing_columns(
-    office: Path, tmp_path: Path, capsys: pytest.CaptureFixture[str]
-) -> None:
+def test_unknown_keys_and_missing_columns(office: Path, tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
     text = (office / "month-end.toml").read_text()
     for part in ("inforce", "designs", "bases/statutory.toml"):
         text = text.replace(f'"{part}"', f'"{(office / part).as_posix()}"')
@@ -106,9 +104,7 @@ def test_a_group_must_not_bear_the_name_of_a_result(
     assert not (tmp_path / "out").exists()
 
 
-def test_verify_does_not_list_without_end(
-    monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
-) -> None:
+def test_verify_does_not_list_without_end(monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]) -> None:
     many = reports.verify.Verified(faults=[f"fault {number}" for number in range(1000)])
     monkeypatch.setattr(reports.verify, "verify", lambda *given: many)
     assert run_command(["verify", "anywhere"]) == 1
@@ -162,17 +158,13 @@ def test_a_whole_month_end(office: Path, tmp_path: Path, capsys: pytest.CaptureF
     assert "WRONG  report.html" in capsys.readouterr().out
 
 
-def test_too_many_exceptions_fail_the_run(
-    office: Path, tmp_path: Path, capsys: pytest.CaptureFixture[str]
-) -> None:
+def test_too_many_exceptions_fail_the_run(office: Path, tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
     text = (office / "month-end.toml").read_text()
     for part in ("inforce", "designs", "bases/statutory.toml"):
         text = text.replace(f'"{part}"', f'"{(office / part).as_posix()}"')
     strict = tmp_path / "strict.toml"
     strict.write_text(
-        "\n".join(
-            "exceptions_limit = 0.0" if "exceptions_limit" in line else line for line in text.splitlines()
-        )
+        "\n".join("exceptions_limit = 0.0" if "exceptions_limit" in line else line for line in text.splitlines())
     )
     assert run_command(["reserve", str(strict), "--out", str(tmp_path / "out")]) == 1
     assert "exception" in capsys.readouterr().err
@@ -197,9 +189,7 @@ def test_a_run_that_ends_early_leaves_nothing(
     assert list(tmp_path.iterdir()) == []
 
 
-def test_a_fault_of_the_program_is_not_hidden(
-    office: Path, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
-) -> None:
+def test_a_fault_of_the_program_is_not_hidden(office: Path, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     def stumble(*given: Any, **asked: Any) -> None:
         raise ValueError("operands could not be broadcast together")
 

@@ -39,9 +39,7 @@ def test_what_a_summary_must_say(report: Report) -> None:
 def test_many_groups_are_cut(report: Report) -> None:
     results = examples.policies(500)
     names = [f"group {i:03d}" for i in range(results.num_rows)]
-    outcome = examples.outcome(
-        results.set_column(1, "product", [names]), examples.exceptions(0), ("product",), years=1
-    )
+    outcome = examples.outcome(results.set_column(1, "product", [names]), examples.exceptions(0), ("product",), years=1)
     text = summary(Report(outcome, report.record), "november")
     assert f"{500 - MOST_GROUPS} more groups in totals.parquet" in text
 

@@ -95,9 +95,7 @@ def test_charts_have_titles_and_every_year(report: Report) -> None:
         "Reserve by product",
         "Expected cash flows by calendar year",
     ]
-    assert (
-        charts[1].count('<rect class="out"') == charts[1].count('<rect class="in"') == len(report.years) == 61
-    )
+    assert charts[1].count('<rect class="out"') == charts[1].count('<rect class="in"') == len(report.years) == 61
 
 
 def test_flows_add_up(report: Report) -> None:
@@ -105,9 +103,7 @@ def test_flows_add_up(report: Report) -> None:
     expected = sum(row["amount"] for row in flows.to_pylist() if row["direction"] == "out")
     assert sum(year.paid_out for year in report.years) == pytest.approx(expected, rel=1e-12)
     blocks = in_blocks(report.years)
-    assert sum(year.paid_in for year in blocks) == pytest.approx(
-        sum(year.paid_in for year in report.years), rel=1e-12
-    )
+    assert sum(year.paid_in for year in blocks) == pytest.approx(sum(year.paid_in for year in report.years), rel=1e-12)
     assert blocks[10].label == "2036 to 2040"
 
 

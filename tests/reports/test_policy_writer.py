@@ -18,9 +18,7 @@ from reports.tables import PolicyWriter, check_rows, write_table
 RESULTS = examples.policies(2_500)
 
 
-def written(
-    folder: Path, cuts: list[int], rows_a_file: int = 1_000, rows_a_group: int = 300
-) -> list[WrittenFile]:
+def written(folder: Path, cuts: list[int], rows_a_file: int = 1_000, rows_a_group: int = 300) -> list[WrittenFile]:
     edges = [0, *sorted(cuts), RESULTS.num_rows]
     with PolicyWriter(folder, rows_a_file, rows_a_group) as writer:
         for start, end in pairwise(edges):

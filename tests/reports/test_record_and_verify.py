@@ -101,9 +101,7 @@ def test_sums_are_found_wrong_even_if_every_seal_agrees(finished: Path) -> None:
     totals = pq.read_table(path)
     reserve = totals["reserve"].to_pylist()
     reserve[2] += 0.01
-    pq.write_table(
-        totals.set_column(totals.column_names.index("reserve"), "reserve", pa.array(reserve)), path
-    )
+    pq.write_table(totals.set_column(totals.column_names.index("reserve"), "reserve", pa.array(reserve)), path)
     reseal(finished)
     faults = verify(finished).faults
     assert len(faults) == 1

@@ -148,9 +148,7 @@ def test_killed_at_any_moment_nothing_half_written_looks_finished(tmp_path: Path
 
 def run_python(code: str, **options: object) -> subprocess.CompletedProcess[str]:
     code = f"import sys; sys.path[:0] = [{str(ROOT)!r}]\n" + textwrap.dedent(code)
-    return subprocess.run(
-        [sys.executable, "-c", code], capture_output=True, text=True, check=False, **options
-    )  # type: ignore[call-overload, no-any-return]
+    return subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=False, **options)  # type: ignore[call-overload, no-any-return]
 
 
 @pytest.mark.skipif(os.name == "nt", reason="limits of a process are a Unix matter")

@@ -91,11 +91,7 @@ def test_cash_flows_by_year_and_month_agree(book: Any, report: Report) -> None:
     assert [row[0] for row in years] == [int(year.label) for year in report.years]
     for row, year in zip(years, report.years, strict=True):
         assert row[1:4] == pytest.approx([year.paid_out, year.paid_in, year.net])
-        outgo = [
-            value
-            for name, value in zip(rows(book["Cash flows"])[1][4:], row[4:], strict=True)
-            if "out" in name
-        ]
+        outgo = [value for name, value in zip(rows(book["Cash flows"])[1][4:], row[4:], strict=True) if "out" in name]
         assert sum(outgo) == pytest.approx(year.paid_out)
     assert months[0][0] == datetime(2026, 12, 1)
     second = [row for row in months if row[0].year == 2027]
