@@ -59,6 +59,8 @@ class Survival:
     pool: Pool
     records: NDArray[Any] = field(default_factory=lambda: np.zeros(0, SURVIVAL))
     known: dict[int, int] = field(default_factory=dict)
+    entered: list[tuple[int, float, int]] = field(default_factory=list)
+    """Of each record the position of its rule, the age at which the table is entered and the year in which."""
 
     def __post_init__(self) -> None:
         mortality = self.basis.document.mortality
@@ -127,6 +129,7 @@ class Survival:
         # A multiple or an extra may bring a rate to 1 before the table ends; then too nobody is left.
         record["closed"] = rule.close or rates.closed or bool((yearly >= 1).any())
         self.records = np.concatenate((self.records, record))
+        self.entered.append((number, whole, year))
         return len(self.records) - 1
 
 
@@ -197,7 +200,7 @@ class Persistency:
         """Return the row of (1 + rule) * (NEVER + 1) + until, made on first meeting; rule -1 has no lapses."""
         if code not in self.known:
             number, until = divmod(code, NEVER + 1)
-            held, dead, lapsing = self._build(self._rates(number - 1, until))
+            held, dead, lapsing = self._build(self.shares(number - 1, until))
             self.known[code] = len(self.places)
             # One place in front of each row stands for g = -1.
             place = self.pool.add(held) + 1
@@ -207,20 +210,20 @@ class Persistency:
             self.places.append((place, dying, self.pool.add(lapsing) + 1))
         return self.known[code]
 
-    def _yearly(self, rule: int) -> Row:
-        """Rates of the years since commencement; the same however long lapses go on."""
+    def yearly_rates(self, rule: int) -> Row:
+        """Return the rates of the years since commencement; the same however long lapses go on."""
         if rule not in self._years:
             document: LapseRule = self.basis.document.lapse.rule[rule]  # type: ignore[union-attr]
             table = list(self.basis.lapses[rule])
             self._years[rule] = np.array([yearly_lapse(document, table, year) for year in range(LONGEST // 12 + 2)])
         return self._years[rule]
 
-    def _rates(self, rule: int, until: int) -> Row:
-        """Share lapsing at each point 0, 1 ... of those still there before."""
+    def shares(self, rule: int, until: int) -> Row:
+        """Return the share lapsing at each point 0, 1 ... of those still there before; rule -1 has none."""
         points = np.arange(LONGEST + 13)
         if rule < 0:
             return np.zeros(len(points))
-        yearly = self._yearly(rule)
+        yearly = self.yearly_rates(rule)
         if self.spread:
             shares = (1 - (1 - yearly) ** (1 / 12))[np.maximum(points - 1, 0) // 12]
         else:
@@ -258,6 +261,8 @@ class Discount:
     accrued: list[tuple[float, float]] = field(default_factory=list)
     known: dict[int, int] = field(default_factory=dict)
     whole: dict[int, int] = field(default_factory=dict)
+    shared: bool = True
+    """Whether policies with flat interest share a row; if not, each part of a month has one of its own."""
 
     def __post_init__(self) -> None:
         self.paid = self.basis.document.claims.paid
@@ -272,27 +277,31 @@ class Discount:
     def row(self, code: int) -> int:
         """Return the row of a key, made on first meeting."""
         if code not in self.known:
-            rest, part = divmod(code, _SPANS)
-            rule, whole = divmod(rest, 6)
-            passed = part / (28, 29, 30, 31, 365, 366)[whole]
+            rule, passed = meaning_of(code)
             curve = self.basis.curves[rule]
-            n = np.arange(LONGEST + 14, dtype=np.float64)
+            n = _POINTS
             self.known[code] = len(self.places)
             payment, accrued = self._payment(rule, curve, n, passed)
             claim, claim_accrued = payment, accrued
             if self.paid != "end of step":
                 claim_accrued = 1.0
-                begin = np.maximum(n - self.settings.step_months, passed)
-                delay = self.paid.delay_months if isinstance(self.paid, ClaimDelay) else 0.0
-                claim = self.pool.add(curve.factors(np.maximum((begin + n) / 2 + delay - passed, 0) / 12))
+                claim = self.pool.add(curve.factors(self.times(passed, claims=True)))
             self.places.append((payment, claim))
             self.accrued.append((accrued, claim_accrued))
         return self.known[code]
 
+    def times(self, passed: float, claims: bool) -> Row:
+        """Return the years from the valuation date to payments, or to claims, n months after the last point."""
+        if not claims or self.paid == "end of step":
+            return np.maximum(_POINTS - passed, 0) / 12
+        begin = np.maximum(_POINTS - self.settings.step_months, passed)
+        delay = self.paid.delay_months if isinstance(self.paid, ClaimDelay) else 0.0
+        return np.maximum((begin + _POINTS) / 2 + delay - passed, 0) / 12
+
     def _payment(self, rule: int, curve: YieldCurve, n: Row, passed: float) -> tuple[int, float]:
         """Place of the factors of payments n months after the last point, and the factor to all of them."""
-        if not curve.flat:
-            return self.pool.add(curve.factors(np.maximum(n - passed, 0) / 12)), 1.0
+        if not (curve.flat and self.shared):
+            return self.pool.add(curve.factors(self.times(passed, claims=False))), 1.0
         if rule not in self.whole:
             self.whole[rule] = self.pool.add(curve.factors(n / 12))
         return self.whole[rule], float(np.exp(curve.integral(passed / 12)))
@@ -304,6 +313,16 @@ class Discount:
         delay = self.paid.delay_months if isinstance(self.paid, ClaimDelay) else 0.0
         return self.settings.step_months / 2 + delay
 
+
+def meaning_of(code: int) -> tuple[int, float]:
+    """Return the rule of a key of discount factors, and the part of a month that has passed."""
+    rest, part = divmod(code, _SPANS)
+    rule, whole = divmod(rest, 6)
+    return rule, part / (28, 29, 30, 31, 365, 366)[whole]
+
+
+_POINTS = np.arange(LONGEST + 14, dtype=np.float64)
+"""Months from the last point for which discount factors are kept."""
 
 _WHOLES = np.zeros(367, dtype=np.int64)
 _WHOLES[[28, 29, 30, 31, 365, 366]] = range(6)

@@ -48,6 +48,7 @@ class Valued:
         self.results = results
         self.months = months
         self.seconds: dict[str, float] = {}
+        self.asked: tuple[NDArray[np.int64], NDArray[Any], loops.Tables] | None = None
 
     def add_seconds(self, seconds: dict[str, float]) -> None:
         """Add the seconds of the phases of an earlier attempt."""
@@ -137,6 +138,7 @@ class Engine:
         self._name_faults(checked, results.fault, tables.segments)
         valued = Valued(checked, places, results, int(results.months[0]))
         valued.seconds = clock.seconds
+        valued.asked = order, policies, tables
         return valued
 
     def _take_back(

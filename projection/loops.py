@@ -1132,6 +1132,343 @@ def inclination(p, life, pool, there, g, before):
     return share * pool[n] * (mortality + interest)
 
 
+class Adjoint(NamedTuple):
+    """What slopes are gathered in, in whole parts of currency: 1 / ``scale`` each.
+
+    rows: shape of the pool; at the place of a number of a row, the value that hangs on it: the derivative of the value
+    to its logarithm. part: shape of the pool; at the place of a yearly rate, the derivative to it of what has
+    passed of survival between the last point and T. accounts: value by account.
+    """
+
+    rows: Any
+    part: Any
+    accounts: Any
+    scale: float
+
+
+class Hanging(NamedTuple):
+    """What the slopes of one policy are worked out with, beside its own figures.
+
+    held: sums that hang on survival of either life and on persistency at points after T, three whole numbers; one,
+    two: room for the values that hang on a row's points.
+    """
+
+    pool: Any
+    room: Any
+    lives: Any
+    rows: Any
+    held: Any
+    one: Any
+    two: Any
+
+
+@compiled
+def slope_policies(order, policies, tables, rules, results, adjoint):
+    """Gather what the values of policies hang on; takes those that ``value_policies`` has valued.
+
+    Rows of discount factors must be those of each policy's own part of a month (accrued factors of 1).
+    """
+    segments, survivals = unowned(tables.segments), unowned(tables.survivals)
+    pool, money, whole = unowned(tables.pool), unowned(tables.money), unowned(tables.whole)
+    lives, room, filled = unowned(results.lives), unowned(results.room), unowned(results.filled)
+    rows, part = unowned(adjoint.rows), unowned(adjoint.part)
+    held, one, two = np.zeros(3, np.int64), np.empty(BINS, np.int64), np.empty(BINS, np.int64)
+    hanging = Hanging(pool, room, lives, rows, unowned(held), unowned(one), unowned(two))
+    survived, beside, persisting = np.int64(-1), np.int64(-1), np.int64(-1)
+    for j in range(len(order)):
+        if results.reason[order[j]] != 0:
+            continue
+        p = policies[np.uint64(j)]
+        new = p.survival != survived or p.second != beside
+        stand(lives[s.FIRST], survivals[np.uint64(p.survival)], pool, p, rules)
+        if p.second == s.NOBODY:
+            lives[s.FIRST].alive = 1.0
+        if p.second >= 0:
+            stand(lives[s.SECOND], survivals[np.uint64(p.second)], pool, p, rules)
+            stand_together(lives, pool, room, p, new, rules)
+        if new or p.held != persisting:
+            survived, beside, persisting = p.survival, p.second, p.held
+            for kind in range(KINDS):
+                filled[kind, 0] = filled[kind, 1] = 0
+                filled[s.SECOND * KINDS + kind, 0] = filled[s.SECOND * KINDS + kind, 1] = 0
+        inforce = persistency_at(p, pool, rules)
+        held[:] = 0
+        for n in range(p.segments, p.segments_end):
+            stream = segments[n]
+            life = lives[stream.life]
+            _, first, count, _ = extent(stream, whole, j, p, life, rules)
+            amount = stream.factor
+            if stream.amount >= 0:
+                amount *= money[stream.amount, j]
+            for _ in range(stream.power):
+                amount *= entry(whole, stream.period, j) / 12.0
+            # What the segment counts for in the reserve: its premiums lessen it.
+            scale = adjoint.scale * (stream.benefits + stream.expenses - stream.premiums)
+            value = 0.0
+            if p.part == 0:
+                due, month = due_today(stream, whole, j, p, rules)
+                if due:
+                    value = amount * pool[relative_place(stream, whole, j, month, p.k + p.shift)]
+            if count > 0 and amount != 0.0:
+                each = amount / (life.alive * inforce)
+                if stream.when == s.DEATH or stream.when == s.LAPSE:
+                    value += slope_moves(
+                        stream, p, whole, j, inforce, first, count, each, rules, adjoint.scale, scale, hanging
+                    )
+                else:
+                    value += slope_payments(
+                        stream, p, whole, j, inforce, first, count, each, rules, adjoint.scale, scale, hanging, filled
+                    )
+            adjoint.accounts[stream.account] += gathered(value * adjoint.scale)
+        take_back(p, survivals, pool, inforce, rules, hanging, part)
+
+
+@inner
+def gathered(value):
+    """A value in whole parts."""
+    return np.int64(np.rint(value))
+
+
+@inner
+def take_back(p, survivals, pool, inforce, rules, hanging, part):
+    """Everything is divided by survival and persistency at T: what hangs on later points hangs on T the other way."""
+    rows, held = hanging.rows, hanging.held
+    f = p.part / p.whole
+    for number in range(2):
+        if held[number] != 0:
+            life = survivals[p.survival if number == 0 else p.second]
+            rows[life.living + p.k] -= held[number]
+            if f > 0.0:
+                since_last(life, pool, p.k, f, np.float64(held[number]), rules.fractions, part)
+    if rules.dependent == 1 and f > 0.0:
+        later = gathered(f * pool[p.held + p.k + 1] / inforce * held[2])
+        rows[p.held + p.k] -= held[2] - later
+        rows[p.held + p.k + 1] -= later
+    else:
+        rows[p.held + p.k] -= held[2]
+
+
+@inner
+def since_last(life, pool, k, f, weight, rule, part):
+    """Take back what hangs on survival from point k to f of a month later, by the rates of the years it lies in."""
+    start = life.passed + k / 12.0
+    end = life.passed + (k + f) / 12.0
+    year = np.int64(np.floor(start))
+    while year < end and year < life.years:
+        q = pool[life.yearly + year]
+        if q < 1.0:
+            inclined = log_slope(q, min(end - year, 1.0), rule) - log_slope(q, max(start - year, 0.0), rule)
+            part[life.yearly + year] -= gathered(weight * inclined)
+        year += 1
+
+
+@inner
+def log_slope(q, share, rule):
+    """Derivative of ln F(q, s) to q, below 1, under a rule for fractions of a year."""
+    if share <= 0.0:
+        return 0.0
+    if rule == 0:
+        return -share / (1.0 - q)
+    if rule == 1:
+        return -share / (1.0 - share * q)
+    return -1.0 / (1.0 - q) + (1.0 - share) / (1.0 - (1.0 - share) * q)
+
+
+@inner
+def hang(stream, g, hung, hanging):
+    """Hang a value on survival to a point: of the life that it depends on, or of both."""
+    if stream.life != s.SECOND:
+        hanging.rows[hanging.lives[s.FIRST].living + g] += hung
+        hanging.held[0] += hung
+    if stream.life != s.FIRST:
+        hanging.rows[hanging.lives[s.SECOND].living + g] += hung
+        hanging.held[1] += hung
+
+
+@inner
+def hang_all(values, n, rows, place, sign):
+    """Hang values on the numbers of a row from a place on, and return their sum."""
+    total = np.int64(0)
+    w = np.uint64(place)
+    if sign > 0:
+        for i in range(np.uint64(n)):
+            rows[w + i] += values[i]
+            total += values[i]
+    else:
+        for i in range(np.uint64(n)):
+            rows[w + i] -= values[i]
+            total -= values[i]
+    return total
+
+
+@inner
+def survival_of(stream, hanging, g):
+    """Survival to a point of what a stream depends on."""
+    place = hanging.lives[stream.life].living + g
+    return hanging.room[place] if stream.life == s.JOINT else hanging.pool[place]
+
+
+@inner
+def slope_payments(stream, p, whole, j, inforce, first, count, amount, rules, plain, scale, hanging, filled):
+    """Value of payments at their own dates, and what hangs on what.
+
+    amount: over survival and persistency at T; plain, scale: parts in one of currency, and these times what the segment
+    counts for.
+    """
+    pool, rows, held = hanging.pool, hanging.rows, hanging.held
+    life = hanging.lives[stream.life]
+    period = apart(stream, whole, j, rules)
+    start = entry(whole, stream.start, j)
+    month = first
+    if stream.when == s.ARREARS:
+        month = first - period
+    elif stream.when == s.ONCE:
+        month = max(first - 1, start if stream.clock == 0 else 0)
+    relative = relative_place(stream, whole, j, month, first + p.shift)
+    hop = np.int64(0) if relative == ONES else period
+    alive = stream.cover == s.ALIVE or stream.cover == s.AFTER_GUARANTEE
+    before = 0 if rules.dependent == 1 else stream.before
+    if alive and period == 1 and count >= 4 and stream.life != s.JOINT:
+        kind = stream.life * KINDS + (AFTER if before == 0 else BEFORE)
+        weight = weights(kind, pool, pool, life.living, p.held - before, first, count, filled, hanging.room)
+        if small(stream, whole, j, pool, p.payment + first - p.k, count, amount * plain) and scale != 0.0:
+            return slope_monthly(p, life, first, count, weight, relative, before, stream.life, amount, scale, hanging)
+    share = life.alive * inforce
+    later = stream.cover == s.GUARANTEED and start > p.k
+    if later:
+        if start > life.over:
+            return 0.0
+        share = survival_of(stream, hanging, start) * pool[p.held + start]
+    total, hung_in_all = 0.0, np.int64(0)
+    for n in range(count):
+        g = first + n * period
+        x = amount * pool[relative + n * hop] * pool[p.payment + g - p.k]
+        x *= survival_of(stream, hanging, g) * pool[p.held + g - before] if alive else share
+        hung = gathered(x * scale)
+        if alive:
+            hang(stream, g, hung, hanging)
+            rows[p.held + g - before] += hung
+            held[2] += hung
+        rows[p.payment + g - p.k] += hung
+        hung_in_all += hung
+        total += x
+    if later:
+        hang(stream, start, hung_in_all, hanging)
+        rows[p.held + start] += hung_in_all
+        held[2] += hung_in_all
+    return total
+
+
+@inner
+def small(stream, whole, j, pool, discount, count, most):
+    """Whether every discounted payment of a segment can be rounded at once."""
+    factor = max(pool[discount], pool[discount + count - 1])
+    return abs(most) * factor * largest_relative(stream, whole, j, pool) < FAST
+
+
+@inner
+def slope_monthly(p, life, first, count, weight, relative, before, whose, amount, scale, hanging):
+    """The same for payments at every point while alive, in loops that the compiler turns into vector instructions."""
+    pool, room, rows, held, one = hanging.pool, hanging.room, hanging.rows, hanging.held, hanging.one
+    w, r, d = np.uint64(weight), np.uint64(relative), np.uint64(p.payment + first - p.k)
+    factor = amount * scale
+    for i in range(np.uint64(count)):
+        one[i] = quanta(factor * room[w + i] * pool[r + i] * pool[d + i])
+    total = hang_all(one, count, rows, life.living + first, 1)
+    hang_all(one, count, rows, p.held + first - before, 1)
+    hang_all(one, count, rows, p.payment + first - p.k, 1)
+    held[whose] += total
+    held[2] += total
+    return total / scale
+
+
+@inner
+def slope_moves(stream, p, whole, j, inforce, first, count, amount, rules, plain, scale, hanging):
+    """The same for payments on death or lapse. What hangs on survival or persistency at T itself cancels."""
+    pool, rows, held = hanging.pool, hanging.rows, hanging.held
+    step = rules.step
+    life = hanging.lives[stream.life]
+    death = stream.when == s.DEATH
+    relative = relative_place(stream, whole, j, first - step, first + p.shift)
+    hop = np.int64(0) if relative == ONES else step
+    discount = (p.claim if death else p.payment) + first - p.k
+    total = 0.0
+    if death:
+        a, b = 1.0, -1.0
+        x, y = (0.5, 0.5) if rules.dependent == 1 else (1.0, 0.0)
+    else:
+        a, b = (0.5, 0.5) if rules.dependent == 1 else (0.0, 1.0)
+        x, y = 1.0, -1.0
+    quick = step == 1 and rules.dependent == 0 and stream.life != s.JOINT and count >= 4
+    quick = quick and small(stream, whole, j, pool, discount, count, amount * plain) and scale != 0.0
+    for n in range(1 if quick and first - step <= p.k else 0 if quick else count):
+        g = first + n * step
+        broken = g - step <= p.k
+        earlier = life.alive if broken else survival_of(stream, hanging, g - step)
+        later = survival_of(stream, hanging, g)
+        after = pool[p.held + g]
+        was = inforce if broken else pool[p.held + g - step]
+        each = amount * pool[relative + n * hop] * pool[discount + n * step]
+        occupied = a * earlier + b * later
+        persisting = x * was + y * after
+        hang(stream, g, gathered(each * b * later * persisting * scale), hanging)
+        if not broken and a != 0.0:
+            hang(stream, g - step, gathered(each * a * earlier * persisting * scale), hanging)
+        if y != 0.0:
+            hung = gathered(each * occupied * y * after * scale)
+            rows[p.held + g] += hung
+            held[2] += hung
+        if not broken:
+            hung = gathered(each * occupied * x * was * scale)
+            rows[p.held + g - step] += hung
+            held[2] += hung
+        value = each * occupied * persisting
+        rows[discount + n * step] += gathered(value * scale)
+        total += value
+    if quick:
+        done = 1 if first - step <= p.k else 0
+        total += slope_monthly_moves(
+            stream, p, life, first + done, count - done, relative + done * hop, discount + done, amount, scale, hanging
+        )
+    return total
+
+
+@inner
+def slope_monthly_moves(stream, p, life, first, count, relative, discount, amount, scale, hanging):
+    """The same at every point, without the broken first step: what hangs on the numbers before and after each move."""
+    if count <= 0:
+        return 0.0
+    pool, rows, held, one, two = hanging.pool, hanging.rows, hanging.held, hanging.one, hanging.two
+    r, d, n = np.uint64(relative), np.uint64(discount), np.uint64(count)
+    o, h = np.uint64(life.living + first), np.uint64(p.held + first)
+    e, b = np.uint64(life.living + first - 1), np.uint64(p.held + first - 1)
+    factor = amount * scale
+    if stream.when == s.DEATH:
+        # (L before - L after) P before
+        for i in range(n):
+            each = factor * pool[r + i] * pool[d + i] * pool[b + i]
+            one[i] = quanta(each * pool[e + i])
+            two[i] = quanta(each * pool[o + i])
+        held[stream.life] += hang_all(one, count, rows, life.living + first - 1, 1)
+        held[stream.life] += hang_all(two, count, rows, life.living + first, -1)
+    else:
+        # L after (P before - P after)
+        for i in range(n):
+            each = factor * pool[r + i] * pool[d + i] * pool[o + i]
+            one[i] = quanta(each * pool[b + i])
+            two[i] = quanta(each * pool[h + i])
+        held[2] += hang_all(one, count, rows, p.held + first - 1, 1)
+        held[2] += hang_all(two, count, rows, p.held + first, -1)
+    for i in range(n):
+        one[i] -= two[i]
+    total = hang_all(one, count, rows, discount, 1)
+    if stream.when == s.DEATH:
+        held[2] += hang_all(one, count, rows, p.held + first - 1, 1)
+    else:
+        held[stream.life] += hang_all(one, count, rows, life.living + first, 1)
+    return total / scale
+
+
 @compiled
 def add_totals(group, reason, minor, totals):
     """Add money in minor units to the totals (group, 1 + columns) of the valued policies, counting them first."""

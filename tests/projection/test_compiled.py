@@ -23,7 +23,10 @@ from numba import types
 from numba.core.registry import CPUDispatcher
 import projection
 from projection import loops
-from projection.documents import read_run
+from portfolios.extract import open_extract
+from projection.documents import read_basis, read_designs, read_run
+from projection.settings import Settings
+from projection.slope_run import slopes_of
 
 folder = Path(sys.argv[1])
 for name in ("month-end.toml", "month-end-best-estimate.toml"):
@@ -35,6 +38,8 @@ for name in ("month-end.toml", "month-end-best-estimate.toml"):
         for step, due in (("month", run.due), ("year", "outstanding")):
             found = projection.value(extract, designs, basis, run.valuation_date, step=step, due=due)
             assert found.policies.num_rows > 0.8 * len(table)
+            slopes_of(open_extract(extract), read_designs(designs), read_basis(basis),
+                      Settings(run.valuation_date, step, due), group_by=("product",) if step == "month" else ())
 functions = {name: value for name, value in vars(loops).items() if isinstance(value, CPUDispatcher)}
 called = [name for name, value in functions.items() if not value.targetoptions.get("no_cpython_wrapper")]
 signatures = {name: [[str(types.unliteral(one)) for one in each] for each in value.signatures]
