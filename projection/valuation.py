@@ -28,7 +28,7 @@ from . import loops
 from .engine import Engine, Valued
 from .gate import RunStopped, check_gate
 from .groups import Groups, check_names
-from .lives import rule_columns
+from .lives import need_ratings, ratings_used, rule_columns
 from .plain_check import Sample
 from .results import MONEY_COLUMNS, Outcome, PolicySink, Progress, no_progress
 from .settings import Settings
@@ -92,7 +92,9 @@ class _Valuation:
         until = [rule.until for rule in basis.document.lapse.rule] if basis.document.lapse else []
         numbers = [*number_columns(designs), *(column for column in until if isinstance(column, str))]
         asked = rule_columns(basis, designs, extract.column_names)
-        self.needed = needed_columns(designs, [*numbers, *asked, *self.group_by])
+        need_ratings(basis, designs, extract.column_names)
+        ratings = ratings_used(basis, designs, extract.column_names)
+        self.needed = needed_columns(designs, [*numbers, *asked, *ratings, *self.group_by])
         extract.need(self.needed, numbers=numbers)
         self.amounts = [name for name in extract.column_names if name in BY_NAME and BY_NAME[name].kind == "money"]
         self.needed = tuple(dict.fromkeys([*self.needed, *self.amounts]))

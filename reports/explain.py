@@ -15,7 +15,7 @@ from portfolios.designs import Design
 from portfolios.exception_rows import exception_rows, sentence
 from portfolios.extract import Extract
 from portfolios.identifiers import Duplicates
-from projection.lives import rule_columns
+from projection.lives import need_ratings, ratings_used, rule_columns
 from projection.plain_faults import NotValued
 from projection.settings import Settings
 from projection.working import working
@@ -75,10 +75,12 @@ def look_up(run: Path, policy_id: str) -> Asked:
     """Return a policy and what it is valued by. Raises what ``explain`` does."""
     prepared = prepare(run)
     asked = rule_columns(prepared.basis, prepared.designs, prepared.extract.column_names)
-    needed = needed_columns(prepared.designs, asked)
+    need_ratings(prepared.basis, prepared.designs, prepared.extract.column_names)
+    ratings = ratings_used(prepared.basis, prepared.designs, prepared.extract.column_names)
+    needed = needed_columns(prepared.designs, [*asked, *ratings])
     prepared.extract.need(needed)
     policy = find_policy(prepared.extract, policy_id)
-    place = _checked(prepared, policy, needed, policy_id)
+    place = _checked(prepared, policy, needed, ratings, policy_id)
     return Asked(policy.policy(0), prepared.designs[place], prepared)
 
 
@@ -101,10 +103,12 @@ def find_policy(extract: Extract, policy_id: str) -> Chunk:
     return found[0]
 
 
-def _checked(prepared: Prepared, policy: Chunk, needed: tuple[str, ...], policy_id: str) -> int:
+def _checked(
+    prepared: Prepared, policy: Chunk, needed: tuple[str, ...], ratings: tuple[str, ...], policy_id: str
+) -> int:
     """Return the position of the policy's design. Raises ExplainError where the checks of a run object."""
     document = prepared.document
-    checks = Checks(prepared.designs, document.valuation_date, document.in_force, Duplicates(), needed)
+    checks = Checks(prepared.designs, document.valuation_date, document.in_force, Duplicates(), needed, ratings)
     checked = checks.check(policy)
     if checked.reason[0]:
         (row,) = exception_rows(policy, checked, needed).to_pylist()

@@ -48,6 +48,12 @@ COLUMNS = {
     "annuity_frequency": pa.int64(),
     "escalation": pa.float64(),
     **dict.fromkeys(MONEY, pa.float64()),
+    **{
+        f"{life}{name}{time}": pa.float64()
+        for life in ("", "second_")
+        for name in ("rating_multiple", "rating_age", "rating_extra")
+        for time in ("", "_years")
+    },
 }
 
 
@@ -334,6 +340,7 @@ def bases(draw: Draw, folder: Path, step: str) -> Basis:
             "fractions": one_of(draw, "constant force", "uniform deaths", "Balducci"),
             "rule": draw(ruled(mortality_rules(age == "exact"), st.just({"life": "second"}))),
             "common_shock": one_of(draw, 0.0, 0.001),
+            "ratings": chance(draw, 2),
         },
         "interest": {"rule": draw(ruled(interest_rules()))},
         "expense": [draw(expenses(number)) for number in range(draw(st.integers(0, 3)))],
@@ -391,10 +398,28 @@ def policies(draw: Draw, number: int, codes: list[str], today: date) -> dict[str
         "sum_assured": one_of(draw, 1_000.0, 5_000.0, 99_999.99),
         "annuity_pa": one_of(draw, 600.0, 12_000.0),
         "loading": one_of(draw, 3.0, 0.0),
+        **(draw(ratings("")) if chance(draw, 2) else {}),
+        **(draw(ratings("second_")) if chance(draw, 3) else {}),
     }
     if chance(draw, 12):
         _spoil(draw, policy, today)
     return policy
+
+
+@st.composite
+def ratings(draw: Draw, life: str) -> dict[str, Any]:
+    """What a policy says of a life's rating; most of it is missing, some of it changes nothing, some is no good."""
+    values = {
+        "multiple": one_of(draw, None, 1.5, 3.0, 1.0, 0.5) if not chance(draw, 20) else one_of(draw, 0.0, 20.0, -1.0),
+        "age": one_of(draw, None, 3.0, -2.0, 0.0, 10.0) if not chance(draw, 20) else one_of(draw, 40.0, -40.0, 2.5),
+        "extra": one_of(draw, None, 5.0, 0.0, 12.5) if not chance(draw, 20) else one_of(draw, 500.0, 501.0),
+    }
+    made: dict[str, Any] = {}
+    for name, value in values.items():
+        made[f"{life}rating_{name}"] = value
+        years = one_of(draw, None, 1.0, 5.0, 10.0, 0.0) if not chance(draw, 20) else one_of(draw, 120.0, 2.5, 30.0)
+        made[f"{life}rating_{name}_years"] = years
+    return made
 
 
 def _spoil(draw: Draw, policy: dict[str, Any], today: date) -> None:
@@ -431,5 +456,5 @@ def examples(draw: Draw, folder: Path, most: int = 20) -> Example:
     basis = draw(bases(folder, step))
     # A fixed number of policies: their cost is small beside that of the rest, and each is another chance.
     rows = [draw(policies(number, codes, today)) for number in range(most)]
-    columns = {name: pa.array([row[name] for row in rows], kind) for name, kind in COLUMNS.items()}
+    columns = {name: pa.array([row.get(name) for row in rows], kind) for name, kind in COLUMNS.items()}
     return Example(made, basis, Settings(today, step, due, 2), pa.table(columns))
