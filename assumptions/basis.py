@@ -121,7 +121,7 @@ def prepare_basis(document: BasisDocument | dict[str, Any], folder: Path | str =
         _seal(files, folder, [held] if isinstance(held, str) else [])
     improvements = [rule.improvement for rule in document.mortality.rule]
     scales = tuple(read_scale(one, folder) if one else None for one in improvements)
-    _seal(files, folder, [one.table for one in improvements if one])
+    _seal(files, folder, [one.file for one in improvements if one])
     return Basis(document, rates, lapses, tuple(curves), files, scales)
 
 

@@ -91,6 +91,13 @@ def write_tables(folder: Path) -> None:
             for age in range(40, 80)
         ]
         (folder / f"{name}.csv").write_text("\n".join(["age,2019,2020,2021,2022", *rows]) + "\n")
+    row = "".join(f'<Y t="{2016 + n}">{0.02 - 0.002 * n!r}</Y>' for n in range(5))
+    cells = [f'<Axis t="{age}"><Axis>{row}</Axis></Axis>' for age in range(45, 75)]
+    (folder / "improving.xml").write_text(
+        '<XTbML><ContentClassification><ContentType tc="22">Projection Scale</ContentType></ContentClassification>'
+        '<Table><MetaData><AxisDef id="Age"><AxisName>Age</AxisName></AxisDef><AxisDef id="Year"><AxisName>Year</AxisName>'
+        f'</AxisDef></MetaData><Values>{"".join(cells)}</Values></Table></XTbML>'
+    )
     (folder / "leaving.csv").write_text("year,rate\n1,0.15\n2,0.08\n3,0\n4,0.03\n")
     (folder / "spot.csv").write_text("maturity,rate\n0.5,0.01\n1,0.015\n2,0.02\n7.25,0.03\n30,0.028\n")
 
@@ -272,7 +279,8 @@ def improvements(draw: Draw) -> dict[str, Any]:
     if chance(draw, 4):
         return {"table": "reducing.csv", "base_year": 2018, "holds": "reduction factors"}
     made: dict[str, Any] = {"base_year": one_of(draw, 2018, 2015, 2030)}
-    made |= one_of(draw, {"table": "improving.csv"}, {"table": "improving_2d.csv"}, {"rate": 0.012}, {"rate": -0.01})
+    files = ("improving.csv", "improving_2d.csv", "improving.xml")
+    made |= one_of(draw, *({"table": name} for name in files), {"rate": 0.012}, {"rate": -0.01})
     if chance(draw, 3):
         made["multiple"] = one_of(draw, 0.5, 2.0, 0.0)
     if chance(draw, 2):
