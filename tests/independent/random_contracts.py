@@ -95,8 +95,8 @@ def write_tables(folder: Path) -> None:
     cells = [f'<Axis t="{age}"><Axis>{row}</Axis></Axis>' for age in range(45, 75)]
     (folder / "improving.xml").write_text(
         '<XTbML><ContentClassification><ContentType tc="22">Projection Scale</ContentType></ContentClassification>'
-        '<Table><MetaData><AxisDef id="Age"><AxisName>Age</AxisName></AxisDef><AxisDef id="Year"><AxisName>Year</AxisName>'
-        f'</AxisDef></MetaData><Values>{"".join(cells)}</Values></Table></XTbML>'
+        '<Table><MetaData><AxisDef id="Age"><AxisName>Age</AxisName></AxisDef><AxisDef id="Year">'
+        f'<AxisName>Year</AxisName></AxisDef></MetaData><Values>{"".join(cells)}</Values></Table></XTbML>'
     )
     (folder / "leaving.csv").write_text("year,rate\n1,0.15\n2,0.08\n3,0\n4,0.03\n")
     (folder / "spot.csv").write_text("maturity,rate\n0.5,0.01\n1,0.015\n2,0.02\n7.25,0.03\n30,0.028\n")
