@@ -237,9 +237,9 @@ def _streams(
         raise NotValued("matured", f"product {design.code}", None, "something is to come after the valuation date")
     own = {stream.name for stream in design.stream if stream.of is None}
     added: list[PolicyStream] = []
-    for item in basis.document.expense:
+    for item, prices in zip(basis.document.expense, basis.expense_prices, strict=True):
         rule = item.rule[rules.expenses[item.name] - 1]
-        added += expense_streams(item, rule, streams, own, running(design), course, commencement)
+        added += expense_streams(item, rule, prices, streams, own, running(design), course, commencement)
     return streams + added
 
 

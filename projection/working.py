@@ -8,6 +8,7 @@ from itertools import groupby
 from typing import Any, Literal
 
 from assumptions.basis import Basis
+from assumptions.inflation import Inflation
 from assumptions.interest import FORMS
 from assumptions.laws import Law
 from assumptions.mortality import STANDARD, MortalityRule, TableFile
@@ -191,8 +192,17 @@ def _other_rules(basis: Basis, value: PlainValue) -> Iterator[tuple[str, str]]:
         later = f"{figures.first_year:g} in the first policy year, then {figures.later_years:g}"
         growth = ""
         if item.inflation is not None:
-            growth = f", growing {item.inflation.rate:g} a year from {item.inflation.from_}"
+            growth = f", growing {_growth(item.inflation)}"
         yield f"expense '{plain(item.name)}'", f"rule {number}, per {item.per}: {later}{growth}"
+
+
+def _growth(inflation: str | Inflation) -> str:
+    if isinstance(inflation, str):
+        return f"with '{plain(inflation)}'"
+    if inflation.rate is not None:
+        return f"{inflation.rate:g} a year from {inflation.from_}"
+    how = f"by {plain(inflation.table)}" if inflation.table else f"by {len(inflation.rates or ())} rates in turn"
+    return f"{how} from {inflation.from_}"
 
 
 def _lapses(value: PlainValue) -> list[str]:

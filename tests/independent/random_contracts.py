@@ -99,6 +99,7 @@ def write_tables(folder: Path) -> None:
         f'<AxisName>Year</AxisName></AxisDef></MetaData><Values>{"".join(cells)}</Values></Table></XTbML>'
     )
     (folder / "leaving.csv").write_text("year,rate\n1,0.15\n2,0.08\n3,0\n4,0.03\n")
+    (folder / "inflation.csv").write_text("year,rate\n2026,0.04\n2027,0.025\n2028,-0.01\n2029,0.03\n2030,0.02\n")
     (folder / "spot.csv").write_text("maturity,rate\n0.5,0.01\n1,0.015\n2,0.02\n7.25,0.03\n30,0.028\n")
 
 
@@ -329,14 +330,17 @@ def expenses(draw: Draw, number: int) -> dict[str, Any]:
     first, later = one_of(draw, (25.0, 30.0), (0.5, 0.02), (0.0, 7.0), (10.0, 0.0))
     item: dict[str, Any] = {"name": f"item {number}", "per": per}
     if per in ("policy", "claim") and not chance(draw, 3):
-        item["inflation"] = {
-            "rate": one_of(draw, 0.025, -0.01),
-            "from": one_of(draw, date(2026, 1, 1), date(2031, 6, 30)),
-        }
+        item["inflation"] = one_of(draw, "prices", {**draw(inflations())})
     if per == "policy":
         item["a_year"] = one_of(draw, 12, 4, 1, 2)
     item["rule"] = draw(ruled(st.just({"first_year": first, "later_years": later})))
     return item
+
+
+@st.composite
+def inflations(draw: Draw) -> dict[str, Any]:
+    forms = ({"rate": 0.025}, {"rate": -0.01}, {"rates": [0.05, 0.03, -0.01, 0.02]}, {"table": "inflation.csv"})
+    return {**one_of(draw, *forms), "from": one_of(draw, date(2026, 1, 1), date(2031, 6, 30), date(2019, 9, 15))}
 
 
 @st.composite
@@ -351,6 +355,7 @@ def bases(draw: Draw, folder: Path, step: str) -> Basis:
             "ratings": chance(draw, 2),
         },
         "interest": {"rule": draw(ruled(interest_rules()))},
+        "inflation": [{"name": "prices", **draw(inflations())}],
         "expense": [draw(expenses(number)) for number in range(draw(st.integers(0, 3)))],
         "claims": {
             "paid": one_of(draw, "end of step", "middle of step", {"delay_months": one_of(draw, 2.5, 0, 1, 14)})
