@@ -10,10 +10,11 @@ from functools import cached_property
 from pathlib import Path
 from typing import Any, Literal
 
-from pydantic import Field, field_validator
+from pydantic import Field, field_validator, model_validator
 
 from .expenses import Expense
 from .improvement import Scale, read_scale
+from .inflation import NamedInflation, Prices, read_prices
 from .interest import Interest, YieldCurve, curve_of
 from .items import Item, Sourced
 from .lapse import Lapse
@@ -49,7 +50,25 @@ class BasisDocument(Sourced):
     lapse: Lapse | None = Field(None, description="rates of leaving by choice; absent: nobody lapses")
     interest: Interest = Field(description="discount curves")
     expense: list[Expense] = Field(default_factory=list, description="items of expense; all of them count")
+    inflation: list[NamedInflation] = Field(
+        default_factory=list, description="inflation that expense items and the increases of designs call by name"
+    )
     claims: Claims = Field(default_factory=Claims, description="when a death benefit is paid")
+
+    @model_validator(mode="after")
+    def _inflation_there(self) -> BasisDocument:
+        names = [one.name for one in self.inflation]
+        for name in names:
+            if names.count(name) > 1:
+                raise ValueError(f"two inflations are called '{name}'; give each a name of its own")
+        for item in self.expense:
+            if isinstance(item.inflation, str) and item.inflation not in names:
+                listed = ", ".join(f"'{name}'" for name in names) or "none"
+                raise ValueError(
+                    f"expense '{item.name}': key 'inflation' is '{item.inflation}', but the basis has {listed}; "
+                    "add [[inflation]] with this name"
+                )
+        return self
 
     def rules(self) -> Iterator[tuple[str, Rule]]:
         """Yield every rule with the place that it stands in."""
@@ -83,6 +102,10 @@ class Basis:
     """SHA-256 of every table file read, by its path in the document."""
     scales: tuple[Scale | None, ...] = ()
     """Improvement of each mortality rule, None where there is none."""
+    prices: dict[str, Prices] = field(default_factory=dict)
+    """Level of prices by the names of inflation."""
+    expense_prices: tuple[Prices | None, ...] = ()
+    """Level of prices of each expense item, None where its amounts do not grow."""
 
     @cached_property
     def digest(self) -> str:
@@ -121,8 +144,15 @@ def prepare_basis(document: BasisDocument | dict[str, Any], folder: Path | str =
         _seal(files, folder, [held] if isinstance(held, str) else [])
     improvements = [rule.improvement for rule in document.mortality.rule]
     scales = tuple(read_scale(one, folder) if one else None for one in improvements)
-    _seal(files, folder, [one.table for one in improvements if one])
-    return Basis(document, rates, lapses, tuple(curves), files, scales)
+    _seal(files, folder, [one.file for one in improvements if one])
+    prices = {one.name: read_prices(one, folder) for one in document.inflation}
+    grown: list[Prices | None] = []
+    for item in document.expense:
+        own = item.inflation
+        grown.append(prices[own] if isinstance(own, str) else None if own is None else read_prices(own, folder))
+        _seal(files, folder, [own.table] if own is not None and not isinstance(own, str) else [])
+    _seal(files, folder, [one.table for one in document.inflation])
+    return Basis(document, rates, lapses, tuple(curves), files, scales, prices, tuple(grown))
 
 
 def _rates_of(rule: MortalityRule, folder: Path, files: dict[str, str]) -> Rates:

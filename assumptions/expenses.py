@@ -2,25 +2,13 @@
 
 from __future__ import annotations
 
-from datetime import date
-from typing import Literal
+from typing import Any, Literal
 
-from pydantic import Field, model_validator
+from pydantic import Field, field_validator, model_validator
 
-from .items import Item, Sourced
+from .inflation import Inflation
+from .items import Sourced
 from .rules import Rule
-
-
-class Inflation(Item):
-    """Yearly growth of a money amount from a stated date, by whole calendar months."""
-
-    rate: float = Field(gt=-0.5, le=1, description="yearly rate of growth")
-    from_: date = Field(alias="from", description="date of the prices in which the amount is stated")
-
-    def factor(self, year: int, month: int) -> float:
-        """Growth up to a calendar month: (1 + rate)^(n / 12), n months after ``from``, 1 before it."""
-        months = 12 * (year - self.from_.year) + month - self.from_.month
-        return float((1 + self.rate) ** (max(0, months) / 12))
 
 
 class ExpenseRule(Rule):
@@ -39,8 +27,15 @@ class Expense(Sourced):
         "'claim': an amount for each benefit paid on death or once"
     )
     a_year: Literal[1, 2, 4, 12] = Field(12, description="how often a year a 'policy' amount falls due, in advance")
-    inflation: Inflation | None = Field(None, description="growth of the amounts ('policy' and 'claim')")
+    inflation: str | Inflation | None = Field(
+        None, description="growth of the amounts ('policy' and 'claim'): the name of one of the basis, or its own"
+    )
     rule: list[ExpenseRule] = Field(min_length=1, description="read top to bottom, the first that fits wins")
+
+    @field_validator("inflation", mode="before")
+    @classmethod
+    def _one_kind(cls, value: Any) -> Any:
+        return Inflation.model_validate(value) if isinstance(value, dict) else value
 
     @model_validator(mode="after")
     def _sensible(self) -> Expense:

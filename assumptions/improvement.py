@@ -10,16 +10,18 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 from functools import cached_property
 from pathlib import Path
-from typing import Literal
+from typing import Any, Literal
 
 import numpy as np
 from numpy.typing import NDArray
-from pydantic import Field, model_validator
+from pydantic import Field, field_validator, model_validator
 
 from .items import Item, Sourced
 from .rate_table import TableError
 from .select_rows import consecutive_ages
-from .table_files import read_columns
+from .table_files import is_xml, read_columns
+from .xtbml import read_xtbml
+from .xtbml_scales import scale_values
 
 LONGEST = 300
 """Years after the base year for which factors are made; later ones stand still."""
@@ -38,27 +40,47 @@ class LongTerm(Item):
     )
 
 
+class ScaleFile(Item):
+    """One scale of an XTbML file that holds several."""
+
+    file: str = Field(description="XTbML file, relative to the document")
+    table: int | str = Field(description="which table of the file: its number, from 1, or its title")
+
+
 class Improvement(Sourced):
     """Improvement of the rates of a mortality rule: a table by age, or by age and calendar year, or one rate."""
 
-    table: str | None = Field(
+    table: str | ScaleFile | None = Field(
         None,
-        description="CSV or Parquet file with columns 'age' and 'rate', or 'age' and one for each calendar year",
+        description="CSV or Parquet file with columns 'age' and 'rate', or 'age' and one for each calendar year; or an "
+        "XTbML file with a projection scale by age, or by age and calendar year",
     )
     rate: float | None = Field(None, ge=-0.2, le=0.2, description="one yearly improvement for all ages and years")
     base_year: int = Field(ge=1900, le=2200, description="calendar year that the mortality rates belong to")
-    holds: Literal["yearly improvements", "reduction factors"] = Field(
+    holds: Literal["yearly improvements", "yearly changes", "reduction factors"] = Field(
         "yearly improvements",
-        description="what the table holds: improvement from the year before, or the share of the base year's rate "
-        "that is left",
+        description="what the table holds: improvement from the year before; change from the year before, negative "
+        "where mortality falls; or the share of the base year's rate that is left",
     )
     multiple: float = Field(1.0, ge=0, le=10, description="factor on every yearly improvement")
     long_term: LongTerm | None = Field(None, description="where improvement goes after the table; absent: held")
+
+    @field_validator("table", mode="before")
+    @classmethod
+    def _one_kind(cls, value: Any) -> Any:
+        return ScaleFile.model_validate(value) if isinstance(value, dict) else value
+
+    @property
+    def file(self) -> str | None:
+        """The file of the table, as the document names it."""
+        return self.table.file if isinstance(self.table, ScaleFile) else self.table
 
     @model_validator(mode="after")
     def _consistent(self) -> Improvement:
         if (self.table is None) == (self.rate is None):
             raise ValueError("an improvement needs one of 'table' and 'rate'")
+        if self.holds == "yearly changes" and self.table is None:
+            raise ValueError("'yearly changes' is what a 'table' holds; beside 'rate' leave 'holds' out")
         if self.holds == "reduction factors" and (self.table is None or self.long_term or self.multiple != 1):
             raise ValueError("reduction factors need a 'table', and neither 'multiple' nor 'long_term'")
         return self
@@ -148,22 +170,37 @@ class Scale:
 
 def read_scale(document: Improvement, folder: Path) -> Scale:
     """Read the table of an improvement. Raises TableError."""
-    if document.table is None:
+    if document.file is None:
         return Scale(document)
-    path = folder / document.table
-    columns = read_columns(path)
-    first = consecutive_ages(columns.numbers("age"), [f"{path}, {place}" for place in columns.places])
-    names = sorted(name for name in columns.cells if name.isdigit())
-    years = tuple(int(name) for name in names)
+    path = folder / document.file
+    if is_xml(path):
+        wanted = document.table.table if isinstance(document.table, ScaleFile) else None
+        first, years, values = scale_values(str(path), read_xtbml(path), wanted)
+        places = [f"{path}, age {first + row}" for row in range(len(values))]
+    else:
+        if isinstance(document.table, ScaleFile):
+            raise TableError(f'{path}: only an XTbML file holds several tables; write table = "{document.file}"')
+        first, years, values, places = _columns(path)
     if not years and document.holds == "reduction factors":
         raise TableError(f"{path}: reduction factors need a column for each calendar year")
+    low, high = (0.0, 10.0) if document.holds == "reduction factors" else (-0.2, 0.2)
+    for row, column in np.argwhere((values < low) | (values > high))[:1].tolist():
+        when = f", year {years[column]}" if years else ""
+        figure = values[row, column]
+        raise TableError(f"{places[row]}{when}: {figure:g} does not lie between {low:g} and {high:g}")
+    return Scale(document, first, years, -values if document.holds == "yearly changes" else values)
+
+
+def _columns(path: Path) -> tuple[int, tuple[int, ...], NDArray[np.float64], list[str]]:
+    """First age, calendar years, figures and the place of each row, from a CSV or Parquet file."""
+    columns = read_columns(path)
+    places = [f"{path}, {place}" for place in columns.places]
+    first = consecutive_ages(columns.numbers("age"), places)
+    names = sorted(name for name in columns.cells if name.isdigit())
+    years = tuple(int(name) for name in names)
     if years and years != tuple(range(years[0], years[-1] + 1)):
         raise TableError(f"{path}: the columns of calendar years leave some out; give every year from first to last")
     if years and "rate" in columns.cells:
         raise TableError(f"{path}: both 'rate' and columns of calendar years; remove one")
     values = np.array([columns.numbers(name) for name in names or ["rate"]]).T
-    low, high = (0.0, 10.0) if document.holds == "reduction factors" else (-0.2, 0.2)
-    for row, column in np.argwhere((values < low) | (values > high))[:1].tolist():
-        figure = values[row, column]
-        raise TableError(f"{path}, {columns.places[row]}: {figure:g} does not lie between {low:g} and {high:g}")
-    return Scale(document, first, years, values)
+    return first, years, values, places

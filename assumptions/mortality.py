@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import Any, Literal, Protocol
+from typing import Any, Literal, NamedTuple, Protocol
 
 from pydantic import Field, field_validator
 
@@ -90,17 +90,46 @@ class Mortality(Item):
         description="force, a year, of a cause that kills both lives of a contract on two lives at once; it is part of "
         "the rates of each. At 0 they are independent",
     )
+    ratings: bool = Field(
+        False,
+        description="whether the ratings of the policies count: the extract's columns 'rating_multiple', 'rating_age' "
+        "and 'rating_extra', their '..._years', and 'second_...' for the second life. At false those columns are not "
+        "looked at",
+    )
     rule: list[MortalityRule] = Field(min_length=1, description="read top to bottom, the first that fits wins")
 
 
-def adjusted_rate(rule: MortalityRule, rates: Rates, entry_age: float, duration: int, improved: float = 1.0) -> float:
+class Rating(NamedTuple):
+    """What a life's own rating does to the rates of a rule: nothing, as it stands here.
+
+    multiple: factor on every rate; added_years: to the age before the table is entered; extra: addition to every
+    yearly rate (not per mille).
+    """
+
+    multiple: float = 1.0
+    added_years: int = 0
+    extra: float = 0.0
+
+
+STANDARD = Rating()
+
+
+def adjusted_rate(
+    rule: MortalityRule,
+    rates: Rates,
+    entry_age: float,
+    duration: int,
+    improved: float = 1.0,
+    rating: Rating = STANDARD,
+) -> float:
     """Return the yearly rate that counts for a life under a rule.
 
     entry_age: age at commencement, before ``added_years``; duration: completed years since; improved: factor of
-    improvement.
+    improvement; rating: the life's own.
     Raises ValueError where the table has no rate and is not closed.
     """
-    entered = entry_age + rule.added_years
+    entered = entry_age + rule.added_years + rating.added_years
     if entered + duration >= rates.final_age - 1 and (rule.close or rates.closed):
         return 1.0
-    return min(1.0, rule.multiple * rates.rate(entered, duration) * improved + rule.extra)
+    multiple, extra = rating.multiple * rule.multiple, rule.extra + rating.extra
+    return min(1.0, multiple * rates.rate(entered, duration) * improved + extra)

@@ -59,6 +59,11 @@ class Columns:
         return number
 
 
+def is_xml(path: Path | str) -> bool:
+    """Say whether a file is XTbML, by its name."""
+    return Path(path).suffix.lower() in (".xml", ".xtbml")
+
+
 def file_bytes(path: Path | str) -> bytes:
     """Return what a table file holds. Raises TableError where it is unreadable or larger than MAX_BYTES."""
     try:

@@ -14,13 +14,11 @@ import numpy as np
 
 from .rate_table import RateTable, Rows, TableError
 from .select_rows import SelectBy, by_entry_age, check_rate, consecutive_ages, keying, without_blank_ends
-from .table_files import Columns, read_columns
+from .table_files import Columns, is_xml, read_columns
 from .xtbml import read_xtbml
 from .xtbml_axes import rate_table, yearly_by_duration
 
 __all__ = ["RateTable", "TableError", "read_curve", "read_lapse", "read_rates"]
-
-_XML = (".xml", ".xtbml")
 
 
 def read_rates(
@@ -39,7 +37,7 @@ def read_rates(
 
     Raises TableError, with file, place, value and remedy, for anything that is not a table of yearly rates.
     """
-    if _is_xml(path):
+    if is_xml(path):
         if column is not None:
             raise TableError(f"{path}: an XTbML file has no columns; use 'table' in place of 'column'")
         return rate_table(str(path), read_xtbml(path), table, select_by)
@@ -71,7 +69,7 @@ def read_lapse(path: Path | str) -> list[float]:
     A CSV or Parquet file with columns ``year`` (1, 2, 3 ...) and ``rate``, or an XTbML file with one table by
     duration. Raises TableError for missing years and for rates outside 0 to 1.
     """
-    if _is_xml(path):
+    if is_xml(path):
         tables = read_xtbml(path)
         if len(tables) != 1:
             raise TableError(f"{path}: {len(tables)} tables; lapse rates are read from a file with one")
@@ -103,10 +101,6 @@ def read_curve(path: Path | str) -> dict[float, float]:
             raise TableError(f"{path}, {place}: rate {rate:g} must lie above -0.5, up to 1; 3 % is 0.03")
         curve[maturity] = rate
     return curve
-
-
-def _is_xml(path: Path | str) -> bool:
-    return Path(path).suffix.lower() in _XML
 
 
 def _select_columns(columns: Columns) -> list[str]:

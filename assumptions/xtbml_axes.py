@@ -23,7 +23,7 @@ _MEANINGS: tuple[tuple[str, Meaning], ...] = (
     (r"\b(month|week|day|quarter)s?\b", "part of a year"),
     (r"\byears?\b", "duration"),
 )
-_AGES = ("age", "entry age", "attained age")
+AGES = ("age", "entry age", "attained age")
 
 # Contents whose figures are something else than yearly rates, though some lie between 0 and 1.
 _NO_RATES = {
@@ -51,7 +51,7 @@ def meaning(axis: Axis) -> Meaning:
 def yearly_by_duration(file: str, table: XtbmlTable) -> list[float]:
     """Return the rates of a table by policy year, from the first. Raises TableError for any other table."""
     if [meaning(axis) for axis in table.axes] != ["duration"]:
-        raise TableError(f"{file}: table {table.number} is by {_by(table)}, not by policy year")
+        raise TableError(f"{file}: table {table.number} is by {by_axes(table)}, not by policy year")
     ticks = table.axes[0].ticks
     if ticks != tuple(range(1, len(ticks) + 1)):
         raise TableError(f"{file}: policy years go {_some(ticks)}; they must be 1, 2, 3 ...")
@@ -97,11 +97,11 @@ def _pair(
 ) -> tuple[XtbmlTable | None, XtbmlTable | None]:
     """Return the select and the ultimate table that are meant, either of which may be absent."""
     if wanted is not None or len(tables) == 1:
-        table = tables[0] if wanted is None else _named(file, tables, wanted)
+        table = tables[0] if wanted is None else named_table(file, tables, wanted)
         return (table, None) if _role(table) == "select" else (None, table)
     if len(tables) == 2:
         for select, ultimate in (tables, tables[::-1]):
-            plain = len(ultimate.axes) == 1 and meaning(ultimate.axes[0]) in _AGES
+            plain = len(ultimate.axes) == 1 and meaning(ultimate.axes[0]) in AGES
             sure = len(select.axes) == 2 or _role(ultimate) == "ultimate"
             if _role(select) == "select" and plain and _role(ultimate) != "select" and sure:
                 return select, ultimate
@@ -119,7 +119,8 @@ def _role(table: XtbmlTable) -> str:
     return said.pop() if len(said) == 1 else ""
 
 
-def _named(file: str, tables: Sequence[XtbmlTable], wanted: int | str) -> XtbmlTable:
+def named_table(file: str, tables: Sequence[XtbmlTable], wanted: int | str) -> XtbmlTable:
+    """Return the table with a number in the file, from 1, or a title. Raises TableError unless there is one."""
     words = " ".join(str(wanted).split()).lower()
     fit = [table for table in tables if words in (str(table.number), table.title.lower())]
     if not fit and len(tables) == 1 and words == tables[0].name.lower():
@@ -133,10 +134,10 @@ def _named(file: str, tables: Sequence[XtbmlTable], wanted: int | str) -> XtbmlT
 def _select_rows(file: str, table: XtbmlTable, asked: SelectBy | None) -> tuple[Rows, int]:
     kinds = [meaning(axis) for axis in table.axes]
     values, axes = table.values, list(table.axes)
-    if len(kinds) == 2 and kinds[0] not in _AGES:
+    if len(kinds) == 2 and kinds[0] not in AGES:
         values, axes, kinds = values.T, axes[::-1], kinds[::-1]
-    if kinds[0] not in _AGES or kinds[1:] not in ([], ["duration"]):
-        raise TableError(f"{file}: table {table.number} is by {_by(table)}, not by age and policy year")
+    if kinds[0] not in AGES or kinds[1:] not in ([], ["duration"]):
+        raise TableError(f"{file}: table {table.number} is by {by_axes(table)}, not by age and policy year")
     durations = axes[1].ticks if len(axes) == 2 else (1,)
     if durations != tuple(range(durations[0], durations[0] + len(durations))) or durations[0] not in (0, 1):
         raise TableError(f"{file}: table {table.number}: durations go {_some(durations)}, not 1, 2, 3 ...")
@@ -159,8 +160,8 @@ def _said(table: XtbmlTable, kind: Meaning) -> SelectBy | None:
 
 
 def _ultimate_rates(file: str, table: XtbmlTable) -> tuple[Rows, int]:
-    if meaning(table.axes[0]) not in _AGES:
-        raise TableError(f"{file}: table {table.number} is by {_by(table)}, not by age")
+    if meaning(table.axes[0]) not in AGES:
+        raise TableError(f"{file}: table {table.number} is by {by_axes(table)}, not by age")
     first = _ages(file, table, table.axes[0])
     for row in np.flatnonzero((table.values < 0) | (table.values > 1))[:1]:
         check_rate(float(table.values[row]), f"{file}: table {table.number}, age {first + row}")
@@ -171,7 +172,8 @@ def _ages(file: str, table: XtbmlTable, axis: Axis) -> int:
     return consecutive_ages(axis.ticks, [f"{file}: table {table.number}"] * len(axis.ticks))
 
 
-def _by(table: XtbmlTable) -> str:
+def by_axes(table: XtbmlTable) -> str:
+    """Say what the axes of a table count."""
     kinds = [(meaning(axis), axis.name) for axis in table.axes]
     return " and ".join(f"'{name}'" if kind == "unknown" else kind for kind, name in kinds)
 

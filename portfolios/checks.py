@@ -5,7 +5,8 @@ readable, not unique; product not known; status not in force; birth date, then c
 out of range; commenced before birth; commences after the valuation date; on two lives, who lives, and the birth
 date of the second life where it lives; then each number that the product's design uses, in the order of the
 registry of columns and after it by name: missing, not finite, negative, frequency not known, out of range,
-duration not in whole months. A number is looked at only for the products whose design uses it.
+duration not in whole months. A number is looked at only for the products whose design uses it. Last come ratings,
+where the basis asks for them.
 """
 
 from __future__ import annotations
@@ -22,6 +23,7 @@ from .chunk import MISSING_DAY, Chunk
 from .designs import Design
 from .identifiers import Duplicates, byte_lengths, string_bytes
 from .number_rules import Mask, NumberRule, needed_columns, number_columns, number_rules
+from .rating_rules import broken_ratings
 from .reasons import Reason
 from .states import LIVES
 
@@ -51,7 +53,8 @@ class Checks:
     """The checks of one run, prepared; may be used by several threads on different chunks.
 
     designs: in the order that gives the product its position; needed: the columns that the run reads, which
-    must hold those always needed and those of the designs. Raises ValueError where one is not among them.
+    must hold those always needed and those of the designs; ratings: rating columns that count. Raises ValueError
+    where one is not among them.
     """
 
     def __init__(
@@ -61,6 +64,7 @@ class Checks:
         in_force: Collection[str],
         duplicates: Duplicates,
         needed: Sequence[str],
+        ratings: Sequence[str] = (),
     ) -> None:
         absent = [name for name in needed_columns(designs) if name not in needed]
         if absent:
@@ -71,6 +75,7 @@ class Checks:
         self._today = (valuation_date - date(1970, 1, 1)).days
         self.duplicates = duplicates
         self._rules = number_rules(designs)
+        self._ratings = tuple(ratings)
         self._on_two = np.array([design.states == "two lives" for design in designs] + [False])
 
     def check(self, chunk: Chunk) -> Checked:
@@ -84,6 +89,9 @@ class Checks:
         if self._on_two.any():
             self._check_second(chunk, checked)
         self._check_numbers(chunk, checked)
+        on_two = self._on_two.take(product, mode="wrap")
+        for column, reason, bad in broken_ratings(chunk, self._ratings, on_two):
+            self._mark(checked, bad, reason, column)
         return checked
 
     def _mark(self, checked: Checked, bad: Mask, reason: Reason, column: str) -> None:

@@ -28,6 +28,24 @@ class Column:
 
 LARGEST_AMOUNT = 1e10
 
+RATINGS = ("rating_multiple", "rating_age", "rating_extra")
+"""What a rating of a life may be made of; each column may have one ending in ``_years``, for how long it holds."""
+
+
+def _ratings(life: str) -> tuple[Column, ...]:
+    """Columns of the rating of a life: ``second_`` for the second one, nothing for the first or only one."""
+    of = "second life's rating: " if life else "rating: "
+    time = "whole years from commencement for which {} holds; missing: for ever"
+    return (
+        Column(f"{life}rating_multiple", "share", "times the rate", f"{of}factor on every rate of death", 0, 20),
+        Column(f"{life}rating_multiple_years", "years", "years", of + time.format("the factor"), 0, 120),
+        Column(f"{life}rating_age", "years", "years", f"{of}whole years added to the age before rates apply", -40, 40),
+        Column(f"{life}rating_age_years", "years", "years", of + time.format("the addition to the age"), 0, 120),
+        Column(f"{life}rating_extra", "rate", "per mille a year", f"{of}flat addition to every yearly rate", 0, 500),
+        Column(f"{life}rating_extra_years", "years", "years", of + time.format("the flat addition"), 0, 120),
+    )
+
+
 COLUMNS: tuple[Column, ...] = (
     Column("policy_id", "text", "", "identifier of the policy, unique in the extract", always=True),
     Column("product", "text", "", "code of the product design", always=True),
@@ -49,6 +67,8 @@ COLUMNS: tuple[Column, ...] = (
     Column("annuity_pa", "money", "currency a year", "annuity, a year, before any increase", 0, LARGEST_AMOUNT),
     Column("annuity_frequency", "count", "payments a year", "1, 2, 4 or 12", 1, 12),
     Column("escalation", "rate", "a year", "yearly increase of the annuity", -0.5, 1),
+    *_ratings(""),
+    *_ratings("second_"),
 )
 
 BY_NAME = {column.name: column for column in COLUMNS}

@@ -25,6 +25,7 @@ class Reason(IntEnum):
     FREQUENCY_UNKNOWN = 14
     NOT_WHOLE_MONTHS = 15
     LIVES_UNKNOWN = 16
+    NUMBER_NOT_WHOLE = 19
     # The following are found by the projection.
     NOT_WHOLE_YEARS = 20
     NOT_WHOLE_PERIODS = 21
@@ -74,6 +75,7 @@ _WORDS: dict[Reason, tuple[str, str]] = {
         "duration not in whole months",
         "a duration in years must be a whole number of months",
     ),
+    Reason.NUMBER_NOT_WHOLE: ("number not whole", "years of a rating must be a whole number"),
     Reason.LIVES_UNKNOWN: ("lives not known", "lives of a contract on two lives must be both, first, second or none"),
     Reason.NOT_WHOLE_YEARS: (
         "duration not in whole years",

@@ -19,11 +19,12 @@ from assumptions.improvement import Scale
 from assumptions.interest import YieldCurve
 from assumptions.lapse import LapseRule, yearly_lapse
 from assumptions.laws import Law
-from assumptions.mortality import MortalityRule, Rates
+from assumptions.mortality import STANDARD, MortalityRule, Rates, Rating
 
 from . import loops
 from .documents import DocumentError
 from .pool import Pool
+from .ratings import Key, Ratings, course_of
 from .settings import Settings
 from .streams import LONGEST, SURVIVAL
 
@@ -51,6 +52,20 @@ _NEW = -2
 """Stands in a finder for the row of a key not met before."""
 
 
+@dataclass(frozen=True)
+class Entered:
+    """What a row of survival is made from: position of the rule, age at commencement and calendar year then.
+
+    age: a whole one where the rates are for whole ages only; pieces: the year since commencement in which each piece
+    of a rating begins, and the rating.
+    """
+
+    rule: int
+    age: float
+    year: int
+    pieces: tuple[tuple[int, Rating], ...] = ((0, STANDARD),)
+
+
 @dataclass
 class Survival:
     """Rows of survival by mortality rule and age at commencement, with a record of each."""
@@ -59,12 +74,15 @@ class Survival:
     pool: Pool
     records: NDArray[Any] = field(default_factory=lambda: np.zeros(0, SURVIVAL))
     known: dict[int, int] = field(default_factory=dict)
-    entered: list[tuple[int, float, int]] = field(default_factory=list)
-    """Of each record the position of its rule, the age at which the table is entered and the year in which."""
+    rated: dict[tuple[int, int], int] = field(default_factory=dict)
+    rating_columns: tuple[str, ...] = ()
+    entered: list[Entered] = field(default_factory=list)
+    """What the row of each record was made from."""
 
     def __post_init__(self) -> None:
         mortality = self.basis.document.mortality
         self.exact = mortality.age == "exact"
+        self.ratings = Ratings(self.rating_columns, self.exact)
         self.keys = 2 * _SPANS * 160 if self.exact else 256
         self.fractions = FRACTIONS[mortality.fractions]
         self.improving = np.array([scale is not None for scale in self.basis.scales])
@@ -99,14 +117,47 @@ class Survival:
     def row(self, code: int) -> int:
         """Return the row of a key, made on first meeting; IMPOSSIBLE where the rates do not cover the age."""
         if code not in self.known:
-            rest, year = divmod(code, YEARS) if self.improving.any() else (code, 0)
-            number, key = divmod(rest, self.keys)
-            age = float(key)
-            if self.exact:
-                halves, since = divmod(key, _SPANS)
-                age = halves // 2 + since / (365 + halves % 2)
-            self.known[code] = self._add(number, age, FIRST_YEAR + year)
+            self.known[code] = self._add(*self._meaning(code))
         return self.known[code]
+
+    def _meaning(self, code: int) -> tuple[int, float, int]:
+        """Return rule, age at commencement and calendar year of a key."""
+        rest, year = divmod(code, YEARS) if self.improving.any() else (code, 0)
+        number, key = divmod(rest, self.keys)
+        age = float(key)
+        if self.exact:
+            halves, since = divmod(key, _SPANS)
+            age = halves // 2 + since / (365 + halves % 2)
+        return number, age, FIRST_YEAR + year
+
+    def rated_rows(self, codes: Keys, ratings: Keys) -> Keys:
+        """Return the rows of rated lives, by key and number of the rating, made on first meeting."""
+        found, inverse = np.unique(np.column_stack((codes, ratings)), axis=0, return_inverse=True)
+        rows = np.array([self._rated_row(*pair) for pair in found.tolist()], dtype=np.int64)
+        return np.asarray(rows[inverse.reshape(-1)])
+
+    def _rated_row(self, code: int, rating: int) -> int:
+        if (code, rating) not in self.rated:
+            self.rated[code, rating] = self._add_rated(*self._meaning(code), self.ratings.keys[rating - 1])
+        return self.rated[code, rating]
+
+    def _add_rated(self, number: int, age: float, year: int, key: Key) -> int:
+        rule, rates = self.basis.document.mortality.rule[number], self.basis.rates[number]
+        whole = int(age) if rates.whole_ages_only else age
+        pieces = []
+        for begin, rating in key.pieces():
+            try:
+                yearly = yearly_rates(rule, rates, whole, self.basis.scales[number], year, rating)
+            except ValueError:
+                return IMPOSSIBLE
+            if len(yearly) == 0:
+                return IMPOSSIBLE
+            pieces.append((begin, yearly))
+        closes = rule.close or rates.closed
+        course = course_of(pieces, int(key.piece), age - whole, self.fractions, closes)
+        living = self.pool.add(course.living)
+        self.entered.append(Entered(number, whole, year, tuple(key.pieces())))
+        return self._record(living, len(course.living), course.yearly, course.reached, age - whole, course.closed)
 
     def _add(self, number: int, age: float, year: int) -> int:
         rule, rates = self.basis.document.mortality.rule[number], self.basis.rates[number]
@@ -121,15 +172,20 @@ class Survival:
         reached = np.concatenate(([1.0], np.cumprod(1 - yearly)))
         living = self.pool.space(count)
         loops.fill_living(yearly, reached, passed, self.fractions, self.pool.row(living, count))
+        # A multiple or an extra may bring a rate to 1 before the table ends; then too nobody is left.
+        closed = rule.close or rates.closed or bool((yearly >= 1).any())
+        self.entered.append(Entered(number, whole, year))
+        return self._record(living, count, yearly, reached, passed, closed)
+
+    def _record(self, living: int, count: int, yearly: Row, reached: Row, passed: float, closed: bool) -> int:
+        """Add the record of a row of survival and return its number."""
         record = np.zeros(1, SURVIVAL)
         record["living"], record["over"] = living, count - 1
         record["yearly"], record["reached"] = self.pool.add(yearly), self.pool.add(reached)
         record["years"], record["passed"] = len(yearly), passed
         record["lasts"] = self.pool.add(lasts(self.pool.row(living, count)))
-        # A multiple or an extra may bring a rate to 1 before the table ends; then too nobody is left.
-        record["closed"] = rule.close or rates.closed or bool((yearly >= 1).any())
+        record["closed"] = closed
         self.records = np.concatenate((self.records, record))
-        self.entered.append((number, whole, year))
         return len(self.records) - 1
 
 
@@ -145,14 +201,21 @@ def lasts(living: Row) -> Row:
     return np.clip(np.maximum(counting, np.arange(1, over + 2)), 0, over).astype(np.float64)
 
 
-def yearly_rates(rule: MortalityRule, rates: Rates, age: float, scale: Scale | None = None, year: int = 0) -> Row:
+def yearly_rates(
+    rule: MortalityRule,
+    rates: Rates,
+    age: float,
+    scale: Scale | None = None,
+    year: int = 0,
+    rating: Rating = STANDARD,
+) -> Row:
     """Adjusted rates of the years from an age at commencement to the end of a table, by year of age or duration.
 
-    year: the calendar year in which the first of them begins, for the improvement.
+    year: the calendar year in which the first of them begins, for the improvement; rating: the life's own.
 
     Empty where the age lies beyond the table. Raises ValueError where it lies below, or a rate is missing.
     """
-    entered = age + rule.added_years
+    entered = age + rule.added_years + rating.added_years
     if entered < rates.first_age:
         raise ValueError(f"age {entered:g} lies below {rates.first_age}")
     years = max(0, int(np.ceil(rates.final_age - entered)))
@@ -164,7 +227,7 @@ def yearly_rates(rule: MortalityRule, rates: Rates, age: float, scale: Scale | N
     known = years - closing
     source = rates.rates_from(entry, known) if known else np.zeros(0)  # type: ignore[attr-defined]
     improved = scale.cohort(int(np.floor(entered)), year, known) if scale is not None else 1.0
-    adjusted = np.minimum(1.0, rule.multiple * source * improved + rule.extra)
+    adjusted = np.minimum(1.0, rule.multiple * rating.multiple * source * improved + (rule.extra + rating.extra))
     if closing:
         adjusted = np.append(adjusted, 1.0)
     return np.asarray(adjusted)

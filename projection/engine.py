@@ -27,7 +27,7 @@ from portfolios.reasons import Reason
 from . import loops
 from .cells import Cells
 from .curves import IMPOSSIBLE, NEVER, Discount, Finder, Keys, Persistency, Survival
-from .lives import on_two
+from .lives import on_two, ratings_used
 from .plans import Plans
 from .pool import Pool
 from .relative import RelativeRows
@@ -79,11 +79,12 @@ class Engine:
     ) -> None:
         self.basis, self.settings, self.needed = basis, settings, needed
         today = settings.valuation_date
-        self.checks = Checks(designs, today, in_force, Duplicates(), needed)
+        ratings = ratings_used(basis, designs, needed)
+        self.checks = Checks(designs, today, in_force, Duplicates(), needed, ratings)
         self.cells = Cells(designs, basis, kinds)
         self.pool = Pool()
         self.plans = Plans(designs, basis, RelativeRows(self.pool, today.year, today.month))
-        self.survival = Survival(basis, self.pool)
+        self.survival = Survival(basis, self.pool, rating_columns=ratings)
         self.persistency = Persistency(basis, settings, self.pool)
         self.discount = Discount(basis, settings, self.pool)
         self._survivals = Finder(self.survival.row)
@@ -178,7 +179,7 @@ class Engine:
             np.array([getattr(one, part) for one in known], dtype=np.int64)[cell]
             for part in ("mortality", "lapse", "interest")
         )
-        survival, second = self._lives(chunk, checked, cell, mortality)
+        survival, second = self._lives(chunk, checked, cell, mortality, places)
         until = self._until.months(chunk, lapse)
         self._flag(checked, until < 0, Reason.NOT_WHOLE_MONTHS, self._until.column)
         lapse = self._persistencies.rows_for((1 + lapse) * (NEVER + 1) + np.maximum(until, 0))
@@ -195,7 +196,9 @@ class Engine:
             accrued=np.array(self.discount.accrued, dtype=np.float64),
         )
 
-    def _lives(self, chunk: Chunk, checked: Checked, cell: NDArray[np.int32], mortality: Keys) -> tuple[Keys, Keys]:
+    def _lives(
+        self, chunk: Chunk, checked: Checked, cell: NDArray[np.int32], mortality: Keys, places: loops.Places
+    ) -> tuple[Keys, Keys]:
         """Rows of survival of the first life, or the only one left, and of the second where both live, else -1."""
         birth = chunk.day("birth_date")
         known = self.cells.cells
@@ -204,28 +207,46 @@ class Engine:
         fine &= ~nobody
         second = np.where(nobody, NOBODY, NO_SECOND)
         if not self._on_two:
-            return self._rows_of(chunk, checked, fine, birth, mortality, "birth_date"), second
+            codes = self._codes_of(chunk, fine, birth, mortality)
+            return self._rows_of(chunk, checked, fine, codes, np.zeros(chunk.n, dtype=bool), places), second
         other = np.array([one.second for one in known], dtype=np.int64)[cell]
         left = np.array([one.lives == "second" for one in known])[cell]
         births = chunk.day("second_birth_date")
-        survival = self._rows_of(chunk, checked, fine, np.where(left, births, birth), mortality, "birth_date")
+        codes = self._codes_of(chunk, fine, np.where(left, births, birth), mortality)
+        survival = self._rows_of(chunk, checked, fine, codes, left, places)
         both = fine & (other >= 0) & (checked.reason == 0)
-        rows = self._rows_of(chunk, checked, both, births, np.maximum(other, 0), "second_birth_date")
+        codes = self._codes_of(chunk, both, births, np.maximum(other, 0))
+        rows = self._rows_of(chunk, checked, both, codes, both, places, "second_birth_date")
         return survival, np.where(both, np.maximum(rows, 0), second)
 
-    def _rows_of(
-        self, chunk: Chunk, checked: Checked, fine: Mask, birth: NDArray[np.int32], mortality: Keys, column: str
-    ) -> Keys:
-        """Rows of survival of the lives that count, born on given days."""
-        if not fine.any():
-            return np.zeros(chunk.n, dtype=np.int64)
+    def _codes_of(self, chunk: Chunk, fine: Mask, birth: NDArray[np.int32], mortality: Keys) -> Keys:
+        """Keys of the rows of survival of the lives that count, born on given days."""
         ages = loops.Ages(*(np.zeros(chunk.n, dtype=np.int32) for _ in loops.Ages._fields))
         days_of_age = self.basis.document.mortality.age in ("exact", "nearest birthday")
         loops.find_ages(birth, chunk.day("commencement_date"), fine, days_of_age, ages)
-        codes = self.survival.codes(mortality, ages, chunk.day("commencement_date"))
-        # No rows for the ages of others; the first one that counts stands in for them.
-        codes[~fine] = codes[fine.argmax()]
-        rows = self._survivals.rows_for(codes)
+        return self.survival.codes(mortality, ages, chunk.day("commencement_date"))
+
+    def _rows_of(
+        self,
+        chunk: Chunk,
+        checked: Checked,
+        fine: Mask,
+        codes: Keys,
+        of_second: Mask,
+        places: loops.Places,
+        column: str = "birth_date",
+    ) -> Keys:
+        """Rows of survival of the lives that count; of_second: whose rating stands in 'second_...' columns."""
+        ratings = self.survival.ratings.numbers(chunk, fine, of_second, places)
+        standard = fine & (ratings == 0)
+        rows = np.zeros(chunk.n, dtype=np.int64)
+        if standard.any():
+            # No rows for the ages of others; the first one that counts stands in for them.
+            known = np.where(standard, codes, codes[standard.argmax()])
+            rows = self._survivals.rows_for(known)
+        rated = np.flatnonzero(ratings)
+        if len(rated):
+            rows[rated] = self.survival.rated_rows(codes[rated], ratings[rated])
         self._flag(checked, fine & (rows == IMPOSSIBLE), Reason.AGE_OUTSIDE_TABLE, column)
         return rows
 

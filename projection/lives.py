@@ -12,8 +12,10 @@ from collections.abc import Collection, Iterable
 
 from assumptions.basis import Basis
 from portfolios.designs import Design, Stream
+from portfolios.rating_rules import rating_columns, rating_faults
 from portfolios.states import ALIVE, BOTH, EARLIER, FIRST_ONLY, LEFT_ON, LIVES, SECOND_ONLY, WHILE, States
 
+from .documents import DocumentError
 from .streams import FIRST, JOINT, SECOND
 
 Terms = tuple[tuple[int, float], ...]
@@ -49,6 +51,17 @@ def rule_columns(basis: Basis, designs: Iterable[Design], held: Collection[str])
         named += [column for column in seconds if column in held]
     # On one life too, the column says that nobody is left.
     return list(dict.fromkeys([*named, *(["lives"] if "lives" in held or on_two(designs) else [])]))
+
+
+def ratings_used(basis: Basis, designs: Iterable[Design], held: Collection[str]) -> tuple[str, ...]:
+    """Return the rating columns among those held that count under a basis; none where it does not ask for ratings."""
+    return rating_columns(held, on_two(designs)) if basis.document.mortality.ratings else ()
+
+
+def need_ratings(basis: Basis, designs: Iterable[Design], held: Collection[str]) -> None:
+    """Raise DocumentError where a basis asks for ratings and the extract's columns do not give them."""
+    for fault in rating_faults(held, on_two(designs)) if basis.document.mortality.ratings else ():
+        raise DocumentError(f"{basis.title}, mortality: key 'ratings' is true, but {fault}")
 
 
 def now(design: Design, lives: str | None) -> str:

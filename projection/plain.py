@@ -15,6 +15,7 @@ from math import fsum
 from typing import Any, Literal, NamedTuple
 
 from assumptions.basis import Basis
+from assumptions.mortality import STANDARD
 from assumptions.rules import Rule, first_fit
 from portfolios.designs import Design
 from portfolios.states import ALIVE, LIVES
@@ -26,6 +27,7 @@ from .plain_lapse import Persistency, until_months
 from .plain_life import Survival, yearly_rates
 from .plain_lives import Lives, running
 from .plain_occasions import Course, Occasion
+from .plain_ratings import Piece, pieces_of, survival_of
 from .plain_streams import Part, Policy, PolicyStream, design_streams
 from .settings import Settings
 
@@ -199,8 +201,9 @@ def _lives(policy: Policy, age: Fraction, position: Position, design: Design, ba
             ages[life] = Fraction(table.first_age - rule.added_years)
         born = _date(policy, "second_birth_date" if life == "second" else "birth_date")
         commenced, scale = _date(policy, "commencement_date"), basis.scales[place]
-        rates = yearly_rates(rule, table, ages[life], scale, commenced, born)
-        found[life] = place, Survival(rates, mortality.fractions)
+        pieces = pieces_of(policy, life) if mortality.ratings and now != "none" else [Piece(0, STANDARD)]
+        rates = [yearly_rates(rule, table, ages[life], scale, commenced, born, rating, at) for at, rating in pieces]
+        found[life] = place, survival_of(rates, mortality.fractions)
     place, first = found["second" if now == "second" else "first"]
     second = found["second"][1] if now == "both" else None
     return place, Lives(first, second, LIVES.get(now, ALIVE), mortality.common_shock, position.u)
@@ -234,9 +237,9 @@ def _streams(
         raise NotValued("matured", f"product {design.code}", None, "something is to come after the valuation date")
     own = {stream.name for stream in design.stream if stream.of is None}
     added: list[PolicyStream] = []
-    for item in basis.document.expense:
+    for item, prices in zip(basis.document.expense, basis.expense_prices, strict=True):
         rule = item.rule[rules.expenses[item.name] - 1]
-        added += expense_streams(item, rule, streams, own, running(design), course, commencement)
+        added += expense_streams(item, rule, prices, streams, own, running(design), course, commencement)
     return streams + added
 
 

@@ -6,6 +6,7 @@ from collections.abc import Callable, Iterator
 from datetime import date
 
 from assumptions.expenses import Expense, ExpenseRule
+from assumptions.inflation import Prices
 from assumptions.rules import first_fit
 from portfolios.states import States
 
@@ -28,6 +29,7 @@ def expense_rule(item: Expense, policy: Policy) -> int:
 def expense_streams(
     item: Expense,
     rule: ExpenseRule,
+    prices: Prices | None,
     streams: list[PolicyStream],
     own: set[str],
     running: States,
@@ -37,16 +39,16 @@ def expense_streams(
     """Yield what one item of expense adds to the streams of a design.
 
     ``own`` names the streams that have terms of their own, that is, are not a share of another one; running: the
-    states in which a contract on two lives runs.
+    states in which a contract on two lives runs; prices: their level, where the amounts grow with it.
     """
 
     def by_year(occasion: Occasion) -> float:
         return rule.first_year if occasion.month < 12 else rule.later_years
 
     def grown(occasion: Occasion) -> float:
-        if item.inflation is None:
+        if prices is None:
             return 1.0
-        return item.inflation.factor(*month_after(commencement, occasion.point))
+        return prices.level(max(0, prices.months(*month_after(commencement, occasion.point))))
 
     if item.per == "policy":
         mine = [stream.terms for stream in streams if stream.name in own]

@@ -8,7 +8,7 @@ from fractions import Fraction
 from typing import NamedTuple
 
 from assumptions.improvement import Scale
-from assumptions.mortality import Fractions, MortalityRule, Rates, adjusted_rate
+from assumptions.mortality import STANDARD, Fractions, MortalityRule, Rates, Rating, adjusted_rate
 
 from .plain_faults import NotValued
 
@@ -31,7 +31,8 @@ class YearlyRates(NamedTuple):
 
     Year j starts j - ``offset`` years after commencement. ``offset`` is the part r of an exact age a + r that
     enters a table of whole ages, 0 otherwise. ``entry`` is the age, before added years, of year 0, and
-    ``first_year`` the calendar year in which it begins, for the improvement.
+    ``first_year`` the calendar year in which it begins, for the improvement. rating: the life's own; begun: years
+    since commencement at which year 0 stands, where a rating counts from then on only.
     """
 
     rule: MortalityRule
@@ -40,6 +41,8 @@ class YearlyRates(NamedTuple):
     offset: Fraction
     scale: Scale | None = None
     first_year: int = 0
+    rating: Rating = STANDARD
+    begun: int = 0
 
     @property
     def closed(self) -> bool:
@@ -50,16 +53,18 @@ class YearlyRates(NamedTuple):
         """Return the factor of improvement of year j."""
         if self.scale is None:
             return 1.0
-        return self.scale.factor(math.floor(self.entry + self.rule.added_years) + j, self.first_year + j)
+        age = math.floor(self.entry + self.rule.added_years + self.rating.added_years)
+        return self.scale.factor(age + j, self.first_year + j)
 
     def rate(self, j: int) -> float:
         """Return q of year j. Raises NotValued after the last age of a table that is not closed."""
-        entered = self.entry + self.rule.added_years
+        entered = self.entry + self.rule.added_years + self.rating.added_years
+        j += self.begun
         if entered + j >= self.rates.final_age and not self.closed:
             rule = f"the table ends at age {self.rates.final_age} and is not closed"
             raise NotValued("table ends too early", "age", entered + j, rule)
         try:
-            return adjusted_rate(self.rule, self.rates, self.entry, j, self.improved(j))
+            return adjusted_rate(self.rule, self.rates, self.entry, j, self.improved(j), self.rating)
         except ValueError as error:
             raise NotValued("age outside the tables", "age", entered + j, str(error)) from error
 
@@ -71,8 +76,12 @@ def yearly_rates(
     scale: Scale | None = None,
     commencement: date | None = None,
     birth: date | None = None,
+    rating: Rating = STANDARD,
+    begun: int = 0,
 ) -> YearlyRates:
     """Return the rates of a life by its age at commencement; the dates are needed for improvement.
+
+    rating: the life's own, from ``begun`` years after commencement on.
 
     A law takes any age; a table is entered at the whole age, and the rest is the offset.
     Raises NotValued for an age outside the table, or one that is not whole in a select table.
@@ -83,7 +92,7 @@ def yearly_rates(
     select_years: int = getattr(rates, "select_years", 0)
     if offset > 0 and select_years > 0:
         raise NotValued("age not whole", "age", float(age), "a select table needs a whole age at commencement")
-    entered = entry + rule.added_years
+    entered = entry + rule.added_years + rating.added_years
     if not rates.first_age <= entered < rates.final_age:
         held = f"the table holds ages {rates.first_age} to {rates.final_age - 1}"
         raise NotValued("age outside the tables", "age", entered, held)
@@ -91,7 +100,7 @@ def yearly_rates(
     if scale is not None and commencement is not None and birth is not None:
         # Years of an exact age in a table of whole ages begin on birthdays, all others with the policy year.
         first_year = birth.year + whole if offset else commencement.year
-    return YearlyRates(rule, rates, entry, offset, scale, first_year)
+    return YearlyRates(rule, rates, entry, offset, scale, first_year, rating, begun)
 
 
 class Survival:
@@ -100,13 +109,28 @@ class Survival:
     def __init__(self, rates: YearlyRates, fractions: Fractions) -> None:
         self.rates = rates
         self.fractions: Fractions = fractions
-        self.yearly: list[float] = []
-        """The rates q used so far, by year."""
+        self._yearly: list[float] = []
         self._start_of_year = [1.0]
         self._seen: dict[Months, float] = {}
         self._passed = 12 * rates.offset.numerator
         self._month = rates.offset.denominator
         self._divisor = self._unscaled(0)
+
+    @property
+    def pieces(self) -> list[YearlyRates]:
+        """The rates of each piece of time that a rating cuts; all of time where there is none."""
+        return [self.rates]
+
+    @property
+    def yearly(self) -> list[float]:
+        """The rates q used so far, by year."""
+        return self._yearly
+
+    def years(self) -> float:
+        """Years from commencement, or from the beginning of a piece of time of its own, to where the rates end."""
+        rates = self.rates
+        entered = rates.entry + rates.rule.added_years + rates.rating.added_years
+        return rates.rates.final_age - entered - rates.begun - float(rates.offset)
 
     def at(self, months: Months) -> float:
         """Return L, the probability at commencement to live ``months`` months (whole or a fraction).
@@ -120,13 +144,20 @@ class Survival:
 
     def end(self) -> int:
         """Return the first point at which nobody is left. Raises NotValued where the table is not closed."""
+        end = self.end_before(None)
+        assert end is not None
+        return end
+
+    def end_before(self, limit: int | None) -> int | None:
+        """Return the first point at which nobody is left, None if some are left ``limit`` months on."""
         last = 0
         while self._rate(last) < 1:
             last += 1
+            if limit is not None and 12 * (last - self.rates.offset) >= limit:
+                return None
         months = 12 * (last - self.rates.offset)
-        if self.fractions == "uniform deaths":
-            return max(0, -(-(months + 12) // 1))
-        return max(0, months // 1 + 1)
+        over = max(0, -(-(months + 12) // 1) if self.fractions == "uniform deaths" else months // 1 + 1)
+        return over if limit is None or over <= limit else None
 
     def force(self, point: int) -> float:
         """Return the force of mortality at a point from the survival of the years before and after it.
@@ -148,7 +179,7 @@ class Survival:
         """Return the yearly rate in force just before a point, None at commencement or if never asked for."""
         position = 12 * self.rates.offset + point
         year = -(-position // 12) - 1
-        return self.yearly[year] if 0 <= year < len(self.yearly) else None
+        return self._yearly[year] if 0 <= year < len(self._yearly) else None
 
     def _unscaled(self, months: Months) -> float:
         # With r = n / d: r + months / 12 = (12 n + d months) / (12 d), which stays exact, so that the first
@@ -168,6 +199,6 @@ class Survival:
         return self._start_of_year[year]
 
     def _rate(self, year: int) -> float:
-        while len(self.yearly) <= year:
-            self.yearly.append(self.rates.rate(len(self.yearly)))
-        return self.yearly[year]
+        while len(self._yearly) <= year:
+            self._yearly.append(self.rates.rate(len(self._yearly)))
+        return self._yearly[year]

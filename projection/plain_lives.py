@@ -79,7 +79,7 @@ class Lives:
         """The product of both survivals; 0 as soon as one of them is, whatever the other's table says."""
         assert self.second is not None
         shorter, longer = (
-            (self.first, self.second) if _years(self.first) <= _years(self.second) else (self.second, self.first)
+            (self.first, self.second) if self.first.years() <= self.second.years() else (self.second, self.first)
         )
         product = shorter.at(point)
         return 0.0 if product == 0 else product * longer.at(point) / (self.first_now * self.second_now)
@@ -89,17 +89,12 @@ class Lives:
         if self.second is None or not states:
             return self.first.end() if self.may_be(states) else 0
         if states == frozenset({BOTH}):
-            shorter = self.first if _years(self.first) <= _years(self.second) else self.second
+            shorter = self.first if self.first.years() <= self.second.years() else self.second
             other = self.second if shorter is self.first else self.first
             return shorter.end() if not other.rates.closed else min(shorter.end(), other.end())
         ends = [self.first.end()] if states & {FIRST_ONLY} else []
         ends += [self.second.end()] if states & {SECOND_ONLY} else []
         return max(ends)
-
-
-def _years(life: Survival) -> float:
-    """Years from commencement to the end of a life's table."""
-    return life.rates.rates.final_age - (life.rates.entry + life.rates.rule.added_years) - float(life.rates.offset)
 
 
 def states_of(stream: Stream, design: Design) -> States | None:

@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 
 from assumptions.basis import Basis
 from assumptions.expenses import Expense
+from assumptions.inflation import Prices
 from portfolios.designs import AtAge, Design, Stream
 
 from . import streams as s
@@ -148,8 +149,9 @@ class Plans:
             else:
                 made[stream.name] = list(self._share(design, stream, made))
             yield from made[stream.name]
-        for item, rule in zip(self.basis.document.expense, cell.expenses, strict=True):
-            yield from self._expense(design, item, rule, made, probability(running(design), cell.lives))
+        basis = self.basis
+        for item, rule, prices in zip(basis.document.expense, cell.expenses, basis.expense_prices, strict=True):
+            yield from self._expense(design, item, rule, prices, made, probability(running(design), cell.lives))
 
     def _line(self, design: Design, name: str, part: str, direction: str) -> int:
         return self.lines.setdefault(Line(design.code, name, part, direction), len(self.lines))
@@ -217,11 +219,17 @@ class Plans:
             begin = end
 
     def _expense(
-        self, design: Design, item: Expense, rule: int, made: dict[str, list[_Record]], running: Terms
+        self,
+        design: Design,
+        item: Expense,
+        rule: int,
+        prices: Prices | None,
+        made: dict[str, list[_Record]],
+        running: Terms,
     ) -> Iterator[_Record]:
         line = self._line(design, item.name, "expense", "out")
         figures = item.rule[rule]
-        calendar = -1 if item.inflation is None else self.relative.inflating(item.inflation)
+        calendar = -1 if prices is None else self.relative.inflating(prices)
         for begin, end, figure in ((0, 12, figures.first_year), (12, s.FOR_EVER, figures.later_years)):
             for record in self._charged(design, item, made, running) if figure else ():
                 charged = replace(record, line=line, part=s.EXPENSES, own=0, whole=0, factor=record.factor * figure)

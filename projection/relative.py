@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from assumptions.expenses import Inflation
+from assumptions.inflation import Prices
 from portfolios.chunk import Chunk
 from portfolios.designs import Increase, Share, Stream
 
@@ -106,14 +106,13 @@ class RelativeRows:
             return ONES
         return self._place(shape, lambda: shape.row(float(shape.rate), 0, 0))
 
-    def inflating(self, inflation: Inflation) -> int:
+    def inflating(self, prices: Prices) -> int:
         """Return the place of the row by calendar month, the first the month of the valuation date."""
 
         def build() -> NDArray[np.float64]:
-            months = 12 * self.year + self.month - 1 + _MONTHS
-            return np.array([inflation.factor(int(m) // 12, int(m) % 12 + 1) for m in months])
+            return prices.levels(np.maximum(prices.months(self.year, self.month) + _MONTHS, 0))
 
-        return self._place((inflation.rate, inflation.from_), build)
+        return self._place(prices, build)
 
     def largest(self, place: int) -> float:
         """Return the largest amount of a row; 1 where there is none."""

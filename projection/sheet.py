@@ -24,6 +24,7 @@ def convention_sheet(basis: Basis, settings: Settings) -> Sheet:
         ("fractions of a year of age", document.mortality.fractions),
         ("select", "duration since commencement; select rates, then ultimate"),
         ("improvement", _improvement(basis)),
+        ("ratings of the policies", _ratings(basis)),
         ("two lives", _two_lives(basis)),
         ("decrements in one step", _decrements(basis)),
         ("claims paid", _claims(basis)),
@@ -59,6 +60,15 @@ def _improvement(basis: Basis) -> str:
     years = sorted({str(one.base_year) for one in scales})
     some = "" if len(scales) == len(basis.scales) else f"for {len(scales)} of {len(basis.scales)} mortality rules; "
     return f"{some}by age and calendar year from base year {' or '.join(years)}, each cohort followed exactly"
+
+
+def _ratings(basis: Basis) -> str:
+    if not basis.document.mortality.ratings:
+        return "not used; the basis does not ask for them"
+    return (
+        "factor, added years and flat extra of the policy change its rates for the years that it states; then the "
+        "standard rates at the true age"
+    )
 
 
 def _two_lives(basis: Basis) -> str:

@@ -13,18 +13,16 @@ import numpy as np
 import pyarrow as pa
 
 from assumptions.basis import Basis
-from portfolios.checks import needed_columns, number_columns
 from portfolios.chunk import Chunk
 from portfolios.designs import Design
 from portfolios.extract import CHUNK_ROWS, Extract
 from portfolios.identifiers import find_duplicates
 
 from . import loops
-from .basis_columns import until_columns
+from .basis_columns import needs_of
 from .documents import DocumentError
 from .engine import Engine
 from .groups import Groups
-from .lives import rule_columns
 from .plans import Line
 from .results import Progress, no_progress
 from .settings import Settings
@@ -108,12 +106,9 @@ class _Run:
         in_force: Collection[str],
     ) -> None:
         self.extract, self.settings = extract, settings
-        numbers = [*number_columns(designs), *until_columns(basis)]
-        asked = rule_columns(basis, designs, extract.column_names)
-        self.needed = needed_columns(designs, [*numbers, *asked, *group_by])
-        extract.need(self.needed, numbers=numbers)
-        kinds = {column: str(extract.column_kind(column)) for column in asked}
-        self.engine = Engine(designs, basis, settings, self.needed, kinds, in_force)
+        needs = needs_of(extract, designs, [basis], group_by)
+        self.needed = needs.needed
+        self.engine = Engine(designs, basis, settings, needs.needed, needs.kinds, in_force)
         self.engine.discount.shared = False
         self.groups = Groups(group_by)
         self.scale = float(PARTS_OF_MINOR * 10**settings.decimals)

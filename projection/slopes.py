@@ -9,17 +9,19 @@ identity, that the derivative is the value of the sum at risk at that point (Hoe
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Any
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 
 from assumptions.laws import Law
-from assumptions.mortality import MortalityRule, Rates
+from assumptions.mortality import Rates
 
 from . import loops
-from .curves import NEVER, Persistency, Survival, yearly_rates
+from .curves import NEVER, Entered, Persistency, Survival
+from .documents import DocumentError
 from .engine import Engine
+from .ratings import Key
 
 Numbers = NDArray[np.float64]
 
@@ -74,39 +76,60 @@ class Gathering:
 
 
 def mortality_slopes(engine: Engine, gathered: Gathering) -> list[Slope]:
-    """Return the slopes to the rates of the mortality part, by rule, attained age and, where select, duration."""
+    """Return the slopes to the rates of the mortality part, by rule, attained age and, where select, duration.
+
+    The age is the one at which the table is read, with added years. Raises DocumentError for ratings for a time of
+    lives whose years of age begin between anniversaries.
+    """
+    survival = engine.survival
     sums: dict[tuple[int, int, int], Numbers] = {}
     # In order of their keys, not as they were met, so that sums come out the same to the bit.
-    for _, number in sorted(engine.survival.known.items()):
-        if number < 0:
+    for _, number in (*sorted(survival.known.items()), *_rated(survival)):
+        if number < 0 or not gathered.row(int(survival.records[number]["living"]), _points(survival, number)).any():
             continue
-        record = engine.survival.records[number]
-        if not gathered.row(int(record["living"]), int(record["over"]) + 1).any():
-            continue
-        rule, age, _ = engine.survival.entered[number]
-        slopes, relative = _of_record(engine.survival, number, gathered)
-        document, rates = engine.basis.document.mortality.rule[rule], engine.basis.rates[rule]
-        select = _select_years(rates)
-        for place in np.flatnonzero(slopes).tolist():
-            key = rule, int(np.floor(age + document.added_years)) + place, place if place < select else -1
+        entered = survival.entered[number]
+        found = _of_record(survival, number, gathered)
+        select = _select_years(survival.basis.rates[entered.rule])
+        for place in np.flatnonzero(found.slopes).tolist():
+            key = entered.rule, int(found.ages[place]), place if place < select else -1
             sums.setdefault(key, np.zeros(2))
-            sums[key] += (slopes[place], relative[place])
+            sums[key] += (found.slopes[place], found.relative[place])
     rules = engine.basis.document.mortality.rule
     return [
-        Slope("mortality", rule + 1, rules[rule].title, age, duration, *found.tolist())
-        for (rule, age, duration), found in sorted(sums.items())
+        Slope("mortality", rule + 1, rules[rule].title, age, duration, *figures.tolist())
+        for (rule, age, duration), figures in sorted(sums.items())
     ]
 
 
-def _of_record(survival: Survival, number: int, gathered: Gathering) -> tuple[Numbers, Numbers]:
-    """Slopes to the table's rates of the years from entry on, for a change of 1 and in proportion."""
-    record, (position, age, year) = survival.records[number], survival.entered[number]
-    rule, rates = survival.basis.document.mortality.rule[position], survival.basis.rates[position]
-    scale = survival.basis.scales[position]
-    years, over, passed = int(record["years"]), int(record["over"]), float(record["passed"])
-    q = yearly_rates(rule, rates, age, scale, year)
-    hung = gathered.row(int(record["living"]), over + 1)
-    since = passed + np.arange(over + 1) / 12 if passed else np.arange(over + 1) / 12
+def _rated(survival: Survival) -> list[tuple[tuple[int, Key], int]]:
+    """Records of rated lives in order of what they were made from; ratings are numbered as they are met."""
+    named = [((code, survival.ratings.keys[rating - 1]), record) for (code, rating), record in survival.rated.items()]
+    return sorted(named)
+
+
+def _points(survival: Survival, number: int) -> int:
+    return int(survival.records[number]["over"]) + 1
+
+
+class _Found(NamedTuple):
+    """Of the years from commencement on: ages at which the table is read, slopes to its rates, and in proportion."""
+
+    ages: Numbers
+    slopes: Numbers
+    relative: Numbers
+
+
+def _of_record(survival: Survival, number: int, gathered: Gathering) -> _Found:
+    record, entered = survival.records[number], survival.entered[number]
+    years, passed = int(record["years"]), float(record["passed"])
+    if passed and len(entered.pieces) > 1:
+        raise DocumentError(
+            "no slopes of ratings for a time where years of age begin between anniversaries; "
+            "take another 'age' of mortality than 'exact'"
+        )
+    q = survival.pool.row(int(record["yearly"]), years).copy()
+    hung = gathered.row(int(record["living"]), _points(survival, number))
+    since = passed + np.arange(len(hung)) / 12
     whole = np.floor(since + 1e-12 * (passed == 0)).astype(np.int64)
     share = np.where(whole < years, since - whole, 1.0)
     whole = np.minimum(whole, years - 1)
@@ -117,25 +140,34 @@ def _of_record(survival: Survival, number: int, gathered: Gathering) -> tuple[Nu
         slopes = at_points - after / (1 - q)
     slopes[0] -= hung.sum() * _log_slope(q[:1], np.array([passed]), survival.fractions)[0]
     slopes += gathered.passed(int(record["yearly"]), years)
-    factor, source = _factors(rule, rates, age, scale, year, years)
-    free = (q < 1) & (factor * source + rule.extra < 1)
-    slopes = np.where(free, slopes * factor, 0.0)
-    return slopes, slopes * source
+    ages, factor, source = _factors(survival, entered, years)
+    slopes = np.where(q < 1, slopes * factor, 0.0)
+    return _Found(ages, slopes, slopes * source)
 
 
-def _factors(
-    rule: MortalityRule, rates: Rates, age: float, scale: Any, year: int, years: int
-) -> tuple[Numbers, Numbers]:
-    """What the table's rates are multiplied with, and those rates; nothing in the year that closes a table."""
-    entered = age + rule.added_years
-    entry = entered if isinstance(rates, Law) else int(entered)
-    known = years - (rule.close or rates.closed)
-    factor, source = np.zeros(years), np.zeros(years)
-    source[:known] = rates.rates_from(entry, known) if known else []  # type: ignore[attr-defined]
-    factor[:known] = rule.multiple
-    if scale is not None:
-        factor[:known] *= scale.cohort(int(np.floor(entered)), year, known)
-    return factor, source
+def _factors(survival: Survival, entered: Entered, years: int) -> tuple[Numbers, Numbers, Numbers]:
+    """Ages at which the table is read, what its rates are multiplied with, and those rates.
+
+    The factor is 0 in the year that closes a table and where the rate is held at 1.
+    """
+    rule, rates = survival.basis.document.mortality.rule[entered.rule], survival.basis.rates[entered.rule]
+    scale = survival.basis.scales[entered.rule]
+    ages, factor, source = np.zeros(years), np.zeros(years), np.zeros(years)
+    ends = [begin for begin, _ in entered.pieces[1:]] + [years]
+    for (begin, rating), end in zip(entered.pieces, ends, strict=True):
+        age = entered.age + rule.added_years + rating.added_years
+        known = min(max(0, int(np.ceil(rates.final_age - age))) - (rule.close or rates.closed), end)
+        if known <= begin:
+            continue
+        here = slice(begin, known)
+        read = rates.rates_from(age if isinstance(rates, Law) else int(age), known)  # type: ignore[attr-defined]
+        ages[here] = np.floor(age) + np.arange(begin, known)
+        source[here] = read[begin:]
+        factor[here] = rule.multiple * rating.multiple
+        if scale is not None:
+            factor[here] *= scale.cohort(int(np.floor(age)), entered.year, known)[begin:]
+        factor[here] *= factor[here] * source[here] + (rule.extra + rating.extra) < 1
+    return ages, factor, source
 
 
 def _log_slope(q: Numbers, share: Numbers, rule: int) -> Numbers:

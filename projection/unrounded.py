@@ -10,15 +10,13 @@ import pyarrow as pa
 from numpy.typing import NDArray
 
 from assumptions.basis import Basis
-from portfolios.checks import needed_columns, number_columns
 from portfolios.chunk import Chunk
 from portfolios.designs import Design
 from portfolios.exception_rows import exception_rows
 from portfolios.extract import open_extract
 
-from .basis_columns import until_columns
+from .basis_columns import needs_of
 from .engine import Engine
-from .lives import rule_columns
 from .settings import Settings
 
 Numbers = NDArray[np.float64]
@@ -61,12 +59,9 @@ class Valuer:
         in_force: Collection[str] = ("in force",),
     ) -> None:
         extract = open_extract(columns)
-        numbers = [*number_columns(designs), *until_columns(basis)]
-        asked = rule_columns(basis, designs, extract.column_names)
-        self.needed = needed_columns(designs, [*numbers, *asked])
-        extract.need(self.needed, numbers=numbers)
-        kinds = {column: str(extract.column_kind(column)) for column in asked}
-        self.engine = Engine(designs, basis, settings, self.needed, kinds, in_force)
+        needs = needs_of(extract, designs, [basis])
+        self.needed = needs.needed
+        self.engine = Engine(designs, basis, settings, needs.needed, needs.kinds, in_force)
 
     def value(self, policies: pa.Table) -> Unrounded:
         """Value a table of policies. Identifiers need not be unique."""

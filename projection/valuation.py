@@ -14,7 +14,6 @@ from types import MappingProxyType
 import pyarrow as pa
 
 from assumptions.basis import Basis
-from portfolios.checks import needed_columns, number_columns
 from portfolios.chunk import Chunk
 from portfolios.columns import BY_NAME
 from portfolios.designs import Design
@@ -22,14 +21,13 @@ from portfolios.exception_rows import no_exceptions
 from portfolios.extract import CHUNK_ROWS, Extract
 from portfolios.identifiers import find_duplicates
 
-from .basis_columns import until_columns
+from .basis_columns import needs_of
 from .basis_names import OWN, column_on
 from .chunk_results import ChunkResults
 from .documents import DocumentError
 from .engine import Engine
 from .gate import RunStopped, check_gate
 from .groups import Groups, check_names
-from .lives import rule_columns
 from .plain_check import Sample
 from .results import MONEY_COLUMNS, OnBasis, Outcome, PolicySink, Progress, SampleCheck, no_progress
 from .settings import Settings
@@ -94,17 +92,11 @@ class _Valuation:
         self.extract, self.designs, self.bases, self.settings, self.plan = extract, designs, bases, settings, plan
         check_names(plan.group_by, [name for name in bases if name != OWN])
         self.group_by = plan.group_by
-        numbers = [*number_columns(designs), *(column for one in bases.values() for column in until_columns(one))]
-        looked_at = [column for one in bases.values() for column in rule_columns(one, designs, extract.column_names)]
-        asked = list(dict.fromkeys(looked_at))
-        self.needed = needed_columns(designs, [*numbers, *asked, *self.group_by])
-        extract.need(self.needed, numbers=numbers)
         self.amounts = [name for name in extract.column_names if name in BY_NAME and BY_NAME[name].kind == "money"]
-        self.needed = tuple(dict.fromkeys([*self.needed, *self.amounts]))
-        extract.need(self.needed, numbers=numbers)
+        needs = needs_of(extract, designs, bases.values(), [*self.group_by, *self.amounts])
+        self.needed, self.kinds = needs.needed, needs.kinds
         self.groups = Groups(self.group_by)
         self.seconds: dict[str, float] = {}
-        self.kinds = {column: str(extract.column_kind(column)) for column in asked}
         self.read = 0
 
     def run(self, sink: PolicySink | None, progress: Progress) -> Outcome:

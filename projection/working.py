@@ -8,9 +8,10 @@ from itertools import groupby
 from typing import Any, Literal
 
 from assumptions.basis import Basis
+from assumptions.inflation import Inflation
 from assumptions.interest import FORMS
 from assumptions.laws import Law
-from assumptions.mortality import MortalityRule, TableFile
+from assumptions.mortality import STANDARD, MortalityRule, TableFile
 from portfolios.designs import Design
 
 from .plain import Payment, PlainValue, plain_value
@@ -105,6 +106,7 @@ def _mortality(basis: Basis, value: PlainValue) -> Iterator[tuple[str, str]]:
     yield "age at commencement", f"{float(value.age):.6f}, {part.age}"
     yield "rule", f"{number}{_titled(rule.title)}: {_source(rule)}"
     yield "rate", _rate(value.life)
+    yield from _rating(value.life)
     yield "fractions of a year", part.fractions
     both = "" if value.second is None else ", of both lives but for a common shock"
     yield "survival to valuation", f"L(T) = {value.survival:.12f} from commencement{both}"
@@ -117,6 +119,7 @@ def _second(policy: Mapping[str, Any], basis: Basis, value: PlainValue) -> Itera
     yield "age at commencement", f"{float(value.second.rates.entry + value.second.rates.offset):.6f}"
     yield "rule", _source(value.second.rates.rule)
     yield "rate", _rate(value.second)
+    yield from _rating(value.second)
     shock = basis.document.mortality.common_shock
     both = "l1 x l2" if not shock else f"l1 x l2 x exp({shock:g} x t), with the common shock"
     yield "both live", f"{both}; l1 and l2 survival of each life from the valuation date"
@@ -129,6 +132,15 @@ def _rate(life: Survival) -> str:
     improved = "" if scale is None else f" x improvement from {scale.document.base_year}, listed with it"
     close = "; 1 at the last age" if life.rates.closed else ""
     return f"q = min(1, {rule.multiple:g} x table{improved} + {rule.extra:g}); age {rule.added_years:+d} years{close}"
+
+
+def _rating(life: Survival) -> Iterator[tuple[str, str]]:
+    """What the life's own rating does to that, one line for each piece of time."""
+    for rates in life.pieces:
+        if rates.rating != STANDARD or rates.begun:
+            multiple, years, extra = rates.rating
+            said = "standard" if rates.rating == STANDARD else f"{multiple:g} x, {extra:+g}, age {years:+d} years"
+            yield "rating", f"from year {rates.begun}: {said}"
 
 
 def _titled(title: str) -> str:
@@ -180,8 +192,17 @@ def _other_rules(basis: Basis, value: PlainValue) -> Iterator[tuple[str, str]]:
         later = f"{figures.first_year:g} in the first policy year, then {figures.later_years:g}"
         growth = ""
         if item.inflation is not None:
-            growth = f", growing {item.inflation.rate:g} a year from {item.inflation.from_}"
+            growth = f", growing {_growth(item.inflation)}"
         yield f"expense '{plain(item.name)}'", f"rule {number}, per {item.per}: {later}{growth}"
+
+
+def _growth(inflation: str | Inflation) -> str:
+    if isinstance(inflation, str):
+        return f"with '{plain(inflation)}'"
+    if inflation.rate is not None:
+        return f"{inflation.rate:g} a year from {inflation.from_}"
+    how = f"by {plain(inflation.table)}" if inflation.table else f"by {len(inflation.rates or ())} rates in turn"
+    return f"{how} from {inflation.from_}"
 
 
 def _lapses(value: PlainValue) -> list[str]:

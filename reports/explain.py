@@ -9,13 +9,14 @@ from pathlib import Path
 from typing import Any
 
 from assumptions.basis import Basis
-from portfolios.checks import Checks, needed_columns
+from portfolios.checks import Checks
 from portfolios.chunk import Chunk
 from portfolios.designs import Design
 from portfolios.exception_rows import exception_rows, sentence
 from portfolios.extract import Extract
 from portfolios.identifiers import Duplicates
-from projection.lives import rule_columns
+from projection.basis_columns import needs_of
+from projection.lives import ratings_used
 from projection.plain_faults import NotValued
 from projection.settings import Settings
 from projection.working import working
@@ -79,11 +80,10 @@ def look_up(run: Path, policy_id: str, basis: str = "") -> Asked:
     if basis not in known:
         choice = ", ".join(f"'{name}'" for name in prepared.further) or "none but its own"
         raise ExplainError(f"{run}: the run has no further basis '{basis}'; it has {choice}")
-    asked = rule_columns(known[basis], prepared.designs, prepared.extract.column_names)
-    needed = needed_columns(prepared.designs, asked)
-    prepared.extract.need(needed)
+    needed = needs_of(prepared.extract, prepared.designs, [known[basis]]).needed
+    ratings = ratings_used(known[basis], prepared.designs, prepared.extract.column_names)
     policy = find_policy(prepared.extract, policy_id)
-    place = _checked(prepared, policy, needed, policy_id)
+    place = _checked(prepared, policy, needed, ratings, policy_id)
     return Asked(policy.policy(0), prepared.designs[place], prepared, known[basis])
 
 
@@ -106,10 +106,12 @@ def find_policy(extract: Extract, policy_id: str) -> Chunk:
     return found[0]
 
 
-def _checked(prepared: Prepared, policy: Chunk, needed: tuple[str, ...], policy_id: str) -> int:
+def _checked(
+    prepared: Prepared, policy: Chunk, needed: tuple[str, ...], ratings: tuple[str, ...], policy_id: str
+) -> int:
     """Return the position of the policy's design. Raises ExplainError where the checks of a run object."""
     document = prepared.document
-    checks = Checks(prepared.designs, document.valuation_date, document.in_force, Duplicates(), needed)
+    checks = Checks(prepared.designs, document.valuation_date, document.in_force, Duplicates(), needed, ratings)
     checked = checks.check(policy)
     if checked.reason[0]:
         (row,) = exception_rows(policy, checked, needed).to_pylist()

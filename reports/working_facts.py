@@ -12,6 +12,7 @@ from typing import Any
 from pydantic import BaseModel
 
 from assumptions.basis import Basis
+from assumptions.mortality import STANDARD
 from portfolios.columns import BY_NAME
 from portfolios.designs import Design
 from projection.plain import NotValued, Payment, PlainValue, plain_value
@@ -95,6 +96,11 @@ def rule_rows(working: Working) -> Iterator[Row]:
         number = 1 + next(i for i, other in enumerate(document.mortality.rule) if other is rule)
         yield from _keys(place, number, rule)
         yield place, number, "rate of the last age", 1 if life.rates.closed else "as the table"
+        for rates in life.pieces:
+            if rates.rating != STANDARD or rates.begun:
+                multiple, years, extra = rates.rating
+                said = f"factor {multiple:g}, added years {years:+d}, flat extra {extra:g} a year"
+                yield place, number, f"rating from year {rates.begun}", said
     if document.lapse:
         yield from _keys("lapse", None, document.lapse, {"rule"})
         yield from _keys("lapse", used.lapse, document.lapse.rule[used.lapse - 1])

@@ -7,6 +7,7 @@ from typing import Any
 
 import numpy as np
 import pytest
+import table_writing as xml
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from pydantic import ValidationError
@@ -113,3 +114,79 @@ def test_factors_of_all_ages_and_years_are_made_once(tmp_path: Path) -> None:
     made = scale(tmp_path, BY_YEAR)
     assert made._factors is made._factors
     assert np.all(made._factors[:, 0] == 1)
+
+
+KIND = "Projection Scale"
+"""What an XTbML file of scales says that it holds."""
+
+
+def xml_scale(folder: Path, text: str, table: Any = "table.xml", **keys: Any) -> Scale:
+    """A scale from the text of an XTbML file."""
+    xml.save(folder, text)
+    return read_scale(Improvement.model_validate({"table": table, "base_year": 2015, **keys}), folder)
+
+
+def by_year(rows: dict[int, dict[int, object]], swapped: bool = False) -> str:
+    axes = [xml.axis("Age"), xml.axis("Year", scale="Ordinal Date")]
+    return xml.table("".join(axes[::-1] if swapped else axes), xml.grid(rows), "by year")
+
+
+def test_xtbml_by_age_and_by_age_and_calendar_year(tmp_path: Path) -> None:
+    same = scale(tmp_path, BY_YEAR)
+    rows: dict[int, dict[int, object]] = {60: {2016: 0.02, 2017: 0.01}, 61: {2016: 0.03, 2017: 0.015}}
+    made = xml_scale(tmp_path, xml.document(by_year(rows), kind=KIND))
+    assert (made.first_age, made.years) == (same.first_age, same.years)
+    assert np.array_equal(made.values, same.values)
+    turned: dict[int, dict[int, object]] = {year: {age: rows[age][year] for age in rows} for year in (2016, 2017)}
+    assert np.array_equal(xml_scale(tmp_path, xml.document(by_year(turned, True), kind=KIND)).values, same.values)
+    alone = xml_scale(tmp_path, xml.document(xml.by_age({60: 0.02, 61: 0.03}), kind=KIND))
+    assert alone.factor(61, 2017) == pytest.approx(0.97**2, rel=1e-15)
+
+
+def test_one_of_several_scales_of_a_file(tmp_path: Path) -> None:
+    text = xml.document(xml.by_age({60: 0.02}, "Men"), xml.by_age({60: 0.01}, "Women"), kind=KIND)
+    for wanted in (2, "Women"):
+        assert xml_scale(tmp_path, text, {"file": "table.xml", "table": wanted}).yearly(60, 2016) == 0.01
+    with pytest.raises(TableError, match="2 tables; name one"):
+        xml_scale(tmp_path, text)
+    with pytest.raises(TableError, match="only an XTbML file holds several tables"):
+        scale(tmp_path, BY_YEAR, table={"file": "scale.csv", "table": 1})
+
+
+def test_yearly_changes_have_the_other_sign(tmp_path: Path) -> None:
+    made = scale(tmp_path, "age,rate\n60,-0.02\n61,0.01\n", holds="yearly changes")
+    assert made.factor(60, 2017) == pytest.approx(0.98**2)
+    assert made.factor(61, 2016) == pytest.approx(1.01)
+
+
+@pytest.mark.parametrize(
+    ("text", "said"),
+    [
+        (xml.document(xml.by_age({60: 0.02})), "a table of 'Insured Lives Mortality' holds no scale of improvement"),
+        (xml.document(xml.by_age({60: 0.02, 62: 0.02}), kind=KIND), "age 62 follows age 60"),
+        (xml.document(xml.by_age({60: 0.3}), kind=KIND), "age 60: 0.3 does not lie between -0.2 and 0.2"),
+        (xml.document(by_year({60: {2016: 0.02, 2018: 0.01}}), kind=KIND), "the calendar years leave some out"),
+        (
+            xml.document(by_year({60: {2016: 0.02, 2017: 0.01}, 61: {2016: 0.02}}), kind=KIND),
+            "no figure for age 61, year 2017",
+        ),
+        (
+            xml.document(by_year({60: {2016: 0.02, 2017: 0.5}}), kind=KIND),
+            "age 60, year 2017: 0.5 does not lie between",
+        ),
+        (xml.document(by_year({60: {1: 0.02, 2: 0.01}}), kind=KIND), "by age and duration, not by age"),
+    ],
+)
+def test_wrong_xtbml_files(tmp_path: Path, text: str, said: str) -> None:
+    with pytest.raises(TableError, match=said):
+        xml_scale(tmp_path, text)
+
+
+def test_the_digest_knows_a_scale_of_an_xtbml_file(tmp_path: Path) -> None:
+    def files(table: Any) -> dict[str, str]:
+        xml.save(tmp_path, xml.document(xml.by_age({60: 0.02}), kind=KIND))
+        rule = {"table": {"law": "de Moivre", "omega": 110}, "improvement": {"table": table, "base_year": 2015}}
+        return prepare_basis({"mortality": {"rule": [rule]}, "interest": {"rule": [{"flat": 0.02}]}}, tmp_path).files
+
+    assert files("table.xml") == files({"file": "table.xml", "table": 1})
+    assert "table.xml" in files("table.xml")

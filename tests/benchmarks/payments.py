@@ -145,14 +145,13 @@ class Lines:
         return Line(stream.name, PARTS[stream.part], base.schedule, base.amount * stream.share, rows, which, own=False)
 
     def _expenses(self, lines: list[Line], basis: Basis, settings: Settings, rules: Rules) -> None:
-        for item in basis.document.expense:
+        for item, prices in zip(basis.document.expense, basis.expense_prices, strict=True):
             fit = rules.fits(item.rule)
             figures = np.array([[rule.first_year] * 12 + [rule.later_years] * (LONGEST - 12) for rule in item.rule])
             inflating = None
-            if item.inflation:
-                year, month = settings.valuation_date.year, settings.valuation_date.month - 1
-                months = [divmod(12 * year + month + n, 12) for n in range(LONGEST)]
-                inflating = np.array([item.inflation.factor(y, m + 1) for y, m in months])
+            if prices is not None:
+                today = settings.valuation_date
+                inflating = prices.levels(np.maximum(prices.months(today.year, today.month) + np.arange(LONGEST), 0))
             ones = np.ones(self.count)
             if item.per == "policy":
                 own = [self.schedules[one.schedule] for one in lines if one.own]

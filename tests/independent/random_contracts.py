@@ -48,6 +48,12 @@ COLUMNS = {
     "annuity_frequency": pa.int64(),
     "escalation": pa.float64(),
     **dict.fromkeys(MONEY, pa.float64()),
+    **{
+        f"{life}{name}{time}": pa.float64()
+        for life in ("", "second_")
+        for name in ("rating_multiple", "rating_age", "rating_extra")
+        for time in ("", "_years")
+    },
 }
 
 
@@ -85,7 +91,15 @@ def write_tables(folder: Path) -> None:
             for age in range(40, 80)
         ]
         (folder / f"{name}.csv").write_text("\n".join(["age,2019,2020,2021,2022", *rows]) + "\n")
+    row = "".join(f'<Y t="{2016 + n}">{0.02 - 0.002 * n!r}</Y>' for n in range(5))
+    cells = [f'<Axis t="{age}"><Axis>{row}</Axis></Axis>' for age in range(45, 75)]
+    (folder / "improving.xml").write_text(
+        '<XTbML><ContentClassification><ContentType tc="22">Projection Scale</ContentType></ContentClassification>'
+        '<Table><MetaData><AxisDef id="Age"><AxisName>Age</AxisName></AxisDef><AxisDef id="Year">'
+        f"<AxisName>Year</AxisName></AxisDef></MetaData><Values>{''.join(cells)}</Values></Table></XTbML>"
+    )
     (folder / "leaving.csv").write_text("year,rate\n1,0.15\n2,0.08\n3,0\n4,0.03\n")
+    (folder / "inflation.csv").write_text("year,rate\n2026,0.04\n2027,0.025\n2028,-0.01\n2029,0.03\n2030,0.02\n")
     (folder / "spot.csv").write_text("maturity,rate\n0.5,0.01\n1,0.015\n2,0.02\n7.25,0.03\n30,0.028\n")
 
 
@@ -266,7 +280,8 @@ def improvements(draw: Draw) -> dict[str, Any]:
     if chance(draw, 4):
         return {"table": "reducing.csv", "base_year": 2018, "holds": "reduction factors"}
     made: dict[str, Any] = {"base_year": one_of(draw, 2018, 2015, 2030)}
-    made |= one_of(draw, {"table": "improving.csv"}, {"table": "improving_2d.csv"}, {"rate": 0.012}, {"rate": -0.01})
+    files = ("improving.csv", "improving_2d.csv", "improving.xml")
+    made |= one_of(draw, *({"table": name} for name in files), {"rate": 0.012}, {"rate": -0.01})
     if chance(draw, 3):
         made["multiple"] = one_of(draw, 0.5, 2.0, 0.0)
     if chance(draw, 2):
@@ -315,14 +330,17 @@ def expenses(draw: Draw, number: int) -> dict[str, Any]:
     first, later = one_of(draw, (25.0, 30.0), (0.5, 0.02), (0.0, 7.0), (10.0, 0.0))
     item: dict[str, Any] = {"name": f"item {number}", "per": per}
     if per in ("policy", "claim") and not chance(draw, 3):
-        item["inflation"] = {
-            "rate": one_of(draw, 0.025, -0.01),
-            "from": one_of(draw, date(2026, 1, 1), date(2031, 6, 30)),
-        }
+        item["inflation"] = one_of(draw, "prices", {**draw(inflations())})
     if per == "policy":
         item["a_year"] = one_of(draw, 12, 4, 1, 2)
     item["rule"] = draw(ruled(st.just({"first_year": first, "later_years": later})))
     return item
+
+
+@st.composite
+def inflations(draw: Draw) -> dict[str, Any]:
+    forms = ({"rate": 0.025}, {"rate": -0.01}, {"rates": [0.05, 0.03, -0.01, 0.02]}, {"table": "inflation.csv"})
+    return {**one_of(draw, *forms), "from": one_of(draw, date(2026, 1, 1), date(2031, 6, 30), date(2019, 9, 15))}
 
 
 @st.composite
@@ -334,8 +352,10 @@ def bases(draw: Draw, folder: Path, step: str) -> Basis:
             "fractions": one_of(draw, "constant force", "uniform deaths", "Balducci"),
             "rule": draw(ruled(mortality_rules(age == "exact"), st.just({"life": "second"}))),
             "common_shock": one_of(draw, 0.0, 0.001),
+            "ratings": chance(draw, 2),
         },
         "interest": {"rule": draw(ruled(interest_rules()))},
+        "inflation": [{"name": "prices", **draw(inflations())}],
         "expense": [draw(expenses(number)) for number in range(draw(st.integers(0, 3)))],
         "claims": {
             "paid": one_of(draw, "end of step", "middle of step", {"delay_months": one_of(draw, 2.5, 0, 1, 14)})
@@ -391,10 +411,28 @@ def policies(draw: Draw, number: int, codes: list[str], today: date) -> dict[str
         "sum_assured": one_of(draw, 1_000.0, 5_000.0, 99_999.99),
         "annuity_pa": one_of(draw, 600.0, 12_000.0),
         "loading": one_of(draw, 3.0, 0.0),
+        **(draw(ratings("")) if chance(draw, 2) else {}),
+        **(draw(ratings("second_")) if chance(draw, 3) else {}),
     }
     if chance(draw, 12):
         _spoil(draw, policy, today)
     return policy
+
+
+@st.composite
+def ratings(draw: Draw, life: str) -> dict[str, Any]:
+    """What a policy says of a life's rating; most of it is missing, some of it changes nothing, some is no good."""
+    values = {
+        "multiple": one_of(draw, None, 1.5, 3.0, 1.0, 0.5) if not chance(draw, 20) else one_of(draw, 0.0, 20.0, -1.0),
+        "age": one_of(draw, None, 3.0, -2.0, 0.0, 10.0) if not chance(draw, 20) else one_of(draw, 40.0, -40.0, 2.5),
+        "extra": one_of(draw, None, 5.0, 0.0, 12.5) if not chance(draw, 20) else one_of(draw, 500.0, 501.0),
+    }
+    made: dict[str, Any] = {}
+    for name, value in values.items():
+        made[f"{life}rating_{name}"] = value
+        years = one_of(draw, None, 1.0, 5.0, 10.0, 0.0) if not chance(draw, 20) else one_of(draw, 120.0, 2.5, 30.0)
+        made[f"{life}rating_{name}_years"] = years
+    return made
 
 
 def _spoil(draw: Draw, policy: dict[str, Any], today: date) -> None:
@@ -431,5 +469,5 @@ def examples(draw: Draw, folder: Path, most: int = 20) -> Example:
     basis = draw(bases(folder, step))
     # A fixed number of policies: their cost is small beside that of the rest, and each is another chance.
     rows = [draw(policies(number, codes, today)) for number in range(most)]
-    columns = {name: pa.array([row[name] for row in rows], kind) for name, kind in COLUMNS.items()}
+    columns = {name: pa.array([row.get(name) for row in rows], kind) for name, kind in COLUMNS.items()}
     return Example(made, basis, Settings(today, step, due, 2), pa.table(columns))

@@ -18,7 +18,7 @@ from portfolios.designs import Design, Stream
 from portfolios.extract import open_extract
 from projection import loops
 from projection.engine import Engine
-from projection.lives import rule_columns
+from projection.lives import ratings_used, rule_columns
 from projection.plain import PlainValue
 from projection.tally import QUANTA
 
@@ -41,7 +41,8 @@ def by_engine(example: Example) -> tuple[list[dict[str, Any]], dict[Key, float],
     extract, document = open_extract(example.table), example.basis.document
     until = [rule.until for rule in document.lapse.rule] if document.lapse else []
     asked = rule_columns(example.basis, example.designs, extract.column_names)
-    needed = needed_columns(example.designs, [*(name for name in until if isinstance(name, str)), *asked])
+    rated = ratings_used(example.basis, example.designs, extract.column_names)
+    needed = needed_columns(example.designs, [*(name for name in until if isinstance(name, str)), *asked, *rated])
     kinds = {column: str(extract.column_kind(column)) for column in asked}
     engine = Engine(example.designs, example.basis, example.settings, needed, kinds)
     (chunk,) = extract.chunks(needed)

@@ -21,6 +21,7 @@ from assumptions.basis import Basis
 from assumptions.interest import Curve, curve_from, curve_of
 from assumptions.laws import Law
 from portfolios.extract import open_extract
+from projection.documents import DocumentError
 from projection.plain import NotValued, PlainValue, plain_value
 from projection.slope_run import slopes_of
 
@@ -164,9 +165,14 @@ def test_slopes_are_those_of_the_twin_moved(folder: Path, data: st.DataObject) -
     example = plain_woolhouse(data.draw(examples(folder)))
     kept, size = by_twin(example)
     assume(kept)
-    found = slopes_of(open_extract(example.table), example.designs, example.basis, example.settings, threads=1)
+    try:
+        found = slopes_of(open_extract(example.table), example.designs, example.basis, example.settings, threads=1)
+    except DocumentError as refusal:
+        assert "ratings for a time" in str(refusal)
+        assume(False)
     rows = [row for row in found.table.to_pylist() if row["part"] != "key rate" and abs(row["slope"]) > 1e-3 * size]
     for part in {row["part"] for row in rows}:
         row = data.draw(st.sampled_from([row for row in rows if row["part"] == part]))
         by_differences = differentiated(example, row, kept)
-        assert row["slope"] == pytest.approx(by_differences, rel=1e-8, abs=1e-8 * size), row
+        # What hangs on each number is rounded to 1e-8 of currency per policy, and then multiplied by its time.
+        assert row["slope"] == pytest.approx(by_differences, rel=1e-8, abs=1e-8 * size + 1e-5), row

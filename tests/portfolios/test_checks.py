@@ -95,6 +95,7 @@ def test_every_reason_of_the_checks_is_reached() -> None:
         Reason.IDENTIFIER_NOT_UNIQUE,
         Reason.IDENTIFIER_UNREADABLE,
         Reason.LIVES_UNKNOWN,  # in test_second_life
+        Reason.NUMBER_NOT_WHOLE,  # in tests/projection/test_ratings
     }
     assert reached == {reason for reason in Reason if reason < 20}
 

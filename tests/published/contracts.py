@@ -78,18 +78,20 @@ def value(
     step: str = "year",
     commenced: int = COMMENCED,
     expenses: list[dict[str, Any]] | None = None,
+    rating: dict[str, float] | None = None,
     **mortality: Any,
 ) -> float:
     """Reserve of one policy that commenced ``passed`` years ago, in the year ``commenced``, at an age.
 
     rates: what a mortality rule holds under 'table', or a list of rules; interest: a flat rate or what a rule
-    holds; other_age: of the second life at commencement; mortality: further keys of that part.
+    holds; other_age: of the second life at commencement; rating: columns of the policy's rating; mortality: further
+    keys of that part.
     """
     rules = rates if isinstance(rates, list) else [{"table": rates}]
     curve = interest if isinstance(interest, dict) else {"flat": interest}
     claims = mortality.pop("claims", "end of step")
     basis = {
-        "mortality": {"age": "last birthday", "rule": rules, **mortality},
+        "mortality": {"age": "last birthday", "ratings": rating is not None, "rule": rules, **mortality},
         "interest": {"rule": [curve]},
         "expense": [_scaled_expense(item) for item in expenses or []],
         "claims": {"paid": claims},
@@ -98,17 +100,18 @@ def value(
     design = {"code": "CASE", "states": states, "stream": [_scaled(n, stream) for n, stream in enumerate(streams)]}
     whole, months = int(passed), round(12 * (passed - int(passed)))
     on = date(commenced + whole, 1 + months, 1)
-    policy = _policy(age, other_age, commenced)
+    policy = _policy(age, other_age, commenced, rating or {})
     found = projection.value(policy, [design], basis, on, step=step, due="outstanding", sample=0)
     assert found.exceptions.num_rows == 0, found.exceptions.to_pylist()
     return float(found.policies["reserve"].to_pylist()[0]) / SCALE
 
 
-def _policy(age: int, other_age: int | None, commenced: int) -> pa.Table:
+def _policy(age: int, other_age: int | None, commenced: int, rating: dict[str, float]) -> pa.Table:
     columns: dict[str, Any] = {
         "policy_id": ["Q1"], "product": ["CASE"], "status": ["in force"], "birth_date": [date(commenced - age, 1, 1)],
         "commencement_date": [date(commenced, 1, 1)], "lives": ["both"],
         "second_birth_date": [date(commenced - (other_age or 30), 1, 1)],
+        **{column: [figure] for column, figure in rating.items()},
     }  # fmt: skip
     return pa.table(columns)
 

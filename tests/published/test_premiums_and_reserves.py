@@ -81,6 +81,13 @@ def test_b16_extra_mortality_in_one_year(tmp_path: Path) -> None:
     assert nearest_is_key("B16", found, "P")
 
 
+def test_b16_as_a_rating_for_a_year() -> None:
+    extra = 1000 * (0.015 - Law.model_validate(ILT).rate(60, 0))
+    rating = {"rating_extra": extra, "rating_extra_years": 1}
+    single, annual = (value([one], ILT, SIX, 60, rating=rating) for one in (insurance(), annuity()))
+    assert nearest_is_key("B16", 1000 * single / annual, "P")
+
+
 def test_b21_two_pay_term_with_expenses(tmp_path: Path) -> None:
     rules = rates_file(tmp_path, 40, [0.1, 0.15, 0.2])
     single = value([insurance(0, 3, 10_000)], rules, FIVE, 40)
