@@ -17,6 +17,7 @@ from portfolios.extract import Extract
 from portfolios.identifiers import Duplicates
 from projection.lives import need_ratings, ratings_used, rule_columns
 from projection.plain_faults import NotValued
+from projection.relative import check_indices
 from projection.settings import Settings
 from projection.working import working
 
@@ -75,6 +76,7 @@ def look_up(run: Path, policy_id: str) -> Asked:
     """Return a policy and what it is valued by. Raises what ``explain`` does."""
     prepared = prepare(run)
     asked = rule_columns(prepared.basis, prepared.designs, prepared.extract.column_names)
+    check_indices(prepared.designs, prepared.basis)
     need_ratings(prepared.basis, prepared.designs, prepared.extract.column_names)
     ratings = ratings_used(prepared.basis, prepared.designs, prepared.extract.column_names)
     needed = needed_columns(prepared.designs, [*asked, *ratings])
