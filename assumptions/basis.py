@@ -138,9 +138,13 @@ def prepare_basis(document: BasisDocument | dict[str, Any], folder: Path | str =
         )
         _seal(files, folder, [rule.table for rule in document.lapse.rule])
     curves = []
-    for rule in document.interest.rule:
+    for number, rule in enumerate(document.interest.rule, 1):
         held = rule.smith_wilson.spot if rule.smith_wilson is not None else rule.spot
-        curves.append(curve_of(rule, read_curve(folder / held) if isinstance(held, str) else held))
+        spots = read_curve(folder / held) if isinstance(held, str) else held
+        try:
+            curves.append(curve_of(rule, spots))
+        except (ValueError, ArithmeticError) as error:
+            raise ValueError(f"interest, rule {number}: {error}") from error
         _seal(files, folder, [held] if isinstance(held, str) else [])
     improvements = [rule.improvement for rule in document.mortality.rule]
     scales = tuple(read_scale(one, folder) if one else None for one in improvements)

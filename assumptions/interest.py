@@ -18,7 +18,7 @@ from pydantic import Field, field_validator, model_validator
 
 from .items import Item
 from .rules import Rule
-from .yield_curves import SmithWilson, Svensson, smith_wilson_curve, svensson_curve
+from .yield_curves import SmithWilson, Svensson, inline_spots, smith_wilson_curve, svensson_curve
 
 FORMS = ("flat", "forward", "spot", "svensson", "smith_wilson")
 """Keys of an interest rule, of which each has one."""
@@ -42,20 +42,11 @@ class InterestRule(Rule):
         None, description="spot rates by maturity, and an ultimate forward rate that the curve tends to"
     )
 
-    @field_validator("smith_wilson", mode="before")
-    @classmethod
-    def _inner_keys(cls, value: object) -> object:
-        if isinstance(value, dict) and isinstance(value.get("spot"), dict):
-            return {**value, "spot": {float(key): rate for key, rate in value["spot"].items()}}
-        return value
-
     @field_validator("spot", mode="before")
     @classmethod
     def _keys(cls, value: object) -> object:
         # TOML keys are text; maturities are numbers.
-        if isinstance(value, dict):
-            return {float(key): rate for key, rate in value.items()}
-        return value
+        return inline_spots(value) if isinstance(value, dict) else value
 
     @model_validator(mode="after")
     def _one_form(self) -> InterestRule:
@@ -170,11 +161,11 @@ def curve_from(
 def _check_spots(spot: dict[float, float]) -> list[float]:
     maturities = sorted(spot)
     if not maturities:
-        raise ValueError("a spot curve needs at least one maturity")
+        raise ValueError("key 'spot' is empty; a spot curve needs at least one maturity")
     if maturities[0] <= 0:
-        raise ValueError(f"maturity {maturities[0]:g} is not above 0")
+        raise ValueError(f"key 'spot': maturity {maturities[0]:g} is not above 0; give maturities in years")
     for maturity in maturities:
-        _check_rate(spot[maturity], f"the spot rate at maturity {maturity:g}")
+        _check_rate(spot[maturity], f"key 'spot': the rate at maturity {maturity:g}")
     return maturities
 
 

@@ -9,11 +9,11 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import Literal
+from typing import Any, Literal
 
 import numpy as np
 from numpy.typing import NDArray
-from pydantic import Field, model_validator
+from pydantic import Field, field_validator, model_validator
 
 from .items import Item
 
@@ -21,6 +21,15 @@ Years = NDArray[np.float64]
 
 HORIZON = 155.0
 """Years for which a curve must hold."""
+
+LAST_MATURITY = 150.0
+"""Years of the longest spot rate of a Smith-Wilson curve."""
+
+APART = 1 / 400
+"""Years that its maturities lie apart at least: less than a day."""
+
+MISSED = 1e-8
+"""How far the price of a spot may be missed, relative to it."""
 
 
 class Svensson(Item):
@@ -51,11 +60,37 @@ class SmithWilson(Item):
     tolerance: float = Field(0.0001, gt=0, le=0.01, description="distance at 'convergence'")
     least_alpha: float = Field(0.05, gt=0, le=1, description="smallest 'alpha' that may be found")
 
+    @field_validator("spot", mode="before")
+    @classmethod
+    def _maturities(cls, value: Any) -> Any:
+        return inline_spots(value) if isinstance(value, dict) else value
+
     @model_validator(mode="after")
     def _one_way(self) -> SmithWilson:
         if (self.alpha is None) == (self.convergence is None):
             raise ValueError("a Smith-Wilson curve needs one of 'alpha' and 'convergence'")
         return self
+
+
+def inline_spots(given: dict[Any, Any]) -> dict[float, float]:
+    """Return spot rates by maturity as a document holds them, whose keys are text.
+
+    Raises ValueError for a maturity that is no number above 0 or is there twice, and for a rate that is no number.
+    """
+    spots: dict[float, float] = {}
+    for key, rate in given.items():
+        try:
+            maturity = float(key)
+        except (TypeError, ValueError):
+            maturity = math.nan
+        if not 0 < maturity < math.inf:
+            raise ValueError(f"maturity '{key}' is no number of years above 0; write them like \"10\" = 0.03")
+        if maturity in spots:
+            raise ValueError(f"maturity '{key}' is there twice; give each once")
+        if isinstance(rate, bool) or not isinstance(rate, int | float):
+            raise ValueError(f"the spot rate at maturity '{key}' is {rate!r}; it should be a number")
+        spots[maturity] = float(rate)
+    return spots
 
 
 @dataclass(frozen=True)
@@ -137,7 +172,10 @@ def svensson_curve(parameters: Svensson) -> SvenssonCurve:
     curve = SvenssonCurve(parameters)
     for t in (n / 4 for n in range(1, int(4 * HORIZON))):
         if curve.spot(t) <= -0.5:
-            raise ValueError(f"svensson: the spot rate at maturity {t:g} is not above -0.5; look at the parameters")
+            raise ValueError(
+                f"key 'svensson' gives the spot rate {curve.spot(t):.4g} at {t:g} years; it must lie above -0.5: "
+                "correct beta0 to beta3, tau1 and tau2"
+            )
     return curve
 
 
@@ -151,18 +189,36 @@ def smith_wilson_curve(document: SmithWilson, spot: dict[float, float]) -> Smith
         curve = _fitted(document, spot, document.alpha)
     else:
         curve = _fitted(document, spot, _least_alpha(document, spot))
+    u = np.array(sorted(spot))
+    missed = np.abs(curve.factors(u) * (1 + np.array([spot[maturity] for maturity in u.tolist()])) ** u - 1)
+    if not missed.max() <= MISSED:
+        raise ValueError(
+            f"key 'smith_wilson': with alpha {curve.alpha:g} the spot rates are met to {missed.max():.1g} only; "
+            "take a larger 'alpha', or maturities further apart"
+        )
     years = np.arange(0.0, HORIZON, 0.25)
     below = years[~(curve.factors(years) > 0)]
     if len(below):
-        raise ValueError(f"smith_wilson: the discount factor for {below[0]:g} years is not above 0; look at the spots")
+        raise ValueError(
+            f"key 'smith_wilson' gives no discount factor above 0 for {below[0]:g} years; correct the spot rates, or "
+            "take another 'alpha'"
+        )
     return curve
 
 
 def _fitted(document: SmithWilson, spot: dict[float, float], alpha: float) -> SmithWilsonCurve:
     u = np.array(sorted(spot))
+    if u[-1] > LAST_MATURITY or (len(u) > 1 and np.diff(u).min() < APART):
+        raise ValueError(
+            f"key 'spot': maturities of a Smith-Wilson curve are at most {LAST_MATURITY:g} years, and a day or more "
+            "apart; leave some out"
+        )
     intensity = math.log1p(document.ultimate)
     prices = np.array([(1 + spot[maturity]) ** -maturity for maturity in u.tolist()])
-    weights = np.linalg.solve(wilson(u[:, None], u[None, :], alpha, intensity), prices - np.exp(-intensity * u))
+    try:
+        weights = np.linalg.solve(wilson(u[:, None], u[None, :], alpha, intensity), prices - np.exp(-intensity * u))
+    except np.linalg.LinAlgError:
+        raise ValueError(f"key 'alpha' is {alpha:g}; no curve meets the spot rates; take a larger one") from None
     return SmithWilsonCurve(tuple(u.tolist()), tuple(weights.tolist()), alpha, intensity)
 
 
@@ -178,7 +234,9 @@ def distance(curve: SmithWilsonCurve, t: float) -> float:
 def _least_alpha(document: SmithWilson, spot: dict[float, float]) -> float:
     until = float(document.convergence or 0)
     if until <= max(spot):
-        raise ValueError(f"smith_wilson: 'convergence' at {until:g} years is not beyond the last spot, {max(spot):g}")
+        raise ValueError(
+            f"key 'convergence' is {until:g}; it must lie beyond the last spot rate, at {max(spot):g} years"
+        )
 
     def near(alpha: float) -> bool:
         return distance(_fitted(document, spot, alpha), until) <= document.tolerance
@@ -187,7 +245,10 @@ def _least_alpha(document: SmithWilson, spot: dict[float, float]) -> float:
     if near(low):
         return low
     if not near(high):
-        raise ValueError("smith_wilson: no 'alpha' up to 2 meets 'tolerance' at 'convergence'; allow more of either")
+        raise ValueError(
+            f"key 'tolerance' is {document.tolerance:g}; no 'alpha' up to 2 comes so near to the ultimate rate by "
+            f"'convergence', {until:g} years; allow more of either"
+        )
     while high - low > 1e-6:
         middle = (low + high) / 2
         low, high = (low, middle) if near(middle) else (middle, high)

@@ -35,8 +35,17 @@ class Share(_Part):
 class Increase(_Part):
     """Yearly increase of a stream's relative amount on each anniversary of its clock."""
 
-    rate: float | str = Field(description="yearly rate, or the extract column that holds it")
+    rate: float | str | None = Field(None, description="yearly rate, or the extract column that holds it")
+    index: str | None = Field(None, description="name of an inflation of the basis that the amount follows instead")
     kind: Literal["compound", "simple"] = Field("compound", description="on the last amount or on the first")
+
+    @model_validator(mode="after")
+    def _one_form(self) -> Increase:
+        if (self.rate is None) == (self.index is None):
+            raise ValueError("an increase needs one of 'rate' and 'index'")
+        if self.index is not None and self.kind == "simple":
+            raise ValueError("an increase by an 'index' is compound; leave 'kind' out")
+        return self
 
 
 Duration = float | str | AtAge

@@ -123,7 +123,8 @@ _WORDS = {
 }
 """What a value should be, by the kind of fault, where the checker's own words are for programmers."""
 
-_MEMBERS = {"str", "float", "int", "bool", "date", "AtAge", "Law", "TableFile", "ClaimDelay", "Band"}
+_MEMBERS = {"str", "float", "int", "bool", "date", "AtAge", "Law", "TableFile", "ClaimDelay", "Band", "ScaleFile"}
+_MEMBERS |= {"Inflation"}
 
 
 def _is_place(part: Any) -> bool:

@@ -30,7 +30,7 @@ from .curves import IMPOSSIBLE, NEVER, Discount, Finder, Keys, Persistency, Surv
 from .lives import on_two, ratings_used
 from .plans import Plans
 from .pool import Pool
-from .relative import RelativeRows
+from .relative import RelativeRows, check_indices
 from .settings import Settings
 from .slots import whole_months
 from .streams import LIFE, NO_SECOND, NOBODY, POLICY, SURVIVAL
@@ -79,11 +79,12 @@ class Engine:
     ) -> None:
         self.basis, self.settings, self.needed = basis, settings, needed
         today = settings.valuation_date
+        check_indices(designs, basis)
         ratings = ratings_used(basis, designs, needed)
         self.checks = Checks(designs, today, in_force, Duplicates(), needed, ratings)
         self.cells = Cells(designs, basis, kinds)
         self.pool = Pool()
-        self.plans = Plans(designs, basis, RelativeRows(self.pool, today.year, today.month))
+        self.plans = Plans(designs, basis, RelativeRows(self.pool, today.year, today.month, basis.prices))
         self.survival = Survival(basis, self.pool, rating_columns=ratings)
         self.persistency = Persistency(basis, settings, self.pool)
         self.discount = Discount(basis, settings, self.pool)

@@ -15,7 +15,7 @@ from assumptions.basis import Basis, BasisDocument, prepare_basis
 from portfolios.designs import Design
 from portfolios.extract import open_extract
 
-from .documents import check_document, read_basis, read_designs
+from .documents import DocumentError, check_document, read_basis, read_designs
 from .results import Outcome
 from .settings import Due, Settings, Step
 from .valuation import value_extract
@@ -110,5 +110,10 @@ def _basis(basis: BasisLike) -> Basis:
     if isinstance(basis, Basis):
         return basis
     if isinstance(basis, dict):
-        return prepare_basis(check_document(basis, BasisDocument, "basis"))
+        try:
+            return prepare_basis(check_document(basis, BasisDocument, "basis"))
+        except DocumentError:
+            raise
+        except (ValueError, OSError) as error:
+            raise DocumentError(f"basis: {error}") from error
     return read_basis(basis)

@@ -231,7 +231,7 @@ def _streams(
     policy: Policy, design: Design, basis: Basis, course: Course, rules: RulesUsed, commencement: date
 ) -> list[PolicyStream]:
     """Return the streams of the design and those that the expense items add, in this order."""
-    streams = design_streams(design, policy, course)
+    streams = design_streams(design, policy, course, basis.prices)
     ends = [end for stream in streams for end in _ends(stream, course)]
     if all(end is not None and end < course.u for end in ends):
         raise NotValued("matured", f"product {design.code}", None, "something is to come after the valuation date")

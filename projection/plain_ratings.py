@@ -6,7 +6,7 @@ import math
 from collections.abc import Mapping
 from typing import Any, NamedTuple
 
-from assumptions.mortality import Fractions, Rating
+from assumptions.mortality import STANDARD, Fractions, Rating
 
 from .plain_faults import NotValued
 from .plain_life import Months, Survival, YearlyRates
@@ -66,7 +66,14 @@ def _number(policy: Mapping[str, Any], column: str, low: float, high: float, who
 
 
 def survival_of(pieces: list[YearlyRates], fractions: Fractions) -> Survival:
-    """Return the survival of a life from the rates of each piece of time."""
+    """Return the survival of a life from the rates of each piece of time.
+
+    Raises NotValued where some piece lacks a rate from commencement to the end of the table.
+    """
+    for rates in pieces if len(pieces) > 1 or pieces[0].rating != STANDARD else ():
+        entered = rates.entry + rates.rule.added_years + rates.rating.added_years
+        for year in range(math.ceil(rates.rates.final_age - entered)):
+            rates._replace(begun=0).rate(year)
     lives = [(rates.begun, Survival(rates, fractions)) for rates in pieces]
     return lives[0][1] if len(lives) == 1 else RatedSurvival(lives)
 

@@ -7,10 +7,11 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from typing import Any, Literal
 
+from assumptions.inflation import Prices
 from portfolios.designs import AtAge, Design, Share, Stream
 from portfolios.states import States
 
-from .plain_dates import first_point_at_age
+from .plain_dates import first_point_at_age, month_after
 from .plain_faults import NotValued
 from .plain_lapse import TOLERANCE
 from .plain_lives import states_of
@@ -53,19 +54,24 @@ class PolicyStream:
         return 1 if (self.direction == "in") == (self.part == "premiums") else -1
 
 
-def design_streams(design: Design, policy: Policy, course: Course) -> list[PolicyStream]:
-    """Return the streams of a design for one policy, in the design's order.
+def design_streams(
+    design: Design, policy: Policy, course: Course, prices: Mapping[str, Prices] | None = None
+) -> list[PolicyStream]:
+    """Return the streams of a design for one policy, in the design's order; prices: of the basis, by name.
 
     Raises NotValued where a column of the policy makes no sense for its stream.
     """
     own = [stream for stream in design.stream if stream.of is None]
-    bases = {stream.name: _own(stream, states_of(stream, design), policy, course) for stream in own}
+    known = prices or {}
+    bases = {stream.name: _own(stream, states_of(stream, design), policy, course, known) for stream in own}
     return [
         bases[stream.name] if stream.of is None else _share_of(stream, bases[stream.of]) for stream in design.stream
     ]
 
 
-def _own(stream: Stream, states: States | None, policy: Policy, course: Course) -> PolicyStream:
+def _own(
+    stream: Stream, states: States | None, policy: Policy, course: Course, prices: Mapping[str, Prices]
+) -> PolicyStream:
     guaranteed = stream.guarantee is not None and course.lives.may_have_been(states)
     possible = course.lives.may_be(states) or guaranteed
     try:
@@ -83,7 +89,10 @@ def _own(stream: Stream, states: States | None, policy: Policy, course: Course) 
         amount /= terms.a_year
     amount *= stream.share
     rate = 0.0
-    if stream.increase is not None:
+    grown: Callable[[int], float] = _level
+    if stream.increase is not None and stream.increase.index is not None:
+        grown = _following(stream.increase.index, prices, policy, terms.clock)
+    elif stream.increase is not None:
         rate = number(policy, stream.increase.rate, f"stream '{stream.name}' needs a rate of increase")
     varies = stream.pattern or stream.increase or stream.decrease
     assert stream.direction is not None  # the design has checked it
@@ -94,9 +103,31 @@ def _own(stream: Stream, states: States | None, policy: Policy, course: Course) 
         terms,
         occasions(terms, course) if possible else [],
         lambda _: amount,
-        (lambda occasion: relative_amount(stream, terms, rate, occasion.month)) if varies else (lambda _: 1.0),
+        (lambda occasion: relative_amount(stream, terms, rate, occasion.month, grown)) if varies else (lambda _: 1.0),
         level=None if varies else amount,
     )
+
+
+def _level(year: int) -> float:
+    """No growth."""
+    return 1.0
+
+
+def _following(index: str, prices: Mapping[str, Prices], policy: Policy, clock: int) -> Callable[[int], float]:
+    """Return the growth up to a year of the clock (from 0) of an amount that follows prices on its anniversaries."""
+    if index not in prices:
+        raise ValueError(f"the basis has no inflation '{index}'")
+    known = prices[index]
+    begins = known.months(*month_after(policy["commencement_date"], clock))
+    # The last anniversary in or before the month of the prices, but none before the clock's start.
+    stated = 0
+    while begins + 12 * (stated + 1) <= 0:
+        stated += 1
+
+    def grown(year: int) -> float:
+        return 1.0 if year <= stated else known.level(begins + 12 * year) / known.level(begins + 12 * stated)
+
+    return grown
 
 
 def _share_of(stream: Stream, base: PolicyStream) -> PolicyStream:
@@ -176,10 +207,15 @@ def number(policy: Policy, value: float | str | None, need: str) -> float:
     return float(found)
 
 
-def relative_amount(stream: Stream, terms: Terms, rate: float, month: int) -> float:
-    """Return pattern x increase x decrease at a month from commencement; ``rate`` is that of the increase."""
+def relative_amount(
+    stream: Stream, terms: Terms, rate: float, month: int, grown: Callable[[int], float] = _level
+) -> float:
+    """Return pattern x increase x decrease at a month from commencement.
+
+    rate: of the increase; grown: growth with an index up to a year of the clock.
+    """
     year = max(0, (month - terms.clock) // 12)
-    relative = share_of_year(stream.pattern, year)
+    relative = share_of_year(stream.pattern, year) * grown(year)
     if stream.increase is not None:
         relative *= (1 + rate) ** year if stream.increase.kind == "compound" else 1 + rate * year
     if stream.decrease is not None and terms.end is not None:

@@ -2,20 +2,23 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Hashable
+from collections.abc import Callable, Hashable, Iterable, Mapping
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
+from assumptions.basis import Basis
 from assumptions.inflation import Prices
 from portfolios.chunk import Chunk
-from portfolios.designs import Increase, Share, Stream
+from portfolios.designs import Design, Increase, Share, Stream
 
 from .cells import distinct
+from .documents import DocumentError
 from .pool import ONES, Pool
 from .streams import LONGEST, WIDE
 
+Places = NDArray[np.int64]
 Pattern = tuple[tuple[int | None, float], ...]
 """Pieces of a pattern: years (None for ever) and share."""
 
@@ -28,7 +31,8 @@ class Shape:
     """What a row of relative amounts is made of, besides figures of the policy.
 
     rate: the yearly increase, or the column that holds it; by: step in months of a decrease to nothing, 0 for
-    none; from_commencement: whether the clock of pattern and increase starts at commencement.
+    none; from_commencement: whether the clock of pattern and increase starts at commencement; index: name of the
+    inflation that the amount follows.
     """
 
     pattern: Pattern = ()
@@ -36,11 +40,12 @@ class Shape:
     simple: bool = False
     by: int = 0
     from_commencement: bool = False
+    index: str | None = None
 
     @property
     def changing(self) -> bool:
         """Whether the row depends on figures of the policy."""
-        return isinstance(self.rate, str) or self.by > 0
+        return isinstance(self.rate, str) or self.by > 0 or self.index is not None
 
     def row(self, rate: float, start: int, length: int) -> NDArray[np.float64]:
         """Relative amounts at months 0, 1 ... of the clock, to LONGEST + 1.
@@ -63,11 +68,36 @@ def shape_of(stream: Stream) -> Shape:
     increase = stream.increase or Increase(rate=0.0)
     return Shape(
         pattern_of(stream.pattern),
-        increase.rate,
+        0.0 if increase.rate is None else increase.rate,
         increase.kind == "simple",
         {None: 0, "yearly": 12, "monthly": 1}[stream.decrease],
         stream.clock == "commencement",
+        increase.index,
     )
+
+
+def check_indices(designs: Iterable[Design], basis: Basis) -> None:
+    """Raise DocumentError where a stream follows an inflation that the basis does not have."""
+    for design in designs:
+        for stream in design.stream:
+            index = stream.increase.index if stream.increase else None
+            if index is not None and index not in basis.prices:
+                listed = ", ".join(f"'{name}'" for name in basis.prices) or "none"
+                raise DocumentError(
+                    f"design {design.code}, stream '{stream.name}', increase: key 'index' is '{index}', but the basis "
+                    f"'{basis.title}' has {listed}; add [[inflation]] with this name to the basis"
+                )
+
+
+def indexed(prices: Prices, begins: int) -> NDArray[np.float64]:
+    """Relative amounts that follow prices on anniversaries, by months of a clock.
+
+    begins: calendar months from the date of the prices to the clock's start. The last anniversary up to that date
+    keeps the amount as stated.
+    """
+    stated = max(0, -begins // 12)
+    levels = prices.levels(begins + 12 * np.arange(WIDE // 12 + 1))
+    return np.asarray(np.where(stated >= _MONTHS // 12, 1.0, (levels / levels[min(stated, WIDE // 12)])[_MONTHS // 12]))
 
 
 def pattern_of(pieces: list[Share] | None) -> Pattern:
@@ -94,8 +124,9 @@ class RelativeRows:
     year, month: of the valuation date, from which rows by calendar month start.
     """
 
-    def __init__(self, pool: Pool, year: int, month: int) -> None:
+    def __init__(self, pool: Pool, year: int, month: int, prices: Mapping[str, Prices] | None = None) -> None:
         self.pool, self.year, self.month = pool, year, month
+        self.prices = prices or {}
         self.known: dict[Hashable, int] = {}
         self.changing: dict[tuple[Shape, int, int], int] = {}
         """Numbers of the shapes that depend on the policy, with the columns of months of start and end (-1: none)."""
@@ -146,16 +177,34 @@ class RelativeRows:
             length = np.maximum(whole[end, policies] - begin, 0)
             begin = np.maximum(begin, 0) if shape.from_commencement else np.zeros_like(begin)
             codes = (codes * _WIDE + begin) * _WIDE + length
+        clocks = [0]
+        if shape.index is not None:
+            begun, which = np.unique(self._begins(shape, chunk, whole[start], order, policies), return_inverse=True)
+            clocks, codes = begun.tolist(), codes * len(begun) + which
         keys, inverse = distinct(codes)
         places = []
-        for code in keys.tolist():
+        for key in keys.tolist():
+            code, clock = divmod(key, len(clocks))
             rest, span = divmod(code, _WIDE) if shape.by else (code, 0)
             rate, first = divmod(rest, _WIDE) if shape.by else (rest, 0)
-            places.append(self._changing(shape, rates[rate], first, span))
+            places.append(self._changing(shape, rates[rate], first, span, clocks[clock]))
         return np.array(places, dtype=np.int32)[inverse]
 
-    def _changing(self, shape: Shape, rate: float, begin: int, length: int) -> int:
-        return self._place((shape, rate, begin, length), lambda: shape.row(rate, begin, length))
+    def _begins(self, shape: Shape, chunk: Chunk, starts: NDArray[np.int32], order: Places, policies: Places) -> Places:
+        """Calendar months from the date of the index's prices to the start of each policy's clock."""
+        prices = self.prices[str(shape.index)]
+        days = chunk.day("commencement_date")[order[policies]]
+        month = days.astype("datetime64[D]").astype("datetime64[M]").astype(np.int64)
+        if not shape.from_commencement:
+            month = month + np.maximum(starts[policies], 0)
+        return np.asarray(month + prices.months(1970, 1))
+
+    def _changing(self, shape: Shape, rate: float, begin: int, length: int, clock: int) -> int:
+        def build() -> NDArray[np.float64]:
+            row = shape.row(rate, begin, length)
+            return row if shape.index is None else row * indexed(self.prices[shape.index], clock)
+
+        return self._place((shape, rate, begin, length, clock), build)
 
     def _place(self, key: Hashable, build: Callable[[], NDArray[np.float64]]) -> int:
         if key not in self.known:

@@ -18,6 +18,7 @@ from portfolios.identifiers import Duplicates
 from projection.basis_columns import needs_of
 from projection.lives import ratings_used
 from projection.plain_faults import NotValued
+from projection.relative import check_indices
 from projection.settings import Settings
 from projection.working import working
 
@@ -80,6 +81,7 @@ def look_up(run: Path, policy_id: str, basis: str = "") -> Asked:
     if basis not in known:
         choice = ", ".join(f"'{name}'" for name in prepared.further) or "none but its own"
         raise ExplainError(f"{run}: the run has no further basis '{basis}'; it has {choice}")
+    check_indices(prepared.designs, known[basis])
     needed = needs_of(prepared.extract, prepared.designs, [known[basis]]).needed
     ratings = ratings_used(known[basis], prepared.designs, prepared.extract.column_names)
     policy = find_policy(prepared.extract, policy_id)

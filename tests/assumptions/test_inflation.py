@@ -152,3 +152,58 @@ def test_the_digest_knows_the_table(tmp_path: Path) -> None:
         return prepare_basis(BasisDocument.model_validate(document), tmp_path).digest
 
     assert digest(0.02) != digest(0.03)
+
+
+def index_linked(commenced: date, on: date, start: float, clock: str, growth: dict[str, Any]) -> list[float]:
+    """Cash flows by year of an annuity of 1,000,000 a year that follows an index, from the valuation date."""
+    law = {"law": "Makeham", "A": 1e-12, "B": 1e-300, "c": 1.05, "last_age": 119}
+    basis = {
+        "mortality": {"rule": [{"table": law}]}, "interest": {"rule": [{"flat": 0.0}]},
+        "inflation": [{"name": "prices", **growth}],
+    }  # fmt: skip
+    stream = {
+        "name": "annuity", "direction": "out", "amount": 1e6, "while": "alive", "from": start, "to": start + 5,
+        "a_year": 1, "increase": {"index": "prices"}, "clock": clock,
+    }  # fmt: skip
+    row = {
+        "policy_id": "Q1", "product": "P", "status": "in force", "birth_date": date(1990, 1, 1),
+        "commencement_date": commenced,
+    }  # fmt: skip
+    found = projection.value(pa.Table.from_pylist([row]), [{"code": "P", "stream": [stream]}], basis, on, sample=1)
+    assert found.outcome.sample.policies == 1
+    return [round(flow["amount"] / 1e6, 6) for flow in found.cash_flows.to_pylist()]
+
+
+def test_benefits_follow_an_index_on_their_anniversaries() -> None:
+    growth = {"rates": [0.05, 0.03], "from": date(2026, 11, 30)}
+    # In payment since March 2025; the amount is the one paid since March 2026, so that the rise of March 2027 covers a
+    # whole year: eight months at the first rate, held back in time, and four at it; the next ones eight and four.
+    level = [1.05, 1.05 * 1.05 ** (8 / 12) * 1.03 ** (4 / 12)]
+    level.append(level[-1] * 1.03)
+    found = index_linked(date(2025, 3, 15), date(2026, 11, 30), 0, "stream", growth)
+    assert found == pytest.approx(level, abs=1e-6)
+    # Deferred: from its start on by the clock of the stream, or also before by that of commencement.
+    stream = index_linked(date(2025, 3, 15), date(2026, 11, 30), 3, "stream", growth)
+    # March 2028 to March 2029 lies wholly in the second year from the date and later.
+    assert stream == pytest.approx([1.03**n for n in range(5)], abs=1e-6)
+    commencement = index_linked(date(2025, 3, 15), date(2026, 11, 30), 3, "commencement", growth)
+    assert commencement[0] == pytest.approx(level[1], abs=1e-6)
+    assert commencement[1] / commencement[0] == pytest.approx(1.03, abs=1e-6)
+
+
+def test_an_index_at_one_rate_is_an_increase_at_that_rate() -> None:
+    growth = {"rate": 0.03, "from": date(2020, 1, 1)}
+    found = index_linked(date(2026, 1, 1), date(2026, 1, 1), 0, "stream", growth)
+    assert found == pytest.approx([1.03, 1.03**2, 1.03**3, 1.03**4], abs=1e-6)
+
+
+def test_an_index_that_the_basis_lacks() -> None:
+    basis = {"title": "Invented", "mortality": {"rule": [{"table": {"law": "de Moivre", "omega": 110}}]},
+             "interest": {"rule": [{"flat": 0.0}]}}  # fmt: skip
+    stream = {"name": "annuity", "direction": "out", "amount": 1.0, "while": "alive", "increase": {"index": "prices"}}
+    row = {"policy_id": "Q1", "product": "P", "status": "in force", "birth_date": date(1990, 1, 1),
+           "commencement_date": date(2026, 1, 1)}  # fmt: skip
+    with pytest.raises(DocumentError, match="design P, stream 'annuity', increase: key 'index' is 'prices'"):
+        projection.value(
+            pa.Table.from_pylist([row]), [{"code": "P", "stream": [stream]}], basis, date(2026, 1, 1), sample=1
+        )

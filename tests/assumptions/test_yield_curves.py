@@ -93,10 +93,10 @@ def test_svensson_limits() -> None:
 @pytest.mark.parametrize(
     ("keys", "said"),
     [
-        ({"smith_wilson": {"spot": SPOTS, "ultimate": 0.03, "convergence": 15.0}}, "not beyond the last spot"),
+        ({"smith_wilson": {"spot": SPOTS, "ultimate": 0.03, "convergence": 15.0}}, "must lie beyond"),
         ({"smith_wilson": {"spot": SPOTS, "ultimate": 0.9, "convergence": 20.1}}, "no 'alpha' up to 2"),
         ({"smith_wilson": {"spot": {}, "ultimate": 0.03, "alpha": 0.1}}, "at least one maturity"),
-        ({"svensson": {"beta0": -0.4, "beta1": -0.5, "tau1": 5.0}}, "is not above -0.5"),
+        ({"svensson": {"beta0": -0.4, "beta1": -0.5, "tau1": 5.0}}, "must lie above -0.5"),
     ],
 )
 def test_figures_that_make_no_curve(keys: dict[str, Any], said: str) -> None:

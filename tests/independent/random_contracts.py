@@ -165,8 +165,9 @@ def _shape(draw: Draw, stream: dict[str, Any]) -> None:
     if chance(draw, 3):
         stream["pattern"] = draw(patterns())
     if chance(draw, 3):
-        stream["increase"] = {"rate": one_of(draw, 0.03, "escalation", 0.0, -0.02)}
-        if chance(draw, 2):
+        by_rate = [{"rate": rate} for rate in (0.03, "escalation", 0.0, -0.02)]
+        stream["increase"] = one_of(draw, *by_rate, {"index": "prices"})
+        if "rate" in stream["increase"] and chance(draw, 2):
             stream["increase"]["kind"] = "simple"
     if "to" in stream and chance(draw, 4):
         stream["decrease"] = one_of(draw, "yearly", "monthly")

@@ -167,9 +167,10 @@ def test_slopes_are_those_of_the_twin_moved(folder: Path, data: st.DataObject) -
     assume(kept)
     try:
         found = slopes_of(open_extract(example.table), example.designs, example.basis, example.settings, threads=1)
-    except DocumentError as refusal:
-        assert "ratings for a time" in str(refusal)
-        assume(False)
+    except DocumentError:
+        # Ratings for a time where years of age begin between anniversaries have none.
+        assume(not (example.basis.document.mortality.ratings and example.basis.document.mortality.age == "exact"))
+        raise
     rows = [row for row in found.table.to_pylist() if row["part"] != "key rate" and abs(row["slope"]) > 1e-3 * size]
     for part in {row["part"] for row in rows}:
         row = data.draw(st.sampled_from([row for row in rows if row["part"] == part]))

@@ -224,13 +224,12 @@ def test_nothing_left_to_pay() -> None:
 
 def test_payments_for_certain_outlast_a_table(tmp_path: Path) -> None:
     (tmp_path / "t.csv").write_text("age,rate\n" + "\n".join(f"{age},0.01" for age in range(30, 60)))
-    basis = prepare_basis({**BASIS, "mortality": {"age": "last birthday", "rule": [{"table": "t.csv"}]}}, tmp_path)
+    document = {**BASIS, "expense": [], "mortality": {"age": "last birthday", "rule": [{"table": "t.csv"}]}}
     certain = {"name": "instalment", "direction": "out", "amount": 12.0, "while": "certain", "to": 30, "a_year": 12}
     policy, design, _, settings = parts(pier(certain))
     found = book_of(working_bytes(work_out(policy, design, prepare_basis({**BASIS, "expense": []}), settings)))
     assert rows(found["Steps"])[-1]["survival"] > 0
-    found = book_of(working_bytes(work_out(policy, design, basis.__class__(**{
-        **vars(basis), "document": basis.document.model_copy(update={"expense": []})}), settings)))  # fmt: skip
+    found = book_of(working_bytes(work_out(policy, design, prepare_basis(document, tmp_path), settings)))
     last = rows(found["Steps"])[-1]
     assert (last["point"], last["survival"], last["deaths"]) == (359, None, None)
     assert last["discount"] == pytest.approx(rows(found["Payments"])[-1]["discount"])
