@@ -14,6 +14,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from assumptions.adjustments import Adjustment
 from assumptions.basis import Basis, ClaimDelay
 from assumptions.improvement import Scale
 from assumptions.interest import YieldCurve
@@ -65,7 +66,11 @@ class Survival:
         self.exact = mortality.age == "exact"
         self.keys = 2 * _SPANS * 160 if self.exact else 256
         self.fractions = FRACTIONS[mortality.fractions]
-        self.improving = np.array([scale is not None for scale in self.basis.scales])
+        made = self.basis.adjustments
+        adjusted = np.array([one is not None and one.dated for one in made] or [False] * len(mortality.rule))
+        self.improving = adjusted | np.array([scale is not None for scale in self.basis.scales])
+        # Adjustments in calendar time count months, improvement years.
+        self.parts = 12 if adjusted.any() else 1
         # Where a table of whole ages is entered at an exact one, its years begin on birthdays.
         self.by_birthday = np.array([self.exact and rates.whole_ages_only for rates in self.basis.rates])
         for number, (rule, rates) in enumerate(zip(mortality.rule, self.basis.rates, strict=True), 1):
@@ -89,28 +94,30 @@ class Survival:
         key += rule * self.keys
         if self.improving.any():
             began = commencement - np.where(self.by_birthday[rule], ages.since, 0)
-            year = began.astype("datetime64[D]").astype("datetime64[Y]").astype(np.int64) + 1970
-            key *= YEARS
-            key += np.where(self.improving[rule], np.clip(year - FIRST_YEAR, 0, YEARS - 1), 0)
+            unit = "datetime64[M]" if self.parts == 12 else "datetime64[Y]"
+            time = began.astype("datetime64[D]").astype(unit).astype(np.int64) + (1970 - FIRST_YEAR) * self.parts
+            key *= YEARS * self.parts
+            key += np.where(self.improving[rule], np.clip(time, 0, YEARS * self.parts - 1), 0)
         return key
 
     def row(self, code: int) -> int:
         """Return the row of a key, made on first meeting; IMPOSSIBLE where the rates do not cover the age."""
         if code not in self.known:
-            rest, year = divmod(code, YEARS) if self.improving.any() else (code, 0)
+            rest, time = divmod(code, YEARS * self.parts) if self.improving.any() else (code, 0)
             number, key = divmod(rest, self.keys)
             age = float(key)
             if self.exact:
                 halves, since = divmod(key, _SPANS)
                 age = halves // 2 + since / (365 + halves % 2)
-            self.known[code] = self._add(number, age, FIRST_YEAR + year)
+            self.known[code] = self._add(number, age, 12 * FIRST_YEAR + time * (12 // self.parts))
         return self.known[code]
 
-    def _add(self, number: int, age: float, year: int) -> int:
+    def _add(self, number: int, age: float, month: int) -> int:
         rule, rates = self.basis.document.mortality.rule[number], self.basis.rates[number]
         whole = int(age) if rates.whole_ages_only else age
         try:
-            yearly = yearly_rates(rule, rates, whole, self.basis.scales[number], year)
+            adjustment = self.basis.adjustment(number)
+            yearly = yearly_rates(rule, rates, whole, self.basis.scales[number], month // 12, adjustment, month)
         except ValueError:
             return IMPOSSIBLE
         if len(yearly) == 0:
@@ -142,10 +149,19 @@ def lasts(living: Row) -> Row:
     return np.clip(np.maximum(counting, np.arange(1, over + 2)), 0, over).astype(np.float64)
 
 
-def yearly_rates(rule: MortalityRule, rates: Rates, age: float, scale: Scale | None = None, year: int = 0) -> Row:
+def yearly_rates(
+    rule: MortalityRule,
+    rates: Rates,
+    age: float,
+    scale: Scale | None = None,
+    year: int = 0,
+    adjustment: Adjustment | None = None,
+    month: int = 0,
+) -> Row:
     """Adjusted rates of the years from an age at commencement to the end of a table, by year of age or duration.
 
-    year: the calendar year in which the first of them begins, for the improvement.
+    year: the calendar year in which the first of them begins, for the improvement; month: the calendar month, 12 times
+    the year and the months before it, for the adjustment.
 
     Empty where the age lies beyond the table. Raises ValueError where it lies below, or a rate is missing.
     """
@@ -162,6 +178,8 @@ def yearly_rates(rule: MortalityRule, rates: Rates, age: float, scale: Scale | N
     source = rates.rates_from(entry, known) if known else np.zeros(0)  # type: ignore[attr-defined]
     improved = scale.cohort(int(np.floor(entered)), year, known) if scale is not None else 1.0
     adjusted = np.minimum(1.0, rule.multiple * source * improved + rule.extra)
+    if adjustment is not None:
+        adjusted = adjustment.rates(adjusted, int(np.floor(entered)), month)
     if closing:
         adjusted = np.append(adjusted, 1.0)
     return np.asarray(adjusted)
@@ -176,10 +194,14 @@ class Persistency:
     pool: Pool
     places: list[tuple[int, int, int]] = field(default_factory=list)
     known: dict[int, int] = field(default_factory=dict)
-    _years: dict[int, Row] = field(default_factory=dict)
+    _years: dict[tuple[int, int], Row] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
         lapse = self.basis.document.lapse
+        # The last place answers for rule -1.
+        self.dated = np.array([one is not None and one.dated for one in (*self.basis.lapse_adjustments, None)])
+        if not self.basis.lapse_adjustments:
+            self.dated = np.zeros(1 + (len(lapse.rule) if lapse is not None else 0), dtype=bool)
         self.dependent = lapse is not None and lapse.competing == "dependent rates"
         self.spread = lapse is not None and lapse.timing == "each step" and self.settings.step == "month"
         if self.dependent and lapse is not None and lapse.timing == "anniversaries" and not self.yearly:
@@ -193,11 +215,22 @@ class Persistency:
         """Whether steps are years."""
         return self.settings.step == "year"
 
+    def codes(self, rule: Keys, until: Keys, commencement: NDArray[np.int32]) -> Keys:
+        """Return the key of each policy's row: rule, end of lapses, and month where rates depend on the calendar."""
+        key: Keys = (1 + rule) * (NEVER + 1) + until
+        if self.dated.any():
+            month = commencement.astype("datetime64[D]").astype("datetime64[M]").astype(np.int64)
+            month += 12 * (1970 - FIRST_YEAR)
+            key *= 12 * YEARS
+            key += np.where(self.dated[rule], np.clip(month, 0, 12 * YEARS - 1), 0)
+        return key
+
     def row(self, code: int) -> int:
-        """Return the row of (1 + rule) * (NEVER + 1) + until, made on first meeting; rule -1 has no lapses."""
+        """Return the row of a key, made on first meeting; rule -1 has no lapses."""
         if code not in self.known:
-            number, until = divmod(code, NEVER + 1)
-            held, dead, lapsing = self._build(self._rates(number - 1, until))
+            rest, month = divmod(code, 12 * YEARS) if self.dated.any() else (code, 0)
+            number, until = divmod(rest, NEVER + 1)
+            held, dead, lapsing = self._build(self._rates(number - 1, until, 12 * FIRST_YEAR + month))
             self.known[code] = len(self.places)
             # One place in front of each row stands for g = -1.
             place = self.pool.add(held) + 1
@@ -207,20 +240,22 @@ class Persistency:
             self.places.append((place, dying, self.pool.add(lapsing) + 1))
         return self.known[code]
 
-    def _yearly(self, rule: int) -> Row:
-        """Rates of the years since commencement; the same however long lapses go on."""
-        if rule not in self._years:
+    def _yearly(self, rule: int, month: int) -> Row:
+        """Rates of the years since commencement in a month; the same however long lapses go on."""
+        if (rule, month) not in self._years:
             document: LapseRule = self.basis.document.lapse.rule[rule]  # type: ignore[union-attr]
             table = list(self.basis.lapses[rule])
-            self._years[rule] = np.array([yearly_lapse(document, table, year) for year in range(LONGEST // 12 + 2)])
-        return self._years[rule]
+            yearly = np.array([yearly_lapse(document, table, year) for year in range(LONGEST // 12 + 2)])
+            adjustment = self.basis.lapse_adjustment(rule)
+            self._years[rule, month] = yearly if adjustment is None else adjustment.rates(yearly, 0, month)
+        return self._years[rule, month]
 
-    def _rates(self, rule: int, until: int) -> Row:
+    def _rates(self, rule: int, until: int, month: int) -> Row:
         """Share lapsing at each point 0, 1 ... of those still there before."""
         points = np.arange(LONGEST + 13)
         if rule < 0:
             return np.zeros(len(points))
-        yearly = self._yearly(rule)
+        yearly = self._yearly(rule, month)
         if self.spread:
             shares = (1 - (1 - yearly) ** (1 / 12))[np.maximum(points - 1, 0) // 12]
         else:

@@ -113,7 +113,7 @@ class RelativeRows:
             months = 12 * self.year + self.month - 1 + _MONTHS
             return np.array([inflation.factor(int(m) // 12, int(m) % 12 + 1) for m in months])
 
-        return self._place((inflation.rate, inflation.from_), build)
+        return self._place(inflation, build)
 
     def largest(self, place: int) -> float:
         """Return the largest amount of a row; 1 where there is none."""

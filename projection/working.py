@@ -190,7 +190,8 @@ def _lapses(value: PlainValue) -> list[str]:
     first = value.position.k // 12
     if value.lapses.rule is None or last < first:
         return []
-    held = len(value.lapses.rates) - 1
+    # An adjustment may tell apart years that the table does not.
+    held = len(value.lapses.rates) - 1 if value.lapses.adjustment is None else last
     years = range(first, max(first, min(last, held)) + 1)
     rows = [(f"{year + 1}{'+' * (year >= held)}", f"{value.lapses.yearly(year):.9f}") for year in years]
     return table(("policy year", "w"), rows)
