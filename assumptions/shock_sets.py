@@ -83,7 +83,7 @@ class KeyRates(Sourced):
         for year in self.years:
             amounts = {other: self.shift if other == year else 0.0 for other in self._beside(year)}
             change = Change(what="interest", how="absolute", by_maturity=amounts)
-            title = f"interest {10_000 * self.shift:+.10g} bp around {year:g} years"
+            title = f"interest {10_000 * self.shift:+.10g} bp at key rate {year:g}"
             yield NamedShock(name=f"{self.name} {year:g}", title=title, change=[change])
 
     def _beside(self, year: float) -> list[float]:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import difflib
 import tomllib
-from collections.abc import Iterable
+from collections.abc import Callable, Iterable
 from datetime import date
 from pathlib import Path
 from typing import Any, TypeVar
@@ -14,7 +14,7 @@ from pydantic import BaseModel, ValidationError
 import assumptions
 from assumptions.basis import Basis, BasisDocument, prepare_basis
 from assumptions.shock_sets import ShockSet
-from assumptions.shocking import WrongBasis, shocked
+from assumptions.shocking import WrongBasis, need_same_basis, shocked
 from assumptions.shocks import Shock
 from assumptions.tables import TableError
 from portfolios.designs import Design
@@ -65,8 +65,8 @@ NAMED_SETS = Path(assumptions.__file__).with_name("named_sets")
 def read_shock(path: Path | str, basis: Basis | None = None) -> Shock:
     """Read a shock; with a basis, check that it is the one that the shock is made for. Raises DocumentError."""
     shock = read_document(path, Shock)
-    if basis is not None and shock.basis and shock.basis != basis.digest:
-        _need(path, ShockSet(basis=shock.basis, title=shock.name_in_words), basis)
+    if basis is not None:
+        _need(path, lambda: need_same_basis(shock.basis, basis, shock.name_in_words))
     return shock
 
 
@@ -85,7 +85,7 @@ def read_shocks(path: Path | str, basis: Basis | None = None) -> ShockSet:
             raise
         raise DocumentError(f"{error}; the named sets are {', '.join(named_sets())}") from None
     if basis is not None:
-        _need(path, shocks, basis)
+        _need(path, lambda: shocks.need(basis))
     return shocks
 
 
@@ -102,9 +102,9 @@ def shocked_basis(basis: Basis, shock: Shock, valuation_date: date, name: Path |
         raise DocumentError(f"{name}: {error}") from error
 
 
-def _need(path: Path | str, shocks: ShockSet, basis: Basis) -> None:
+def _need(path: Path | str, check: Callable[[], None]) -> None:
     try:
-        shocks.need(basis)
+        check()
     except WrongBasis as error:
         raise DocumentError(f"{path}: key 'basis': {error}") from error
 
