@@ -142,7 +142,7 @@ class ShockSet(Sourced):
     @model_validator(mode="after")
     def _names_fit(self) -> ShockSet:
         shocks = [one.name for one in expanded(self)]
-        names = [*shocks, *(one.name for one in (*self.leaving, *self.revision))]
+        names = [*shocks, *(one.name for one in self.leaving), *(one.name for one in self.revision)]
         _once(names, "shocks")
         risks = [risk.name for risk in self.risk]
         _once(risks, "risks")
@@ -165,7 +165,7 @@ class ShockSet(Sourced):
         return f"{self.title or 'untitled set of shocks'}{day}" + (f" ({self.reference})" if self.reference else "")
 
     def need(self, basis: Basis) -> None:
-        """Raise WrongBasis where the set, or one of its shocks, bears the digest of another basis."""
+        """Raise WrongBasisError where the set, or one of its shocks, bears the digest of another basis."""
         need_same_basis(self.basis, basis, self.title or "set of shocks")
         for one in self.shock:
             need_same_basis(one.basis, basis, one.name_in_words)
@@ -174,9 +174,8 @@ class ShockSet(Sourced):
 def expanded(shocks: ShockSet) -> list[NamedShock]:
     """Return every shock of a set: those written out, then grids, one at a time, and key rates."""
     made = list(shocks.shock)
-    for several in (*shocks.grid, *shocks.one_at_a_time, *shocks.key_rates):
-        made += several.shocks()
-    return made
+    several: list[Grid | OneAtATime | KeyRates] = [*shocks.grid, *shocks.one_at_a_time, *shocks.key_rates]
+    return made + [shock for one in several for shock in one.shocks()]
 
 
 def _made(name: str, changes: list[Change], title: str) -> NamedShock:

@@ -21,7 +21,7 @@ from .shocks import Change, Shock, span
 from .split_rules import Piece, split
 
 
-class WrongBasis(ValueError):
+class WrongBasisError(ValueError):
     """A shock or a set of shocks that was made for another basis."""
 
 
@@ -29,7 +29,7 @@ def shocked(basis: Basis, shock: Shock, valuation_date: date) -> Basis:
     """Return the basis after a shock; the very same object where nothing changes.
 
     valuation_date: from which 'from_months' and 'for_months' are counted, inflation changes, and improvement too.
-    Raises WrongBasis where the shock bears the digest of another basis, and ValueError where the basis has nothing
+    Raises WrongBasisError where the shock bears the digest of another basis, and ValueError where the basis has nothing
     that could change as the shock says, or a rate would leave its range.
     """
     need_same_basis(shock.basis, basis, shock.name_in_words)
@@ -49,9 +49,9 @@ def shocked(basis: Basis, shock: Shock, valuation_date: date) -> Basis:
 
 
 def need_same_basis(digest: str, basis: Basis, name: str) -> None:
-    """Raise WrongBasis unless a digest is empty or that of the basis."""
+    """Raise WrongBasisError unless a digest is empty or that of the basis."""
     if digest and digest != basis.digest:
-        raise WrongBasis(
+        raise WrongBasisError(
             f"'{name}' was made for the basis with digest {digest[:12]}..., but '{basis.title}' has {basis.digest[:12]}"
             "...; look whether the basis has changed, and put the new digest into 'basis'"
         )

@@ -3,9 +3,9 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from typing import NamedTuple
+from typing import Any, NamedTuple
 
-from .rules import AnyRule, Band, Condition, _holds
+from .rules import AnyRule, Band, Condition, Scalar, holds
 
 
 class Piece(NamedTuple):
@@ -51,15 +51,15 @@ def meet(first: Mapping[str, Condition], second: Mapping[str, Condition]) -> dic
 
 def _both(first: Condition, second: Condition) -> Condition | None:
     if isinstance(first, Band) and isinstance(second, Band):
-        lows = [one for one in (first.from_, second.from_) if one is not None]
-        highs = [one for one in (first.to, second.to) if one is not None]
-        low = max(lows) if lows else None  # type: ignore[type-var]
-        high = min(highs) if highs else None  # type: ignore[type-var]
-        if low is not None and high is not None and not low < high:  # type: ignore[operator]
+        # Dates with dates, numbers with numbers: the column holds one kind.
+        lows: list[Any] = [one for one in (first.from_, second.from_) if one is not None]
+        highs: list[Any] = [one for one in (first.to, second.to) if one is not None]
+        low, high = max(lows, default=None), min(highs, default=None)
+        if low is not None and high is not None and not low < high:
             return None
         return Band.model_construct(from_=low, to=high)
     if isinstance(first, Band):
         first, second = second, first
-    members = first if isinstance(first, list) else [first]
-    held = [member for member in members if _holds(second, member)]  # type: ignore[arg-type]
+    members: list[Any] = first if isinstance(first, list) else [first]
+    held: list[Scalar] = [member for member in members if holds(second, member)]
     return held or None

@@ -14,7 +14,7 @@ from pydantic import BaseModel, ValidationError
 import assumptions
 from assumptions.basis import Basis, BasisDocument, prepare_basis
 from assumptions.shock_sets import ShockSet
-from assumptions.shocking import WrongBasis, need_same_basis, shocked
+from assumptions.shocking import WrongBasisError, need_same_basis, shocked
 from assumptions.shocks import Shock
 from assumptions.tables import TableError
 from portfolios.designs import Design
@@ -105,7 +105,7 @@ def shocked_basis(basis: Basis, shock: Shock, valuation_date: date, name: Path |
 def _need(path: Path | str, check: Callable[[], None]) -> None:
     try:
         check()
-    except WrongBasis as error:
+    except WrongBasisError as error:
         raise DocumentError(f"{path}: key 'basis': {error}") from error
 
 

@@ -30,8 +30,9 @@ def made(basis: Basis, shock: Shock, asked: Settings) -> Basis | None:
     try:
         return shocked(basis, shock, asked.valuation_date)
     except ValueError as error:
-        assert "must lie above" in str(error) or "the basis has no" in str(error), error
-        return None
+        if "must lie above" in str(error) or "the basis has no" in str(error):
+            return None
+        raise
 
 
 @given(data=st.data())
@@ -59,13 +60,16 @@ def test_what_a_shock_leaves_alone_is_the_same_object(folder: Path, data: st.Dat
         assert basis is base
     if "mortality" not in parts:
         assert basis.document.mortality is base.document.mortality
-        assert basis.rates is base.rates and basis.scales is base.scales
+        assert basis.rates is base.rates
+        assert basis.scales is base.scales
         assert basis.adjustments is base.adjustments
     if "lapse" not in parts:
-        assert basis.document.lapse is base.document.lapse and basis.lapses is base.lapses
+        assert basis.document.lapse is base.document.lapse
+        assert basis.lapses is base.lapses
         assert basis.lapse_adjustments is base.lapse_adjustments
     if "interest" not in parts:
-        assert basis.curves is base.curves and basis.document.interest is base.document.interest
+        assert basis.curves is base.curves
+        assert basis.document.interest is base.document.interest
     if "expenses" not in parts:
         assert basis.document.expense is base.document.expense
     assert (basis.digest == base.digest) == (basis is base)
