@@ -153,6 +153,8 @@ class ShockSet(Sourced):
         pairs = [" and ".join(sorted(one.between)) for one in self.correlation]
         _once(pairs, "correlations")
         for one in self.correlation:
+            if one.between[0] == one.between[1]:
+                raise ValueError(f"correlation: '{one.between[0]}' stands beside itself; name two risks")
             for name in one.between:
                 if name not in risks:
                     raise ValueError(f"correlation: there is no risk '{name}'; there are {', '.join(risks) or 'none'}")

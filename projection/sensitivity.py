@@ -31,8 +31,9 @@ from .settings import Settings
 Minor = NDArray[np.int64]
 
 PolicyReserves = Callable[[pa.Array, NDArray[np.bool_], Minor, Minor], None]
-"""Takes, chunk by chunk, identifiers of the policies that the base values, then per shock and policy, both of shape
-(shocks, policies), whether it is valued too, and base and shocked reserves in minor units; the base's are (policies,)."""
+"""Takes, chunk by chunk, what belongs to the policies that the base values: identifiers; whether each shocked basis
+values them too, shape (shocks, policies); reserves on the base, shape (policies,), and on the shocked bases, shape (shocks,
+policies), in minor units. Where a policy is not valued its figure is 0."""
 
 SPARE = 24
 """Policies that may step in where others of the sample turn out to be exceptions."""
@@ -54,7 +55,7 @@ class Sensitivity:
     samples: tuple[SampleCheck, ...]
 
 
-def sensitivity(
+def value_shocks(
     extract: Extract,
     designs: list[Design],
     basis: Basis,
@@ -83,7 +84,7 @@ def sensitivity(
 
 
 class _Run:
-    """One pass under way. ``place[s]`` is the position of shock s among the distinct bases, of which the first is base."""
+    """One pass under way. ``place[s]`` is the position of shock s among the distinct bases; the base is the first."""
 
     def __init__(
         self, extract: Extract, designs: list[Design], base: Basis, bases: list[Basis], settings: Settings,

@@ -128,7 +128,9 @@ def _rate(life: Survival) -> str:
     scale = life.rates.scale
     improved = "" if scale is None else f" x improvement from {scale.document.base_year}, listed with it"
     close = "; 1 at the last age" if life.rates.closed else ""
-    return f"q = min(1, {rule.multiple:g} x table{improved} + {rule.extra:g}); age {rule.added_years:+d} years{close}"
+    adjusted = "" if life.rates.adjustment is None else ", then as the shock says"
+    formula = f"q = min(1, {rule.multiple:g} x table{improved} + {rule.extra:g}){adjusted}"
+    return f"{formula}; age {rule.added_years:+d} years{close}"
 
 
 def _titled(title: str) -> str:
@@ -162,6 +164,7 @@ def _other_rules(basis: Basis, value: PlainValue) -> Iterator[tuple[str, str]]:
     if document.lapse:
         rule = document.lapse.rule[rules.lapse - 1]
         until = "" if value.lapses.until is None else f", until month {value.lapses.until:g}"
+        until += "" if value.lapses.adjustment is None else ", as the shock says"
         timing = f"{document.lapse.timing}, {document.lapse.competing}"
         yield "lapse", f"rule {rules.lapse}{_titled(rule.title)}: {rule.multiple:g} x rate{until}; {timing}"
     else:

@@ -16,6 +16,8 @@ from pydantic import BaseModel
 from pydantic.fields import FieldInfo
 
 from assumptions.basis import BasisDocument
+from assumptions.shock_sets import ShockSet
+from assumptions.shocks import Shock
 from portfolios.columns import COLUMNS, Column
 from portfolios.designs import Design
 from projection.run_document import RunDocument
@@ -34,7 +36,11 @@ def documents_page() -> str:
         "Every document is TOML. An unknown key is an error. A key without a default must be given. Paths "
         "are relative to the folder of the document that they stand in."
     )
-    for title, model in (("Run document", RunDocument), ("Basis", BasisDocument), ("Product design", Design)):
+    models: tuple[tuple[str, type[BaseModel]], ...] = (
+        ("Run document", RunDocument), ("Basis", BasisDocument), ("Product design", Design), ("Shock", Shock),
+        ("Set of shocks", ShockSet),
+    )  # fmt: skip
+    for title, model in models:
         parts += [f"## {title}", *_sections(model, set())]
     return "\n\n".join(parts) + "\n"
 

@@ -22,7 +22,7 @@ from assumptions.shocks import Shock
 from portfolios.demo_office import write_office
 from portfolios.extract import open_extract
 from projection.documents import read_basis, read_designs, read_shocks
-from projection.sensitivity import Sensitivity, sensitivity
+from projection.sensitivity import Sensitivity, value_shocks
 from projection.settings import Settings
 
 TODAY = date(2026, 11, 30)
@@ -115,7 +115,7 @@ def office(tmp_path_factory: pytest.TempPathFactory) -> Path:
 
 def run(office: Path, held: Basis, shocks: list[Any], **keys: Any) -> Sensitivity:
     extract, designs = open_extract(office / "inforce"), read_designs(office / "designs")
-    return sensitivity(extract, designs, held, Settings(TODAY), shocks, **keys)
+    return value_shocks(extract, designs, held, Settings(TODAY), shocks, **keys)
 
 
 def reserves(office: Path, held: Basis) -> pa.Table:
@@ -163,11 +163,13 @@ def test_the_office_on_a_basis_edited_by_hand(office: Path, change: dict[str, An
 def test_all_shocks_in_one_pass_are_those_valued_one_by_one(office: Path) -> None:
     held = read_basis(office / "bases" / "best_estimate.toml")
     women = {"what": "mortality", "how": "relative", "amount": 0.5, "for": {"sex": "F"}}
-    shocks = [*expanded(read_shocks("eu-life-2015")), Shock(title="nothing"), Shock.model_validate({"change": [women]})]
+    stresses = expanded(read_shocks("eu-life-2015"))
+    shocks = [*stresses, Shock(title="nothing"), Shock.model_validate({"change": [women]})]
     taken: list[tuple[pa.Array, Any, Any, Any]] = []
-    found = run(office, held, shocks, sink=lambda *parts: taken.append(parts), chunk_rows=250, group_by=("product", "sex"))
+    groups = ("product", "sex")
+    found = run(office, held, shocks, sink=lambda *parts: taken.append(parts), chunk_rows=250, group_by=groups)
     table = found.rows
-    assert table.column_names == ["shock", "title", "product", "sex", "policies", "base", "shocked", "change", "per_cent"]
+    assert table.column_names == ["shock", "title", *groups, "policies", "base", "shocked", "change", "per_cent"]
     assert found.not_valued == (0,) * len(shocks)
     ids = pa.concat_arrays([parts[0] for parts in taken]).cast(pa.string())
     base, after_all = np.concatenate([p[2] for p in taken]), np.concatenate([p[3] for p in taken], axis=1)
@@ -189,7 +191,18 @@ def test_all_shocks_in_one_pass_are_those_valued_one_by_one(office: Path) -> Non
     assert math.isclose(men["per_cent"][0].as_py(), 100 * men["change"][0].as_py() / men["base"][0].as_py())
 
 
-def test_the_wheel_takes_the_named_sets_along() -> None:
+def test_a_policy_that_a_shock_takes_out_is_counted(office: Path) -> None:
+    held = best_estimate(office)
+    nobody = Shock.model_validate({"change": [{"what": "mortality", "how": "replaced", "amount": 1.0,
+                                               "calendar_years": {"to": 2026}}]})  # fmt: skip
+    found = run(office, held, [nobody])
+    alone = projection.value(str(office / "inforce"), office / "designs", found.bases[0], TODAY, sample=4)
+    assert found.not_valued == (reserves(office, held).num_rows - alone.policies.num_rows,)
+    assert found.not_valued[0] > 100
+    assert sum(found.rows["policies"].to_pylist()) == alone.policies.num_rows
+
+
+def test_the_package_takes_the_named_sets_along() -> None:
     root = Path(projection.__file__).parent.parent
     content = tomllib.loads((root / "pyproject.toml").read_text("utf-8"))
     assert "named_sets/*.toml" in content["tool"]["setuptools"]["package-data"]["assumptions"]
