@@ -32,8 +32,8 @@ Minor = NDArray[np.int64]
 
 PolicyReserves = Callable[[pa.Array, NDArray[np.bool_], Minor, Minor], None]
 """Takes, chunk by chunk, what belongs to the policies that the base values: identifiers; whether each shocked basis
-values them too, shape (shocks, policies); reserves on the base, shape (policies,), and on the shocked bases, shape (shocks,
-policies), in minor units. Where a policy is not valued its figure is 0."""
+values them too, shape (shocks, policies); reserves on the base, shape (policies,), and on the shocked bases, shape
+(shocks, policies), in minor units. Where a policy is not valued its figure is 0."""
 
 SPARE = 24
 """Policies that may step in where others of the sample turn out to be exceptions."""

@@ -12,8 +12,12 @@ from assumptions.shocks import Shock
 
 @st.composite
 def changes(draw: Draw) -> dict[str, Any]:
-    what = one_of(draw, "mortality", "interest", "lapse", "improvement", "expenses", "inflation", "disability")
-    change: dict[str, Any] = {"what": what, "how": one_of(draw, "relative", "absolute", "replaced")}
+    what = one_of(draw, "mortality", "lapse", "interest", "inflation", "expenses", "improvement", "mortality", "lapse")
+    if chance(draw, 20):
+        what = "disability"
+    # There is no part for disability yet, of which a share is nothing, and to which nothing can be added.
+    hows = ("relative",) if what == "disability" else ("relative", "absolute", "replaced")
+    change: dict[str, Any] = {"what": what, "how": one_of(draw, *hows)}
     change["amount"] = draw(amounts(what, change["how"]))
     if what != "inflation" and chance(draw, 3):
         life = st.just({"life": "second"}) if what in ("mortality", "improvement") else st.nothing()
