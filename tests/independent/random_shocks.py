@@ -9,12 +9,12 @@ from random_contracts import Draw, chance, conditions, one_of
 
 from assumptions.shocks import Shock
 
+KINDS = ("mortality", "lapse", "interest", "inflation", "expenses", "improvement")
+
 
 @st.composite
-def changes(draw: Draw) -> dict[str, Any]:
-    what = one_of(draw, "mortality", "lapse", "interest", "inflation", "expenses", "improvement", "mortality", "lapse")
-    if chance(draw, 20):
-        what = "disability"
+def changes(draw: Draw, kinds: tuple[str, ...] = (*KINDS, "mortality", "lapse")) -> dict[str, Any]:
+    what = one_of(draw, *kinds) if not chance(draw, 20) else "disability"
     # There is no part for disability yet, of which a share is nothing, and to which nothing can be added.
     hows = ("relative",) if what == "disability" else ("relative", "absolute", "replaced")
     change: dict[str, Any] = {"what": what, "how": one_of(draw, *hows)}
@@ -65,7 +65,7 @@ def _on_curves(draw: Draw, change: dict[str, Any]) -> None:
 
 
 @st.composite
-def shocks(draw: Draw) -> Shock:
-    """Up to three changes, one after the other."""
-    listed = [draw(changes()) for _ in range(draw(st.integers(0, 3)))]
+def shocks(draw: Draw, kinds: tuple[str, ...] = (*KINDS, "mortality", "lapse")) -> Shock:
+    """Up to three changes of some kinds, one after the other."""
+    listed = [draw(changes(kinds)) for _ in range(draw(st.integers(0, 3)))]
     return Shock.model_validate({"title": "random", "change": listed})

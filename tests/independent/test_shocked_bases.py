@@ -9,7 +9,7 @@ import pytest
 from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 from random_contracts import examples, write_tables
-from random_shocks import shocks
+from random_shocks import KINDS, shocks
 from test_engine_and_twin import EXAMPLES, SLOW, by_engine, check_policy
 
 from assumptions.basis import Basis
@@ -35,10 +35,9 @@ def made(basis: Basis, shock: Shock, asked: Settings) -> Basis | None:
         raise
 
 
-@given(data=st.data())
-@settings(max_examples=2 * EXAMPLES, deadline=None, suppress_health_check=SLOW)
-def test_same_parts_and_same_refusals(folder: Path, data: st.DataObject) -> None:
-    shock, example = data.draw(shocks()), data.draw(examples(folder, most=8))
+def check(folder: Path, data: st.DataObject, kinds: tuple[str, ...]) -> None:
+    # The shock first: what is drawn last is the first to be cut short.
+    shock, example = data.draw(shocks(kinds)), data.draw(examples(folder, most=8))
     basis = made(example.basis, shock, example.settings)
     assume(basis is not None)
     assert basis is not None
@@ -48,8 +47,21 @@ def test_same_parts_and_same_refusals(folder: Path, data: st.DataObject) -> None
         check_policy(stressed, chunk.policy(place), valued, place)
 
 
+@pytest.mark.parametrize("kind", KINDS)
 @given(data=st.data())
-@settings(max_examples=EXAMPLES, deadline=None, suppress_health_check=SLOW)
+@settings(max_examples=EXAMPLES // 4, deadline=None, suppress_health_check=SLOW)
+def test_same_parts_and_same_refusals_for_each_kind_of_change(folder: Path, kind: str, data: st.DataObject) -> None:
+    check(folder, data, (kind,))
+
+
+@given(data=st.data())
+@settings(max_examples=EXAMPLES // 2, deadline=None, suppress_health_check=SLOW)
+def test_same_parts_and_same_refusals_together(folder: Path, data: st.DataObject) -> None:
+    check(folder, data, KINDS)
+
+
+@given(data=st.data())
+@settings(max_examples=EXAMPLES // 2, deadline=None, suppress_health_check=SLOW)
 def test_what_a_shock_leaves_alone_is_the_same_object(folder: Path, data: st.DataObject) -> None:
     shock, example = data.draw(shocks()), data.draw(examples(folder, most=1))
     base, basis = example.basis, made(example.basis, shock, example.settings)

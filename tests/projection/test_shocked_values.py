@@ -191,6 +191,21 @@ def test_all_shocks_in_one_pass_are_those_valued_one_by_one(office: Path) -> Non
     assert math.isclose(men["per_cent"][0].as_py(), 100 * men["change"][0].as_py() / men["base"][0].as_py())
 
 
+def test_two_items_may_part_from_the_same_inflation(office: Path) -> None:
+    """A run stops where the plain twin disagrees with the engine on one of its sample."""
+    path = office / "bases" / "best_estimate.toml"
+    content = tomllib.loads(path.read_text("utf-8"))
+    item = {"per": "policy", "rule": [{"first_year": 0.0, "later_years": 40.0}],
+            "inflation": {"rate": 0.02, "from": date(2026, 1, 1)}}  # fmt: skip
+    content["expense"] = [{"name": name, **item} for name in ("a", "b")]
+    held = prepare_basis(content, path.parent)
+    change = {"what": "inflation", "how": "absolute", "amount": 0.01}
+    base, first, second = (reserves(office, basis)["reserve"].to_numpy() for basis in (
+        held, after(held, {**change, "items": ["b"]}, on=TODAY), after(held, change, on=TODAY)))  # fmt: skip
+    np.testing.assert_allclose(second - base, 2 * (first - base), atol=0.021)
+    assert (first > base).any()
+
+
 def test_a_policy_that_a_shock_takes_out_is_counted(office: Path) -> None:
     held = best_estimate(office)
     nobody = Shock.model_validate({"change": [{"what": "mortality", "how": "replaced", "amount": 1.0,
