@@ -12,6 +12,7 @@ from typing import Any, Literal
 
 from pydantic import Field, field_validator, model_validator
 
+from .adjustments import Adjustment
 from .expenses import Expense
 from .improvement import Scale, read_scale
 from .inflation import NamedInflation, Prices, read_prices
@@ -106,18 +107,35 @@ class Basis:
     """Level of prices by the names of inflation."""
     expense_prices: tuple[Prices | None, ...] = ()
     """Level of prices of each expense item, None where its amounts do not grow."""
+    adjustments: tuple[Adjustment | None, ...] = ()
+    """What is done to the rates of each mortality rule; empty for none at all."""
+    lapse_adjustments: tuple[Adjustment | None, ...] = ()
+    """The same of each lapse rule."""
+    changed_by: tuple[tuple[str, str], ...] = ()
+    """What the basis was made with from the one that its tables were read for: titles and contents of shocks."""
 
     @cached_property
     def digest(self) -> str:
         """SHA-256 of the document and of every table file that it names."""
         document = self.document.model_dump(mode="json", by_alias=True)
-        text = json.dumps([document, sorted(self.files.items())], sort_keys=True, ensure_ascii=False)
+        content = [document, sorted(self.files.items())]
+        if self.changed_by:
+            content.append([text for _, text in self.changed_by])
+        text = json.dumps(content, sort_keys=True, ensure_ascii=False)
         return hashlib.sha256(text.encode()).hexdigest()
 
     @property
     def title(self) -> str:
         """The name that the basis goes by."""
-        return self.document.title or "untitled basis"
+        return "; ".join([self.document.title or "untitled basis", *(title for title, _ in self.changed_by)])
+
+    def adjustment(self, rule: int) -> Adjustment | None:
+        """What is done to the rates of a mortality rule."""
+        return self.adjustments[rule] if self.adjustments else None
+
+    def lapse_adjustment(self, rule: int) -> Adjustment | None:
+        """What is done to the rates of a lapse rule, None too where there is no rule (-1)."""
+        return self.lapse_adjustments[rule] if self.lapse_adjustments and rule >= 0 else None
 
 
 def prepare_basis(document: BasisDocument | dict[str, Any], folder: Path | str = ".") -> Basis:

@@ -60,10 +60,11 @@ class Rule(Sourced):
 
     def fits(self, policy: Mapping[str, Any]) -> bool:
         """Say whether the rule is for this policy, a mapping of extract column to value."""
-        return all(_holds(condition, policy.get(column)) for column, condition in self.for_.items())
+        return all(holds(condition, policy.get(column)) for column, condition in self.for_.items())
 
 
-def _holds(condition: Condition, value: Any) -> bool:
+def holds(condition: Condition, value: Any) -> bool:
+    """Say whether a value of the extract fits a condition."""
     if isinstance(condition, Band):
         return condition.holds(value)
     if isinstance(condition, list):

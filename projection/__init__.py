@@ -12,10 +12,11 @@ from __future__ import annotations
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from .documents import DocumentError, read_basis, read_designs, read_run
+    from .documents import DocumentError, read_basis, read_designs, read_run, read_shock, read_shocks
     from .gate import RunStopped
     from .notebook import Valuation, value
     from .plain import plain_value
+    from .sensitivity import Sensitivity, value_shocks
     from .settings import Settings
     from .valuation import value_extract
     from .working import working
@@ -23,28 +24,36 @@ if TYPE_CHECKING:
 _HOMES = {
     "DocumentError": "documents",
     "RunStopped": "gate",
+    "Sensitivity": "sensitivity",
     "Settings": "settings",
     "Valuation": "notebook",
     "plain_value": "plain",
     "read_basis": "documents",
     "read_designs": "documents",
     "read_run": "documents",
+    "read_shock": "documents",
+    "read_shocks": "documents",
     "value": "notebook",
     "value_extract": "valuation",
+    "value_shocks": "sensitivity",
     "working": "working",
 }
 
 __all__ = [
     "DocumentError",
     "RunStopped",
+    "Sensitivity",
     "Settings",
     "Valuation",
     "plain_value",
     "read_basis",
     "read_designs",
     "read_run",
+    "read_shock",
+    "read_shocks",
     "value",
     "value_extract",
+    "value_shocks",
     "working",
 ]
 

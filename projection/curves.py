@@ -14,6 +14,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from assumptions.adjustments import Adjustment
 from assumptions.basis import Basis, ClaimDelay
 from assumptions.improvement import Scale
 from assumptions.interest import YieldCurve
@@ -85,7 +86,11 @@ class Survival:
         self.ratings = Ratings(self.rating_columns, self.exact)
         self.keys = 2 * _SPANS * 160 if self.exact else 256
         self.fractions = FRACTIONS[mortality.fractions]
-        self.improving = np.array([scale is not None for scale in self.basis.scales])
+        made = self.basis.adjustments
+        adjusted = np.array([one is not None and one.dated for one in made] or [False] * len(mortality.rule))
+        self.improving = adjusted | np.array([scale is not None for scale in self.basis.scales])
+        # Adjustments in calendar time count months, improvement years.
+        self.parts = 12 if adjusted.any() else 1
         # Where a table of whole ages is entered at an exact one, its years begin on birthdays.
         self.by_birthday = np.array([self.exact and rates.whole_ages_only for rates in self.basis.rates])
         for number, (rule, rates) in enumerate(zip(mortality.rule, self.basis.rates, strict=True), 1):
@@ -109,9 +114,10 @@ class Survival:
         key += rule * self.keys
         if self.improving.any():
             began = commencement - np.where(self.by_birthday[rule], ages.since, 0)
-            year = began.astype("datetime64[D]").astype("datetime64[Y]").astype(np.int64) + 1970
-            key *= YEARS
-            key += np.where(self.improving[rule], np.clip(year - FIRST_YEAR, 0, YEARS - 1), 0)
+            unit = "datetime64[M]" if self.parts == 12 else "datetime64[Y]"
+            time = began.astype("datetime64[D]").astype(unit).astype(np.int64) + (1970 - FIRST_YEAR) * self.parts
+            key *= YEARS * self.parts
+            key += np.where(self.improving[rule], np.clip(time, 0, YEARS * self.parts - 1), 0)
         return key
 
     def row(self, code: int) -> int:
@@ -121,14 +127,14 @@ class Survival:
         return self.known[code]
 
     def _meaning(self, code: int) -> tuple[int, float, int]:
-        """Return rule, age at commencement and calendar year of a key."""
-        rest, year = divmod(code, YEARS) if self.improving.any() else (code, 0)
+        """Return rule, age at commencement, and month (12 times the year and the months before it) of a key."""
+        rest, time = divmod(code, YEARS * self.parts) if self.improving.any() else (code, 0)
         number, key = divmod(rest, self.keys)
         age = float(key)
         if self.exact:
             halves, since = divmod(key, _SPANS)
             age = halves // 2 + since / (365 + halves % 2)
-        return number, age, FIRST_YEAR + year
+        return number, age, 12 * FIRST_YEAR + time * (12 // self.parts)
 
     def rated_rows(self, codes: Keys, ratings: Keys) -> Keys:
         """Return the rows of rated lives, by key and number of the rating, made on first meeting."""
@@ -141,13 +147,13 @@ class Survival:
             self.rated[code, rating] = self._add_rated(*self._meaning(code), self.ratings.keys[rating - 1])
         return self.rated[code, rating]
 
-    def _add_rated(self, number: int, age: float, year: int, key: Key) -> int:
+    def _add_rated(self, number: int, age: float, month: int, key: Key) -> int:
         rule, rates = self.basis.document.mortality.rule[number], self.basis.rates[number]
         whole = int(age) if rates.whole_ages_only else age
         pieces = []
         for begin, rating in key.pieces():
             try:
-                yearly = yearly_rates(rule, rates, whole, self.basis.scales[number], year, rating)
+                yearly = self._yearly(number, whole, month, rating)
             except ValueError:
                 return IMPOSSIBLE
             if len(yearly) == 0:
@@ -156,14 +162,22 @@ class Survival:
         closes = rule.close or rates.closed
         course = course_of(pieces, int(key.piece), age - whole, self.fractions, closes)
         living = self.pool.add(course.living)
-        self.entered.append(Entered(number, whole, year, tuple(key.pieces())))
+        self.entered.append(Entered(number, whole, month // 12, tuple(key.pieces())))
         return self._record(living, len(course.living), course.yearly, course.reached, age - whole, course.closed)
 
-    def _add(self, number: int, age: float, year: int) -> int:
+    def _yearly(self, number: int, age: float, month: int, rating: Rating = STANDARD) -> Row:
+        rule, rates, scale = (
+            self.basis.document.mortality.rule[number],
+            self.basis.rates[number],
+            self.basis.scales[number],
+        )
+        return yearly_rates(rule, rates, age, scale, month // 12, rating, self.basis.adjustment(number), month)
+
+    def _add(self, number: int, age: float, month: int) -> int:
         rule, rates = self.basis.document.mortality.rule[number], self.basis.rates[number]
         whole = int(age) if rates.whole_ages_only else age
         try:
-            yearly = yearly_rates(rule, rates, whole, self.basis.scales[number], year)
+            yearly = self._yearly(number, whole, month)
         except ValueError:
             return IMPOSSIBLE
         if len(yearly) == 0:
@@ -174,7 +188,7 @@ class Survival:
         loops.fill_living(yearly, reached, passed, self.fractions, self.pool.row(living, count))
         # A multiple or an extra may bring a rate to 1 before the table ends; then too nobody is left.
         closed = rule.close or rates.closed or bool((yearly >= 1).any())
-        self.entered.append(Entered(number, whole, year))
+        self.entered.append(Entered(number, whole, month // 12))
         return self._record(living, count, yearly, reached, passed, closed)
 
     def _record(self, living: int, count: int, yearly: Row, reached: Row, passed: float, closed: bool) -> int:
@@ -208,10 +222,13 @@ def yearly_rates(
     scale: Scale | None = None,
     year: int = 0,
     rating: Rating = STANDARD,
+    adjustment: Adjustment | None = None,
+    month: int = 0,
 ) -> Row:
     """Adjusted rates of the years from an age at commencement to the end of a table, by year of age or duration.
 
-    year: the calendar year in which the first of them begins, for the improvement; rating: the life's own.
+    year: the calendar year in which the first of them begins, for the improvement; rating: the life's own; month: the
+    calendar month, 12 times the year and the months before it, for the adjustment.
 
     Empty where the age lies beyond the table. Raises ValueError where it lies below, or a rate is missing.
     """
@@ -228,6 +245,8 @@ def yearly_rates(
     source = rates.rates_from(entry, known) if known else np.zeros(0)  # type: ignore[attr-defined]
     improved = scale.cohort(int(np.floor(entered)), year, known) if scale is not None else 1.0
     adjusted = np.minimum(1.0, rule.multiple * rating.multiple * source * improved + (rule.extra + rating.extra))
+    if adjustment is not None:
+        adjusted = adjustment.rates(adjusted, int(np.floor(entered)), month)
     if closing:
         adjusted = np.append(adjusted, 1.0)
     return np.asarray(adjusted)
@@ -242,10 +261,14 @@ class Persistency:
     pool: Pool
     places: list[tuple[int, int, int]] = field(default_factory=list)
     known: dict[int, int] = field(default_factory=dict)
-    _years: dict[int, Row] = field(default_factory=dict)
+    _years: dict[tuple[int, int], Row] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
         lapse = self.basis.document.lapse
+        # The last place answers for rule -1.
+        self.dated = np.array([one is not None and one.dated for one in (*self.basis.lapse_adjustments, None)])
+        if not self.basis.lapse_adjustments:
+            self.dated = np.zeros(1 + (len(lapse.rule) if lapse is not None else 0), dtype=bool)
         self.dependent = lapse is not None and lapse.competing == "dependent rates"
         self.spread = lapse is not None and lapse.timing == "each step" and self.settings.step == "month"
         if self.dependent and lapse is not None and lapse.timing == "anniversaries" and not self.yearly:
@@ -259,11 +282,27 @@ class Persistency:
         """Whether steps are years."""
         return self.settings.step == "year"
 
+    def codes(self, rule: Keys, until: Keys, commencement: NDArray[np.int32]) -> Keys:
+        """Return the key of each policy's row: rule, end of lapses, and month where rates depend on the calendar."""
+        key: Keys = (1 + rule) * (NEVER + 1) + until
+        if self.dated.any():
+            month = commencement.astype("datetime64[D]").astype("datetime64[M]").astype(np.int64)
+            month += 12 * (1970 - FIRST_YEAR)
+            key *= 12 * YEARS
+            key += np.where(self.dated[rule], np.clip(month, 0, 12 * YEARS - 1), 0)
+        return key
+
+    def meaning(self, code: int) -> tuple[int, int, int]:
+        """Return rule (-1: no lapses), end of lapses, and month of commencement where rates depend on it."""
+        rest, month = divmod(code, 12 * YEARS) if self.dated.any() else (code, 0)
+        number, until = divmod(rest, NEVER + 1)
+        return number - 1, until, 12 * FIRST_YEAR + month
+
     def row(self, code: int) -> int:
-        """Return the row of (1 + rule) * (NEVER + 1) + until, made on first meeting; rule -1 has no lapses."""
+        """Return the row of a key, made on first meeting; rule -1 has no lapses."""
         if code not in self.known:
-            number, until = divmod(code, NEVER + 1)
-            held, dead, lapsing = self._build(self.shares(number - 1, until))
+            number, until, month = self.meaning(code)
+            held, dead, lapsing = self._build(self.shares(number, until, month))
             self.known[code] = len(self.places)
             # One place in front of each row stands for g = -1.
             place = self.pool.add(held) + 1
@@ -273,20 +312,22 @@ class Persistency:
             self.places.append((place, dying, self.pool.add(lapsing) + 1))
         return self.known[code]
 
-    def yearly_rates(self, rule: int) -> Row:
-        """Return the rates of the years since commencement; the same however long lapses go on."""
-        if rule not in self._years:
+    def yearly_rates(self, rule: int, month: int = 0) -> Row:
+        """Return the rates of the years since commencement in a month; the same however long lapses go on."""
+        if (rule, month) not in self._years:
             document: LapseRule = self.basis.document.lapse.rule[rule]  # type: ignore[union-attr]
             table = list(self.basis.lapses[rule])
-            self._years[rule] = np.array([yearly_lapse(document, table, year) for year in range(LONGEST // 12 + 2)])
-        return self._years[rule]
+            yearly = np.array([yearly_lapse(document, table, year) for year in range(LONGEST // 12 + 2)])
+            adjustment = self.basis.lapse_adjustment(rule)
+            self._years[rule, month] = yearly if adjustment is None else adjustment.rates(yearly, 0, month)
+        return self._years[rule, month]
 
-    def shares(self, rule: int, until: int) -> Row:
+    def shares(self, rule: int, until: int, month: int = 0) -> Row:
         """Return the share lapsing at each point 0, 1 ... of those still there before; rule -1 has none."""
         points = np.arange(LONGEST + 13)
         if rule < 0:
             return np.zeros(len(points))
-        yearly = self.yearly_rates(rule)
+        yearly = self.yearly_rates(rule, month)
         if self.spread:
             shares = (1 - (1 - yearly) ** (1 / 12))[np.maximum(points - 1, 0) // 12]
         else:

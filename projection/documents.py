@@ -4,13 +4,18 @@ from __future__ import annotations
 
 import difflib
 import tomllib
-from collections.abc import Iterable
+from collections.abc import Callable, Iterable
+from datetime import date
 from pathlib import Path
 from typing import Any, TypeVar
 
 from pydantic import BaseModel, ValidationError
 
+import assumptions
 from assumptions.basis import Basis, BasisDocument, prepare_basis
+from assumptions.shock_sets import ShockSet
+from assumptions.shocking import WrongBasisError, need_same_basis, shocked
+from assumptions.shocks import Shock
 from assumptions.tables import TableError
 from portfolios.designs import Design
 
@@ -56,6 +61,57 @@ def read_designs(path: Path | str) -> list[Design]:
             raise DocumentError(f"{file}: key 'code': '{design.code}' is already the code of another design in {path}")
         designs[design.code] = design
     return list(designs.values())
+
+
+NAMED_SETS = Path(assumptions.__file__).with_name("named_sets")
+"""Sets of shocks that come with the program, as dated documents."""
+
+
+def read_shock(path: Path | str, basis: Basis | None = None) -> Shock:
+    """Read a shock; with a basis, check that it is the one that the shock is made for. Raises DocumentError."""
+    shock = read_document(path, Shock)
+    if basis is not None:
+        _need(path, lambda: need_same_basis(shock.basis, basis, shock.name_in_words))
+    return shock
+
+
+def read_shocks(path: Path | str, basis: Basis | None = None) -> ShockSet:
+    """Read a set of shocks, by its path or by the name of one that comes with the program ('eu-life-2015').
+
+    With a basis, check that it is the one that the set is made for. Raises DocumentError.
+    """
+    named = NAMED_SETS / f"{path}.toml"
+    if Path(path).name == str(path) and named.is_file() and not Path(path).is_file():
+        path = named
+    try:
+        shocks = read_document(path, ShockSet)
+    except DocumentError as error:
+        if Path(path).is_file():
+            raise
+        raise DocumentError(f"{error}; the named sets are {', '.join(named_sets())}") from None
+    if basis is not None:
+        _need(path, lambda: shocks.need(basis))
+    return shocks
+
+
+def named_sets() -> list[str]:
+    """Names of the sets of shocks that come with the program."""
+    return sorted(file.stem for file in NAMED_SETS.glob("*.toml"))
+
+
+def shocked_basis(basis: Basis, shock: Shock, valuation_date: date, name: Path | str = "shock") -> Basis:
+    """Return the basis after a shock. Raises DocumentError, with the name of the document, where it does not fit."""
+    try:
+        return shocked(basis, shock, valuation_date)
+    except ValueError as error:
+        raise DocumentError(f"{name}: {error}") from error
+
+
+def _need(path: Path | str, check: Callable[[], None]) -> None:
+    try:
+        check()
+    except WrongBasisError as error:
+        raise DocumentError(f"{path}: key 'basis': {error}") from error
 
 
 def read_document(path: Path | str, model: type[Model]) -> Model:

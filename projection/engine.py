@@ -183,7 +183,8 @@ class Engine:
         survival, second = self._lives(chunk, checked, cell, mortality, places)
         until = self._until.months(chunk, lapse)
         self._flag(checked, until < 0, Reason.NOT_WHOLE_MONTHS, self._until.column)
-        lapse = self._persistencies.rows_for((1 + lapse) * (NEVER + 1) + np.maximum(until, 0))
+        codes = self.persistency.codes(lapse, np.maximum(until, 0), chunk.day("commencement_date"))
+        lapse = self._persistencies.rows_for(codes)
         discount = self._discounts.rows_for(np.maximum(self.discount.codes(interest, places), 0))
         return loops.Found(
             cell=cell,

@@ -170,6 +170,8 @@ def _course(
         rule = document.lapse.rule[lapse]
         until = until_months(rule, policy.get(rule.until) if isinstance(rule.until, str) else None)
         lapses = Persistency(document.lapse, rule, basis.lapses[lapse], until, settings.step_months)
+        commenced = _date(policy, "commencement_date")
+        lapses.adjust(basis.lapse_adjustment(lapse), 12 * commenced.year + commenced.month - 1)
     else:
         lapses = Persistency(None, None, (), None, settings.step_months)
     outstanding = settings.due == "outstanding"
@@ -202,7 +204,11 @@ def _lives(policy: Policy, age: Fraction, position: Position, design: Design, ba
         born = _date(policy, "second_birth_date" if life == "second" else "birth_date")
         commenced, scale = _date(policy, "commencement_date"), basis.scales[place]
         pieces = pieces_of(policy, life) if mortality.ratings and now != "none" else [Piece(0, STANDARD)]
-        rates = [yearly_rates(rule, table, ages[life], scale, commenced, born, rating, at) for at, rating in pieces]
+        adjustment = basis.adjustment(place)
+        rates = [
+            yearly_rates(rule, table, ages[life], scale, commenced, born, rating, at, adjustment)
+            for at, rating in pieces
+        ]
         found[life] = place, survival_of(rates, mortality.fractions)
     place, first = found["second" if now == "second" else "first"]
     second = found["second"][1] if now == "both" else None

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from fractions import Fraction
 
+from assumptions.adjustments import Adjustment
 from assumptions.lapse import Lapse, LapseRule, yearly_lapse
 
 from .plain_faults import NotValued
@@ -36,10 +37,19 @@ class Persistency:
         if self.dependent and self.only_anniversaries and step_months == 1:
             raise ValueError("dependent rates need lapses at each step, or the step 'year'")
         self._points = [1.0]
+        self.adjustment: Adjustment | None = None
+        self._month = 0
+
+    def adjust(self, adjustment: Adjustment | None, month: int) -> None:
+        """Adjust the yearly rates; month: of commencement, 12 times the year and the months before it."""
+        self.adjustment, self._month = adjustment, month
 
     def yearly(self, year: int) -> float:
         """Return w of a policy year counted from 0, before ``until`` is looked at."""
-        return 0.0 if self.rule is None else yearly_lapse(self.rule, self.rates, year)
+        if self.rule is None:
+            return 0.0
+        w = yearly_lapse(self.rule, self.rates, year)
+        return w if self.adjustment is None else self.adjustment.rate(w, 0, year, self._month)
 
     def at(self, point: int) -> float:
         """Return P[g]."""

@@ -7,6 +7,7 @@ from datetime import date
 from fractions import Fraction
 from typing import NamedTuple
 
+from assumptions.adjustments import Adjustment
 from assumptions.improvement import Scale
 from assumptions.mortality import STANDARD, Fractions, MortalityRule, Rates, Rating, adjusted_rate
 
@@ -31,8 +32,8 @@ class YearlyRates(NamedTuple):
 
     Year j starts j - ``offset`` years after commencement. ``offset`` is the part r of an exact age a + r that
     enters a table of whole ages, 0 otherwise. ``entry`` is the age, before added years, of year 0, and
-    ``first_year`` the calendar year in which it begins, for the improvement. rating: the life's own; begun: years
-    since commencement at which year 0 stands, where a rating counts from then on only.
+    ``first_year`` the calendar year in which it begins, ``first_month`` the month (from 1). rating: the life's own;
+    begun: years since commencement at which year 0 stands, where a rating counts from then on only.
     """
 
     rule: MortalityRule
@@ -43,6 +44,8 @@ class YearlyRates(NamedTuple):
     first_year: int = 0
     rating: Rating = STANDARD
     begun: int = 0
+    adjustment: Adjustment | None = None
+    first_month: int = 1
 
     @property
     def closed(self) -> bool:
@@ -64,9 +67,13 @@ class YearlyRates(NamedTuple):
             rule = f"the table ends at age {self.rates.final_age} and is not closed"
             raise NotValued("table ends too early", "age", entered + j, rule)
         try:
-            return adjusted_rate(self.rule, self.rates, self.entry, j, self.improved(j), self.rating)
+            q = adjusted_rate(self.rule, self.rates, self.entry, j, self.improved(j), self.rating)
         except ValueError as error:
             raise NotValued("age outside the tables", "age", entered + j, str(error)) from error
+        if self.adjustment is None or (self.closed and entered + j >= self.rates.final_age - 1):
+            return q
+        month = 12 * self.first_year + self.first_month - 1
+        return self.adjustment.rate(q, math.floor(entered) + j, j, month)
 
 
 def yearly_rates(
@@ -78,8 +85,9 @@ def yearly_rates(
     birth: date | None = None,
     rating: Rating = STANDARD,
     begun: int = 0,
+    adjustment: Adjustment | None = None,
 ) -> YearlyRates:
-    """Return the rates of a life by its age at commencement; the dates are needed for improvement.
+    """Return the rates of a life by its age at commencement; the dates are needed where calendar time matters.
 
     rating: the life's own, from ``begun`` years after commencement on.
 
@@ -96,11 +104,12 @@ def yearly_rates(
     if not rates.first_age <= entered < rates.final_age:
         held = f"the table holds ages {rates.first_age} to {rates.final_age - 1}"
         raise NotValued("age outside the tables", "age", entered, held)
-    first_year = 0
-    if scale is not None and commencement is not None and birth is not None:
+    first_year, first_month = 0, 1
+    if (scale is not None or adjustment is not None) and commencement is not None and birth is not None:
         # Years of an exact age in a table of whole ages begin on birthdays, all others with the policy year.
         first_year = birth.year + whole if offset else commencement.year
-    return YearlyRates(rule, rates, entry, offset, scale, first_year, rating, begun)
+        first_month = birth.month if offset else commencement.month
+    return YearlyRates(rule, rates, entry, offset, scale, first_year, rating, begun, adjustment, first_month)
 
 
 class Survival:

@@ -36,6 +36,7 @@ def convention_sheet(basis: Basis, settings: Settings) -> Sheet:
         ("expected cash flows", "not discounted; each expected payment is rounded half-even to a thousandth of the "
          "minor unit before adding, so that sums do not depend on the order"),
         ("personal data", "policy identifiers only"),
+        *(("shock", title) for title, _ in basis.changed_by),
     )  # fmt: skip
 
 

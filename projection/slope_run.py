@@ -79,8 +79,11 @@ def slopes_of(
     """Return the slopes of every policy that a run would value, added up by group.
 
     Raises DocumentError where a design is valued by Woolhouse's formula with three terms, whose correction has no
-    slope here, and what ``value_extract`` raises for input that does not fit together.
+    slope here, or the basis's rates were changed by a shock, and what ``value_extract`` raises for input that does not
+    fit together.
     """
+    if any(basis.adjustments) or any(basis.lapse_adjustments):
+        raise DocumentError(f"{basis.title}: no slopes of a basis after a shock to its rates; take those of the first")
     for design in designs:
         for stream in design.stream:
             if stream.payments == "Woolhouse 3":

@@ -18,7 +18,7 @@ from assumptions.laws import Law
 from assumptions.mortality import Rates
 
 from . import loops
-from .curves import NEVER, Entered, Persistency, Survival
+from .curves import Entered, Persistency, Survival
 from .documents import DocumentError
 from .engine import Engine
 from .ratings import Key
@@ -191,7 +191,8 @@ def lapse_slopes(engine: Engine, gathered: Gathering) -> list[Slope]:
     persistency, lapse = engine.persistency, engine.basis.document.lapse
     sums: dict[tuple[int, int], Numbers] = {}
     for code, number in sorted(persistency.known.items()):
-        position, until = divmod(code, NEVER + 1)
+        place, until, _ = persistency.meaning(code)
+        position = place + 1
         if position == 0 or lapse is None:
             continue
         rule, rates = lapse.rule[position - 1], engine.basis.lapses[position - 1]

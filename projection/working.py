@@ -131,7 +131,9 @@ def _rate(life: Survival) -> str:
     scale = life.rates.scale
     improved = "" if scale is None else f" x improvement from {scale.document.base_year}, listed with it"
     close = "; 1 at the last age" if life.rates.closed else ""
-    return f"q = min(1, {rule.multiple:g} x table{improved} + {rule.extra:g}); age {rule.added_years:+d} years{close}"
+    adjusted = "" if life.rates.adjustment is None else ", then as the shock says"
+    formula = f"q = min(1, {rule.multiple:g} x table{improved} + {rule.extra:g}){adjusted}"
+    return f"{formula}; age {rule.added_years:+d} years{close}"
 
 
 def _rating(life: Survival) -> Iterator[tuple[str, str]]:
@@ -174,6 +176,7 @@ def _other_rules(basis: Basis, value: PlainValue) -> Iterator[tuple[str, str]]:
     if document.lapse:
         rule = document.lapse.rule[rules.lapse - 1]
         until = "" if value.lapses.until is None else f", until month {value.lapses.until:g}"
+        until += "" if value.lapses.adjustment is None else ", as the shock says"
         timing = f"{document.lapse.timing}, {document.lapse.competing}"
         yield "lapse", f"rule {rules.lapse}{_titled(rule.title)}: {rule.multiple:g} x rate{until}; {timing}"
     else:
@@ -211,7 +214,8 @@ def _lapses(value: PlainValue) -> list[str]:
     first = value.position.k // 12
     if value.lapses.rule is None or last < first:
         return []
-    held = len(value.lapses.rates) - 1
+    # An adjustment may tell apart years that the table does not.
+    held = len(value.lapses.rates) - 1 if value.lapses.adjustment is None else last
     years = range(first, max(first, min(last, held)) + 1)
     rows = [(f"{year + 1}{'+' * (year >= held)}", f"{value.lapses.yearly(year):.9f}") for year in years]
     return table(("policy year", "w"), rows)

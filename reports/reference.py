@@ -16,6 +16,8 @@ from pydantic import BaseModel
 from pydantic.fields import FieldInfo
 
 from assumptions.basis import BasisDocument
+from assumptions.shock_sets import ShockSet
+from assumptions.shocks import Shock
 from portfolios.columns import COLUMNS, Column
 from portfolios.designs import Design
 from projection.premium_document import PremiumDocument
@@ -29,6 +31,8 @@ MODELS: tuple[tuple[str, type[BaseModel]], ...] = (
     ("Basis", BasisDocument),
     ("Product design", Design),
     ("Premium document", PremiumDocument),
+    ("Shock", Shock),
+    ("Set of shocks", ShockSet),
 )
 """Every document, by its name."""
 
