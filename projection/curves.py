@@ -138,9 +138,10 @@ class Survival:
 
     def rated_rows(self, codes: Keys, ratings: Keys) -> Keys:
         """Return the rows of rated lives, by key and number of the rating, made on first meeting."""
-        found, inverse = np.unique(np.column_stack((codes, ratings)), axis=0, return_inverse=True)
-        rows = np.array([self._rated_row(*pair) for pair in found.tolist()], dtype=np.int64)
-        return np.asarray(rows[inverse.reshape(-1)])
+        many = len(self.ratings.keys) + 1
+        found, inverse = np.unique(codes * many + ratings, return_inverse=True)
+        rows = np.array([self._rated_row(*divmod(pair, many)) for pair in found.tolist()], dtype=np.int64)
+        return np.asarray(rows[inverse])
 
     def _rated_row(self, code: int, rating: int) -> int:
         if (code, rating) not in self.rated:

@@ -10,13 +10,17 @@ from math import prod
 from pathlib import Path
 from typing import Any
 
+import numpy as np
 import pyarrow as pa
 import pytest
+from hypothesis import given
+from hypothesis import strategies as st
 
 import projection
 from assumptions.basis import prepare_basis
 from portfolios.designs import Design
 from portfolios.extract import open_extract
+from projection import ratings
 from projection.documents import DocumentError
 from projection.settings import Settings
 from projection.sheet import convention_sheet
@@ -43,12 +47,12 @@ def folder(tmp_path: Path) -> Path:
 
 def basis(folder: Path, age: str = "last birthday", fractions: str = "constant force", **rule: Any) -> Any:
     """A basis without interest that asks for ratings."""
-    ratings = rule.pop("ratings", True)
+    asked = rule.pop("ratings", True)
     rules = [{"table": "closed.csv", **rule}]
     return prepare_basis(
         {
             "title": "Invented basis",
-            "mortality": {"age": age, "fractions": fractions, "ratings": ratings, "rule": rules},
+            "mortality": {"age": age, "fractions": fractions, "ratings": asked, "rule": rules},
             "interest": {"rule": [{"flat": 0.0}]},
         },
         folder,
@@ -276,3 +280,19 @@ def test_chunks_and_threads_do_not_matter(folder: Path) -> None:
         tables.append(pa.concat_tables(parts).combine_chunks())
     assert tables[0].equals(tables[1])
     assert tables[0].equals(tables[2])
+
+
+FIELDS = ([1.0, 1.5], [0.0, -0.0, 3.0], [0.0, 5.0], *[[153.0, 5.0]] * 4)
+
+
+@given(rows=st.lists(st.tuples(*map(st.sampled_from, FIELDS)), min_size=1, max_size=40))
+def test_distinct_ratings(rows: list[tuple[float, ...]]) -> None:
+    matrix = np.array(rows)
+    for mixing in (True, False):
+        # With factors of 0 all rows look alike, and they are compared one by one.
+        with pytest.MonkeyPatch.context() as patch:
+            if not mixing:
+                patch.setattr(ratings, "_ODD", ratings._ODD * np.uint64(0))
+            keys, places = ratings._distinct_rows(matrix)
+        assert np.array_equal(keys[places], matrix)
+        assert len(keys) == len({tuple(row) for row in rows})
