@@ -32,7 +32,8 @@ class Slope:
 
     part: of the basis; rule: its number, from 1; title: of the rule; at: attained age, policy year or maturity in
     years; duration: policy year from 0 within a select period, -1 elsewhere; slope: change of the value, in currency,
-    for a change of 1 in the figure; relative: the same for a change in proportion to the figure, by 100 %.
+    for a change of 1 in the figure; relative: the same for a change in proportion, by 100 %, of mortality and lapse of
+    the rate that counts (after multiple, improvement and extra).
     """
 
     part: str
@@ -140,19 +141,19 @@ def _of_record(survival: Survival, number: int, gathered: Gathering) -> _Found:
         slopes = at_points - after / (1 - q)
     slopes[0] -= hung.sum() * _log_slope(q[:1], np.array([passed]), survival.fractions)[0]
     slopes += gathered.passed(int(record["yearly"]), years)
-    ages, factor, source = _factors(survival, entered, years)
-    slopes = np.where(q < 1, slopes * factor, 0.0)
-    return _Found(ages, slopes, slopes * source)
+    ages, factor = _factors(survival, entered, years)
+    free = (q < 1) & (factor > 0)
+    return _Found(ages, np.where(free, slopes * factor, 0.0), np.where(free, slopes * q, 0.0))
 
 
-def _factors(survival: Survival, entered: Entered, years: int) -> tuple[Numbers, Numbers, Numbers]:
-    """Ages at which the table is read, what its rates are multiplied with, and those rates.
+def _factors(survival: Survival, entered: Entered, years: int) -> tuple[Numbers, Numbers]:
+    """Ages at which the table is read, and what its rates are multiplied with.
 
     The factor is 0 in the year that closes a table and where the rate is held at 1.
     """
     rule, rates = survival.basis.document.mortality.rule[entered.rule], survival.basis.rates[entered.rule]
     scale = survival.basis.scales[entered.rule]
-    ages, factor, source = np.zeros(years), np.zeros(years), np.zeros(years)
+    ages, factor = np.zeros(years), np.zeros(years)
     ends = [begin for begin, _ in entered.pieces[1:]] + [years]
     for (begin, rating), end in zip(entered.pieces, ends, strict=True):
         age = entered.age + rule.added_years + rating.added_years
@@ -162,12 +163,11 @@ def _factors(survival: Survival, entered: Entered, years: int) -> tuple[Numbers,
         here = slice(begin, known)
         read = rates.rates_from(age if isinstance(rates, Law) else int(age), known)  # type: ignore[attr-defined]
         ages[here] = np.floor(age) + np.arange(begin, known)
-        source[here] = read[begin:]
         factor[here] = rule.multiple * rating.multiple
         if scale is not None:
             factor[here] *= scale.cohort(int(np.floor(age)), entered.year, known)[begin:]
-        factor[here] *= factor[here] * source[here] + (rule.extra + rating.extra) < 1
-    return ages, factor, source
+        factor[here] *= factor[here] * read[begin:] + (rule.extra + rating.extra) < 1
+    return ages, factor
 
 
 def _log_slope(q: Numbers, share: Numbers, rule: int) -> Numbers:
