@@ -230,7 +230,8 @@ def test_payments_for_certain_outlast_a_table(tmp_path: Path) -> None:
     found = book_of(working_bytes(work_out(policy, design, prepare_basis({**BASIS, "expense": []}), settings)))
     assert rows(found["Steps"])[-1]["survival"] > 0
     found = book_of(working_bytes(work_out(policy, design, basis.__class__(**{
-        **vars(basis), "document": basis.document.model_copy(update={"expense": []})}), settings)))  # fmt: skip
+        **vars(basis), "expense_prices": (),
+        "document": basis.document.model_copy(update={"expense": []})}), settings)))  # fmt: skip
     last = rows(found["Steps"])[-1]
     assert (last["point"], last["survival"], last["deaths"]) == (359, None, None)
     assert last["discount"] == pytest.approx(rows(found["Payments"])[-1]["discount"])
