@@ -34,6 +34,8 @@ class Window:
     first: int
     end: float
     today: int
+    grain: int = 1
+    """Months within which years that begin count as beginning in the middle one: 1, 3 or 12."""
 
     def share(self, begins: int) -> float:
         """Return the share of a year that begins in a month, one year at a time."""
@@ -76,6 +78,15 @@ class Adjustment:
     def dated(self) -> bool:
         """Whether calendar time matters, so that rates differ between policies of different dates."""
         return any(step.window is not None or step.years != ALWAYS for step in self.steps)
+
+    @cached_property
+    def grain(self) -> int:
+        """Months within which it does not matter when a year of the rates begins."""
+        return min((step.window.grain for step in self.steps if step.window is not None), default=12)
+
+    def counted(self, month: int) -> int:
+        """Return the month in which a year of the rates counts as beginning."""
+        return month - month % self.grain + self.grain // 2
 
     def rate(self, q: float, age: int, duration: int, month: int) -> float:
         """Return one adjusted rate: at an age, in the year of a duration."""

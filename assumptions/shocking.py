@@ -69,7 +69,7 @@ def _step(change: Change, valuation_date: date) -> Step:
         today = _today(valuation_date)
         first = today + change.from_months
         end = float("inf") if change.for_months is None else first + change.for_months
-        window = Window(first, end, today)
+        window = Window(first, end, today, {"months": 1, "quarters": 3, "years": 12}[change.counted_by])
     return Step(
         change.how,
         change.amount or 0.0,

@@ -30,7 +30,7 @@ PARTS: dict[str, Part] = {
 }
 """The part of a basis that each change lies in."""
 
-_RATES = {"for", "durations", "calendar_years", "from_months", "for_months", "at_most"}
+_RATES = {"for", "durations", "calendar_years", "from_months", "for_months", "counted_by", "at_most"}
 _KNOWN: dict[str, set[str]] = {
     "mortality": {"ages", *_RATES},
     "improvement": {"for", "ages", "calendar_years"},
@@ -58,6 +58,10 @@ class Target(Rule):
     maturities: Band | None = Field(None, description="maturities in years from the valuation date; absent: all")
     from_months: int = Field(0, ge=0, le=1200, description="months from the valuation date until the change begins")
     for_months: int | None = Field(None, ge=1, le=1200, description="months that it lasts; absent: for good")
+    counted_by: Literal["months", "quarters", "years"] = Field(
+        "months", description="how closely 'from_months' and 'for_months' look at when a year of the rates begins: a "
+        "month has rows of survival of its own, many in a large portfolio; quarters a third of them, years a twelfth"
+    )  # fmt: skip
     rates: Literal["spot", "forward"] = Field(
         "spot", description="whether spot rates change at their maturities, or forward rates year by year ('interest')"
     )

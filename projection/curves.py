@@ -91,6 +91,7 @@ class Survival:
         self.improving = adjusted | np.array([scale is not None for scale in self.basis.scales])
         # Adjustments in calendar time count months, improvement years.
         self.parts = 12 if adjusted.any() else 1
+        self.grain = np.array([one.grain if one is not None else 12 for one in made] or [12] * len(mortality.rule))
         # Where a table of whole ages is entered at an exact one, its years begin on birthdays.
         self.by_birthday = np.array([self.exact and rates.whole_ages_only for rates in self.basis.rates])
         for number, (rule, rates) in enumerate(zip(mortality.rule, self.basis.rates, strict=True), 1):
@@ -116,6 +117,9 @@ class Survival:
             began = commencement - np.where(self.by_birthday[rule], ages.since, 0)
             unit = "datetime64[M]" if self.parts == 12 else "datetime64[Y]"
             time = began.astype("datetime64[D]").astype(unit).astype(np.int64) + (1970 - FIRST_YEAR) * self.parts
+            if self.parts == 12:
+                grain = self.grain[rule]
+                time += grain // 2 - time % grain
             key *= YEARS * self.parts
             key += np.where(self.improving[rule], np.clip(time, 0, YEARS * self.parts - 1), 0)
         return key
@@ -268,6 +272,7 @@ class Persistency:
         lapse = self.basis.document.lapse
         # The last place answers for rule -1.
         self.dated = np.array([one is not None and one.dated for one in (*self.basis.lapse_adjustments, None)])
+        self.grain = np.array([one.grain if one is not None else 12 for one in (*self.basis.lapse_adjustments, None)])
         if not self.basis.lapse_adjustments:
             self.dated = np.zeros(1 + (len(lapse.rule) if lapse is not None else 0), dtype=bool)
         self.dependent = lapse is not None and lapse.competing == "dependent rates"
@@ -289,6 +294,8 @@ class Persistency:
         if self.dated.any():
             month = commencement.astype("datetime64[D]").astype("datetime64[M]").astype(np.int64)
             month += 12 * (1970 - FIRST_YEAR)
+            grain = self.grain[rule]
+            month += grain // 2 - month % grain
             key *= 12 * YEARS
             key += np.where(self.dated[rule], np.clip(month, 0, 12 * YEARS - 1), 0)
         return key

@@ -42,7 +42,8 @@ class Persistency:
 
     def adjust(self, adjustment: Adjustment | None, month: int) -> None:
         """Adjust the yearly rates; month: of commencement, 12 times the year and the months before it."""
-        self.adjustment, self._month = adjustment, month
+        self.adjustment = adjustment
+        self._month = month if adjustment is None else adjustment.counted(month)
 
     def yearly(self, year: int) -> float:
         """Return w of a policy year counted from 0, before ``until`` is looked at."""

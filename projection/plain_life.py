@@ -72,7 +72,7 @@ class YearlyRates(NamedTuple):
             raise NotValued("age outside the tables", "age", entered + j, str(error)) from error
         if self.adjustment is None or (self.closed and entered + j >= self.rates.final_age - 1):
             return q
-        month = 12 * self.first_year + self.first_month - 1
+        month = self.adjustment.counted(12 * self.first_year + self.first_month - 1)
         return self.adjustment.rate(q, math.floor(entered) + j, j, month)
 
 

@@ -38,6 +38,8 @@ def changes(draw: Draw, kinds: tuple[str, ...] = (*KINDS, "mortality", "lapse"))
             change["for_months"] = one_of(draw, 12, 7, 30)
         if chance(draw, 4):
             change["from_months"] = one_of(draw, 12, 5, 120)
+        if what != "inflation" and chance(draw, 3):
+            change["counted_by"] = one_of(draw, "quarters", "years")
     return change
 
 

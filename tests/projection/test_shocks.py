@@ -179,6 +179,19 @@ def test_twelve_months_are_twelve_months() -> None:
     np.testing.assert_allclose(added[5:10], [0, 0, 0.0015 * 9 / 12, 0.0015 * 3 / 12, 0], atol=1e-15)
 
 
+def test_beginnings_may_be_counted_by_quarters_and_years() -> None:
+    change = {"what": "mortality", "how": "absolute", "amount": 0.0015, "for_months": 12}
+    for by, counted in (("months", 12 * 2020 + 2), ("quarters", 12 * 2020 + 1), ("years", 12 * 2020 + 6)):
+        made = after(basis(), {**change, "counted_by": by}).adjustment(0)
+        assert made is not None
+        assert made.counted(12 * 2020 + 2) == counted  # March, February, July
+    # Years of the rates that differ by calendar year alone share their rows within one.
+    permanent = {key: value for key, value in change.items() if key != "for_months"}
+    by_year = after(basis(), {**permanent, "calendar_years": {"from": 2030}}).adjustment(0)
+    assert by_year is not None
+    assert (by_year.dated, by_year.grain) == (True, 12)
+
+
 def test_the_two_ways_of_sharing_a_year_agree() -> None:
     for window in (Window(100, 112, 100), Window(104, 109, 100), Window(117, float("inf"), 100), Window(100, 101, 100)):
         begins = np.arange(60, 160)
