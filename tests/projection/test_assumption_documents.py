@@ -57,7 +57,13 @@ def value(basis: Basis, stream: dict[str, Any], step: str = "month", age: int = 
     }  # fmt: skip
     design = {"code": "P", "stream": [{"name": "s", "direction": "out", "amount": SUM, **stream}]}
     found = projection.value(
-        pa.Table.from_pylist([row]), [design], basis, TODAY, step=step, due="outstanding", sample=1  # type: ignore[arg-type]
+        pa.Table.from_pylist([row]),
+        [design],
+        basis,
+        TODAY,
+        step=step,
+        due="outstanding",
+        sample=1,  # type: ignore[arg-type]
     )
     assert found.exceptions.num_rows == 0
     assert found.outcome.sample.policies == 1
