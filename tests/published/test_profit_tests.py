@@ -12,7 +12,6 @@ from contracts import nearest_is_key, printed
 from projection.profit_measures import internal_rates, present_value, profit_margin
 from projection.profit_vector import emerging
 
-
 GIVEN: dict[str, dict[str, Any]] = {
     "C01": {"S": 1e6, "q": [0.014, 0.015, 0.016], "i": 0.06, "G": 14500, "exp0": 1000, "exp_annual": 100,
             "reserves": [0, 700, 700, 0], "r": 0.1},
