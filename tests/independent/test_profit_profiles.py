@@ -6,6 +6,7 @@ from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
+import pyarrow as pa
 import pytest
 from hypothesis import HealthCheck, event, given, settings
 from hypothesis import strategies as st
@@ -39,11 +40,11 @@ def folder(tmp_path_factory: pytest.TempPathFactory) -> Path:
 
 
 def new_business(example: Example) -> Example:
-    """The same contracts, each sold on the first policy's day of commencement."""
-    days = example.table["commencement_date"].to_pylist()
-    chosen = [place for place, day in enumerate(days) if day == days[0]]
-    asked = replace(example.settings, valuation_date=days[0], due="outstanding")
-    return replace(example, table=example.table.take(chosen), settings=asked)
+    """The same contracts, all sold on the valuation date."""
+    place = example.table.column_names.index("commencement_date")
+    sold = pa.array([example.settings.valuation_date] * len(example.table), pa.date32())
+    table = example.table.set_column(place, "commencement_date", sold)
+    return replace(example, table=table, settings=replace(example.settings, due="outstanding"))
 
 
 def other_basis(basis: Basis) -> Basis:
@@ -91,8 +92,11 @@ def check(example: Example) -> int:
 
 
 @given(data=st.data())
-@settings(max_examples=40, deadline=None, suppress_health_check=SLOW)
+@settings(max_examples=80, deadline=None, suppress_health_check=SLOW)
 def test_profile_and_twin(folder: Path, data: st.DataObject) -> None:
     example = data.draw(examples(folder))
-    if all(design.states == "one life" for design in example.designs):
-        event(f"policies compared: {min(check(new_business(example)), 1)}")
+    # The third term of Woolhouse's formula is no cash flow; profits refuse it.
+    streams = [stream for design in example.designs for stream in design.stream]
+    exact = all(stream.payments != "Woolhouse 3" for stream in streams)
+    if exact and all(design.states == "one life" for design in example.designs):
+        event(f"policies compared: {min(check(new_business(example)), 3)}")
