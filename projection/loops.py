@@ -1198,6 +1198,9 @@ def profile_policies(order, policies, tables, rules, results, profile):
         p = policies[j]
         stand(life, survivals[p.survival], pool, p, rules)
         profile.anchor[i] = -1
+        if p.second == s.NOBODY:
+            results.reason[i] = _NO_SURVIVAL
+            continue
         going = False
         for n in range(p.segments, p.segments_end):
             stream = segments[n]

@@ -76,6 +76,8 @@ def plain_profit(
     """
     if design.states != "one life":
         raise NotValued("lives not known", "lives", design.states, "profits are those of contracts on one life")
+    if policy.get("lives") == "none":
+        raise NotValued("nobody alive at the valuation date", "lives", "none", "a policy is sold to somebody who lives")
     months = 12 if period == "year" else 1
     if months % (12 if step == "year" else 1):
         raise ValueError("the period of the profits is shorter than the step of the projection")
@@ -138,7 +140,10 @@ def _certain_from(terms: Terms, occasion: Occasion) -> int | None:
 
 
 def _in_force(course: Course, point: int) -> float:
-    return course.alive(point, None) * course.lapses.at(point)
+    try:
+        return course.alive(point, None) * course.lapses.at(point)
+    except NotValued:  # after the end of a table that is not closed nothing depends on survival any more
+        return 0.0
 
 
 def _reserves(
