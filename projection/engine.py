@@ -33,7 +33,7 @@ from .pool import Pool
 from .relative import RelativeRows, check_indices
 from .settings import Settings
 from .slots import whole_months
-from .streams import LIFE, NO_SECOND, NOBODY, POLICY, SURVIVAL
+from .streams import LIFE, LONGEST, NO_SECOND, NOBODY, POLICY, SURVIVAL
 from .tally import QUANTA
 
 Mask = NDArray[np.bool_]
@@ -142,6 +142,32 @@ class Engine:
         valued.seconds = clock.seconds
         valued.asked = order, policies, tables
         return valued
+
+    def profile(self, chunk: Chunk, months: int) -> tuple[Checked, loops.Profile]:
+        """Profiles of policies on one life that commence on the valuation date, by periods of so many months."""
+        checked = self.checks.check(chunk)
+        places = self._locate(chunk, checked)
+        with self._lock:
+            cell = self._cells(chunk, checked)
+            found = self._find(chunk, checked, cell, places)
+        order = self._order(found)
+        policies = loops.records(np.zeros(chunk.n, POLICY))
+        after = self.discount.months_after_start()
+        loops.fill_policies(order, places, found, after, self.settings.step_months, policies)
+        tables = self._tables(chunk, checked, cell, order)
+        results = _room_for(chunk.n, checked, tables, 1)
+        periods = LONGEST // months + 1
+        profile = loops.Profile(
+            months=months,
+            parts=np.zeros((chunk.n, 3, periods)),
+            worth=np.zeros((chunk.n, 3, periods)),
+            anchor=np.full(chunk.n, -1, dtype=np.int64),
+            in_force=np.zeros((chunk.n, periods)),
+            discount=np.ones((chunk.n, periods)),
+        )
+        loops.profile_policies(order, policies, tables, self.rules, results, profile)
+        self._name_faults(checked, results.fault, tables.segments)
+        return checked, profile
 
     def _take_back(
         self, order: NDArray[np.int64], policies: NDArray[Any], tables: loops.Tables, results: loops.Results

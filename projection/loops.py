@@ -1502,3 +1502,126 @@ def sort_by(keys, size, order, again):
         starts[keys[i]] += 1
     for i in range(len(order)):
         order[i] = again[i]
+
+
+class Profile(NamedTuple):
+    """Expected payments of new policies by period of so many months, not summed; period 0 is outset.
+
+    months: in a period; parts: (n, 3, periods) benefits, expenses and premiums, not discounted; worth: (n, 3, periods)
+    all of them with their own discount factors, outgo less premiums: those that depend on the policy being in force,
+    those certain from outset, and those certain from the point ``anchor`` (n) on, -1 if there are none and -2 if
+    there are several; in_force, discount: (n, periods) at the end of each period.
+    """
+
+    months: int
+    parts: Any
+    worth: Any
+    anchor: Any
+    in_force: Any
+    discount: Any
+
+
+@compiled
+def profile_policies(order, policies, tables, rules, results, profile):
+    """Fill in the profiles of policies on one life that commence on T, payments due on T outstanding."""
+    segments, survivals = unowned(tables.segments), unowned(tables.survivals)
+    pool, money, whole = unowned(tables.pool), unowned(tables.money), unowned(tables.whole)
+    life = results.lives[s.FIRST]
+    months, periods = profile.months, profile.in_force.shape[1]
+    for j in range(len(order)):
+        i = order[j]
+        if results.reason[i] != 0:
+            continue
+        p = policies[j]
+        stand(life, survivals[p.survival], pool, p, rules)
+        profile.anchor[i] = -1
+        if p.second == s.NOBODY:
+            results.reason[i] = _NO_SURVIVAL
+            continue
+        going = False
+        for n in range(p.segments, p.segments_end):
+            stream = segments[n]
+            reason, first, count, lasts = extent(stream, whole, j, p, life, rules)
+            if reason != 0:
+                results.reason[i], results.fault[i] = reason, n
+                break
+            due, month = due_today(stream, whole, j, p, rules)
+            going = going or (stream.own == 1 and (lasts or due))
+            if due:
+                paid = profile_amount(stream, whole, j, money) * pool[relative_place(stream, whole, j, month, p.shift)]
+                keep_payment(stream, whole, j, i, 0, paid, 1.0, profile)
+            if count > 0:
+                profile_segment(stream, p, life, whole, j, i, money, pool, first, count, rules, profile)
+        if results.reason[i] == 0 and not going:
+            results.reason[i] = _MATURED
+        for t in range(periods):
+            g = months * t
+            profile.discount[i, t] = pool[p.payment + g] * p.payment_accrued
+            profile.in_force[i, t] = pool[life.living + g] * pool[p.held + g] if g <= life.over else 0.0
+
+
+@inner
+def profile_amount(stream, whole, j, money):
+    """Amount of a payment of a segment, without its relative amount."""
+    amount = stream.factor
+    if stream.amount >= 0:
+        amount *= money[stream.amount, j]
+    for _ in range(stream.power):
+        amount *= entry(whole, stream.period, j) / 12.0
+    return amount
+
+
+@inner
+def profile_segment(stream, p, life, whole, j, i, money, pool, first, count, rules, profile):
+    """Add the payments of a segment after T to the profile of a policy."""
+    amount = profile_amount(stream, whole, j, money)
+    hop = apart(stream, whole, j, rules)
+    start = entry(whole, stream.start, j)
+    on_move = stream.when == s.DEATH or stream.when == s.LAPSE
+    month = first
+    if on_move or stream.when == s.ARREARS:
+        month = first - hop
+    elif stream.when == s.ONCE:
+        month = max(first - 1, start if stream.clock == 0 else 0)
+    relative = relative_place(stream, whole, j, month, first + p.shift)
+    before = 0 if rules.dependent == 1 else stream.before
+    a, b, held, discount, accrued = 0.0, 1.0, p.held - before, p.payment, p.payment_accrued
+    if stream.when == s.DEATH:
+        a, b, held, discount, accrued = 1.0, -1.0, p.dead, p.claim, p.claim_accrued
+    elif stream.when == s.LAPSE:
+        held = p.lapsing
+        if rules.dependent == 1:
+            a, b = 0.5, 0.5
+    depends = on_move or stream.cover == s.ALIVE or stream.cover == s.AFTER_GUARANTEE
+    if stream.cover == s.GUARANTEED and start > 0:
+        if start > life.over:
+            return
+        amount *= pool[life.living + start] * pool[p.held + start]
+    for n in range(count):
+        g = first + n * hop
+        x = amount * pool[relative + n * hop]
+        if depends:
+            alive = b * pool[life.living + g]
+            if a != 0.0:
+                alive += a * pool[life.living + g - hop]
+            x *= alive * pool[held + g]
+        keep_payment(stream, whole, j, i, g, x, pool[discount + g] * accrued, profile)
+
+
+@inner
+def keep_payment(stream, whole, j, i, g, paid, factor, profile):
+    """Add an expected payment at a point: in advance to the period that starts there, else to the one that ends."""
+    t = g // profile.months + 1 if stream.when == s.ADVANCE else -(-g // profile.months)
+    profile.parts[i, 0, t] += stream.benefits * paid
+    profile.parts[i, 1, t] += stream.expenses * paid
+    profile.parts[i, 2, t] += stream.premiums * paid
+    kind = 0
+    if stream.cover == s.CERTAIN:
+        kind = 1
+    elif stream.cover == s.GUARANTEED:
+        start = entry(whole, stream.start, j)
+        kind = 1 if start == 0 else 2
+        if start > 0:
+            known = profile.anchor[i]
+            profile.anchor[i] = start if known == -1 or known == start else -2
+    profile.worth[i, kind, t] += (stream.benefits + stream.expenses - stream.premiums) * paid * factor

@@ -132,6 +132,20 @@ def plain_value(
     )
 
 
+def course_and_streams(
+    policy: Mapping[str, Any], design: Design, basis: Basis, settings: Settings
+) -> tuple[Course, list[PolicyStream]]:
+    """Return what one policy's probabilities and discount factors depend on, and its streams with their payments.
+
+    Arguments and errors as for ``plain_value``.
+    """
+    birth, commencement = _date(policy, "birth_date"), _date(policy, "commencement_date")
+    position = position_of(settings.valuation_date, commencement, settings.step)
+    age = age_at(birth, commencement, basis.document.mortality.age)
+    course, rules = _course(policy, age, position, design, basis, settings)
+    return course, _streams(policy, design, basis, course, rules, commencement)
+
+
 def _value_of(stream: PolicyStream, course: Course) -> float:
     """Return the sum of amount x relative x probability x discount factor over the payments of a stream."""
     discount, level = course.discount, stream.level
