@@ -10,7 +10,7 @@ from functools import cached_property
 from pathlib import Path
 from typing import Any, Literal
 
-from pydantic import Field, field_validator
+from pydantic import Field, field_validator, model_validator
 
 from .expenses import Expense
 from .improvement import Scale, read_scale
@@ -19,6 +19,7 @@ from .items import Item, Sourced
 from .lapse import Lapse
 from .laws import Law
 from .mortality import Mortality, MortalityRule, Rates, TableFile
+from .moves import Move, MoveRule
 from .rules import Rule, columns_of
 from .tables import read_curve, read_lapse, read_rates
 
@@ -50,6 +51,15 @@ class BasisDocument(Sourced):
     interest: Interest = Field(description="discount curves")
     expense: list[Expense] = Field(default_factory=list, description="items of expense; all of them count")
     claims: Claims = Field(default_factory=Claims, description="when a death benefit is paid")
+    move: list[Move] = Field(default_factory=list, description="rates of moves between the named states of designs")
+
+    @model_validator(mode="after")
+    def _once(self) -> BasisDocument:
+        pairs = [pair for move in self.move for pair in move.pairs]
+        for begin, end in pairs:
+            if pairs.count((begin, end)) > 1:
+                raise ValueError(f"two moves from '{begin}' to '{end}'; put their rules under one")
+        return self
 
     def rules(self) -> Iterator[tuple[str, Rule]]:
         """Yield every rule with the place that it stands in."""
@@ -58,6 +68,7 @@ class BasisDocument(Sourced):
             ("lapse", self.lapse.rule if self.lapse else []),
             ("interest", self.interest.rule),
             *((f"expense '{item.name}'", item.rule) for item in self.expense),
+            *((move.place, move.rule) for move in self.move),
         ]
         for place, rules in parts:
             for rule in rules:
@@ -83,11 +94,15 @@ class Basis:
     """SHA-256 of every table file read, by its path in the document."""
     scales: tuple[Scale | None, ...] = ()
     """Improvement of each mortality rule, None where there is none."""
+    moves: tuple[tuple[Rates | None, ...], ...] = ()
+    """Rates of each rule of each move, None where it has one rate for every age."""
 
     @cached_property
     def digest(self) -> str:
         """SHA-256 of the document and of every table file that it names."""
         document = self.document.model_dump(mode="json", by_alias=True)
+        if not self.document.move:  # a basis without moves is what it was before there were any
+            del document["move"]
         text = json.dumps([document, sorted(self.files.items())], sort_keys=True, ensure_ascii=False)
         return hashlib.sha256(text.encode()).hexdigest()
 
@@ -122,13 +137,17 @@ def prepare_basis(document: BasisDocument | dict[str, Any], folder: Path | str =
     improvements = [rule.improvement for rule in document.mortality.rule]
     scales = tuple(read_scale(one, folder) if one else None for one in improvements)
     _seal(files, folder, [one.table for one in improvements if one])
-    return Basis(document, rates, lapses, tuple(curves), files, scales)
+    moves = tuple(
+        tuple(_rates_of(rule, folder, files) if rule.table is not None else None for rule in move.rule)
+        for move in document.move
+    )
+    return Basis(document, rates, lapses, tuple(curves), files, scales, moves)
 
 
-def _rates_of(rule: MortalityRule, folder: Path, files: dict[str, str]) -> Rates:
+def _rates_of(rule: MortalityRule | MoveRule, folder: Path, files: dict[str, str]) -> Rates:
     if isinstance(rule.table, Law):
         return rule.table
-    source = rule.table if isinstance(rule.table, TableFile) else TableFile(file=rule.table)
+    source = rule.table if isinstance(rule.table, TableFile) else TableFile(file=str(rule.table))
     _seal(files, folder, [source.file])
     return read_rates(folder / source.file, source.table, source.column, source.select_by)
 

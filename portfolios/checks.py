@@ -3,7 +3,7 @@
 The checks run in this order, and a policy is reported with the first that it fails: identifier missing, not
 readable, not unique; product not known; status not in force; birth date, then commencement date, missing or
 out of range; commenced before birth; commences after the valuation date; on two lives, who lives, and the birth
-date of the second life where it lives; then each number that the product's design uses, in the order of the
+date of the second life where it lives; on named states, the state; then each number that the product's design uses, in the order of the
 registry of columns and after it by name: missing, not finite, negative, frequency not known, out of range,
 duration not in whole months. A number is looked at only for the products whose design uses it.
 """
@@ -21,6 +21,7 @@ import pyarrow as pa
 from .chunk import MISSING_DAY, Chunk
 from .designs import Design
 from .identifiers import Duplicates, byte_lengths, string_bytes
+from .named_states import DEAD, is_named, living
 from .number_rules import Mask, NumberRule, needed_columns, number_columns, number_rules
 from .reasons import Reason
 from .states import LIVES
@@ -67,6 +68,7 @@ class Checks:
         self._today = (valuation_date - date(1970, 1, 1)).days
         self.duplicates = duplicates
         self._rules = number_rules(designs)
+        self._named = {place: {*living(design), DEAD} for place, design in enumerate(designs) if is_named(design)}
         self._on_two = np.array([design.states == "two lives" for design in designs] + [False])
 
     def check(self, chunk: Chunk) -> Checked:
@@ -79,6 +81,8 @@ class Checks:
         self._check_dates(chunk, checked)
         if self._on_two.any():
             self._check_second(chunk, checked)
+        if self._named:
+            self._check_state(chunk, checked)
         self._check_numbers(chunk, checked)
         return checked
 
@@ -133,6 +137,12 @@ class Checks:
         self._mark(checked, alive & outside, Reason.DATE_OUT_OF_RANGE, "second_birth_date")
         early = chunk.day("commencement_date") < days
         self._mark(checked, alive & early, Reason.COMMENCED_BEFORE_BIRTH, "second_birth_date")
+
+    def _check_state(self, chunk: Chunk, checked: Checked) -> None:
+        codes, values = chunk.text("state")
+        for place, states in self._named.items():
+            unknown = np.array([value not in states for value in values] + [True]).take(codes, mode="wrap")
+            self._mark(checked, unknown & (checked.product == place), Reason.STATE_UNKNOWN, "state")
 
     def _check_numbers(self, chunk: Chunk, checked: Checked) -> None:
         places = checked.product.astype(np.intp)

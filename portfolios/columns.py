@@ -38,6 +38,7 @@ COLUMNS: tuple[Column, ...] = (
     Column("second_birth_date", "date", "ISO date", "date of birth of the second life of a contract on two lives"),
     Column("second_sex", "text", "", "sex of the second life"),
     Column("lives", "text", "", "who lives: both, first, second or none of two lives; none on one life"),
+    Column("state", "text", "", "state at the valuation date of a contract on named states, or dead"),
     Column("term_years", "years", "years", "term of the cover", 0, 120),
     Column("premium_years", "years", "years", "years for which premiums are payable", 0, 120),
     Column("deferral_years", "years", "years", "years from commencement to the first annuity period", 0, 120),

@@ -39,6 +39,13 @@ class Increase(_Part):
     kind: Literal["compound", "simple"] = Field("compound", description="on the last amount or on the first")
 
 
+class MoveBetween(_Part):
+    """A move between named states."""
+
+    from_: str | list[str] = Field(alias="from", description="named state that is left, or several")
+    to: str = Field(description="named state that is entered, or 'dead'")
+
+
 Duration = float | str | AtAge
 Kind = Literal["premium", "benefit", "expense", "commission"]
 While = Literal["alive", "both", "either", "first", "second", "first only", "second only", "certain"]
@@ -62,14 +69,17 @@ class Stream(_Part):
         None,
         description="name of another stream: paid whenever that one pays, as a share of it; replaces amount and dates",
     )
-    while_: While | None = Field(
+    while_: While | str | list[str] | None = Field(
         None,
         alias="while",
         description="paid as long as the policy is in force and the life lives, or for certain; on two lives: as long "
-        "as both live, either, the first (whether or not the second lives), the second, or one of them only",
+        "as both live, either, the first (whether or not the second lives), the second, or one of them only; on named "
+        "states: a state or a list of states",
     )
-    on: On | None = Field(
-        None, description="paid on this move; 'death' is for one life, the others with 'death' are for two"
+    on: On | MoveBetween | None = Field(
+        None,
+        description="paid on this move; 'death' is for one life and for named states, the others with 'death' are for "
+        "two; { from, to } is a move between named states",
     )
     from_: Duration = Field(
         0.0, alias="from", description="years from commencement to its start: a number, a column, or { age = x }"
@@ -103,6 +113,11 @@ class Stream(_Part):
             raise ValueError(f"{value} payments a year are not known; the choice is 1, 2, 4 and 12")
         return value
 
+    @field_validator("on", mode="before")
+    @classmethod
+    def _one_move(cls, value: Any) -> Any:
+        return MoveBetween.model_validate(value) if isinstance(value, dict) else value
+
     @field_validator("from_", "to", mode="before")
     @classmethod
     def _one_kind(cls, value: Any) -> Any:
@@ -121,7 +136,8 @@ class Stream(_Part):
         if (self.while_ is None) == (self.on is None):
             raise ValueError("a stream needs one of 'while' and 'on'")
         if self.on is not None:
-            _none_of(given, f"paid on {self.on}", "a_year", "paid", "guarantee", "payments")
+            on = self.on if isinstance(self.on, str) else f"a move to {self.on.to}"
+            _none_of(given, f"paid on {on}", "a_year", "paid", "guarantee", "payments")
         if self.paid == "once":
             _none_of(given, "paid once", "to", "a_year", "guarantee", "decrease", "payments")
         if self.decrease is not None and self.to is None:
@@ -149,6 +165,10 @@ class Stream(_Part):
                 yield value
 
 
+MOST_STATES = 12
+"""Named states that a design may have."""
+
+
 def _none_of(given: set[str], what: str, *keys: str) -> None:
     for key in keys:
         if key in given:
@@ -162,7 +182,14 @@ class Design(_Part):
     title: str = Field("", description="name in reports")
     effective: date | None = Field(None, description="date from which it is sold")
     reference: str = Field("", description="where its terms are laid down")
-    states: Literal["one life", "two lives"] = Field("one life", description="state model that the streams hang on")
+    states: Literal["one life", "two lives"] | list[str] = Field(
+        "one life",
+        description="state model that the streams hang on: one life, two lives, or a list of named states of the "
+        "living, the first of them the one in which a contract starts; 'dead' is added",
+    )
+    lapses_from: list[str] | None = Field(
+        None, description="named states from which a contract may lapse; absent: all of them"
+    )
     stream: list[Stream] = Field(min_length=1, description="the payment streams")
 
     @model_validator(mode="after")
@@ -171,6 +198,7 @@ class Design(_Part):
         for name in names:
             if names.count(name) > 1:
                 raise ValueError(f"two streams are called '{name}'")
+        self._check_states()
         for stream in self.stream:
             self._check_words(stream)
             if stream.of is None:
@@ -182,7 +210,30 @@ class Design(_Part):
                 raise ValueError(f"stream '{stream.name}' is a share of '{stream.of}', which is itself a share")
         return self
 
+    def _check_states(self) -> None:
+        states = self.states if isinstance(self.states, list) else []
+        if self.states == []:
+            raise ValueError("a list of states needs at least one")
+        if len(states) > MOST_STATES:
+            raise ValueError(f"{len(states)} states are too many; at most {MOST_STATES}")
+        for name in states:
+            if name in ("dead", "alive", "certain", "") or states.count(name) > 1:
+                raise ValueError(f"'{name}' cannot be a state of its own; 'dead' is added, others need different names")
+        for name in self.lapses_from or ():
+            if name not in states:
+                raise ValueError(f"lapses_from: '{name}' is no state of the design")
+        if self.lapses_from is not None and not states:
+            raise ValueError("'lapses_from' needs named states")
+
     def _check_words(self, stream: Stream) -> None:
+        if isinstance(self.states, list):
+            self._check_names(stream, self.states)
+            return
+        if isinstance(stream.on, MoveBetween):
+            raise ValueError(f"stream '{stream.name}': a move needs a design with named states, states = [...]")
+        if stream.while_ is not None and stream.while_ not in (*WHILE, "certain"):
+            known = ", ".join(f"'{word}'" for word in (*WHILE, "certain"))
+            raise ValueError(f"stream '{stream.name}': while '{stream.while_}' is not known; use one of {known}")
         one = self.states == "one life"
         asked = (("while", stream.while_, "alive", WHILE), ("on", stream.on, "death", LEFT_ON))
         for key, word, single, words in asked:
@@ -191,6 +242,24 @@ class Design(_Part):
                 raise ValueError(f"stream '{stream.name}': {key} '{word}' is not for {self.states}; use {known}")
         if not one and stream.payments != "at their dates":
             raise ValueError(f"stream '{stream.name}': {stream.payments} is for one life")
+
+    def _check_names(self, stream: Stream, states: list[str]) -> None:
+        """Check the words of a stream on named states."""
+        asked: list[tuple[str, str]] = []
+        if isinstance(stream.while_, list) or stream.while_ not in (None, "alive", "certain"):
+            asked = [("while", name) for name in ([stream.while_] if isinstance(stream.while_, str) else stream.while_)]
+        if isinstance(stream.on, MoveBetween):
+            begins = [stream.on.from_] if isinstance(stream.on.from_, str) else stream.on.from_
+            asked = [("on, from", name) for name in begins]
+            asked += [("on, to", stream.on.to)] if stream.on.to != "dead" else []
+        elif stream.on not in (None, "death", "lapse"):
+            raise ValueError(f"stream '{stream.name}': on '{stream.on}' is for two lives; use 'death' or a move")
+        for key, name in asked:
+            if name not in states:
+                known = ", ".join(f"'{state}'" for state in states)
+                raise ValueError(f"stream '{stream.name}': {key} '{name}' is no state of the design; use {known}")
+        if stream.guarantee is not None or stream.payments != "at their dates":
+            raise ValueError(f"stream '{stream.name}': a guarantee and Woolhouse's formula are not for named states")
 
     def columns(self) -> list[str]:
         """Extract columns that the design looks at as numbers, in order of first mention."""

@@ -10,6 +10,7 @@ import numpy.typing as npt
 
 from .columns import ALWAYS, BY_NAME, COLUMNS, LARGEST_AMOUNT
 from .designs import Design
+from .named_states import is_named
 from .reasons import Reason
 
 Mask = npt.NDArray[np.bool_]
@@ -86,7 +87,8 @@ def needed_columns(designs: Iterable[Design], others: Iterable[str] = ()) -> tup
     """Return the columns that a run reads: those always needed, those of the designs, and others given."""
     designs = list(designs)
     pairs = TWO_LIVES if any(design.states == "two lives" for design in designs) else ()
-    return tuple(dict.fromkeys([*ALWAYS, *pairs, *number_columns(designs), *others]))
+    states = ("state",) if any(is_named(design) for design in designs) else ()
+    return tuple(dict.fromkeys([*ALWAYS, *pairs, *states, *number_columns(designs), *others]))
 
 
 def number_rules(designs: Sequence[Design]) -> list[NumberRule]:

@@ -25,6 +25,7 @@ class Reason(IntEnum):
     FREQUENCY_UNKNOWN = 14
     NOT_WHOLE_MONTHS = 15
     LIVES_UNKNOWN = 16
+    STATE_UNKNOWN = 18
     # The following are found by the projection.
     NOT_WHOLE_YEARS = 20
     NOT_WHOLE_PERIODS = 21
@@ -75,6 +76,7 @@ _WORDS: dict[Reason, tuple[str, str]] = {
         "a duration in years must be a whole number of months",
     ),
     Reason.LIVES_UNKNOWN: ("lives not known", "lives of a contract on two lives must be both, first, second or none"),
+    Reason.STATE_UNKNOWN: ("state not known", "the state must be one of the states of the product's design, or dead"),
     Reason.NOT_WHOLE_YEARS: (
         "duration not in whole years",
         "a stream paid on a move needs durations of whole years where the step is a year",

@@ -7,7 +7,7 @@ codes together a signature, and each distinct signature is looked up in the rule
 from __future__ import annotations
 
 from collections.abc import Iterable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from datetime import date, timedelta
 from typing import Any, Protocol
 
@@ -18,6 +18,7 @@ from assumptions.basis import Basis
 from assumptions.rules import Band, Rule, first_fit
 from portfolios.chunk import Chunk
 from portfolios.designs import Design
+from portfolios.named_states import DEAD, is_named, living
 from portfolios.states import LIVES
 
 from .documents import DocumentError
@@ -28,13 +29,18 @@ EPOCH = date(1970, 1, 1)
 OTHER = "\0any other"
 
 
+Way = tuple[str, str, int, int]
+"""A move between named states that may happen: from, to, and the numbers of the basis's move and of its rule."""
+
+
 @dataclass(frozen=True)
 class Cell:
     """What the rules say of one set of policies: positions of design and rules, or the part that has none.
 
     lapse is -1 where the basis has no lapses; missing names the part of the basis without a fitting rule. lives:
     the value of that column, nothing on one life that lives. mortality is the rule of the first life, or of the only
-    one that is left; second that of the second where both live.
+    one that is left; second that of the second where both live. On named states: state, the one at the valuation
+    date, and moves, the rules of those between the states; survival of a life is then not asked for.
     """
 
     design: int
@@ -45,6 +51,8 @@ class Cell:
     interest: int = -1
     expenses: tuple[int, ...] = ()
     missing: str = ""
+    state: str = ""
+    moves: tuple[Way, ...] = ()
 
 
 class _Coder(Protocol):
@@ -118,6 +126,10 @@ class Cells:
         self.columns = [column for column in rule_columns(basis, designs, kinds) if column != "product"]
         rules = _placed(basis)
         self.coders: list[_Coder] = [_coder(column, kinds[column], rules) for column in self.columns]
+        if "state" in self.columns and any(is_named(design) for design in designs):
+            states = [state for design in designs for state in (*living(design), DEAD)]
+            asked = [value for _, rule in rules for value in _listed(rule.for_.get("state"))]
+            self.coders[self.columns.index("state")] = _Listed("state", [*states, *asked])
         self.cells: list[Cell] = []
         self._numbers: dict[Cell, int] = {}
         self._by_signature: dict[int, int] = {}
@@ -155,6 +167,8 @@ class Cells:
 
     def _rules_for(self, design: int, policy: dict[str, Any]) -> Cell:
         document = self.basis.document
+        if is_named(self.designs[design]):
+            return self._on_states(design, policy)
         lives = now(self.designs[design], policy.get("lives"))
         if lives and lives not in LIVES:
             return Cell(design, missing="lives")  # the checks have listed the policy
@@ -162,6 +176,25 @@ class Cells:
         second = first_fit(document.mortality.rule, _of_life(policy, "second")) if lives == "both" else -1
         if mortality is None or second is None:
             return Cell(design, missing="mortality")
+        return self._with_the_rest(Cell(design, mortality, second, lives), policy)
+
+    def _on_states(self, design: int, policy: dict[str, Any]) -> Cell:
+        states = (*living(self.designs[design]), DEAD)
+        state = policy.get("state")
+        if state not in states:
+            return Cell(design, missing="state")  # the checks have listed the policy
+        ways: list[Way] = []
+        for number, move in enumerate(self.basis.document.move):
+            pairs = [pair for pair in move.pairs if pair[0] in states and pair[1] in states]
+            rule = first_fit(move.rule, policy) if pairs else -1
+            if rule is None:
+                return Cell(design, missing=move.place)
+            ways += [(*pair, number, rule) for pair in pairs if not move.rule[rule].never]
+        return self._with_the_rest(Cell(design, 0, -1, "none", state=state, moves=tuple(ways)), policy)
+
+    def _with_the_rest(self, cell: Cell, policy: dict[str, Any]) -> Cell:
+        """Add the rules of lapse, interest and expenses to a cell."""
+        document, design = self.basis.document, cell.design
         lapse = first_fit(document.lapse.rule, policy) if document.lapse else -1
         if lapse is None:
             return Cell(design, missing="lapse")
@@ -174,7 +207,7 @@ class Cells:
             if rule is None:
                 return Cell(design, missing=f"expense '{item.name}'")
             expenses.append(rule)
-        return Cell(design, mortality, second, lives, lapse, interest, tuple(expenses))
+        return replace(cell, lapse=lapse, interest=interest, expenses=tuple(expenses))
 
 
 def _of_life(policy: dict[str, Any], life: str) -> dict[str, Any]:
@@ -193,6 +226,10 @@ def _placed(basis: Basis) -> list[tuple[str, Rule]]:
         count[place] = count.get(place, 0) + 1
         placed.append((f"{place}, rule {count[place]}", rule))
     return placed
+
+
+def _listed(condition: Any) -> list[Any]:
+    return condition if isinstance(condition, list) else [] if condition is None else [condition]
 
 
 _KINDS = {"text": "text", "number": "numbers", "day": "dates", "flag": "true and false"}

@@ -75,8 +75,8 @@ class Survival:
                     "years; set the key 'age' to last, nearest or next birthday"
                 )
 
-    def codes(self, rule: Keys, ages: loops.Ages, commencement: NDArray[np.int32]) -> Keys:
-        """Return the key of each life's row: rule, age at commencement, and year where rates improve."""
+    def keys_of_ages(self, ages: loops.Ages) -> Keys:
+        """Return the key of each life's age at commencement, below ``keys``."""
         basis = self.basis.document.mortality.age
         key: Keys = ages.age.astype(np.int64)
         if self.exact:
@@ -85,7 +85,18 @@ class Survival:
             key += 1
         elif basis == "nearest birthday":
             key += ages.since > ages.span - ages.since
-        np.clip(key, 0, self.keys - 1, out=key)
+        return np.clip(key, 0, self.keys - 1, out=key)
+
+    def age_of(self, key: int) -> float:
+        """Return the age that a key stands for."""
+        if not self.exact:
+            return float(key)
+        halves, since = divmod(key, _SPANS)
+        return float(halves // 2 + since / (365 + halves % 2))
+
+    def codes(self, rule: Keys, ages: loops.Ages, commencement: NDArray[np.int32]) -> Keys:
+        """Return the key of each life's row: rule, age at commencement, and year where rates improve."""
+        key = self.keys_of_ages(ages)
         key += rule * self.keys
         if self.improving.any():
             began = commencement - np.where(self.by_birthday[rule], ages.since, 0)
@@ -99,11 +110,7 @@ class Survival:
         if code not in self.known:
             rest, year = divmod(code, YEARS) if self.improving.any() else (code, 0)
             number, key = divmod(rest, self.keys)
-            age = float(key)
-            if self.exact:
-                halves, since = divmod(key, _SPANS)
-                age = halves // 2 + since / (365 + halves % 2)
-            self.known[code] = self._add(number, age, FIRST_YEAR + year)
+            self.known[code] = self._add(number, self.age_of(key), FIRST_YEAR + year)
         return self.known[code]
 
     def _add(self, number: int, age: float, year: int) -> int:

@@ -26,6 +26,7 @@ from portfolios.reasons import Reason
 
 from . import loops
 from .cells import Cells
+from .chains import Chains
 from .curves import IMPOSSIBLE, NEVER, Discount, Finder, Keys, Persistency, Survival
 from .lives import on_two
 from .plans import Plans
@@ -33,7 +34,7 @@ from .pool import Pool
 from .relative import RelativeRows
 from .settings import Settings
 from .slots import whole_months
-from .streams import LIFE, NO_SECOND, NOBODY, POLICY, SURVIVAL
+from .streams import CHAIN, LIFE, NO_SECOND, NOBODY, POLICY, SURVIVAL
 from .tally import QUANTA
 
 Mask = NDArray[np.bool_]
@@ -83,9 +84,11 @@ class Engine:
         self._survivals = Finder(self.survival.row)
         self._persistencies = Finder(self.persistency.row)
         self._discounts = Finder(self.discount.row)
+        self._chain_rows = Finder(self._chain_row)
         self._today = _today(today)
         self._until = _Until(basis)
         self._on_two = on_two(designs)
+        self.chains = Chains(designs, basis, settings, self.pool, self.survival.keys)
         self._lock = Lock()
         self.rules = loops.Rules(
             step=settings.step_months,
@@ -96,6 +99,10 @@ class Engine:
             minor=float(10**settings.decimals),
             shock=basis.document.mortality.common_shock,
         )
+
+    def _chain_row(self, code: int) -> int:
+        model, key = divmod(code, self.survival.keys)
+        return self.chains.row(model, self.survival.age_of(key))
 
     def meet(self, chunk: Chunk) -> None:
         """Make the plans and rows that a chunk needs, before it is valued."""
@@ -121,7 +128,7 @@ class Engine:
         loops.fill_policies(order, places, found, after, self.settings.step_months, policies)
         tables = self._tables(chunk, checked, cell, order)
         clock.lap("curves")
-        results = _room_for(chunk.n, checked, tables, len(self.plans.accounts))
+        results = _room_for(chunk.n, checked, tables, len(self.plans.accounts), self.plans.sources.most)
         loops.value_policies(order, policies, tables, self.rules, results)
         self._take_back(order, policies, tables, results)
         clock.lap("loops")
@@ -170,6 +177,7 @@ class Engine:
         survival, second = self._lives(chunk, checked, cell, mortality)
         until = self._until.months(chunk, lapse)
         self._flag(checked, until < 0, Reason.NOT_WHOLE_MONTHS, self._until.column)
+        chain, state = self._in_states(chunk, checked, cell)
         lapse = self._persistencies.rows_for((1 + lapse) * (NEVER + 1) + np.maximum(until, 0))
         discount = self._discounts.rows_for(np.maximum(self.discount.codes(interest, places), 0))
         return loops.Found(
@@ -182,7 +190,40 @@ class Engine:
             persistency=np.array(self.persistency.places, dtype=np.int64),
             factors=np.array(self.discount.places, dtype=np.int64),
             accrued=np.array(self.discount.accrued, dtype=np.float64),
+            chain=chain,
+            state=state,
+            sources=self.plans.sources.ranges,
+            leaving=self.plans.sources.leaving,
         )
+
+    def _in_states(
+        self, chunk: Chunk, checked: Checked, cell: NDArray[np.int32]
+    ) -> tuple[NDArray[np.int32], NDArray[np.int32]]:
+        """Return the chain of each policy on named states, else -1, and its state."""
+        if not self.chains.any:
+            return np.full(chunk.n, -1, dtype=np.int32), np.zeros(chunk.n, dtype=np.int32)
+        known = self.cells.cells
+        model = np.array([self.chains.model(one) for one in known], dtype=np.int64)[cell]
+        state = np.array([self.chains.state(one) for one in known], dtype=np.int32)[cell]
+        concerned = (model >= 0) & (checked.reason == 0)
+        chain = np.full(chunk.n, -1, dtype=np.int32)
+        if concerned.any():
+            chain[concerned] = self._chains_of(chunk, concerned, model)[concerned]
+            self._flag(checked, concerned & (chain == IMPOSSIBLE), Reason.AGE_OUTSIDE_TABLE, "birth_date")
+        return chain, state
+
+    def _chains_of(self, chunk: Chunk, concerned: Mask, model: Keys) -> Keys:
+        ages = self._ages(chunk, concerned, chunk.day("birth_date"))
+        codes = model * self.survival.keys + self.survival.keys_of_ages(ages)
+        codes[~concerned] = codes[concerned.argmax()]
+        return self._chain_rows.rows_for(codes)
+
+    def _ages(self, chunk: Chunk, fine: Mask, birth: NDArray[np.int32]) -> loops.Ages:
+        """Ages at commencement of the lives that count, born on given days."""
+        ages = loops.Ages(*(np.zeros(chunk.n, dtype=np.int32) for _ in loops.Ages._fields))
+        days_of_age = self.basis.document.mortality.age in ("exact", "nearest birthday")
+        loops.find_ages(birth, chunk.day("commencement_date"), fine, days_of_age, ages)
+        return ages
 
     def _lives(self, chunk: Chunk, checked: Checked, cell: NDArray[np.int32], mortality: Keys) -> tuple[Keys, Keys]:
         """Rows of survival of the first life, or the only one left, and of the second where both live, else -1."""
@@ -208,9 +249,7 @@ class Engine:
         """Rows of survival of the lives that count, born on given days."""
         if not fine.any():
             return np.zeros(chunk.n, dtype=np.int64)
-        ages = loops.Ages(*(np.zeros(chunk.n, dtype=np.int32) for _ in loops.Ages._fields))
-        days_of_age = self.basis.document.mortality.age in ("exact", "nearest birthday")
-        loops.find_ages(birth, chunk.day("commencement_date"), fine, days_of_age, ages)
+        ages = self._ages(chunk, fine, birth)
         codes = self.survival.codes(mortality, ages, chunk.day("commencement_date"))
         # No rows for the ages of others; the first one that counts stands in for them.
         codes[~fine] = codes[fine.argmax()]
@@ -222,7 +261,8 @@ class Engine:
         """Order of calculation: policies with the same streams and rows follow one another, still in the cache."""
         order, again = np.arange(len(found.cell)), np.empty(len(found.cell), dtype=np.int64)
         seconds = (found.second - NOBODY,) if self._on_two else ()
-        for keys in (found.lapse, *seconds, found.survival, found.cell):
+        chains = (found.chain + 1,) if self.chains.any else ()
+        for keys in (found.lapse, *seconds, found.survival, *chains, found.cell):
             loops.sort_by(keys, int(keys.max(initial=0)) + 1, order, again)
         return order
 
@@ -252,6 +292,9 @@ class Engine:
                 pool=self.pool.numbers,
                 money=money,
                 whole=whole,
+                chains=loops.records(self.chains.records if len(self.chains.records) else np.zeros(1, CHAIN)),
+                sources=loops.records(plans.sources.records),
+                members=plans.sources.members,
             )
 
     def _flag(self, checked: Checked, bad: NDArray[np.bool_], reason: Reason, column: str) -> None:
@@ -270,7 +313,10 @@ class Engine:
                 checked.field[i] = self.needed.index(named[0])
 
 
-def _room_for(policies: int, checked: Checked, tables: loops.Tables, accounts: int) -> loops.Results:
+def _room_for(
+    policies: int, checked: Checked, tables: loops.Tables, accounts: int, sources: int
+) -> loops.Results:
+    """Room for results; sources: the most rows on named states that a plan looks at."""
     return loops.Results(
         reason=checked.reason,
         fault=np.full(policies, -1, dtype=np.int64),
@@ -278,11 +324,12 @@ def _room_for(policies: int, checked: Checked, tables: loops.Tables, accounts: i
         minor=np.zeros((policies, 4), dtype=np.int64),
         flows=np.zeros(accounts * loops.BINS, dtype=np.int64),
         months=np.zeros(1, dtype=np.int64),
-        room=np.ones(loops.ROOM * loops.BINS),
+        room=np.ones((loops.ROOM + sources) * loops.BINS),
         filled=np.zeros((3 * loops.KINDS, 2), dtype=np.int64),
         firsts=np.empty(len(tables.segments) + 1, dtype=np.int64),
         counts=np.empty(len(tables.segments) + 1, dtype=np.int64),
-        lives=loops.records(np.zeros(3, LIFE)),
+        lives=loops.records(np.zeros(3 + sources, LIFE)),
+        work=np.zeros(loops.WORK),
     )
 
 

@@ -12,6 +12,7 @@ from collections.abc import Collection, Iterable
 
 from assumptions.basis import Basis
 from portfolios.designs import Design, Stream
+from portfolios.named_states import is_named
 from portfolios.states import ALIVE, BOTH, EARLIER, FIRST_ONLY, LEFT_ON, LIVES, SECOND_ONLY, WHILE, States
 
 from .streams import FIRST, JOINT, SECOND
@@ -41,12 +42,14 @@ def second(column: str) -> str:
     return f"second_{column}"
 
 
-def rule_columns(basis: Basis, designs: Iterable[Design], held: Collection[str]) -> list[str]:
+def rule_columns(basis: Basis, designs: Collection[Design], held: Collection[str]) -> list[str]:
     """Return the extract columns that rules look at, with those of the second life that the extract holds."""
     named = [column for column in basis.document.rule_columns() if column != LIFE]
     if on_two(designs):
         seconds = [second(column) for rule in basis.document.mortality.rule for column in rule.for_]
         named += [column for column in seconds if column in held]
+    if any(is_named(design) for design in designs):
+        named.append("state")
     # On one life too, the column says that nobody is left.
     return list(dict.fromkeys([*named, *(["lives"] if "lives" in held or on_two(designs) else [])]))
 
@@ -60,7 +63,7 @@ def now(design: Design, lives: str | None) -> str:
 
 def states_of(stream: Stream) -> States:
     """Return the states in which a stream is paid, or which are left when it is."""
-    return WHILE.get(stream.while_ or "", frozenset()) | LEFT_ON.get(stream.on or "", frozenset())
+    return WHILE.get(str(stream.while_), frozenset()) | LEFT_ON.get(str(stream.on), frozenset())
 
 
 def running(design: Design) -> States:

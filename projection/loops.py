@@ -35,7 +35,13 @@ KINDS: Final = 5
 CERTAINLY: Final = 3 * KINDS
 TOGETHER: Final = CERTAINLY + 1
 ROOM: Final = TOGETHER + 1
-"""Rows to work in: weights by life and kind, ones, survival of both lives."""
+"""Rows to work in: weights by life and kind, ones, survival of both lives. Rows on named states lie behind them."""
+
+MEMBERS: Final = 16
+"""Place of the members of sources in the numbers to work with; the probabilities at the start of a step lie before."""
+
+WORK: Final = 256
+"""How many numbers these are."""
 
 MAGIC = 6755399441055744.0
 """1.5 * 2^52: a number added to it is rounded to a whole one, half to even, which then stands in its last bits."""
@@ -103,6 +109,9 @@ class Tables(NamedTuple):
     pool: Any
     money: Any
     whole: Any
+    chains: Any
+    sources: Any
+    members: Any
 
 
 class Results(NamedTuple):
@@ -110,7 +119,7 @@ class Results(NamedTuple):
 
     The columns of parts are benefits, expenses and premiums; those of minor the reserve and then the parts.
     flows: expected cash flows by account and calendar month, BINS to an account, in whole quanta. months:
-    policy-months projected, one number. room, filled, firsts, counts and lives are to work in.
+    policy-months projected, one number. room, filled, firsts, counts, lives and work are to work in.
     """
 
     reason: Any
@@ -124,6 +133,7 @@ class Results(NamedTuple):
     firsts: Any
     counts: Any
     lives: Any
+    work: Any
 
 
 @intrinsic
@@ -403,7 +413,8 @@ class Found(NamedTuple):
 
     cell, survival, second, lapse, discount: a number per policy; ranges: (cell, 2) first segment and behind the last;
     persistency: (lapse, 3) places of held, dead and lapsing; factors: (discount, 2) places of payment and claim;
-    accrued: (discount, 2) factors to them.
+    accrued: (discount, 2) factors to them. chain, state: numbers per policy, chain -1 where it has none;
+    sources: (cell, 2) first source and behind the last; leaving: per cell the bits of the states that lapse.
     """
 
     cell: Any
@@ -415,6 +426,10 @@ class Found(NamedTuple):
     persistency: Any
     factors: Any
     accrued: Any
+    chain: Any
+    state: Any
+    sources: Any
+    leaving: Any
 
 
 @compiled
@@ -437,6 +452,12 @@ def fill_policies(order, places, found, claim_after, step, policies):
         )
         p.payment, p.claim = found.factors[discount, 0], found.factors[discount, 1]
         p.payment_accrued, p.claim_accrued = found.accrued[discount, 0], found.accrued[discount, 1]
+        p.chain, p.state = found.chain[i], found.state[i]
+        if p.chain >= 0:
+            # Lapses are in the rows on named states, so that nothing else knows of them.
+            p.sources, p.sources_end = found.sources[found.cell[i], 0], found.sources[found.cell[i], 1]
+            p.leaving, p.keep = found.leaving[found.cell[i]], p.held
+            p.held = p.dead = p.lapsing = ONES + 1
         p.claim_shift = p.claim_first = 0
         if claim_after >= 0.0:
             # What has passed of the step of T at T brings the middle of the rest half as much nearer to its end.
@@ -815,6 +836,94 @@ def stand_together(lives, pool, room, p, new, rules):
             room[both.living + g] *= np.exp(rules.shock * g / 12.0)
 
 
+@inner
+def stand_in_states(lives, chain, p):
+    """Fill in what streams need to know of each source; return whether the contract may be there, and is beyond."""
+    for n in range(p.sources_end - p.sources):
+        life = lives[np.uint64(s.JOINT + 1 + n)]
+        life.living, life.alive = (ROOM + n) * BINS, 1.0
+        life.over = life.last = chain.over
+        life.closed = chain.closed
+    if p.state >= chain.states:
+        return 1.0, False
+    beyond = chain.closed == 0 and (p.k > chain.over or (p.k == chain.over and p.part > 0))
+    return 0.0 if chain.closed == 1 and p.k >= chain.over else 1.0, beyond
+
+
+@inner
+def add_members(work, p, sources, members, room, g):
+    """Write each source of a policy at a point: the sum of its members."""
+    for n in range(p.sources, p.sources_end):
+        source = sources[np.uint64(n)]
+        total = 0.0
+        for q in range(source.begin, source.end):
+            total += work[np.uint64(members[np.uint64(q)])]
+        room[np.uint64((ROOM + n - p.sources) * BINS + g)] = total
+
+
+@inner
+def occupy(chain, p, sources, members, pool, room, work, furthest, step):
+    """Fill the rows of the sources of a policy from T to a point: occupancy of states, moves and lapses from T.
+
+    The probabilities go forward from the state at T by the matrices of the steps. Of the broken step, a state is
+    kept with the probability of the whole step to the power of what is left of it; exits share in proportion.
+    """
+    size, wide = chain.states, chain.states + chain.moves
+    before, after = MEMBERS, MEMBERS + size
+    moved, lapsed = MEMBERS + 2 * size, MEMBERS + size + wide
+    for place in range(lapsed + 1):
+        work[place] = 0.0
+    if p.state < size:
+        work[p.state] = work[before + p.state] = work[after + p.state] = 1.0
+    add_members(work, p, sources, members, room, p.k)
+    if p.state >= size:
+        for g in range(p.k + 1, furthest + 1):
+            add_members(work, p, sources, members, room, g)
+        return
+    begun = p.k // step * step
+    broken = begun + step if (p.k > begun or p.part > 0) else begun
+    for g in range(p.k + 1, furthest + 1):
+        boundary = step == 1 or g % step == 0
+        for place in range(size):
+            work[before + place] = 0.0
+        for place in range(wide - size):
+            work[moved + place] = 0.0
+        if g <= broken:
+            row = chain.place + ((broken - 1) * size + p.state) * wide
+            stay = pool[row + p.state]
+            part = (g - p.k - p.part / p.whole) / step
+            kept = stay**part
+            left = (1.0 - kept) / (1.0 - stay) if stay < 1.0 else part
+            for place in range(size):
+                work[before + place] = left * pool[row + place]
+            for place in range(wide - size):
+                work[moved + place] = left * pool[row + size + place]
+            work[before + p.state] = kept
+        else:
+            row = chain.place + (g - 1) * size * wide
+            for one in range(size):
+                there = work[one]
+                for place in range(size):
+                    work[before + place] += there * pool[np.uint64(row + place)]
+                for place in range(wide - size):
+                    work[moved + place] += there * pool[np.uint64(row + size + place)]
+                row += wide
+        gone = 0.0
+        share = 0.0
+        if boundary and p.leaving != 0 and pool[p.keep + g - 1] > 0.0:
+            share = 1.0 - pool[p.keep + g] / pool[p.keep + g - 1]
+        for place in range(size):
+            stays = work[before + place]
+            if share > 0.0 and (p.leaving >> place) & 1:
+                gone += share * stays
+                stays -= share * stays
+            work[after + place] = stays
+            if boundary:
+                work[place] = stays
+        work[lapsed] = gone
+        add_members(work, p, sources, members, room, g)
+
+
 @compiled
 def value_policies(order, policies, tables, rules, results):
     """Value the policies: parts, rounded results, and expected cash flows per account and month.
@@ -827,6 +936,8 @@ def value_policies(order, policies, tables, rules, results):
     flows, lives = unowned(results.flows), unowned(results.lives)
     room, filled = unowned(results.room), unowned(results.filled)
     firsts, counts = unowned(results.firsts), unowned(results.counts)
+    chains, sources, members = unowned(tables.chains), unowned(tables.sources), unowned(tables.members)
+    work = unowned(results.work)
     survived, beside, persisting = np.int64(-1), np.int64(-1), np.int64(-1)
     for j in range(len(order)):
         i = np.uint64(order[np.uint64(j)])
@@ -845,6 +956,8 @@ def value_policies(order, policies, tables, rules, results):
             stand_together(lives, pool, room, p, new, rules)
             beyond = beyond or outlives(lives[s.SECOND], p)
             alive = lives[s.JOINT].alive
+        if p.chain >= 0:
+            alive, beyond = stand_in_states(lives, chains[np.uint64(p.chain)], p)
         inforce = persistency_at(p, pool, rules)
         if new or p.held != persisting:
             survived, beside, persisting = p.survival, p.second, p.held
@@ -873,6 +986,15 @@ def value_policies(order, policies, tables, rules, results):
         if reason != 0:
             results.reason[i] = reason
             continue
+        if p.chain >= 0:
+            furthest = p.k
+            for n in range(begin, behind):
+                stream = segments[n]
+                if stream.life > s.JOINT and counts[n - begin] > 0:
+                    last = firsts[n - begin] + (counts[n - begin] - 1) * apart(stream, whole, j, rules)
+                    furthest = max(furthest, last)
+            chain = chains[np.uint64(p.chain)]
+            occupy(chain, p, sources, members, pool, room, work, furthest, np.int64(rules.step))
         furthest = p.k
         benefits, expenses, premiums = 0.0, 0.0, 0.0
         for n in range(begin, behind):
@@ -885,7 +1007,7 @@ def value_policies(order, policies, tables, rules, results):
                     stream,
                     p,
                     lives[np.uint64(stream.life)],
-                    room if stream.life == s.JOINT else pool,
+                    room if stream.life >= s.JOINT else pool,
                     whole,
                     j,
                     money,
@@ -949,6 +1071,8 @@ def value_segment(
             if due:
                 # Survival and discount do not come in; the payment is certain.
                 paid = amount * pool[relative_place(stream, whole, j, month, p.k + p.shift)]
+                if stream.life > s.JOINT:
+                    paid *= room[life.living + p.k]
                 flows[stream.account * BINS + max(0, p.k + p.shift)] += quanta(paid * rules.quantum)
                 value += paid
         if count > 0:
@@ -1029,7 +1153,9 @@ def value_payments(stream, p, life, lives, whole, j, pool, inforce, first, count
             rules.quantum,
         )
     weight = CERTAINLY * BINS
-    if alive:
+    if stream.life > s.JOINT:
+        weight = life.living + first
+    elif alive:
         kind = stream.life * KINDS + (AFTER if before == 0 else BEFORE)
         weight = weights(kind, lives, pool, life.living, p.held - before, first, count, filled, room)
     return p.payment_accrued * sum_monthly(room, weight, pool, relative, discount, flows, flow, count, amount, rules)
@@ -1049,6 +1175,9 @@ def value_moves(stream, p, life, lives, whole, j, pool, inforce, first, count, a
         held, discount, accrued = p.dead, p.claim + first - p.k, p.claim_accrued
     elif rules.dependent == 1:
         a, b, kind = 0.5, 0.5, SPREAD
+    if stream.life > s.JOINT:
+        # The row holds the moves themselves.
+        a, b, held = 0.0, 1.0, np.int64(ONES)
     amount /= life.alive * inforce
     relative = relative_place(stream, whole, j, first - step, first + p.shift)
     claim_first = p.claim_first if death else 0
@@ -1056,7 +1185,9 @@ def value_moves(stream, p, life, lives, whole, j, pool, inforce, first, count, a
     value = 0.0
     if first - step <= p.k:
         share = pool[held + first]
-        if death and rules.dependent == 1:
+        if stream.life > s.JOINT:
+            share = 1.0
+        elif death and rules.dependent == 1:
             share = 0.5 * (inforce + pool[p.held + first])
         elif not death:
             share = inforce - pool[p.held + first]
@@ -1088,7 +1219,10 @@ def value_moves(stream, p, life, lives, whole, j, pool, inforce, first, count, a
             rules.quantum,
         )
         return accrued * value
-    weight = weights(stream.life * KINDS + kind, lives, pool, life.living, held, first, count, filled, room)
+    if stream.life > s.JOINT:
+        weight = life.living + first
+    else:
+        weight = weights(stream.life * KINDS + kind, lives, pool, life.living, held, first, count, filled, room)
     value += sum_monthly(room, weight, pool, relative, discount, flows, flow, count, amount, rules)
     return accrued * value
 

@@ -17,8 +17,10 @@ from typing import Any, Literal, NamedTuple
 from assumptions.basis import Basis
 from assumptions.rules import Rule, first_fit
 from portfolios.designs import Design
+from portfolios.named_states import is_named, running_in
 from portfolios.states import ALIVE, LIVES
 
+from .plain_chain import Chain, chain_of
 from .plain_dates import Position, age_at, month_after, monthiversary, position_of
 from .plain_expenses import expense_rule, expense_streams
 from .plain_faults import NotValued
@@ -75,7 +77,7 @@ class PlainValue:
 
     age: at commencement, in years; survival and persistency: L(T) and P(T) from commencement to the valuation
     date; life and lapses: the yearly rates behind them, ``life.yearly`` those used; second: the same for the second
-    life where both live.
+    life where both live. On named states: chain, and no life.
     """
 
     benefits: float
@@ -86,8 +88,9 @@ class PlainValue:
     age: Fraction
     survival: float
     persistency: float
-    life: Survival
+    life: Survival | None
     second: Survival | None
+    chain: Chain | None
     lapses: Persistency
     rules: RulesUsed
 
@@ -125,7 +128,8 @@ def plain_value(
         persistency=course.in_force_now,
         life=course.lives.first,
         second=course.lives.second,
-        lapses=course.lapses,
+        chain=course.lives if isinstance(course.lives, Chain) else None,
+        lapses=course.lives.lapses if isinstance(course.lives, Chain) else course.lapses,
         rules=rules,
     )
 
@@ -163,13 +167,19 @@ def _course(
     interest = _fit("interest", document.interest.rule, policy)
     lapse = _fit("lapse", document.lapse.rule, policy) if document.lapse else -1
     expenses = {item.name: expense_rule(item, policy) + 1 for item in document.expense}
-    mortality, lives = _lives(policy, age, position, design, basis)
     if document.lapse:
         rule = document.lapse.rule[lapse]
         until = until_months(rule, policy.get(rule.until) if isinstance(rule.until, str) else None)
         lapses = Persistency(document.lapse, rule, basis.lapses[lapse], until, settings.step_months)
     else:
         lapses = Persistency(None, None, (), None, settings.step_months)
+    lives: Lives | Chain
+    if is_named(design):
+        mortality, lives = -1, chain_of(policy, age, position.u, design, basis, settings.step_months, lapses)
+        # Lapses depend on the state, so that the chain counts them.
+        lapses = Persistency(None, None, (), None, settings.step_months)
+    else:
+        mortality, lives = _lives(policy, age, position, design, basis)
     outstanding = settings.due == "outstanding"
     curve = basis.curves[interest]
     course = Course(position.u, settings.step_months, outstanding, lives, lapses, document.claims, curve)
@@ -236,7 +246,8 @@ def _streams(
     added: list[PolicyStream] = []
     for item in basis.document.expense:
         rule = item.rule[rules.expenses[item.name] - 1]
-        added += expense_streams(item, rule, streams, own, running(design), course, commencement)
+        runs = running_in(design) if is_named(design) else running(design)
+        added += expense_streams(item, rule, streams, own, runs, course, commencement)
     return streams + added
 
 

@@ -108,7 +108,7 @@ def states_of(stream: Stream, design: Design) -> States | None:
         return None
     if stream.on == "lapse":
         return running(design)
-    return WHILE.get(stream.while_ or "", frozenset()) | LEFT_ON.get(stream.on or "", frozenset())
+    return WHILE.get(str(stream.while_), frozenset()) | LEFT_ON.get(str(stream.on), frozenset())
 
 
 def running(design: Design) -> States:

@@ -10,8 +10,11 @@ from typing import Literal, NamedTuple
 
 from assumptions.basis import ClaimDelay, Claims
 from assumptions.interest import YieldCurve
+from portfolios.named_states import Pairs
 from portfolios.states import States
 
+from .plain_chain import Chain
+from .plain_chain_occasions import on_states
 from .plain_lapse import Persistency
 from .plain_lives import Lives
 
@@ -23,7 +26,8 @@ class Terms(NamedTuple):
 
     end: None at the end of survival; guaranteed: months from the start; woolhouse: terms of the formula, 0
     for payments at their dates; clock: month from which the relative amount counts its years; states: of a
-    contract on two lives, while the stream is paid or which are left when it is.
+    contract on two lives or named states, while the stream is paid or which are left when it is; moves: on named
+    states, those on which it is paid.
     """
 
     way: Way
@@ -35,6 +39,7 @@ class Terms(NamedTuple):
     woolhouse: int = 0
     clock: int = 0
     states: States | None = None
+    moves: Pairs | None = None
 
     @property
     def period(self) -> int:
@@ -68,7 +73,7 @@ class Course:
     u: Fraction
     step_months: int
     outstanding: bool
-    lives: Lives
+    lives: Lives | Chain
     lapses: Persistency
     claims: Claims
     curve: YieldCurve
@@ -122,6 +127,9 @@ class Course:
 
 def occasions(terms: Terms, course: Course) -> list[Occasion]:
     """Return the payments of a stream that are still to come, in order of time."""
+    if isinstance(course.lives, Chain) and not terms.certain:
+        found = on_states(terms, course, course.lives, last_point(terms, course))
+        return [Occasion(point, paid, month, 1.0, share, 1.0) for point, paid, month, share in found]
     if terms.way in ("death", "lapse"):
         return list(_moves(terms, course))
     if terms.way == "once":
@@ -268,6 +276,7 @@ def _decline(point: int, course: Course) -> float:
     """Return mu + delta at a point, the forces of mortality (0 where nobody is left) and of interest."""
     t = course.years_to(point)
     curve, life = course.curve, course.lives.first
+    assert life is not None  # the formula is for one life
     if t < 1:
         delta = math.log(curve.factor(t) / curve.factor(t + 1))
     else:

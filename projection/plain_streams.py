@@ -10,6 +10,7 @@ from typing import Any, Literal
 from portfolios.designs import AtAge, Design, Share, Stream
 from portfolios.states import States
 
+from .plain_chain import Chain
 from .plain_dates import first_point_at_age
 from .plain_faults import NotValued
 from .plain_lapse import TOLERANCE
@@ -59,10 +60,14 @@ def design_streams(design: Design, policy: Policy, course: Course) -> list[Polic
     Raises NotValued where a column of the policy makes no sense for its stream.
     """
     own = [stream for stream in design.stream if stream.of is None]
-    bases = {stream.name: _own(stream, states_of(stream, design), policy, course) for stream in own}
+    bases = {stream.name: _own(stream, _states(stream, design, course), policy, course) for stream in own}
     return [
         bases[stream.name] if stream.of is None else _share_of(stream, bases[stream.of]) for stream in design.stream
     ]
+
+
+def _states(stream: Stream, design: Design, course: Course) -> States | None:
+    return course.lives.states_of(stream) if isinstance(course.lives, Chain) else states_of(stream, design)
 
 
 def _own(stream: Stream, states: States | None, policy: Policy, course: Course) -> PolicyStream:
@@ -75,6 +80,8 @@ def _own(stream: Stream, states: States | None, policy: Policy, course: Course) 
             raise
         # Nobody minds the dates of a stream that cannot be paid any more.
         terms = Terms("once", False, 0, 0, states=states)
+    if isinstance(course.lives, Chain):
+        terms = terms._replace(moves=course.lives.moves_of(stream))
     last_point(terms, course)
     amount = number(policy, stream.amount, f"stream '{stream.name}' needs an amount")
     if isinstance(stream.amount, str) and amount < 0:

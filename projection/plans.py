@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 from assumptions.basis import Basis
 from assumptions.expenses import Expense
 from portfolios.designs import AtAge, Design, Stream
+from portfolios.named_states import is_named
 
 from . import streams as s
 from .cells import Cell
@@ -20,6 +21,7 @@ from .lives import Terms, begun, probability, running, states_of
 from .pool import ONES
 from .relative import RelativeRows, pattern_of, shape_of
 from .slots import Slots
+from .sources import SourceRows
 
 _PART = {"premium": s.PREMIUMS, "benefit": s.BENEFITS, "expense": s.EXPENSES, "commission": s.EXPENSES}
 
@@ -96,14 +98,17 @@ class Plans:
     segments: NDArray[Any] = field(default_factory=lambda: np.zeros(0, s.SEGMENT))
     ranges: NDArray[np.int64] = field(default_factory=lambda: np.zeros((0, 2), np.int64))
     accounts: dict[Account, int] = field(default_factory=dict)
-    _known: dict[tuple[int, tuple[int, ...], str, str], tuple[int, int]] = field(default_factory=dict)
+    sources: SourceRows = field(default_factory=SourceRows)
+    """Rows on named states that segments look at."""
+    _known: dict[tuple[Any, ...], tuple[int, int]] = field(default_factory=dict)
 
     def add(self, cell: Cell) -> None:
         """Add the plan of the next cell; a cell without rules gets an empty one.
 
         Cells that differ only in rates share their plan.
         """
-        key = (cell.design, cell.expenses, cell.missing, cell.lives)
+        key = (cell.design, cell.expenses, cell.missing, cell.lives, cell.state, cell.moves)
+        self.sources.begin(key, self.designs[cell.design], cell)
         if key not in self._known:
             records = [] if cell.missing else list(self._records(self.designs[cell.design], cell))
             begin = len(self.segments)
@@ -113,6 +118,7 @@ class Plans:
                 self._fill(row, shape, charged)
             self.segments = np.concatenate((self.segments, rows))
             self._known[key] = (begin, len(self.segments))
+        self.sources.end(key)
         self.ranges = np.concatenate((self.ranges, [self._known[key]]))
 
     def _fill(self, row: Any, shape: _Record, charged: list[_Record]) -> None:
@@ -141,7 +147,10 @@ class Plans:
     def _records(self, design: Design, cell: Cell) -> Iterator[_Record]:
         made: dict[str, list[_Record]] = {}
         for stream in sorted(design.stream, key=lambda stream: stream.of is not None):
-            if stream.of is None:
+            if stream.of is None and is_named(design):
+                terms = self.sources.terms(stream)
+                made[stream.name] = list(_on_lives(self._stream(design, stream), terms, False))
+            elif stream.of is None:
                 states = running(design) if stream.on == "lapse" else states_of(stream)
                 terms = probability(states, cell.lives)
                 made[stream.name] = list(_on_lives(self._stream(design, stream), terms, begun(states, cell.lives)))
@@ -149,7 +158,8 @@ class Plans:
                 made[stream.name] = list(self._share(design, stream, made))
             yield from made[stream.name]
         for item, rule in zip(self.basis.document.expense, cell.expenses, strict=True):
-            yield from self._expense(design, item, rule, made, probability(running(design), cell.lives))
+            terms = self.sources.running() if is_named(design) else probability(running(design), cell.lives)
+            yield from self._expense(design, item, rule, made, terms)
 
     def _line(self, design: Design, name: str, part: str, direction: str) -> int:
         return self.lines.setdefault(Line(design.code, name, part, direction), len(self.lines))

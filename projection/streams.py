@@ -96,6 +96,28 @@ SURVIVAL = np.dtype(
     align=True,
 )
 
+CHAIN = np.dtype(
+    [
+        ("place", "i8"),  # place of the matrices of points 1, 2 ...
+        ("over", "i8"),  # last point
+        ("closed", "i8"),  # 1: nobody is left at the end
+        ("states", "i8"),  # named states of the living
+        ("moves", "i8"),  # moves between them, and to dead
+    ],
+    align=True,
+)
+"""A chain on named states. The matrix of a point has a row for each state in which the step begins: probabilities of
+the states at the point, then expected numbers of the moves until then."""
+
+SOURCE = np.dtype([("begin", "i8"), ("end", "i8")])
+"""Of which members a row of occupancy or moves is the sum: a range of the list of members.
+
+Members are states before the lapses of a point, states after them, moves, and lapses, one behind the other.
+"""
+
+MOST_SOURCES: Final = 48
+"""Sets of states and of moves that the streams of one plan may look at."""
+
 LIFE = np.dtype(
     [
         ("living", "i8"),  # place of survival at point 0, in the pool or for both lives in the room to work in
@@ -127,6 +149,12 @@ POLICY = np.dtype(
         ("claim_accrued", "f8"),  # the same to the latter
         ("claim_shift", "i8"),  # calendar months from the end of a step to the payment of its death claims
         ("claim_first", "i8"),  # the same for the step in which the valuation date lies
+        ("chain", "i8"),  # record of its chain on named states; -1: none
+        ("state", "i8"),  # named state at the valuation date
+        ("sources", "i8"),  # first source of its plan
+        ("sources_end", "i8"),  # behind the last of them
+        ("leaving", "i8"),  # bits of the states from which it may lapse
+        ("keep", "i8"),  # place of persistency at g = 0, where lapses depend on the state
     ],
     align=True,
 )

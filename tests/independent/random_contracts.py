@@ -13,6 +13,8 @@ from typing import Any
 
 import pyarrow as pa
 from hypothesis import strategies as st
+from random_draws import chance, one_of
+from random_states import STATES, moves, on_named_states, write_moves
 
 from assumptions.basis import Basis, prepare_basis
 from portfolios.designs import Design
@@ -37,6 +39,7 @@ COLUMNS = {
     "commencement_date": pa.date32(),
     "sex": pa.string(),
     "lives": pa.string(),
+    "state": pa.string(),
     "second_birth_date": pa.date32(),
     "second_sex": pa.string(),
     "smoker": pa.bool_(),
@@ -85,17 +88,9 @@ def write_tables(folder: Path) -> None:
             for age in range(40, 80)
         ]
         (folder / f"{name}.csv").write_text("\n".join(["age,2019,2020,2021,2022", *rows]) + "\n")
+    write_moves(folder)
     (folder / "leaving.csv").write_text("year,rate\n1,0.15\n2,0.08\n3,0\n4,0.03\n")
     (folder / "spot.csv").write_text("maturity,rate\n0.5,0.01\n1,0.015\n2,0.02\n7.25,0.03\n30,0.028\n")
-
-
-def one_of(draw: Draw, *values: Any) -> Any:
-    return draw(st.sampled_from(values))
-
-
-def chance(draw: Draw, once_in: int) -> bool:
-    """True once in so many draws; shrinks to False. Ends of a range come up too often, so it is not the last."""
-    return bool(draw(st.integers(0, once_in - 1)) == max(1, once_in // 2))
 
 
 # Designs
@@ -184,8 +179,10 @@ def shares_of(draw: Draw, name: str, base: str) -> dict[str, Any]:
 
 
 @st.composite
-def designs(draw: Draw, code: str, step: str) -> Design:
-    pair = chance(draw, 3)
+def designs(draw: Draw, code: str, step: str, named: bool = False) -> Design:
+    """A design; named: perhaps one on named states."""
+    states: Any = one_of(draw, *STATES) if named and not chance(draw, 3) else "one life"
+    pair = states == "one life" and chance(draw, 3)
     own = [draw(own_streams(f"own {number}", step, pair)) for number in range(draw(st.integers(1, 4)))]
     shared = [
         draw(shares_of(f"share {number}", one_of(draw, *(stream["name"] for stream in own))))
@@ -193,8 +190,15 @@ def designs(draw: Draw, code: str, step: str) -> Design:
     ]
     # A share may stand before what it is a share of.
     streams = [*shared, *own] if chance(draw, 3) else [*own, *shared]
-    states = "two lives" if pair else "one life"
-    return Design.model_validate({"code": code, "title": "invented", "states": states, "stream": streams})
+    document: dict[str, Any] = {"code": code, "title": "invented", "states": states, "stream": streams}
+    if pair:
+        document["states"] = "two lives"
+    elif states != "one life":
+        for stream in own:
+            on_named_states(draw, stream, states)
+        if chance(draw, 2):
+            document["lapses_from"] = [states[0]]
+    return Design.model_validate(document)
 
 
 # Bases
@@ -326,7 +330,8 @@ def expenses(draw: Draw, number: int) -> dict[str, Any]:
 
 
 @st.composite
-def bases(draw: Draw, folder: Path, step: str) -> Basis:
+def bases(draw: Draw, folder: Path, step: str, named: bool = False) -> Basis:
+    """A basis; named: with moves between named states."""
     age = one_of(draw, "exact", "last birthday", "nearest birthday", "next birthday")
     document: dict[str, Any] = {
         "mortality": {
@@ -343,9 +348,11 @@ def bases(draw: Draw, folder: Path, step: str) -> Basis:
     }
     if not chance(draw, 3):
         timing = one_of(draw, "each step", "anniversaries")
-        dependent = (timing == "each step" or step == "year") and chance(draw, 2)
+        dependent = not named and (timing == "each step" or step == "year") and chance(draw, 2)
         competing = "dependent rates" if dependent else "lapses at the end"
         document["lapse"] = {"timing": timing, "competing": competing, "rule": draw(ruled(lapse_rules()))}
+    if named:
+        document["move"] = draw(moves())
     return prepare_basis(document, folder)
 
 
@@ -376,6 +383,7 @@ def policies(draw: Draw, number: int, codes: list[str], today: date) -> dict[str
         "commencement_date": commenced,
         "sex": one_of(draw, "F", "M"),
         "lives": one_of(draw, "both", "first", "second") if not chance(draw, 12) else "none",
+        "state": one_of(draw, "healthy", "disabled", "paying", "waived", "ill", "very ill", "recovered", "dead"),
         "second_birth_date": on_day(commenced.year - draw(st.integers(18, 70)), 1 + number % 12, commenced.day),
         "second_sex": one_of(draw, "M", "F", None),
         "smoker": draw(st.booleans()),
@@ -427,9 +435,15 @@ def examples(draw: Draw, folder: Path, most: int = 20) -> Example:
     step, due = one_of(draw, "month", "year"), one_of(draw, "settled", "outstanding")
     today = one_of(draw, *DATES) if chance(draw, 2) else draw(st.dates(date(2026, 1, 1), date(2029, 12, 31)))
     codes = ["A", "B", "C"][: draw(st.integers(1, 3))]
-    made = [draw(designs(code, step)) for code in codes]
-    basis = draw(bases(folder, step))
+    named = chance(draw, 2)
+    made = [draw(designs(code, step, named)) for code in codes]
+    basis = draw(bases(folder, step, named))
     # A fixed number of policies: their cost is small beside that of the rest, and each is another chance.
     rows = [draw(policies(number, codes, today)) for number in range(most)]
+    for row in rows:
+        # Most states are those of the policy's design.
+        states = next((one.states for one in made if one.code == row["product"]), None)
+        if isinstance(states, list) and not chance(draw, 12):
+            row["state"] = one_of(draw, *states)
     columns = {name: pa.array([row[name] for row in rows], kind) for name, kind in COLUMNS.items()}
     return Example(made, basis, Settings(today, step, due, 2), pa.table(columns))
