@@ -3,9 +3,9 @@
 The checks run in this order, and a policy is reported with the first that it fails: identifier missing, not
 readable, not unique; product not known; status not in force; birth date, then commencement date, missing or
 out of range; commenced before birth; commences after the valuation date; on two lives, who lives, and the birth
-date of the second life where it lives; on named states, the state; then each number that the product's design uses, in the order of the
-registry of columns and after it by name: missing, not finite, negative, frequency not known, out of range,
-duration not in whole months. A number is looked at only for the products whose design uses it.
+date of the second life where it lives; on named states, the state; then each number that the product's design uses,
+in the order of the registry of columns and after it by name: missing, not finite, negative, frequency not known, out
+of range, duration not in whole months. A number is looked at only for the products whose design uses it.
 """
 
 from __future__ import annotations

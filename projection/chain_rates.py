@@ -22,6 +22,10 @@ Row = NDArray[np.float64]
 Whole = NDArray[np.int64]
 
 
+class NoRates(ValueError):  # noqa: N818  (a verdict on an age, not a fault of the program)
+    """Rates that do not cover an age."""
+
+
 @dataclass(frozen=True)
 class Rated:
     """The moves of a model with their rules and rates, from an age at commencement, in years.
@@ -54,7 +58,7 @@ class Rated:
     def years(self, most: int) -> tuple[int, bool]:
         """Return for how many years from commencement the rates reach, and whether nobody is left then.
 
-        Raises ValueError for an age below a table.
+        Raises NoRates for an age below a table or beyond it.
         """
         open_ends: list[int] = [most]
         closed: dict[str, list[int]] = {state: [] for state in self.states}
@@ -63,15 +67,19 @@ class Rated:
                 continue
             entered = self.age + rule.added_years
             if np.floor(entered) < rates.first_age:
-                raise ValueError(f"age {entered:g} lies below {rates.first_age}")
+                raise NoRates(f"age {entered:g} lies below {rates.first_age}")
             left = rates.final_age - entered
             if not (rule.close or rates.closed):
                 open_ends.append(int(np.floor(left)))
             elif end == DEAD:
                 closed[begin].append(int(np.ceil(left)))
         reached = min(open_ends)
+        if reached <= 0:
+            raise NoRates(f"age {self.age:g} lies beyond the tables")
         if all(closed.values()):
             last = max(min(ends) for ends in closed.values())
+            if last <= 0:
+                raise NoRates(f"age {self.age:g} lies beyond the tables")
             if last <= reached:
                 return last, True
         return reached, False
@@ -113,7 +121,10 @@ class Rated:
             source = np.array([rates.force(entered + month / 12, month / 12) for month in months])
             found = np.array([rule.adjusted(figure) for figure in source])
         else:
-            source = np.array([rates.rate(entered, duration) for duration in range(known)] or [0.0])
+            try:
+                source = np.array([rates.rate(entered, duration) for duration in range(known)] or [0.0])
+            except ValueError as error:
+                raise NoRates(str(error)) from error
             found = np.array([rule.adjusted(figure) for figure in source])[np.minimum(since, max(0, known - 1))]
         if not ending:
             return np.asarray(found)
@@ -130,8 +141,8 @@ class Rated:
                 ]
                 if not mine:
                     continue
-                closing = (figures[:, mine] >= CERTAIN).any(axis=1)
-                given = np.where(closing[:, None], 0.0, figures[:, mine])
+                closing = np.max(figures[:, mine], axis=1) >= CERTAIN
+                given: Row = np.where(closing[:, None], 0.0, figures[:, mine])
                 total = given.sum(axis=1)
                 if (total > 1 + 1e-9).any():
                     raise DocumentError(
@@ -142,12 +153,12 @@ class Rated:
                 force = np.where(leaving, CERTAIN, -a_year * np.log1p(-np.where(leaving, 0.0, total)))
                 forces[:, mine] = force[:, None] * given / np.where(total > 0, total, 1.0)[:, None]
         # In the year of certain death nothing else happens.
-        closing = figures >= CERTAIN
         for state in range(len(self.states)):
             mine = [place for place, begin in enumerate(self.begins) if begin == state]
             if mine:
-                rows = closing[:, mine].any(axis=1)
-                forces[np.ix_(rows, mine)] = np.where(closing[np.ix_(rows, mine)], CERTAIN, 0.0)
+                chosen: Row = figures[:, mine]
+                certain: Row = np.where(chosen >= CERTAIN, CERTAIN, 0.0)
+                forces[:, mine] = np.where(certain.max(axis=1)[:, None] > 0, certain, forces[:, mine])
         return forces
 
     def smooth(self, place: int) -> Law | None:

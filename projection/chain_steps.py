@@ -146,4 +146,5 @@ def parts_of_year(steps: Steps) -> Steps:
     stay[..., np.arange(size), np.arange(size)] = kept
     moved = left[..., None] * steps.moved[:, None]
     stay[:, 11], moved[:, 11] = steps.stay, steps.moved
-    return Steps(stay.reshape(-1, size, size), moved.reshape(-1, size, steps.moved.shape[2]))
+    points = 12 * len(steps.stay)
+    return Steps(stay.reshape(points, size, size), moved.reshape(points, size, steps.moved.shape[2]))

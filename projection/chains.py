@@ -19,9 +19,9 @@ from portfolios.designs import Design
 from portfolios.named_states import is_named, living, paid_on
 
 from .cells import Cell, Way
-from .chain_rates import Rated
+from .chain_rates import NoRates, Rated
 from .chain_steps import Steps, chained, forward, one_move, parts_of_year
-from .curves import IMPOSSIBLE, Keys
+from .curves import IMPOSSIBLE
 from .documents import DocumentError
 from .pool import Pool
 from .settings import Settings
@@ -46,6 +46,7 @@ class Chains:
     records: NDArray[Any] = field(default_factory=lambda: np.zeros(0, CHAIN))
     models: dict[Model, int] = field(default_factory=dict)
     known: dict[tuple[int, float], int] = field(default_factory=dict)
+    _going: list[int] = field(default_factory=list)
 
     def __post_init__(self) -> None:
         self.any = any(is_named(design) for design in self.designs)
@@ -55,6 +56,13 @@ class Chains:
                 "lapse: 'dependent rates' are not for designs with named states; take 'lapses at the end', or put "
                 "the rates of leaving among the moves"
             )
+        if self.any and self.basis.document.mortality.age == "exact":
+            for move, rates in zip(self.basis.document.move, self.basis.moves, strict=True):
+                if any(getattr(one, "select_years", 0) for one in rates):
+                    raise DocumentError(
+                        f"{move.place}: select rates of a table need an age at commencement in whole years; set the "
+                        "key 'age' of the mortality to last, nearest or next birthday"
+                    )
         given = {pair for move in self.basis.document.move for pair in move.pairs}
         for design in self.designs if self.any else ():
             for stream in design.stream:
@@ -64,6 +72,16 @@ class Chains:
                             f"product {design.code}, stream '{stream.name}': paid on the move from '{begin}' to "
                             f"'{end}', for which the basis has no rates; add a [[move]]"
                         )
+
+    def going(self, held: list[tuple[int, int, int]]) -> NDArray[np.int64]:
+        """Return places of the shares that lapse at each point of those still there, given those of persistency."""
+        if not self.any:
+            return np.zeros(len(held), dtype=np.int64)
+        for place, _, _ in held[len(self._going) :]:
+            there = self.pool.row(place - 1, LONGEST + 14)
+            gone = 1 - there[1:] / np.where(there[:-1] > 0, there[:-1], 1.0)
+            self._going.append(self.pool.add(np.where(there[:-1] > 0, gone, 0.0)))
+        return np.array(self._going, dtype=np.int64)
 
     def model(self, cell: Cell) -> int:
         """Return the number of a cell's model, -1 where it has none."""
@@ -81,12 +99,11 @@ class Chains:
     def _add(self, states: tuple[str, ...], ways: tuple[Way, ...], age: float) -> int:
         try:
             steps, closed = self.steps(states, ways, age)
-        except ValueError as error:
-            if isinstance(error, DocumentError):
-                raise
+        except NoRates:
             return IMPOSSIBLE
         record = np.zeros(1, CHAIN)
-        record["place"] = self.pool.add(np.concatenate((steps.stay, steps.moved), axis=2).ravel())
+        columns = np.concatenate((steps.stay, steps.moved), axis=2)
+        record["place"] = self.pool.add(np.ascontiguousarray(columns.transpose(1, 2, 0)).ravel())
         record["over"], record["closed"] = len(steps.stay), closed
         record["states"], record["moves"] = len(states), len(ways)
         self.records = np.concatenate((self.records, record))
@@ -103,8 +120,6 @@ class Chains:
             age,
         )
         years, closed = rated.years(LONGEST // 12)
-        if years <= 0:
-            raise ValueError("the age lies beyond the tables")
         yearly = self.settings.step == "year"
         figures = {rule.figures for rule in rated.rules}
         if yearly and figures <= {"yearly probabilities"}:

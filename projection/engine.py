@@ -194,6 +194,7 @@ class Engine:
             state=state,
             sources=self.plans.sources.ranges,
             leaving=self.plans.sources.leaving,
+            going=self.chains.going(self.persistency.places),
         )
 
     def _in_states(
@@ -313,10 +314,8 @@ class Engine:
                 checked.field[i] = self.needed.index(named[0])
 
 
-def _room_for(
-    policies: int, checked: Checked, tables: loops.Tables, accounts: int, sources: int
-) -> loops.Results:
-    """Room for results; sources: the most rows on named states that a plan looks at."""
+def _room_for(policies: int, checked: Checked, tables: loops.Tables, accounts: int, sources: int) -> loops.Results:
+    """Room for results; sources: the most rows on named states that a plan has."""
     return loops.Results(
         reason=checked.reason,
         fault=np.full(policies, -1, dtype=np.int64),
@@ -329,7 +328,6 @@ def _room_for(
         firsts=np.empty(len(tables.segments) + 1, dtype=np.int64),
         counts=np.empty(len(tables.segments) + 1, dtype=np.int64),
         lives=loops.records(np.zeros(3 + sources, LIFE)),
-        work=np.zeros(loops.WORK),
     )
 
 

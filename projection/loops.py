@@ -37,12 +37,6 @@ TOGETHER: Final = CERTAINLY + 1
 ROOM: Final = TOGETHER + 1
 """Rows to work in: weights by life and kind, ones, survival of both lives. Rows on named states lie behind them."""
 
-MEMBERS: Final = 16
-"""Place of the members of sources in the numbers to work with; the probabilities at the start of a step lie before."""
-
-WORK: Final = 256
-"""How many numbers these are."""
-
 MAGIC = 6755399441055744.0
 """1.5 * 2^52: a number added to it is rounded to a whole one, half to even, which then stands in its last bits."""
 
@@ -119,7 +113,7 @@ class Results(NamedTuple):
 
     The columns of parts are benefits, expenses and premiums; those of minor the reserve and then the parts.
     flows: expected cash flows by account and calendar month, BINS to an account, in whole quanta. months:
-    policy-months projected, one number. room, filled, firsts, counts, lives and work are to work in.
+    policy-months projected, one number. room, filled, firsts, counts and lives are to work in.
     """
 
     reason: Any
@@ -133,7 +127,6 @@ class Results(NamedTuple):
     firsts: Any
     counts: Any
     lives: Any
-    work: Any
 
 
 @intrinsic
@@ -414,7 +407,8 @@ class Found(NamedTuple):
     cell, survival, second, lapse, discount: a number per policy; ranges: (cell, 2) first segment and behind the last;
     persistency: (lapse, 3) places of held, dead and lapsing; factors: (discount, 2) places of payment and claim;
     accrued: (discount, 2) factors to them. chain, state: numbers per policy, chain -1 where it has none;
-    sources: (cell, 2) first source and behind the last; leaving: per cell the bits of the states that lapse.
+    sources: (cell, 2) first source and behind the last; leaving: per cell the bits of the states that lapse; going:
+    (lapse,) places of the shares that lapse of those still there.
     """
 
     cell: Any
@@ -430,6 +424,7 @@ class Found(NamedTuple):
     state: Any
     sources: Any
     leaving: Any
+    going: Any
 
 
 @compiled
@@ -456,7 +451,7 @@ def fill_policies(order, places, found, claim_after, step, policies):
         if p.chain >= 0:
             # Lapses are in the rows on named states, so that nothing else knows of them.
             p.sources, p.sources_end = found.sources[found.cell[i], 0], found.sources[found.cell[i], 1]
-            p.leaving, p.keep = found.leaving[found.cell[i]], p.held
+            p.leaving, p.keep = found.leaving[found.cell[i]], found.going[found.lapse[i]]
             p.held = p.dead = p.lapsing = ONES + 1
         p.claim_shift = p.claim_first = 0
         if claim_after >= 0.0:
@@ -837,11 +832,14 @@ def stand_together(lives, pool, room, p, new, rules):
 
 
 @inner
-def stand_in_states(lives, chain, p):
+def stand_in_states(lives, chain, p, sources, members):
     """Fill in what streams need to know of each source; return whether the contract may be there, and is beyond."""
     for n in range(p.sources_end - p.sources):
-        life = lives[np.uint64(s.JOINT + 1 + n)]
-        life.living, life.alive = (ROOM + n) * BINS, 1.0
+        life, source = lives[np.uint64(s.JOINT + 1 + n)], sources[np.uint64(p.sources + n)]
+        row = ROOM + 2 * chain.states + n
+        if source.end - source.begin == 1 and members[np.uint64(source.begin)] < 2 * chain.states:
+            row = ROOM + members[np.uint64(source.begin)]  # the row of a state itself
+        life.living, life.alive = row * BINS, 1.0
         life.over = life.last = chain.over
         life.closed = chain.closed
     if p.state >= chain.states:
@@ -851,77 +849,88 @@ def stand_in_states(lives, chain, p):
 
 
 @inner
-def add_members(work, p, sources, members, room, g):
-    """Write each source of a policy at a point: the sum of its members."""
-    for n in range(p.sources, p.sources_end):
-        source = sources[np.uint64(n)]
-        total = 0.0
-        for q in range(source.begin, source.end):
-            total += work[np.uint64(members[np.uint64(q)])]
-        room[np.uint64((ROOM + n - p.sources) * BINS + g)] = total
+def occupy(chain, p, pool, room, furthest, step):
+    """Fill the rows of the states of a policy, before and after lapses, from T to a point; return the end of its step.
+
+    The probabilities go forward from the state at T by the matrices of the steps. Of the first, perhaps broken step,
+    the state is kept with the probability of the whole step to the power of what is left of it; exits share in
+    proportion. ``left``: the share of the whole step's exits.
+    """
+    size, over = chain.states, chain.over
+    before, after = ROOM * BINS, (ROOM + size) * BINS
+    for place in range(size):
+        there = 1.0 if place == p.state else 0.0
+        room[before + place * BINS + p.k] = room[after + place * BINS + p.k] = there
+    first = p.k // step * step + step
+    left = 0.0
+    if p.state >= size:
+        for place in range(2 * size):
+            room[before + place * BINS + p.k : before + place * BINS + furthest + 1] = 0.0
+        return first, left
+    row = chain.place + p.state * (size + chain.moves) * over + first - 1
+    stay = pool[row + p.state * over]
+    for g in range(p.k + 1, min(first, furthest) + 1):
+        part = (g - p.k - p.part / p.whole) / step
+        kept = stay**part
+        left = (1.0 - kept) / (1.0 - stay) if stay < 1.0 else part
+        for place in range(size):
+            there = kept if place == p.state else left * pool[row + place * over]
+            room[before + place * BINS + g] = there
+            leaves = pool[p.keep + g] if (p.leaving >> place) & 1 else 0.0
+            room[after + place * BINS + g] = there - leaves * there
+    begin = first
+    for g in range(first + 1, furthest + 1):
+        leaves = pool[np.uint64(p.keep + g)]
+        for end in range(size):
+            total = 0.0
+            row = chain.place + end * over + g - 1
+            for place in range(size):
+                total += room[np.uint64(after + place * BINS + begin)] * pool[np.uint64(row)]
+                row += (size + chain.moves) * over
+            room[np.uint64(before + end * BINS + g)] = total
+            if (p.leaving >> end) & 1:
+                total -= leaves * total
+            room[np.uint64(after + end * BINS + g)] = total
+        if step == 1 or g % step == 0:
+            begin = g
+    return first, left
 
 
 @inner
-def occupy(chain, p, sources, members, pool, room, work, furthest, step):
-    """Fill the rows of the sources of a policy from T to a point: occupancy of states, moves and lapses from T.
-
-    The probabilities go forward from the state at T by the matrices of the steps. Of the broken step, a state is
-    kept with the probability of the whole step to the power of what is left of it; exits share in proportion.
-    """
-    size, wide = chain.states, chain.states + chain.moves
-    before, after = MEMBERS, MEMBERS + size
-    moved, lapsed = MEMBERS + 2 * size, MEMBERS + size + wide
-    for place in range(lapsed + 1):
-        work[place] = 0.0
-    if p.state < size:
-        work[p.state] = work[before + p.state] = work[after + p.state] = 1.0
-    add_members(work, p, sources, members, room, p.k)
-    if p.state >= size:
-        for g in range(p.k + 1, furthest + 1):
-            add_members(work, p, sources, members, room, g)
-        return
-    begun = p.k // step * step
-    broken = begun + step if (p.k > begun or p.part > 0) else begun
-    for g in range(p.k + 1, furthest + 1):
-        boundary = step == 1 or g % step == 0
-        for place in range(size):
-            work[before + place] = 0.0
-        for place in range(wide - size):
-            work[moved + place] = 0.0
-        if g <= broken:
-            row = chain.place + ((broken - 1) * size + p.state) * wide
-            stay = pool[row + p.state]
-            part = (g - p.k - p.part / p.whole) / step
-            kept = stay**part
-            left = (1.0 - kept) / (1.0 - stay) if stay < 1.0 else part
-            for place in range(size):
-                work[before + place] = left * pool[row + place]
-            for place in range(wide - size):
-                work[moved + place] = left * pool[row + size + place]
-            work[before + p.state] = kept
-        else:
-            row = chain.place + (g - 1) * size * wide
-            for one in range(size):
-                there = work[one]
+def add_rows(chain, p, sources, members, pool, room, first, left, furthest, step):
+    """Fill the rows of the sources that are no row of a state: sums of states, moves of a step, lapses."""
+    size, over = chain.states, chain.over
+    wide = (size + chain.moves) * over
+    for n in range(p.sources, p.sources_end):
+        source = sources[np.uint64(n)]
+        if source.end - source.begin == 1 and members[np.uint64(source.begin)] < 2 * size:
+            continue
+        to = (ROOM + 2 * size + n - p.sources) * BINS
+        for g in range(p.k, furthest + 1):
+            room[np.uint64(to + g)] = 0.0
+        for q in range(source.begin, source.end):
+            member = members[np.uint64(q)]
+            if member < 2 * size:
+                one = (ROOM + member) * BINS
+                for g in range(p.k, furthest + 1):
+                    room[np.uint64(to + g)] += room[np.uint64(one + g)]
+            elif member == 2 * size + chain.moves:
                 for place in range(size):
-                    work[before + place] += there * pool[np.uint64(row + place)]
-                for place in range(wide - size):
-                    work[moved + place] += there * pool[np.uint64(row + size + place)]
-                row += wide
-        gone = 0.0
-        share = 0.0
-        if boundary and p.leaving != 0 and pool[p.keep + g - 1] > 0.0:
-            share = 1.0 - pool[p.keep + g] / pool[p.keep + g - 1]
-        for place in range(size):
-            stays = work[before + place]
-            if share > 0.0 and (p.leaving >> place) & 1:
-                gone += share * stays
-                stays -= share * stays
-            work[after + place] = stays
-            if boundary:
-                work[place] = stays
-        work[lapsed] = gone
-        add_members(work, p, sources, members, room, g)
+                    if (p.leaving >> place) & 1:
+                        one = (ROOM + place) * BINS
+                        for g in range(p.k + 1, furthest + 1):
+                            room[np.uint64(to + g)] += room[np.uint64(one + g)] * pool[np.uint64(p.keep + g)]
+            elif p.state < size and first <= furthest:
+                column = chain.place + (member - size) * over - 1
+                room[to + first] += left * pool[column + p.state * wide + first]
+                for place in range(size):
+                    one, row = (ROOM + size + place) * BINS - step, column + place * wide
+                    if step == 1:
+                        for g in range(first + 1, furthest + 1):
+                            room[np.uint64(to + g)] += room[np.uint64(one + g)] * pool[np.uint64(row + g)]
+                    else:
+                        for g in range(first + step, furthest + 1, step):
+                            room[to + g] += room[one + g] * pool[row + g]
 
 
 @compiled
@@ -937,7 +946,6 @@ def value_policies(order, policies, tables, rules, results):
     room, filled = unowned(results.room), unowned(results.filled)
     firsts, counts = unowned(results.firsts), unowned(results.counts)
     chains, sources, members = unowned(tables.chains), unowned(tables.sources), unowned(tables.members)
-    work = unowned(results.work)
     survived, beside, persisting = np.int64(-1), np.int64(-1), np.int64(-1)
     for j in range(len(order)):
         i = np.uint64(order[np.uint64(j)])
@@ -957,7 +965,7 @@ def value_policies(order, policies, tables, rules, results):
             beyond = beyond or outlives(lives[s.SECOND], p)
             alive = lives[s.JOINT].alive
         if p.chain >= 0:
-            alive, beyond = stand_in_states(lives, chains[np.uint64(p.chain)], p)
+            alive, beyond = stand_in_states(lives, chains[np.uint64(p.chain)], p, sources, members)
         inforce = persistency_at(p, pool, rules)
         if new or p.held != persisting:
             survived, beside, persisting = p.survival, p.second, p.held
@@ -994,7 +1002,9 @@ def value_policies(order, policies, tables, rules, results):
                     last = firsts[n - begin] + (counts[n - begin] - 1) * apart(stream, whole, j, rules)
                     furthest = max(furthest, last)
             chain = chains[np.uint64(p.chain)]
-            occupy(chain, p, sources, members, pool, room, work, furthest, np.int64(rules.step))
+            step = np.int64(rules.step)
+            ended, left = occupy(chain, p, pool, room, furthest, step)
+            add_rows(chain, p, sources, members, pool, room, ended, left, furthest, step)
         furthest = p.k
         benefits, expenses, premiums = 0.0, 0.0, 0.0
         for n in range(begin, behind):

@@ -125,13 +125,20 @@ def plain_value(
         position=position,
         age=age,
         survival=course.alive_now,
-        persistency=course.in_force_now,
+        persistency=_persistency(course),
         life=course.lives.first,
         second=course.lives.second,
         chain=course.lives if isinstance(course.lives, Chain) else None,
         lapses=course.lives.lapses if isinstance(course.lives, Chain) else course.lapses,
         rules=rules,
     )
+
+
+def _persistency(course: Course) -> float:
+    """Return P(T); on named states of those who may lapse, 1 where none of them is left."""
+    if isinstance(course.lives, Chain):
+        return course.lives.lapses.at_valuation(course.u) or 1.0
+    return course.in_force_now
 
 
 def _value_of(stream: PolicyStream, course: Course) -> float:

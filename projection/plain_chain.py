@@ -141,9 +141,7 @@ class Chain:
         share = 1 - self._kept(end)
         before = self._before[end]
         self._lapsed[end] = math.fsum(share * before[state] for state in self.states if state in self.lapsing)
-        self._after[end] = {
-            state: before[state] * (1 - share if state in self.lapsing else 1) for state in self.states
-        }
+        self._after[end] = {state: before[state] * (1 - share if state in self.lapsing else 1) for state in self.states}
         self._base = self._after[end]
 
     def _kept(self, point: int) -> float:

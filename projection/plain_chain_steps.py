@@ -86,7 +86,10 @@ class Moves:
                 years = start / 12 if t is None else t
                 figure = rates.force(entry + years, years)
             else:
-                figure = rates.rate(entry, since)
+                try:
+                    figure = rates.rate(entry, since)
+                except ValueError as error:
+                    raise NotValued("age outside the tables", "age", float(entry + since), str(error)) from error
         adjusted = rule.multiple * figure + rule.extra
         return adjusted if rule.figures == "force" else min(1.0, adjusted)
 

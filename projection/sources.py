@@ -15,7 +15,6 @@ from numpy.typing import NDArray
 from portfolios.designs import Design, Stream
 from portfolios.named_states import is_named, lapsing, living, occupied, paid_on, reachable, running_in
 
-from . import loops
 from .cells import Cell
 from .documents import DocumentError
 from .lives import Terms
@@ -29,7 +28,7 @@ class SourceRows:
     """The sources of all plans, one behind the other, and the range of them that belongs to each cell.
 
     members: places of members in the numbers that the loops work with; leaving: per cell the bits of the states
-    from which it may lapse; most: the most sources that a plan has. A plan is made between ``begin`` and ``end``.
+    from which it may lapse; most: the most rows of states and sources that a plan has. A plan is made between ``begin`` and ``end``.
     """
 
     records: NDArray[Any] = field(default_factory=lambda: np.zeros(1, SOURCE))
@@ -54,12 +53,12 @@ class SourceRows:
             rows = np.zeros(len(self._made), SOURCE)
             for row, members in zip(rows, self._made, strict=True):
                 row["begin"], row["end"] = len(self.members), len(self.members) + len(members)
-                self.members = np.concatenate((self.members, np.array(members, np.int64) + loops.MEMBERS))
+                self.members = np.concatenate((self.members, np.array(members, np.int64)))
             self.records = np.concatenate((self.records, rows))
             leaves = lapsing(self._design) if self._states else frozenset()
             bits = sum(1 << place for place, state in enumerate(self._states) if state in leaves)
             self._known[key] = first, len(self.records), bits
-            self.most = max(self.most, len(rows))
+            self.most = max(self.most, 2 * len(self._states) + len(rows))
         first, behind, bits = self._known[key]
         self.ranges = np.concatenate((self.ranges, [(first, behind)]))
         self.leaving = np.concatenate((self.leaving, [bits]))

@@ -106,8 +106,8 @@ CHAIN = np.dtype(
     ],
     align=True,
 )
-"""A chain on named states. The matrix of a point has a row for each state in which the step begins: probabilities of
-the states at the point, then expected numbers of the moves until then."""
+"""A chain on named states. For each state in which a step begins there are rows over the points 1, 2 ...: the
+probabilities of the states at the point, one row each, then the expected numbers of the moves until then."""
 
 SOURCE = np.dtype([("begin", "i8"), ("end", "i8")])
 """Of which members a row of occupancy or moves is the sum: a range of the list of members.
@@ -154,7 +154,7 @@ POLICY = np.dtype(
         ("sources", "i8"),  # first source of its plan
         ("sources_end", "i8"),  # behind the last of them
         ("leaving", "i8"),  # bits of the states from which it may lapse
-        ("keep", "i8"),  # place of persistency at g = 0, where lapses depend on the state
+        ("keep", "i8"),  # place of the shares that lapse at g = 0, of those still there, where they depend on the state
     ],
     align=True,
 )

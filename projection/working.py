@@ -17,6 +17,7 @@ from .plain import Payment, PlainValue, plain_value
 from .plain_layout import money, pairs, plain, table
 from .plain_life import Survival
 from .settings import Settings
+from .working_states import states_section
 
 Listing = Literal["yearly", "all"]
 Columns = tuple[tuple[str, ...], list[tuple[str, ...]]]
@@ -61,7 +62,10 @@ def working(
     lines = [f"Working of policy {plain(policy.get('policy_id'))}", ""]
     lines += pairs(_heading(design, basis, settings))
     lines += ["", "Dates", *pairs(_dates(policy, value, settings))]
-    lines += ["", "Mortality", *pairs(_mortality(basis, value)), *_rates(value.life, value)]
+    if value.chain is not None:
+        lines += states_section(value, value.chain)
+    if value.life is not None:
+        lines += ["", "Mortality", *pairs(_mortality(basis, value)), *_rates(value.life, value)]
     if value.second is not None:
         lines += ["", "Second life", *pairs(_second(policy, basis, value)), *_rates(value.second, value)]
     lines += ["", "Lapse, interest and expenses", *pairs(_other_rules(basis, value)), *_lapses(value)]
@@ -104,6 +108,7 @@ def _mortality(basis: Basis, value: PlainValue) -> Iterator[tuple[str, str]]:
     rule = part.rule[number - 1]
     yield "age at commencement", f"{float(value.age):.6f}, {part.age}"
     yield "rule", f"{number}{_titled(rule.title)}: {_source(rule)}"
+    assert value.life is not None
     yield "rate", _rate(value.life)
     yield "fractions of a year", part.fractions
     both = "" if value.second is None else ", of both lives but for a common shock"
@@ -211,7 +216,7 @@ def _every(payments: list[Payment], value: PlainValue) -> Columns:
 
 
 def _row(payment: Payment, value: PlainValue) -> tuple[str, ...]:
-    q = value.life.rate_before(payment.point)
+    q = None if value.life is None else value.life.rate_before(payment.point)
     return (
         str(payment.point),
         payment.due.isoformat(),

@@ -160,9 +160,11 @@ def _rates(book: Any, working: Working, formats: Formats, shapes: Shapes) -> Non
 def _steps(book: Any, working: Working, formats: Formats, shapes: Shapes) -> None:
     factor = shapes.factor
     lives = len(working.lives)
+    states = working.of_states
     columns = [formats.whole, formats.date, shapes.time, *[factor] * 3, *[shapes.time, *[factor] * 3] * lives]
-    widths = [8, 12, 12, *[14] * 3, *[12, *[14] * 3] * lives]
-    table = Table([*STEP_COLUMNS, *_of_lives(working, OF_A_LIFE)], columns, widths, shapes.all)
+    columns += [factor] * len(states)
+    widths = [8, 12, 12, *[14] * 3, *[12, *[14] * 3] * lives, *[18] * len(states)]
+    table = Table([*STEP_COLUMNS, *_of_lives(working, OF_A_LIFE), *states], columns, widths, shapes.all)
     note = "By step; survival and persistency from the valuation date, deaths and lapses of the step that ends there."
     sheet = book.add_worksheet("Steps")
     put_table(sheet, table, step_rows(working), formats, note=note)

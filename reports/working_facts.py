@@ -14,7 +14,9 @@ from pydantic import BaseModel
 from assumptions.basis import Basis
 from portfolios.columns import BY_NAME
 from portfolios.designs import Design
+from portfolios.named_states import DEAD
 from projection.plain import NotValued, Payment, PlainValue, plain_value
+from projection.plain_chain import Chain
 from projection.plain_dates import monthiversary
 from projection.plain_life import Survival
 from projection.settings import Settings
@@ -39,12 +41,20 @@ class Working:
 
     @property
     def lives(self) -> list[tuple[str, Survival]]:
-        """The life that the value rests on, or both, by name: 'life', or 'first' and 'second' on two lives."""
+        """The life that the value rests on, or both, by name: 'life', or 'first' and 'second'; none on named states."""
+        if self.value.life is None:
+            return []
         if self.design.states == "one life":
             return [("life", self.value.life)]
         if self.value.second is not None:
             return [("first", self.value.life), ("second", self.value.second)]
         return [(str(self.policy["lives"]), self.value.life)]
+
+    @property
+    def of_states(self) -> list[str]:
+        """Heads of what the steps say of named states: each state, then each move."""
+        chain = self.value.chain
+        return [] if chain is None else [*chain.states, *(f"{begin} to {end}" for begin, end in chain.moves.pairs)]
 
     @property
     def policy_id(self) -> str:
@@ -80,6 +90,9 @@ def derived_rows(working: Working) -> Iterator[Row]:
         of = "" if name == "life" else f", {name} life"
         yield f"age at commencement{of}", _age(life, 0), f"{working.basis.document.mortality.age}, in years"
         yield f"survival to valuation{of}", life.at(position.u), "L(T), from commencement"
+    if value.chain is not None:
+        yield "age at commencement", float(value.age), f"{working.basis.document.mortality.age}, in years"
+        yield "state at valuation", value.chain.state, "probabilities go on from it"
     yield "persistency to valuation", value.persistency, "P(T), from commencement"
 
 
@@ -95,6 +108,11 @@ def rule_rows(working: Working) -> Iterator[Row]:
         number = 1 + next(i for i, other in enumerate(document.mortality.rule) if other is rule)
         yield from _keys(place, number, rule)
         yield place, number, "rate of the last age", 1 if life.rates.closed else "as the table"
+    if working.value.chain is not None:
+        for (begin, end), (move, _) in working.value.chain.moves.rules.items():
+            place = f"move from {begin} to {end}"
+            other = next(one for one in document.move if any(rule is move for rule in one.rule))
+            yield from _keys(place, 1 + next(i for i, rule in enumerate(other.rule) if rule is move), move)
     if document.lapse:
         yield from _keys("lapse", None, document.lapse, {"rule"})
         yield from _keys("lapse", used.lapse, document.lapse.rule[used.lapse - 1])
@@ -151,9 +169,9 @@ def lapse_rows(working: Working) -> list[Row]:
 def step_rows(working: Working) -> Iterator[Row]:
     """Yield point, date, years and discount by step, then persistency and lapses, then the columns of each life.
 
-    These are its age, yearly rate, survival and deaths. One row for each step boundary after the valuation date
-    up to the last payment; survival and persistency are from the valuation date. Where payments for certain
-    outlast the table, nothing is said of survival.
+    On named states, those of each state and move follow. The columns of a life are its age, yearly rate, survival and
+    deaths. One row for each step boundary after the valuation date up to the last payment; survival and persistency
+    are from the valuation date. Where payments for certain outlast the table, nothing is said of survival.
     """
     value, length = working.value, working.settings.step_months
     curve = working.basis.curves[value.rules.interest - 1]
@@ -171,8 +189,18 @@ def step_rows(working: Working) -> Iterator[Row]:
             died = None if now is None or before is None else before - now
             row += [_age(life, point), life.rate_before(point), now, died]
             alive[place] = now
+        if value.chain is not None:
+            row += _states_at(value.chain, point)
         yield tuple(row)
         stay = stayed
+
+
+def _states_at(chain: Chain, point: int) -> list[float | None]:
+    """Return the probability of each state after the lapses of a point, and the expected moves of its step."""
+    if chain.state == DEAD or (point > chain.moves.last and not chain.moves.closed):
+        return [None] * (len(chain.states) + len(chain.moves.pairs))
+    shares = [chain.share(point, frozenset({state}), True) for state in chain.states]
+    return [*shares, *(chain.moved(point, frozenset({pair})) for pair in chain.moves.pairs)]
 
 
 def payment_rows(working: Working) -> Iterator[Row]:

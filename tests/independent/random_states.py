@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
 from pathlib import Path
 from typing import Any
 
@@ -45,7 +46,7 @@ def on_named_states(draw: Draw, stream: dict[str, Any], states: list[str]) -> No
 def pairs_of(states: list[str]) -> list[tuple[str, str]]:
     """The moves for which the bases have rates: one state on or back, and to the dead from all."""
     pairs = [(state, "dead") for state in states]
-    pairs += [(begin, end) for begin, end in zip(states, states[1:], strict=False)]
+    pairs += list(pairwise(states))
     return pairs + ([(states[1], states[0])] if len(states) > 1 else [])
 
 
