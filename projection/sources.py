@@ -28,7 +28,8 @@ class SourceRows:
     """The sources of all plans, one behind the other, and the range of them that belongs to each cell.
 
     members: places of members in the numbers that the loops work with; leaving: per cell the bits of the states
-    from which it may lapse; most: the most rows of states and sources that a plan has. A plan is made between ``begin`` and ``end``.
+    from which it may lapse; most: the most rows of states and sources that a plan has. A plan is made between
+    ``begin`` and ``end``.
     """
 
     records: NDArray[Any] = field(default_factory=lambda: np.zeros(1, SOURCE))

@@ -97,6 +97,7 @@ def test_every_reason_of_the_checks_is_reached() -> None:
         Reason.IDENTIFIER_NOT_UNIQUE,
         Reason.IDENTIFIER_UNREADABLE,
         Reason.LIVES_UNKNOWN,  # in test_second_life
+        Reason.STATE_UNKNOWN,  # in tests/projection/test_named_states
     }
     assert reached == {reason for reason in Reason if reason < 20}
 

@@ -7,7 +7,6 @@ from pathlib import Path
 from contracts import BY_ID, CASES
 
 LATER = {
-    "multi-state": "Markov models with named states",
     "profit test": "profit tests",
     "profit test / UL": "profit tests with an account",
     "gain by source": "profit tests: gains by source",
@@ -18,12 +17,13 @@ LATER = {
 
 WAITING = {
     "B48": "no life table has the given values: A1_36:20 would be 0.03485, below v^20 (1 - 20p36) = 0.05292",
+    "D27": "a derivative of a probability, which is no value of a contract",
     "B65": "assurances on the death of one life while the other lives",
 }
 """Single cases that wait, and for what."""
 
-CONTRACTS = {"B66", "D03"}
-"""Cases of areas that wait which one contract on one life can say all the same."""
+CONTRACTS = {"B66", "C03", "C08"}
+"""Cases of areas that wait which one contract can say all the same."""
 
 BY_TABLE = {"A05"}
 """Checked in test_open_table_figures through the tables alone, since they are figures of a table."""
