@@ -854,7 +854,7 @@ def occupy(chain, p, pool, room, furthest, step):
 
     The probabilities go forward from the state at T by the matrices of the steps. Of the first, perhaps broken step,
     the state is kept with the probability of the whole step to the power of what is left of it; exits share in
-    proportion. ``left``: the share of the whole step's exits.
+    proportion. ``left``: the share of the whole step's exits. A contract of the dead has no sources to fill.
     """
     size, over = chain.states, chain.over
     before, after = ROOM * BINS, (ROOM + size) * BINS
@@ -863,10 +863,6 @@ def occupy(chain, p, pool, room, furthest, step):
         room[before + place * BINS + p.k] = room[after + place * BINS + p.k] = there
     first = p.k // step * step + step
     left = 0.0
-    if p.state >= size:
-        for place in range(2 * size):
-            room[before + place * BINS + p.k : before + place * BINS + furthest + 1] = 0.0
-        return first, left
     row = chain.place + p.state * (size + chain.moves) * over + first - 1
     stay = pool[row + p.state * over]
     for g in range(p.k + 1, min(first, furthest) + 1):
@@ -898,7 +894,10 @@ def occupy(chain, p, pool, room, furthest, step):
 
 @inner
 def add_rows(chain, p, sources, members, pool, room, first, left, furthest, step):
-    """Fill the rows of the sources that are no row of a state: sums of states, moves of a step, lapses."""
+    """Fill the rows of the sources that are no row of a state: sums of states, moves of a step, lapses.
+
+    Each is a sum of products of a row of states with one of the pool: ones, expected moves, shares that lapse.
+    """
     size, over = chain.states, chain.over
     wide = (size + chain.moves) * over
     for n in range(p.sources, p.sources_end):
@@ -910,27 +909,22 @@ def add_rows(chain, p, sources, members, pool, room, first, left, furthest, step
             room[np.uint64(to + g)] = 0.0
         for q in range(source.begin, source.end):
             member = members[np.uint64(q)]
-            if member < 2 * size:
-                one = (ROOM + member) * BINS
-                for g in range(p.k, furthest + 1):
-                    room[np.uint64(to + g)] += room[np.uint64(one + g)]
-            elif member == 2 * size + chain.moves:
-                for place in range(size):
-                    if (p.leaving >> place) & 1:
-                        one = (ROOM + place) * BINS
-                        for g in range(p.k + 1, furthest + 1):
-                            room[np.uint64(to + g)] += room[np.uint64(one + g)] * pool[np.uint64(p.keep + g)]
-            elif p.state < size and first <= furthest:
-                column = chain.place + (member - size) * over - 1
+            column = chain.place + (member - size) * over - 1
+            if 2 * size <= member < 2 * size + chain.moves and first <= furthest:
                 room[to + first] += left * pool[column + p.state * wide + first]
-                for place in range(size):
+            for place in range(size if member >= 2 * size else 1):
+                if member < 2 * size:
+                    one, row, g, hop = (ROOM + member) * BINS, ONES, p.k, 1
+                elif member == 2 * size + chain.moves:
+                    one, row, g, hop = (ROOM + place) * BINS, p.keep, p.k + 1, 1
+                    if (p.leaving >> place) & 1 == 0:
+                        continue
+                else:
                     one, row = (ROOM + size + place) * BINS - step, column + place * wide
-                    if step == 1:
-                        for g in range(first + 1, furthest + 1):
-                            room[np.uint64(to + g)] += room[np.uint64(one + g)] * pool[np.uint64(row + g)]
-                    else:
-                        for g in range(first + step, furthest + 1, step):
-                            room[to + g] += room[one + g] * pool[row + g]
+                    g, hop = first + step, step
+                while g <= furthest:
+                    room[np.uint64(to + g)] += room[np.uint64(one + g)] * pool[np.uint64(row + g)]
+                    g += hop
 
 
 @compiled
@@ -994,7 +988,7 @@ def value_policies(order, policies, tables, rules, results):
         if reason != 0:
             results.reason[i] = reason
             continue
-        if p.chain >= 0:
+        if p.chain >= 0 and p.sources_end > p.sources:
             furthest = p.k
             for n in range(begin, behind):
                 stream = segments[n]

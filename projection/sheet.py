@@ -25,6 +25,7 @@ def convention_sheet(basis: Basis, settings: Settings) -> Sheet:
         ("select", "duration since commencement; select rates, then ultimate"),
         ("improvement", _improvement(basis)),
         ("two lives", _two_lives(basis)),
+        *_named_states(basis, settings),
         ("decrements in one step", _decrements(basis)),
         ("claims paid", _claims(basis)),
         ("interest", _interest(basis)),
@@ -36,6 +37,20 @@ def convention_sheet(basis: Basis, settings: Settings) -> Sheet:
          "minor unit before adding, so that sums do not depend on the order"),
         ("personal data", "policy identifiers only"),
     )  # fmt: skip
+
+
+def _named_states(basis: Basis, settings: Settings) -> Sheet:
+    """Say how moves between named states share a step; nothing where the basis has none."""
+    figures = {rule.figures for move in basis.document.move for rule in move.rule}
+    if not figures:
+        return ()
+    words = ["from the state at the valuation date; where figures are probabilities, one move in a step"]
+    if "force" in figures:
+        words.append("where one of a contract's is a force, Kolmogorov's forward equations over months")
+    if settings.step == "year":
+        words.append("within a year a state is kept with its probability to the power of the part")
+    words.append("lapses at the end of a step, from states that the design names; duration of a stay does not count")
+    return (("named states", "; ".join(words)),)
 
 
 def _interest(basis: Basis) -> str:
