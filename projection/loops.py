@@ -861,7 +861,7 @@ def occupy(chain, p, pool, room, furthest, step):
     for place in range(size):
         there = 1.0 if place == p.state else 0.0
         room[before + place * BINS + p.k] = room[after + place * BINS + p.k] = there
-    first = p.k // step * step + step
+    first = p.k - leftover(p.k, step) + step
     left = 0.0
     row = chain.place + p.state * (size + chain.moves) * over + first - 1
     stay = pool[row + p.state * over]
@@ -874,7 +874,7 @@ def occupy(chain, p, pool, room, furthest, step):
             room[before + place * BINS + g] = there
             leaves = pool[p.keep + g] if (p.leaving >> place) & 1 else 0.0
             room[after + place * BINS + g] = there - leaves * there
-    begin = first
+    begin, end_of_step = first, first + step
     for g in range(first + 1, furthest + 1):
         leaves = pool[np.uint64(p.keep + g)]
         for end in range(size):
@@ -887,8 +887,8 @@ def occupy(chain, p, pool, room, furthest, step):
             if (p.leaving >> end) & 1:
                 total -= leaves * total
             room[np.uint64(after + end * BINS + g)] = total
-        if step == 1 or g % step == 0:
-            begin = g
+        if g == end_of_step:
+            begin, end_of_step = g, g + step
     return first, left
 
 
