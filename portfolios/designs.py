@@ -12,6 +12,7 @@ from typing import Any, Literal
 
 from pydantic import BaseModel, ConfigDict, Field, field_validator, model_validator
 
+from .returns import Returns, check_design, check_stream
 from .states import LEFT_ON, WHILE
 
 
@@ -58,6 +59,14 @@ class Stream(_Part):
         None, description="an extract column or a number: a year for payments while a state lasts, else each time"
     )
     share: float = Field(1.0, ge=0, le=1000, description="factor on the amount")
+    returns: Returns | None = Field(
+        None, description="replaces 'amount' on a move or once: what another stream has paid up to then"
+    )
+    less: str | None = Field(
+        None,
+        description="name of another stream: on a move or once, the amount less what that stream has paid up to then, "
+        "and nothing from when it has paid as much",
+    )
     of: str | None = Field(
         None,
         description="name of another stream: paid whenever that one pays, as a share of it; replaces amount and dates",
@@ -116,7 +125,7 @@ class Stream(_Part):
             if extra:
                 raise ValueError(f"a stream paid as a share 'of' another takes no '{extra[0].rstrip('_')}'")
             return self
-        if self.direction is None or self.amount is None:
+        if self.direction is None or (self.amount is None and self.returns is None):
             raise ValueError("a stream needs 'direction' and 'amount', or 'of'")
         if (self.while_ is None) == (self.on is None):
             raise ValueError("a stream needs one of 'while' and 'on'")
@@ -134,6 +143,8 @@ class Stream(_Part):
             raise ValueError("a guarantee needs a stream paid while alive")
         if self.payments != "at their dates" and (self.guarantee is not None or self.while_ != "alive"):
             raise ValueError(f"{self.payments} needs a stream paid while alive, without a guarantee")
+        if self.returns is not None or self.less is not None:
+            check_stream(self)
         return self
 
     @property
@@ -144,7 +155,8 @@ class Stream(_Part):
     def columns(self) -> Iterator[str]:
         """Extract columns that the stream looks at."""
         increase = self.increase.rate if self.increase else None
-        for value in (self.amount, self.from_, self.to, self.a_year, self.guarantee, increase):
+        interest = self.returns.interest if self.returns else None
+        for value in (self.amount, self.from_, self.to, self.a_year, self.guarantee, increase, interest):
             if isinstance(value, str):
                 yield value
 
@@ -180,6 +192,7 @@ class Design(_Part):
                 raise ValueError(f"stream '{stream.name}' is a share of '{stream.of}', which is not there")
             if base.of is not None:
                 raise ValueError(f"stream '{stream.name}' is a share of '{stream.of}', which is itself a share")
+        check_design(self)
         return self
 
     def _check_words(self, stream: Stream) -> None:

@@ -103,6 +103,7 @@ def _rule(name: str, designs: Sequence[Design]) -> NumberRule:
     frequency = any(stream.a_year == name for stream in streams)
     duration = any(name in (stream.from_, stream.to, stream.guarantee) for stream in streams)
     rate = any(stream.increase is not None and stream.increase.rate == name for stream in streams)
+    rate |= any(stream.returns is not None and stream.returns.interest == name for stream in streams)
     low, high = (-0.5, 1.0) if rate else (0.0, 120.0) if duration else (0.0, LARGEST_AMOUNT)
     column = BY_NAME.get(name)
     if column is not None:

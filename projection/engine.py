@@ -76,7 +76,7 @@ class Engine:
         self.checks = Checks(designs, today, in_force, Duplicates(), needed)
         self.cells = Cells(designs, basis, kinds)
         self.pool = Pool()
-        self.plans = Plans(designs, basis, RelativeRows(self.pool, today.year, today.month))
+        self.plans = Plans(designs, basis, RelativeRows(self.pool, today.year, today.month), settings.step_months)
         self.survival = Survival(basis, self.pool)
         self.persistency = Persistency(basis, settings, self.pool)
         self.discount = Discount(basis, settings, self.pool)

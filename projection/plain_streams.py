@@ -4,10 +4,11 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any, Literal
 
 from portfolios.designs import AtAge, Design, Share, Stream
+from portfolios.returns import looked_back_at
 from portfolios.states import States
 
 from .plain_dates import first_point_at_age
@@ -15,6 +16,7 @@ from .plain_faults import NotValued
 from .plain_lapse import TOLERANCE
 from .plain_lives import states_of
 from .plain_occasions import Course, Occasion, Terms, Way, last_point, occasions
+from .plain_returned import remaining, returned
 
 Policy = Mapping[str, Any]
 Part = Literal["benefits", "expenses", "premiums"]
@@ -59,7 +61,11 @@ def design_streams(design: Design, policy: Policy, course: Course) -> list[Polic
     Raises NotValued where a column of the policy makes no sense for its stream.
     """
     own = [stream for stream in design.stream if stream.of is None]
-    bases = {stream.name: _own(stream, states_of(stream, design), policy, course) for stream in own}
+    bases: dict[str, PolicyStream] = {}
+    for stream in sorted(own, key=lambda one: looked_back_at(one) is not None):
+        made = _own(stream, states_of(stream, design), policy, course)
+        other = looked_back_at(stream)
+        bases[stream.name] = made if other is None else _looking_back(stream, made, bases[other], policy)
     return [
         bases[stream.name] if stream.of is None else _share_of(stream, bases[stream.of]) for stream in design.stream
     ]
@@ -76,7 +82,9 @@ def _own(stream: Stream, states: States | None, policy: Policy, course: Course) 
         # Nobody minds the dates of a stream that cannot be paid any more.
         terms = Terms("once", False, 0, 0, states=states)
     last_point(terms, course)
-    amount = number(policy, stream.amount, f"stream '{stream.name}' needs an amount")
+    amount = 1.0
+    if stream.returns is None:
+        amount = number(policy, stream.amount, f"stream '{stream.name}' needs an amount")
     if isinstance(stream.amount, str) and amount < 0:
         raise NotValued("amount negative", stream.amount, amount, "an amount is at least 0")
     if terms.way in ("advance", "arrears"):
@@ -97,6 +105,24 @@ def _own(stream: Stream, states: States | None, policy: Policy, course: Course) 
         (lambda occasion: relative_amount(stream, terms, rate, occasion.month)) if varies else (lambda _: 1.0),
         level=None if varies else amount,
     )
+
+
+def _looking_back(stream: Stream, made: PolicyStream, base: PolicyStream, policy: Policy) -> PolicyStream:
+    """A stream whose amount depends on what another one has paid up to then."""
+    on_move, level = stream.on is not None, made.level or 0.0
+    if stream.returns is not None:
+        interest = number(policy, stream.returns.interest, f"stream '{stream.name}' needs a rate of interest")
+    if not made.occasions:
+        return made
+    if stream.returns is None:
+        amount = remaining(level, base, on_move)
+    else:
+        back = returned(base, interest, on_move)
+
+        def amount(occasion: Occasion) -> float:
+            return level * back(occasion)
+
+    return replace(made, amount=amount, level=None)
 
 
 def _share_of(stream: Stream, base: PolicyStream) -> PolicyStream:
@@ -141,7 +167,7 @@ def terms_of(stream: Stream, policy: Policy, step_months: int) -> Terms:
         a_year,
         0 if stream.guarantee is None else _months(stream.guarantee, stream, policy, step_months),
         {"Woolhouse 2": 2, "Woolhouse 3": 3}.get(stream.payments, 0),
-        start if stream.clock == "stream" else 0,
+        start if stream.clock == "stream" and looked_back_at(stream) is None else 0,
     )
 
 

@@ -13,12 +13,14 @@ from numpy.typing import NDArray
 from assumptions.basis import Basis
 from assumptions.expenses import Expense
 from portfolios.designs import AtAge, Design, Stream
+from portfolios.returns import looked_back_at
 
 from . import streams as s
 from .cells import Cell
 from .lives import Terms, begun, probability, running, states_of
 from .pool import ONES
 from .relative import RelativeRows, pattern_of, shape_of
+from .returned import paid_so_far
 from .slots import Slots
 
 _PART = {"premium": s.PREMIUMS, "benefit": s.BENEFITS, "expense": s.EXPENSES, "commission": s.EXPENSES}
@@ -91,6 +93,8 @@ class Plans:
     designs: list[Design]
     basis: Basis
     relative: RelativeRows
+    step: int = 1
+    """Months of a projection step."""
     slots: Slots = field(default_factory=Slots)
     lines: dict[Line, int] = field(default_factory=dict)
     segments: NDArray[Any] = field(default_factory=lambda: np.zeros(0, s.SEGMENT))
@@ -174,12 +178,27 @@ class Plans:
             record = replace(record, changing=self.slots.changing(number))
         else:
             record = replace(record, relative=self.relative.fixed(shape))
-        if stream.on is not None:
+        if looked_back_at(stream) is not None:
+            yield from self._looking_back(design, stream, record)
+        elif stream.on is not None:
             yield replace(record, when=s.LAPSE if stream.on == "lapse" else s.DEATH)
         elif stream.paid == "once":
             yield replace(record, when=s.ONCE, before=1, end=start)
         else:
             yield from self._periodic(stream, record)
+
+    def _looking_back(self, design: Design, stream: Stream, record: _Record) -> Iterator[_Record]:
+        """The parts of a benefit on a move or once that depends on what another stream has paid."""
+        when = s.ONCE if stream.on is None else s.LAPSE if stream.on == "lapse" else s.DEATH
+        record = replace(record, when=when, clock=1, relative=ONES)
+        if when == s.ONCE:
+            record = replace(record, before=1, end=record.start)
+        base = design.named(str(looked_back_at(stream)))
+        for (column, figure), row in paid_so_far(stream, base, self.slots, self.step):
+            amount, factor = self.slots.amount(figure if column is None else column)
+            factor *= 1.0 if column is None else figure
+            changing = self.slots.changing(self.relative.of_kind(row))
+            yield replace(record, amount=amount, factor=factor * _sign(stream), changing=changing)
 
     def _periodic(self, stream: Stream, record: _Record) -> Iterator[_Record]:
         when = s.ARREARS if stream.paid == "arrears" else s.ADVANCE

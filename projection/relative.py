@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Hashable
 from dataclasses import dataclass
+from typing import Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -88,6 +89,21 @@ def shares(pattern: Pattern, years: NDArray[np.int64]) -> NDArray[np.float64]:
     return amounts
 
 
+class PerPolicy(Protocol):
+    """Rows of another kind that depend on figures of the policy."""
+
+    def places(
+        self,
+        place: Callable[[Hashable, Callable[[], NDArray[np.float64]]], int],
+        chunk: Chunk,
+        whole: NDArray[np.int32],
+        order: NDArray[np.int64],
+        policies: NDArray[np.int64],
+    ) -> NDArray[np.int32]:
+        """Return the place of the row for each of some policies, as RelativeRows.places_of; place: makes new ones."""
+        ...
+
+
 class RelativeRows:
     """The rows of relative amounts met so far, by their place in the pool.
 
@@ -97,7 +113,7 @@ class RelativeRows:
     def __init__(self, pool: Pool, year: int, month: int) -> None:
         self.pool, self.year, self.month = pool, year, month
         self.known: dict[Hashable, int] = {}
-        self.changing: dict[tuple[Shape, int, int], int] = {}
+        self.changing: dict[tuple[Shape, int, int] | PerPolicy, int] = {}
         """Numbers of the shapes that depend on the policy, with the columns of months of start and end (-1: none)."""
 
     def fixed(self, shape: Shape) -> int:
@@ -123,6 +139,10 @@ class RelativeRows:
         """Return the number of a shape whose row depends on the policy; start, end: columns of months."""
         return self.changing.setdefault((shape, start, end), len(self.changing))
 
+    def of_kind(self, kind: PerPolicy) -> int:
+        """Return the number of rows of another kind."""
+        return self.changing.setdefault(kind, len(self.changing))
+
     def places_of(
         self,
         number: int,
@@ -136,7 +156,10 @@ class RelativeRows:
         policies: places in the order of calculation, whose policies of the extract are ``order``; whole: the
         whole-number matrix.
         """
-        shape, start, end = list(self.changing)[number]
+        known = list(self.changing)[number]
+        if not isinstance(known, tuple):
+            return known.places(self._place, chunk, whole, order, policies)
+        shape, start, end = known
         rates: list[float] = [0.0 if isinstance(shape.rate, str) else shape.rate]
         codes = np.zeros(len(policies), dtype=np.int64)
         if isinstance(shape.rate, str):

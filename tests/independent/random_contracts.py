@@ -183,10 +183,35 @@ def shares_of(draw: Draw, name: str, base: str) -> dict[str, Any]:
     return stream
 
 
+def _looking_back(draw: Draw, stream: dict[str, Any], others: list[dict[str, Any]], pair: bool) -> None:
+    """A benefit that gives payments back, or is what they leave of an amount, where the design allows that."""
+    if stream.get("paid") != "once" and "on" not in stream:
+        return
+    bases = [one for one in others if "on" not in one and "returns" not in one and "less" not in one]
+    if not bases or not chance(draw, 2):
+        return
+    kept = {key: stream[key] for key in stream if key not in ("pattern", "increase", "decrease", "clock")}
+    name = one_of(draw, *(one["name"] for one in bases))
+    if chance(draw, 3):
+        made = {**kept, "less": name, "amount": one_of(draw, 1500.0, "single_premium", "sum_assured")}
+    else:
+        made = {**kept, "returns": {"stream": name, "interest": one_of(draw, 0.0, 0.03, "escalation")}}
+        del made["amount"]
+    states = "two lives" if pair else "one life"
+    try:
+        Design.model_validate({"code": "A", "states": states, "stream": [made, *others]})
+    except ValueError:
+        return
+    stream.clear()
+    stream.update(made)
+
+
 @st.composite
 def designs(draw: Draw, code: str, step: str) -> Design:
     pair = chance(draw, 3)
     own = [draw(own_streams(f"own {number}", step, pair)) for number in range(draw(st.integers(1, 4)))]
+    for stream in own:
+        _looking_back(draw, stream, [other for other in own if other is not stream], pair)
     shared = [
         draw(shares_of(f"share {number}", one_of(draw, *(stream["name"] for stream in own))))
         for number in range(draw(st.integers(0, 2)))

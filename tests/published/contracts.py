@@ -67,6 +67,11 @@ def once(years: float, amount: float = 1.0, **more: Any) -> Stream:
     return {"direction": "out", "amount": amount, "while": "alive", "from": years, "paid": "once", **more}
 
 
+def refund(name: str, end: float, **more: Any) -> Stream:
+    """What the stream of this name has paid, given back on death within so many years."""
+    return {"direction": "out", "on": "death", "to": end, "returns": {"stream": name}, **more}
+
+
 def value(
     streams: list[Stream],
     rates: Any,
@@ -115,7 +120,7 @@ def _policy(age: int, other_age: int | None, commenced: int) -> pa.Table:
 
 def _scaled(number: int, stream: Stream) -> Stream:
     named = {"name": f"stream {number}", **stream}
-    return named if "of" in stream else {**named, "amount": stream["amount"] * SCALE}
+    return named if "of" in stream or "returns" in stream else {**named, "amount": stream["amount"] * SCALE}
 
 
 def _scaled_expense(item: dict[str, Any]) -> dict[str, Any]:

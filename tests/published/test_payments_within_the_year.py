@@ -9,7 +9,7 @@ from typing import Any
 
 import pytest
 from contracts import ILLUSTRATIVE as ILT
-from contracts import STANDARD, annuity, insurance, nearest_is_key, premium, printed, value
+from contracts import STANDARD, annuity, insurance, nearest_is_key, once, premium, printed, refund, value
 
 SIX = 0.06
 MONTHLY = {"a_year": 12}
@@ -49,8 +49,9 @@ def test_b58_monthly_annuity_with_uniform_deaths() -> None:
 def test_b60_deferred_stepped_annuity_with_refund() -> None:
     pattern = [{"years": 15, "share": 1.0}, {"share": 3.0}]
     paid = value([annuity(10, amount=12_000, pattern=pattern, **MONTHLY)], ILT, SIX, 37, **UDD)
-    refund = value([insurance(0, 10, 0.8)], ILT, SIX, 37, **UDD)
-    assert nearest_is_key("B60", paid / (1 - refund), "NSP")
+    single = {**once(0), "name": "single", "direction": "in"}
+    income = -value([single, refund("single", 10, share=0.8)], ILT, SIX, 37, **UDD)
+    assert nearest_is_key("B60", paid / income, "NSP")
 
 
 def test_b62_stepped_annuity_by_woolhouse() -> None:
