@@ -59,7 +59,7 @@ def expense_streams(
     for stream in streams:
         if item.per == "claim":
             if stream.part == "benefits" and stream.name in own and stream.terms.way in ("death", "once"):
-                yield _stream(item, stream.terms, stream.occasions, by_year, grown)
+                yield _stream(item, stream.terms, list(filter(stream.lasts, stream.occasions)), by_year, grown)
         elif stream.part == f"{item.per}s":
             yield _stream(item, stream.terms, stream.occasions, _times(stream.amount, by_year), stream.relative)
 

@@ -72,14 +72,15 @@ def returned(base: PolicyStream, interest: float, on_move: bool) -> Callable[[Oc
     return lambda occasion: balance.at(occasion, on_move)
 
 
-def remaining(amount: float, base: PolicyStream, on_move: bool) -> Callable[[Occasion], float]:
-    """Return what an amount is still above another stream's payments, nothing once they have reached it."""
+def remaining(
+    amount: float, base: PolicyStream, on_move: bool
+) -> tuple[Callable[[Occasion], float], Callable[[Occasion], bool]]:
+    """Return what an amount is still above another stream's payments, and whether they have not reached it yet."""
     balance = Balance(base, 0.0)
     reached = balance.reached(amount)
     in_arrears = base.terms.way == "arrears"
 
-    def left(occasion: Occasion) -> float:
-        counted = occasion.month if on_move else occasion.point if in_arrears else occasion.point - 1
-        return amount - balance.at(occasion, on_move) if counted < reached else 0.0
+    def lasts(occasion: Occasion) -> bool:
+        return (occasion.month if on_move else occasion.point if in_arrears else occasion.point - 1) < reached
 
-    return left
+    return lambda occasion: amount - balance.at(occasion, on_move) if lasts(occasion) else 0.0, lasts

@@ -37,7 +37,7 @@ class PolicyStream:
     """One stream of one policy: its payments to come, and what each amounts to.
 
     amount and relative are functions of the occasion; the payment is their product with its weight. level: the
-    product of both where it is the same for every payment.
+    product of both where it is the same for every payment; lasts: whether there is something to pay at all.
     """
 
     name: str
@@ -48,6 +48,7 @@ class PolicyStream:
     amount: Callable[[Occasion], float]
     relative: Callable[[Occasion], float]
     level: float | None = None
+    lasts: Callable[[Occasion], bool] = lambda _: True
 
     @property
     def sign(self) -> int:
@@ -115,14 +116,10 @@ def _looking_back(stream: Stream, made: PolicyStream, base: PolicyStream, policy
     if not made.occasions:
         return made
     if stream.returns is None:
-        amount = remaining(level, base, on_move)
-    else:
-        back = returned(base, interest, on_move)
-
-        def amount(occasion: Occasion) -> float:
-            return level * back(occasion)
-
-    return replace(made, amount=amount, level=None)
+        amount, lasts = remaining(level, base, on_move)
+        return replace(made, amount=amount, level=None, lasts=lasts)
+    back = returned(base, interest, on_move)
+    return replace(made, amount=lambda occasion: level * back(occasion), level=None)
 
 
 def _share_of(stream: Stream, base: PolicyStream) -> PolicyStream:

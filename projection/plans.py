@@ -198,7 +198,9 @@ class Plans:
             amount, factor = self.slots.amount(figure if column is None else column)
             factor *= 1.0 if column is None else figure
             changing = self.slots.changing(self.relative.of_kind(row))
-            yield replace(record, amount=amount, factor=factor * _sign(stream), changing=changing)
+            # What is taken off an amount is no payment of its own.
+            own = int(row.part != "paid")
+            yield replace(record, amount=amount, factor=factor * _sign(stream), changing=changing, own=own)
 
     def _periodic(self, stream: Stream, record: _Record) -> Iterator[_Record]:
         when = s.ARREARS if stream.paid == "arrears" else s.ADVANCE
@@ -259,9 +261,11 @@ class Plans:
                 runs = _Record(start=start, end=self._contract_end(own), period=period, power=1)
                 yield from _on_lives([runs], running, False)
         elif item.per == "claim":
+            ends_early = {self.slots.changing(number) for number in self.relative.until}
             for record in own:
-                if record.part == s.BENEFITS and record.when in (s.DEATH, s.ONCE):
-                    yield replace(record, amount=-1, factor=record.term, relative=ONES, changing=-1)
+                if record.part == s.BENEFITS and record.when in (s.DEATH, s.ONCE) and record.own:
+                    changing = record.changing if record.changing in ends_early else -1
+                    yield replace(record, amount=-1, factor=record.term, relative=ONES, changing=changing)
         else:
             part = s.PREMIUMS if item.per == "premium" else s.BENEFITS
             for stream in design.stream:

@@ -90,7 +90,15 @@ def shares(pattern: Pattern, years: NDArray[np.int64]) -> NDArray[np.float64]:
 
 
 class PerPolicy(Protocol):
-    """Rows of another kind that depend on figures of the policy."""
+    """Rows of another kind that depend on figures of the policy.
+
+    lasts: whether it is 1 for as long as there is something to pay, then 0.
+    """
+
+    @property
+    def lasts(self) -> bool:
+        """Whether the row says how long there is something to pay."""
+        ...
 
     def places(
         self,
@@ -142,6 +150,11 @@ class RelativeRows:
     def of_kind(self, kind: PerPolicy) -> int:
         """Return the number of rows of another kind."""
         return self.changing.setdefault(kind, len(self.changing))
+
+    @property
+    def until(self) -> list[int]:
+        """Numbers of the rows that say how long there is something to pay."""
+        return [number for kind, number in self.changing.items() if not isinstance(kind, tuple) and kind.lasts]
 
     def places_of(
         self,

@@ -50,6 +50,11 @@ class PaidSoFar:
     price: Money = (None, 0.0)
     payment: Money = (None, 0.0)
 
+    @property
+    def lasts(self) -> bool:
+        """Whether the row says how long there is something to pay."""
+        return self.part == "price"
+
     def places(
         self,
         place: Place,

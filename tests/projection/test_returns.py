@@ -16,16 +16,19 @@ from portfolios.designs import Design
 PREMIUM = stream("premium", "premium_pa", direction="in", to=10)
 
 
+PROTECTED = {"name": "protected", "direction": "out", "amount": 1000.0, "on": "death", "less": "annuity"}
+
+
 def returning(name: str = "premium", interest: float | str = 0.0, **keys: Any) -> dict[str, Any]:
     made = {"name": "returned", "direction": "out", "returns": {"stream": name, "interest": interest}, **keys}
     return made if "on" in keys else {"while": "alive", "paid": "once", **made}
 
 
-def by_engine(contract: Design, on: date = COMMENCED, step: Any = "year", i: float = 0.04, **columns: Any) -> float:
+def by_engine(contract: Design, on: date = COMMENCED, step: Any = "year", **more: Any) -> float:
     """Value of the benefits by the engine; the twin has valued the policy beside it."""
     assumed = {"mortality": {"age": "exact", "rule": [{"table": MAKEHAM}]}}
-    document = {**assumed, "interest": {"rule": [{"flat": i}]}}
-    row = {**policy(**columns), "status": "in force"}
+    document = {**assumed, "interest": {"rule": [{"flat": 0.04}]}, "expense": more.pop("expense", [])}
+    row = {**policy(**more), "status": "in force"}
     table = pa.table({name: [figure] for name, figure in row.items()})
     found = projection.value(table, [contract], document, on, step=step, due="outstanding", decimals=4)
     assert found.exceptions.num_rows == 0, found.exceptions.to_pylist()
@@ -89,7 +92,7 @@ def test_single_premium_and_increasing_premiums() -> None:
 def test_value_protection_is_the_price_less_instalments_until_they_reach_it() -> None:
     # Closed form: price 1000, instalments of 300 at 0, 1, 2 ...: on death in the years 1 to 3, 700, 400, 100.
     annuity = stream("annuity", 300.0)
-    protected = {"name": "protected", "direction": "out", "amount": 1000.0, "on": "death", "less": "annuity"}
+    protected = PROTECTED
     q, v = 0.02, 1 / 1.04
     expected = sum(left * v ** (k + 1) * (1 - q) ** k * q for k, left in enumerate((700, 400, 100)))
     assumed = basis(constant(q, last=1.0))
@@ -99,6 +102,15 @@ def test_value_protection_is_the_price_less_instalments_until_they_reach_it() ->
     half = value(design(annuity, {**protected, "share": 0.5}), assumed)
     mine = sum(payment.value for payment in half.payments if payment.stream == "protected")
     assert mine == pytest.approx(200 * v * q, rel=1e-13)  # 500 less 300; the second instalment reaches it
+
+
+def test_a_claim_costs_once_and_only_while_there_is_something_to_pay() -> None:
+    # Closed form: instalments of 300 reach 500 in the second year; one claim of 25 in the first.
+    streams = stream("annuity", 300.0), {**PROTECTED, "amount": 500.0}
+    item = {"name": "claims", "per": "claim", "rule": [{"first_year": 25.0, "later_years": 40.0}]}
+    found = value(design(*streams), basis(constant(0.02, last=1.0), expense=[item]))
+    assert found.expenses == pytest.approx(25 * 0.02 / 1.04, rel=1e-13)
+    assert by_engine(design(*streams), expense=[item]) == pytest.approx(by_engine(design(*streams)), abs=1e-4)
 
 
 def test_a_later_valuation_counts_what_was_paid_before() -> None:
