@@ -14,6 +14,7 @@ from pydantic import Field, field_validator
 
 from .expenses import Expense
 from .improvement import Scale, read_scale
+from .indices import Index
 from .interest import Interest, YieldCurve, curve_of
 from .items import Item, Sourced
 from .lapse import Lapse
@@ -49,7 +50,17 @@ class BasisDocument(Sourced):
     lapse: Lapse | None = Field(None, description="rates of leaving by choice; absent: nobody lapses")
     interest: Interest = Field(description="discount curves")
     expense: list[Expense] = Field(default_factory=list, description="items of expense; all of them count")
+    index: list[Index] = Field(default_factory=list, description="indices that increases of payments may follow")
     claims: Claims = Field(default_factory=Claims, description="when a death benefit is paid")
+
+    @field_validator("index")
+    @classmethod
+    def _named_once(cls, indices: list[Index]) -> list[Index]:
+        names = [index.name for index in indices]
+        for name in names:
+            if names.count(name) > 1:
+                raise ValueError(f"two indices are called '{name}'")
+        return indices
 
     def rules(self) -> Iterator[tuple[str, Rule]]:
         """Yield every rule with the place that it stands in."""

@@ -34,10 +34,49 @@ class Share(_Part):
 
 
 class Increase(_Part):
-    """Yearly increase of a stream's relative amount on each anniversary of its clock."""
+    """Yearly increase of a stream's relative amount on each anniversary of its clock, or in a calendar month."""
 
-    rate: float | str = Field(description="yearly rate, or the extract column that holds it")
+    rate: float | str | None = Field(None, description="yearly rate, or the extract column that holds it")
+    index: str | None = Field(None, description="in place of 'rate': name of an index of the basis")
+    share: float = Field(1.0, ge=0, le=10, description="factor on the index's rate")
+    plus: float = Field(0.0, ge=-0.5, le=0.5, description="added to the index's rate, after 'share'")
+    floor: float | None = Field(None, ge=-0.5, le=1, description="least rate of an increase by index")
+    cap: float | None = Field(None, ge=-0.5, le=1, description="largest rate of an increase by index")
     kind: Literal["compound", "simple"] = Field("compound", description="on the last amount or on the first")
+    month: int | None = Field(
+        None,
+        ge=1,
+        le=12,
+        description="calendar month of the increases, which hold for payments from that month on; absent: the "
+        "anniversaries of the clock",
+    )
+    amount: Literal["at its start", "at the valuation date"] | None = Field(
+        None,
+        description="which amount is given: before any increase, or with all increases up to the valuation date; "
+        "absent: 'at its start' with 'rate', 'at the valuation date' with 'index', which knows no other",
+    )
+
+    @model_validator(mode="after")
+    def _one_form(self) -> Increase:
+        if (self.rate is None) == (self.index is None):
+            raise ValueError("an increase needs one of 'rate' and 'index'")
+        if self.index is None:
+            _none_of(self.model_fields_set, "whose increase has no 'index'", "share", "plus", "floor", "cap")
+        elif self.amount == "at its start":
+            raise ValueError("an increase by 'index' needs the amount at the valuation date; past rates are not known")
+        if self.floor is not None and self.cap is not None and self.floor > self.cap:
+            raise ValueError(f"floor {self.floor} lies above cap {self.cap}")
+        return self
+
+    @property
+    def current(self) -> bool:
+        """Whether the amount given holds the increases up to the valuation date."""
+        return self.index is not None or self.amount == "at the valuation date"
+
+    @property
+    def needs_calendar(self) -> bool:
+        """Whether the increases depend on calendar time."""
+        return self.current or self.month is not None
 
 
 Duration = float | str | AtAge
@@ -133,6 +172,8 @@ class Stream(_Part):
             _none_of(given, f"paid on {self.on}", "a_year", "paid", "guarantee", "payments")
         if self.paid == "once":
             _none_of(given, "paid once", "to", "a_year", "guarantee", "decrease", "payments")
+        if self.decrease is not None and self.increase is not None and self.increase.needs_calendar:
+            raise ValueError("an increase by calendar time takes no 'decrease' beside it")
         if self.decrease is not None and self.to is None:
             raise ValueError("a decrease to nothing needs 'to'")
         if self.while_ == "certain" and self.to is None and self.paid != "once":

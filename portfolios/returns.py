@@ -58,6 +58,11 @@ def check_design(design: Design) -> None:
                 f"stream '{stream.name}' looks back at '{name}'; it must be a stream with terms of its own, paid "
                 "while a state lasts, for certain or once"
             )
+        if base.increase is not None and base.increase.needs_calendar:
+            raise ValueError(
+                f"stream '{stream.name}' looks back at '{name}', which increases by calendar time; its past payments "
+                "cannot be counted"
+            )
         if not _always_paid(base, _states(stream, design)):
             raise ValueError(
                 f"stream '{stream.name}' looks back at '{name}', which need not have been paid all the time "

@@ -27,6 +27,7 @@ from portfolios.reasons import Reason
 from . import loops
 from .cells import Cells
 from .curves import IMPOSSIBLE, NEVER, Discount, Finder, Keys, Persistency, Survival
+from .growth import check_indices
 from .lives import on_two
 from .plans import Plans
 from .pool import Pool
@@ -71,6 +72,7 @@ class Engine:
         kinds: dict[str, str],
         in_force: Collection[str] = ("in force",),
     ) -> None:
+        check_indices(designs, basis.document.index)
         self.basis, self.settings, self.needed = basis, settings, needed
         today = settings.valuation_date
         self.checks = Checks(designs, today, in_force, Duplicates(), needed)
@@ -119,7 +121,7 @@ class Engine:
         policies = loops.records(np.zeros(chunk.n, POLICY))
         after = self.discount.months_after_start()
         loops.fill_policies(order, places, found, after, self.settings.step_months, policies)
-        tables = self._tables(chunk, checked, cell, order)
+        tables = self._tables(chunk, checked, cell, order, places)
         clock.lap("curves")
         results = _room_for(chunk.n, checked, tables, len(self.plans.accounts))
         loops.value_policies(order, policies, tables, self.rules, results)
@@ -227,7 +229,12 @@ class Engine:
         return order
 
     def _tables(
-        self, chunk: Chunk, checked: Checked, cell: NDArray[np.int32], order: NDArray[np.int64]
+        self,
+        chunk: Chunk,
+        checked: Checked,
+        cell: NDArray[np.int32],
+        order: NDArray[np.int64],
+        places: loops.Places,
     ) -> loops.Tables:
         def months_to_age(age: int, row: int) -> NDArray[np.int32]:
             months = np.zeros(chunk.n, dtype=np.int32)
@@ -243,7 +250,7 @@ class Engine:
                 row = plans.slots.changing(number)
                 mine = np.flatnonzero(plans.using(row)[cell[order]] & (checked.reason[order] == 0))
                 if len(mine):
-                    whole[row, mine] = plans.relative.places_of(number, chunk, whole, order, mine)
+                    whole[row, mine] = plans.relative.places_of(number, chunk, whole, order, mine, places.k)
             money = plans.slots.amounts_of(chunk, order)
             records = self.survival.records if len(self.survival.records) else np.zeros(1, SURVIVAL)
             return loops.Tables(

@@ -173,6 +173,7 @@ def _course(
     outstanding = settings.due == "outstanding"
     curve = basis.curves[interest]
     course = Course(position.u, settings.step_months, outstanding, lives, lapses, document.claims, curve)
+    course.indices, course.today = document.index, settings.valuation_date
     for share, what in ((course.alive_now, "alive"), (course.in_force_now, "in force")):
         if share <= 0:
             raise NotValued(f"nobody {what} at the valuation date", "commencement_date", None, f"by the basis, {share}")

@@ -3,12 +3,14 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
+from datetime import date
 from fractions import Fraction
 from typing import Literal, NamedTuple
 
 from assumptions.basis import ClaimDelay, Claims
+from assumptions.indices import Index
 from assumptions.interest import YieldCurve
 from portfolios.states import States
 
@@ -72,6 +74,9 @@ class Course:
     lapses: Persistency
     claims: Claims
     curve: YieldCurve
+    indices: Sequence[Index] = ()
+    today: date | None = None
+    """The valuation date itself, where increases in calendar months ask for it."""
     alive_now: float = field(init=False)
     """L(T)."""
     in_force_now: float = field(init=False)

@@ -7,12 +7,13 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
 from typing import Any, Literal
 
-from portfolios.designs import AtAge, Design, Share, Stream
+from portfolios.designs import AtAge, Design, Increase, Share, Stream
 from portfolios.returns import looked_back_at
 from portfolios.states import States
 
 from .plain_dates import first_point_at_age
 from .plain_faults import NotValued
+from .plain_growth import Growth
 from .plain_lapse import TOLERANCE
 from .plain_lives import states_of
 from .plain_occasions import Course, Occasion, Terms, Way, last_point, occasions
@@ -92,10 +93,15 @@ def _own(stream: Stream, states: States | None, policy: Policy, course: Course) 
         amount /= terms.a_year
     amount *= stream.share
     rate = 0.0
-    if stream.increase is not None:
+    if stream.increase is not None and stream.increase.rate is not None:
         rate = number(policy, stream.increase.rate, f"stream '{stream.name}' needs a rate of increase")
     varies = stream.pattern or stream.increase or stream.decrease
     assert stream.direction is not None  # the design has checked it
+    relative: Callable[[Occasion], float] = lambda _: 1.0  # noqa: E731
+    if stream.increase is not None and stream.increase.needs_calendar:
+        relative = _by_calendar(stream, stream.increase, terms, rate, policy, course)
+    elif varies:
+        relative = lambda occasion: relative_amount(stream, terms, rate, occasion.month)  # noqa: E731
     return PolicyStream(
         stream.name,
         PART_OF_KIND[stream.part],
@@ -103,9 +109,21 @@ def _own(stream: Stream, states: States | None, policy: Policy, course: Course) 
         terms,
         occasions(terms, course) if possible else [],
         lambda _: amount,
-        (lambda occasion: relative_amount(stream, terms, rate, occasion.month)) if varies else (lambda _: 1.0),
+        relative,
         level=None if varies else amount,
     )
+
+
+def _by_calendar(
+    stream: Stream, increase: Increase, terms: Terms, rate: float, policy: Policy, course: Course
+) -> Callable[[Occasion], float]:
+    growth = Growth(increase, rate, policy["commencement_date"], terms.clock, course)
+
+    def relative(occasion: Occasion) -> float:
+        year = max(0, (occasion.month - terms.clock) // 12)
+        return share_of_year(stream.pattern, year) * growth.at(occasion.month)
+
+    return relative
 
 
 def _looking_back(stream: Stream, made: PolicyStream, base: PolicyStream, policy: Policy) -> PolicyStream:

@@ -17,6 +17,7 @@ from portfolios.returns import looked_back_at
 
 from . import streams as s
 from .cells import Cell
+from .growth import growth_of
 from .lives import Terms, begun, probability, running, states_of
 from .pool import ONES
 from .relative import RelativeRows, pattern_of, shape_of
@@ -173,7 +174,11 @@ class Plans:
             clock=int(stream.clock == "commencement"),
             cover=s.CERTAIN if stream.while_ == "certain" else s.ALIVE,
         )
-        if shape.changing:
+        today = 12 * self.relative.year + self.relative.month - 1
+        growth = growth_of(stream, self.basis.document.index, start, today)
+        if growth is not None:
+            record = replace(record, changing=self.slots.changing(self.relative.of_kind(growth)))
+        elif shape.changing:
             number = self.relative.per_policy(shape, start, end)
             record = replace(record, changing=self.slots.changing(number))
         else:

@@ -64,7 +64,7 @@ def shape_of(stream: Stream) -> Shape:
     increase = stream.increase or Increase(rate=0.0)
     return Shape(
         pattern_of(stream.pattern),
-        increase.rate,
+        0.0 if increase.rate is None else increase.rate,
         increase.kind == "simple",
         {None: 0, "yearly": 12, "monthly": 1}[stream.decrease],
         stream.clock == "commencement",
@@ -107,6 +107,7 @@ class PerPolicy(Protocol):
         whole: NDArray[np.int32],
         order: NDArray[np.int64],
         policies: NDArray[np.int64],
+        passed: NDArray[np.int32],
     ) -> NDArray[np.int32]:
         """Return the place of the row for each of some policies, as RelativeRows.places_of; place: makes new ones."""
         ...
@@ -163,15 +164,16 @@ class RelativeRows:
         whole: NDArray[np.int32],
         order: NDArray[np.int64],
         policies: NDArray[np.int64],
+        passed: NDArray[np.int32],
     ) -> NDArray[np.int32]:
         """Return the place of the row of relative amounts for each of some policies of a chunk.
 
         policies: places in the order of calculation, whose policies of the extract are ``order``; whole: the
-        whole-number matrix.
+        whole-number matrix; passed: months passed at the valuation date, in the order of the extract.
         """
         known = list(self.changing)[number]
         if not isinstance(known, tuple):
-            return known.places(self._place, chunk, whole, order, policies)
+            return known.places(self._place, chunk, whole, order, policies, passed)
         shape, start, end = known
         rates: list[float] = [0.0 if isinstance(shape.rate, str) else shape.rate]
         codes = np.zeros(len(policies), dtype=np.int64)

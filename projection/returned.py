@@ -62,8 +62,9 @@ class PaidSoFar:
         whole: NDArray[np.int32],
         order: NDArray[np.int64],
         policies: NDArray[np.int64],
+        passed: NDArray[np.int32],
     ) -> NDArray[np.int32]:
-        """Return the place of the row for each of some policies, as RelativeRows.places_of."""
+        """Return the place of the row for each of some policies, as RelativeRows.places_of; T does not matter."""
         rows = order[policies]
         firsts, inverse = _alike(self._figures(chunk, whole, rows, policies))
         terms = [self._terms(chunk, whole, rows[i], policies[i]) for i in firsts.tolist()]

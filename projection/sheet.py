@@ -28,6 +28,7 @@ def convention_sheet(basis: Basis, settings: Settings) -> Sheet:
         ("decrements in one step", _decrements(basis)),
         ("claims paid", _claims(basis)),
         ("interest", _interest(basis)),
+        *_indices(basis),
         ("sign", "reserve = value of benefits, expenses and commission - value of premiums; cash flows are positive "
          "amounts with a direction"),
         ("money", f"double precision inside; each policy's results are rounded half-even to {settings.decimals} "
@@ -50,6 +51,16 @@ def _interest(basis: Basis) -> str:
             alpha = getattr(curve, "alpha", 0.0)
             words.append(f"Smith-Wilson, ultimate forward rate {rule.smith_wilson.ultimate:.4%}, alpha {alpha:.6f}")
     return "; ".join(words)
+
+
+def _indices(basis: Basis) -> Sheet:
+    """Indices that increases follow; nothing where a basis has none."""
+    words = []
+    for index in basis.document.index:
+        first, rates = index.listed
+        span = "" if index.years is None else f" of {first} to {first + len(rates) - 1}, the first and the last held"
+        words.append(f"'{index.name}' {', '.join(f'{rate:.4%}' for rate in rates)}{span}")
+    return (("indices", "yearly rates by calendar year of the increase: " + "; ".join(words)),) if words else ()
 
 
 def _improvement(basis: Basis) -> str:

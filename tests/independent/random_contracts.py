@@ -154,10 +154,29 @@ def _shape(draw: Draw, stream: dict[str, Any]) -> None:
         stream["increase"] = {"rate": one_of(draw, 0.03, "escalation", 0.0, -0.02)}
         if chance(draw, 2):
             stream["increase"]["kind"] = "simple"
-    if "to" in stream and chance(draw, 4):
+        if chance(draw, 2):
+            stream["increase"] |= draw(calendars())
+            if "index" in stream["increase"]:
+                del stream["increase"]["rate"]
+    by_calendar = stream.get("increase", {}).keys() & {"index", "month", "amount"}
+    if "to" in stream and not by_calendar and chance(draw, 4):
         stream["decrease"] = one_of(draw, "yearly", "monthly")
     if chance(draw, 3):
         stream["clock"] = "commencement"
+
+
+@st.composite
+def calendars(draw: Draw) -> dict[str, Any]:
+    """What makes an increase one by calendar time."""
+    made: dict[str, Any] = {}
+    if chance(draw, 2):
+        made["index"] = one_of(draw, "prices", "wages")
+        made |= one_of(draw, {}, {"cap": 0.025}, {"floor": 0.0, "cap": 0.05}, {"share": 0.5, "plus": 0.01})
+    elif chance(draw, 2):
+        made["amount"] = one_of(draw, "at the valuation date", "at its start")
+    if chance(draw, 2):
+        made["month"] = one_of(draw, 1, 4, 7, 11, 12)
+    return made
 
 
 @st.composite
@@ -362,6 +381,10 @@ def bases(draw: Draw, folder: Path, step: str) -> Basis:
         },
         "interest": {"rule": draw(ruled(interest_rules()))},
         "expense": [draw(expenses(number)) for number in range(draw(st.integers(0, 3)))],
+        "index": [
+            {"name": "wages", "flat": one_of(draw, 0.02, -0.01)},
+            {"name": "prices", "years": {"2027": 0.01, "2028": -0.02, "2029": 0.06, "2030": 0.03}},
+        ],
         "claims": {
             "paid": one_of(draw, "end of step", "middle of step", {"delay_months": one_of(draw, 2.5, 0, 1, 14)})
         },
