@@ -79,6 +79,20 @@ class Increase(_Part):
         return self.current or self.month is not None
 
 
+class Loan(_Part):
+    """A fall like the balance of a loan that is paid off in level instalments from a stream's start to its end."""
+
+    loan: float | str = Field(description="effective yearly rate of the loan, -0.5 to 1, or the extract column of it")
+    instalments: Literal["monthly", "yearly"] = Field("monthly", description="how often the loan is paid off")
+
+    @field_validator("loan")
+    @classmethod
+    def _in_range(cls, rate: float | str) -> float | str:
+        if not isinstance(rate, str) and not -0.5 <= rate <= 1:
+            raise ValueError(f"the rate {rate} of a loan is outside -0.5 to 1")
+        return rate
+
+
 Duration = float | str | AtAge
 Kind = Literal["premium", "benefit", "expense", "commission"]
 While = Literal["alive", "both", "either", "first", "second", "first only", "second only", "certain"]
@@ -134,8 +148,10 @@ class Stream(_Part):
         None, min_length=1, description="relative amounts by years of the stream's clock"
     )
     increase: Increase | None = Field(None, description="yearly increase")
-    decrease: Literal["yearly", "monthly"] | None = Field(
-        None, description="falls in equal steps from 1 at its start to nothing at its end"
+    decrease: Literal["yearly", "monthly"] | Loan | None = Field(
+        None,
+        description="falls from 1 at its start to nothing at its end: in equal steps, or like the balance of a loan, "
+        "{ loan = 0.05 }",
     )
     clock: Literal["stream", "commencement"] = Field(
         "stream", description="from when pattern and increase count their years"
@@ -150,6 +166,11 @@ class Stream(_Part):
         if isinstance(value, int) and value not in (1, 2, 4, 12):
             raise ValueError(f"{value} payments a year are not known; the choice is 1, 2, 4 and 12")
         return value
+
+    @field_validator("decrease", mode="before")
+    @classmethod
+    def _loan(cls, value: Any) -> Any:
+        return Loan.model_validate(value) if isinstance(value, dict) else value
 
     @field_validator("from_", "to", mode="before")
     @classmethod
@@ -197,7 +218,8 @@ class Stream(_Part):
         """Extract columns that the stream looks at."""
         increase = self.increase.rate if self.increase else None
         interest = self.returns.interest if self.returns else None
-        for value in (self.amount, self.from_, self.to, self.a_year, self.guarantee, increase, interest):
+        loan = self.decrease.loan if isinstance(self.decrease, Loan) else None
+        for value in (self.amount, self.from_, self.to, self.a_year, self.guarantee, increase, interest, loan):
             if isinstance(value, str):
                 yield value
 

@@ -9,7 +9,7 @@ import numpy as np
 import numpy.typing as npt
 
 from .columns import ALWAYS, BY_NAME, COLUMNS, LARGEST_AMOUNT
-from .designs import Design
+from .designs import Design, Loan
 from .reasons import Reason
 
 Mask = npt.NDArray[np.bool_]
@@ -104,6 +104,7 @@ def _rule(name: str, designs: Sequence[Design]) -> NumberRule:
     duration = any(name in (stream.from_, stream.to, stream.guarantee) for stream in streams)
     rate = any(stream.increase is not None and stream.increase.rate == name for stream in streams)
     rate |= any(stream.returns is not None and stream.returns.interest == name for stream in streams)
+    rate |= any(isinstance(stream.decrease, Loan) and stream.decrease.loan == name for stream in streams)
     low, high = (-0.5, 1.0) if rate else (0.0, 120.0) if duration else (0.0, LARGEST_AMOUNT)
     column = BY_NAME.get(name)
     if column is not None:

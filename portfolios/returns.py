@@ -63,6 +63,8 @@ def check_design(design: Design) -> None:
                 f"stream '{stream.name}' looks back at '{name}', which increases by calendar time; its past payments "
                 "cannot be counted"
             )
+        if base.decrease not in (None, "yearly", "monthly"):
+            raise ValueError(f"stream '{stream.name}' looks back at '{name}', which falls like a loan")
         if not _always_paid(base, _states(stream, design)):
             raise ValueError(
                 f"stream '{stream.name}' looks back at '{name}', which need not have been paid all the time "

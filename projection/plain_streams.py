@@ -7,7 +7,7 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
 from typing import Any, Literal
 
-from portfolios.designs import AtAge, Design, Increase, Share, Stream
+from portfolios.designs import AtAge, Design, Increase, Loan, Share, Stream
 from portfolios.returns import looked_back_at
 from portfolios.states import States
 
@@ -92,7 +92,9 @@ def _own(stream: Stream, states: States | None, policy: Policy, course: Course) 
     if terms.way in ("advance", "arrears"):
         amount /= terms.a_year
     amount *= stream.share
-    rate = 0.0
+    rate = loan = 0.0
+    if isinstance(stream.decrease, Loan):
+        loan = number(policy, stream.decrease.loan, f"stream '{stream.name}' needs the rate of the loan")
     if stream.increase is not None and stream.increase.rate is not None:
         rate = number(policy, stream.increase.rate, f"stream '{stream.name}' needs a rate of increase")
     varies = stream.pattern or stream.increase or stream.decrease
@@ -101,7 +103,7 @@ def _own(stream: Stream, states: States | None, policy: Policy, course: Course) 
     if stream.increase is not None and stream.increase.needs_calendar:
         relative = _by_calendar(stream, stream.increase, terms, rate, policy, course)
     elif varies:
-        relative = lambda occasion: relative_amount(stream, terms, rate, occasion.month)  # noqa: E731
+        relative = lambda occasion: relative_amount(stream, terms, rate, occasion.month, loan)  # noqa: E731
     return PolicyStream(
         stream.name,
         PART_OF_KIND[stream.part],
@@ -217,16 +219,27 @@ def number(policy: Policy, value: float | str | None, need: str) -> float:
     return float(found)
 
 
-def relative_amount(stream: Stream, terms: Terms, rate: float, month: int) -> float:
-    """Return pattern x increase x decrease at a month from commencement; ``rate`` is that of the increase."""
+def relative_amount(stream: Stream, terms: Terms, rate: float, month: int, loan: float = 0.0) -> float:
+    """Return pattern x increase x decrease at a month from commencement; rates of the increase and of a loan."""
     year = max(0, (month - terms.clock) // 12)
     relative = share_of_year(stream.pattern, year)
     if stream.increase is not None:
         relative *= (1 + rate) ** year if stream.increase.kind == "compound" else 1 + rate * year
     if stream.decrease is not None and terms.end is not None:
         passed, months = month - terms.start, terms.end - terms.start
+        if isinstance(stream.decrease, Loan):
+            by = 12 if stream.decrease.instalments == "yearly" else 1
+            return relative * balance(loan, (months - passed // by * by) / 12, months / 12)
         relative *= 1 - (passed // 12 * 12 if stream.decrease == "yearly" else passed) / months
     return relative
+
+
+def balance(rate: float, left: float, term: float) -> float:
+    """Return what is left of a loan of 1 with so many years left: the value of its instalments, a_left / a_term."""
+    if rate == 0:
+        return left / term
+    force = math.log1p(rate)
+    return math.expm1(-force * left) / math.expm1(-force * term)
 
 
 def share_of_year(pattern: list[Share] | None, year: int) -> float:

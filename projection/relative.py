@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 from assumptions.expenses import Inflation
 from portfolios.chunk import Chunk
-from portfolios.designs import Increase, Share, Stream
+from portfolios.designs import Increase, Loan, Share, Stream
 
 from .cells import distinct
 from .pool import ONES, Pool
@@ -29,7 +29,8 @@ class Shape:
     """What a row of relative amounts is made of, besides figures of the policy.
 
     rate: the yearly increase, or the column that holds it; by: step in months of a decrease to nothing, 0 for
-    none; from_commencement: whether the clock of pattern and increase starts at commencement.
+    none; loan: yearly rate of the loan whose balance it follows, or the column of it, none for equal steps;
+    from_commencement: whether the clock of pattern and increase starts at commencement.
     """
 
     pattern: Pattern = ()
@@ -37,17 +38,18 @@ class Shape:
     simple: bool = False
     by: int = 0
     from_commencement: bool = False
+    loan: float | str | None = None
 
     @property
     def changing(self) -> bool:
         """Whether the row depends on figures of the policy."""
         return isinstance(self.rate, str) or self.by > 0
 
-    def row(self, rate: float, start: int, length: int) -> NDArray[np.float64]:
+    def row(self, rate: float, start: int, length: int, loan: float | None = None) -> NDArray[np.float64]:
         """Relative amounts at months 0, 1 ... of the clock, to LONGEST + 1.
 
         rate: yearly increase; start: months from the clock's start to the stream's; length: of the stream in
-        months.
+        months; loan: yearly rate of the loan, none for a fall in equal steps.
         """
         years = _MONTHS // 12
         amounts = shares(self.pattern, years)
@@ -55,19 +57,32 @@ class Shape:
             amounts = amounts * (1 + rate * years if self.simple else (1 + rate) ** years)
         if self.by:
             gone = np.clip(_MONTHS - start, 0, None) // self.by * self.by
-            amounts = amounts * np.clip(1 - gone / max(length, 1), 0, None)
+            amounts = amounts * np.clip(_left(gone, max(length, 1), loan), 0, None)
         return amounts
+
+
+def _left(gone: NDArray[np.int64], length: int, loan: float | None) -> NDArray[np.float64]:
+    """Share of a loan that is left: the debt with interest less the instalments with interest; or equal steps.
+
+    With force d a month the instalments come to (e^(d gone) - 1) / (e^(d length) - 1) of the debt with interest.
+    """
+    force = 0.0 if loan is None else float(np.log1p(loan)) / 12
+    if not force:
+        return 1 - gone / length
+    left: NDArray[np.float64] = np.exp(force * gone) * np.expm1(force * (length - gone)) / np.expm1(force * length)
+    return left
 
 
 def shape_of(stream: Stream) -> Shape:
     """Return the shape of a stream's relative amounts."""
-    increase = stream.increase or Increase(rate=0.0)
+    increase, falls = stream.increase or Increase(rate=0.0), stream.decrease
     return Shape(
         pattern_of(stream.pattern),
         0.0 if increase.rate is None else increase.rate,
         increase.kind == "simple",
-        {None: 0, "yearly": 12, "monthly": 1}[stream.decrease],
+        {None: 0, "yearly": 12, "monthly": 1}[falls.instalments if isinstance(falls, Loan) else falls],
         stream.clock == "commencement",
+        falls.loan if isinstance(falls, Loan) else None,
     )
 
 
@@ -180,6 +195,10 @@ class RelativeRows:
         if isinstance(shape.rate, str):
             found, codes = np.unique(chunk.number(shape.rate)[order[policies]], return_inverse=True)
             rates = found.tolist()
+        loans: list[float | None] = [None if isinstance(shape.loan, str) else shape.loan]
+        if isinstance(shape.loan, str):
+            lent, own = np.unique(chunk.number(shape.loan)[order[policies]], return_inverse=True)
+            loans, codes = lent.tolist(), codes * len(lent) + own
         if shape.by:
             begin = whole[start, policies].astype(np.int64)
             length = np.maximum(whole[end, policies] - begin, 0)
@@ -190,11 +209,12 @@ class RelativeRows:
         for code in keys.tolist():
             rest, span = divmod(code, _WIDE) if shape.by else (code, 0)
             rate, first = divmod(rest, _WIDE) if shape.by else (rest, 0)
-            places.append(self._changing(shape, rates[rate], first, span))
+            rate, loan = divmod(rate, len(loans))
+            places.append(self._changing(shape, rates[rate], first, span, loans[loan]))
         return np.array(places, dtype=np.int32)[inverse]
 
-    def _changing(self, shape: Shape, rate: float, begin: int, length: int) -> int:
-        return self._place((shape, rate, begin, length), lambda: shape.row(rate, begin, length))
+    def _changing(self, shape: Shape, rate: float, begin: int, length: int, loan: float | None) -> int:
+        return self._place((shape, rate, begin, length, loan), lambda: shape.row(rate, begin, length, loan))
 
     def _place(self, key: Hashable, build: Callable[[], NDArray[np.float64]]) -> int:
         if key not in self.known:

@@ -161,6 +161,8 @@ def _shape(draw: Draw, stream: dict[str, Any]) -> None:
     by_calendar = stream.get("increase", {}).keys() & {"index", "month", "amount"}
     if "to" in stream and not by_calendar and chance(draw, 4):
         stream["decrease"] = one_of(draw, "yearly", "monthly")
+        if chance(draw, 3):
+            stream["decrease"] = {"loan": one_of(draw, 0.05, "escalation", 0.0), "instalments": stream["decrease"]}
     if chance(draw, 3):
         stream["clock"] = "commencement"
 
