@@ -120,6 +120,11 @@ class Stream(_Part):
         description="name of another stream: on a move or once, the amount less what that stream has paid up to then, "
         "and nothing from when it has paid as much",
     )
+    proportion: str | None = Field(
+        None,
+        description="replaces 'amount' on a death: name of a stream paid in arrears, of whose instalment the part for "
+        "the time since its last date is paid",
+    )
     of: str | None = Field(
         None,
         description="name of another stream: paid whenever that one pays, as a share of it; replaces amount and dates",
@@ -185,7 +190,7 @@ class Stream(_Part):
             if extra:
                 raise ValueError(f"a stream paid as a share 'of' another takes no '{extra[0].rstrip('_')}'")
             return self
-        if self.direction is None or (self.amount is None and self.returns is None):
+        if self.direction is None or (self.amount is None and self.returns is None and self.proportion is None):
             raise ValueError("a stream needs 'direction' and 'amount', or 'of'")
         if (self.while_ is None) == (self.on is None):
             raise ValueError("a stream needs one of 'while' and 'on'")
@@ -205,7 +210,7 @@ class Stream(_Part):
             raise ValueError("a guarantee needs a stream paid while alive")
         if self.payments != "at their dates" and (self.guarantee is not None or self.while_ != "alive"):
             raise ValueError(f"{self.payments} needs a stream paid while alive, without a guarantee")
-        if self.returns is not None or self.less is not None:
+        if self.returns is not None or self.less is not None or self.proportion is not None:
             check_stream(self)
         return self
 

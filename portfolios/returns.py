@@ -1,4 +1,5 @@
-"""Benefits that look back at what another stream of the design has paid: premiums returned, value protection."""
+"""Benefits that look back at what another stream of the design has paid: premiums returned, value protection, and the
+proportion of an instalment up to the date of death."""
 
 from __future__ import annotations
 
@@ -24,21 +25,25 @@ class Returns(BaseModel):
 
 
 def looked_back_at(stream: Stream) -> str | None:
-    """Return the name of the stream whose past payments count, if any."""
-    return stream.less if stream.returns is None else stream.returns.stream
+    """Return the name of the stream whose past payments or dates count, if any."""
+    return (stream.less or stream.proportion) if stream.returns is None else stream.returns.stream
 
 
 def check_stream(stream: Stream) -> None:
     """Raise ValueError where a stream that looks back has keys that do not go with it."""
-    given, name = stream.model_fields_set, "returns" if stream.returns is not None else "less"
+    given = stream.model_fields_set
+    ways = [key for key in ("returns", "less", "proportion") if getattr(stream, key) is not None]
+    if len(ways) > 1:
+        raise ValueError(f"a stream takes one of '{ways[0]}' and '{ways[1]}'")
+    name = ways[0]
+    if name == "proportion" and (stream.on is None or stream.on == "lapse"):
+        raise ValueError("'proportion' needs a stream paid on a death")
     if stream.on is None and stream.paid != "once":
         raise ValueError(f"'{name}' needs a stream paid on a move or once")
-    extra = sorted(given & {"pattern", "increase", "decrease", "clock", *(("amount",) if name == "returns" else ())})
+    extra = sorted(given & {"pattern", "increase", "decrease", "clock", *(("amount",) if name != "less" else ())})
     if extra:
         raise ValueError(f"a stream with '{name}' takes no '{extra[0]}'")
     if stream.returns is not None:
-        if stream.less is not None:
-            raise ValueError("a stream takes one of 'returns' and 'less'")
         interest = stream.returns.interest
         if not isinstance(interest, str) and not -0.5 <= interest <= 1:
             raise ValueError(f"interest {interest} on returned payments is outside -0.5 to 1")
@@ -58,6 +63,8 @@ def check_design(design: Design) -> None:
                 f"stream '{stream.name}' looks back at '{name}'; it must be a stream with terms of its own, paid "
                 "while a state lasts, for certain or once"
             )
+        if stream.proportion is not None and base.paid != "arrears":
+            raise ValueError(f"stream '{stream.name}' is a proportion of '{name}', which is not paid in arrears")
         if base.increase is not None and base.increase.needs_calendar:
             raise ValueError(
                 f"stream '{stream.name}' looks back at '{name}', which increases by calendar time; its past payments "

@@ -72,6 +72,22 @@ def returned(base: PolicyStream, interest: float, on_move: bool) -> Callable[[Oc
     return lambda occasion: balance.at(occasion, on_move)
 
 
+def proportion(base: PolicyStream, step_months: int) -> Callable[[Occasion], float]:
+    """Return the part of an instalment in arrears from its last date to the middle of the step of a death."""
+    terms = base.terms
+
+    def part(occasion: Occasion) -> float:
+        begins = occasion.month
+        if begins < terms.start or (terms.end is not None and begins >= terms.end):
+            return 0.0
+        last = terms.start + (begins - terms.start) // terms.period * terms.period
+        months = begins + 0.5 - last if step_months == 1 else terms.period / 2
+        instalment = Occasion(last + terms.period, last + terms.period, last, 1.0, 1.0, 1.0)
+        return base.amount(instalment) * base.relative(instalment) * months / terms.period
+
+    return part
+
+
 def remaining(
     amount: float, base: PolicyStream, on_move: bool
 ) -> tuple[Callable[[Occasion], float], Callable[[Occasion], bool]]:

@@ -17,7 +17,7 @@ from .plain_growth import Growth
 from .plain_lapse import TOLERANCE
 from .plain_lives import states_of
 from .plain_occasions import Course, Occasion, Terms, Way, last_point, occasions
-from .plain_returned import remaining, returned
+from .plain_returned import proportion, remaining, returned
 
 Policy = Mapping[str, Any]
 Part = Literal["benefits", "expenses", "premiums"]
@@ -67,7 +67,7 @@ def design_streams(design: Design, policy: Policy, course: Course) -> list[Polic
     for stream in sorted(own, key=lambda one: looked_back_at(one) is not None):
         made = _own(stream, states_of(stream, design), policy, course)
         other = looked_back_at(stream)
-        bases[stream.name] = made if other is None else _looking_back(stream, made, bases[other], policy)
+        bases[stream.name] = made if other is None else _looking_back(stream, made, bases[other], policy, course)
     return [
         bases[stream.name] if stream.of is None else _share_of(stream, bases[stream.of]) for stream in design.stream
     ]
@@ -85,7 +85,7 @@ def _own(stream: Stream, states: States | None, policy: Policy, course: Course) 
         terms = Terms("once", False, 0, 0, states=states)
     last_point(terms, course)
     amount = 1.0
-    if stream.returns is None:
+    if stream.returns is None and stream.proportion is None:
         amount = number(policy, stream.amount, f"stream '{stream.name}' needs an amount")
     if isinstance(stream.amount, str) and amount < 0:
         raise NotValued("amount negative", stream.amount, amount, "an amount is at least 0")
@@ -128,13 +128,18 @@ def _by_calendar(
     return relative
 
 
-def _looking_back(stream: Stream, made: PolicyStream, base: PolicyStream, policy: Policy) -> PolicyStream:
+def _looking_back(
+    stream: Stream, made: PolicyStream, base: PolicyStream, policy: Policy, course: Course
+) -> PolicyStream:
     """A stream whose amount depends on what another one has paid up to then."""
     on_move, level = stream.on is not None, made.level or 0.0
     if stream.returns is not None:
         interest = number(policy, stream.returns.interest, f"stream '{stream.name}' needs a rate of interest")
     if not made.occasions:
         return made
+    if stream.proportion is not None:
+        part = proportion(base, course.step_months)
+        return replace(made, amount=lambda occasion: level * part(occasion), level=None)
     if stream.returns is None:
         amount, lasts = remaining(level, base, on_move)
         return replace(made, amount=amount, level=None, lasts=lasts)

@@ -1,4 +1,5 @@
-"""Rows of what another stream has paid up to a month: premiums returned, value protection.
+"""Rows of what another stream has paid up to a month: premiums returned, value protection, and the
+part of an instalment up to the date of death.
 
 A row depends on the terms of the other stream only: its dates, its frequency, its relative amounts. All policies
 that have these in common share it. Value protection is a difference of two such streams, both cut off at the month in
@@ -34,11 +35,12 @@ class PaidSoFar:
     """What a row is made of; start, end, period: columns of the whole-number matrix of the other stream's terms.
 
     part: the payments so far with interest, or of an amount less the payments so far without interest the one
-    or the other; once: the column of the own date of a stream paid once, -1 on a move; step: months of a projection
-    step; price and payment: the amount and what the other stream's payments are multiples of.
+    or the other, or the part of an instalment since the last one; once: the column of the own date of a stream paid
+    once, -1 on a move; step: months of a projection step; price and payment: the amount and what the other stream's
+    payments are multiples of.
     """
 
-    part: Literal["returned", "price", "paid"]
+    part: Literal["returned", "price", "paid", "proportion"]
     shape: Shape
     way: Literal["advance", "arrears", "once"]
     start: int
@@ -68,7 +70,7 @@ class PaidSoFar:
         rows = order[policies]
         firsts, inverse = _alike(self._figures(chunk, whole, rows, policies))
         terms = [self._terms(chunk, whole, rows[i], policies[i]) for i in firsts.tolist()]
-        if self.part == "returned":
+        if self.part in ("returned", "proportion"):
             made = [place((self, *one), lambda one=one: self.row(*one)) for one in terms]  # type: ignore[misc]
             return np.array(made, dtype=np.int32)[inverse]
         ratio = self._ratio(chunk, rows)
@@ -117,6 +119,8 @@ class PaidSoFar:
         start, end, period: months of the other stream; begun: false at commencement, when nothing counts yet; rate: of
         its increase; interest: yearly.
         """
+        if self.part == "proportion":
+            return self._since_last(start, end, period, rate)
         due = np.zeros(WIDE + 1)
         if begun:
             points, months = self._points(start, end, period)
@@ -135,6 +139,18 @@ class PaidSoFar:
             sofar = sofar[1:] if self.way == "arrears" else sofar
         sums: Row = sofar[:WIDE] * ahead
         return sums
+
+    def _since_last(self, start: int, end: int, period: int, rate: float) -> Row:
+        """Part of an instalment for the time from its last date to the middle of the step that starts in a month."""
+        shape, months = self.shape, np.arange(WIDE)
+        clock, begin = (0, start) if shape.from_commencement else (start, 0)
+        passed = np.maximum(months - start, 0)
+        of_period = np.clip(months - passed % period - clock, 0, WIDE - 1)
+        since = (passed % period + 0.5) / period if self.step == 1 else 0.5
+        amounts = shape.row(rate, begin, max(end - start, 0))[of_period]
+        running = (months >= start) & (months < end)
+        parts: Row = np.where(running, period / 12 * since * amounts, 0.0)
+        return parts
 
     def _points(self, start: int, end: int, period: int) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
         """Points of the other stream's payments, and the months of their relative amounts."""
@@ -171,6 +187,9 @@ def paid_so_far(stream: Stream, base: Stream, slots: Slots, step: int) -> list[t
         "once": -1 if stream.on is not None else slots.duration(stream.from_),
         "step": step,
     }
+    if stream.proportion is not None:
+        row = PaidSoFar(part="proportion", **common)  # type: ignore[arg-type]
+        return [(_times(payment, stream.share), row)]
     if stream.returns is not None:
         row = PaidSoFar(part="returned", interest=stream.returns.interest, **common)  # type: ignore[arg-type]
         return [(_times(payment, stream.share), row)]

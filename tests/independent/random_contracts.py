@@ -208,12 +208,15 @@ def _looking_back(draw: Draw, stream: dict[str, Any], others: list[dict[str, Any
     """A benefit that gives payments back, or is what they leave of an amount, where the design allows that."""
     if stream.get("paid") != "once" and "on" not in stream:
         return
-    bases = [one for one in others if "on" not in one and "returns" not in one and "less" not in one]
+    bases = [one for one in others if "on" not in one and not one.keys() & {"returns", "less", "proportion"}]
     if not bases or not chance(draw, 2):
         return
     kept = {key: stream[key] for key in stream if key not in ("pattern", "increase", "decrease", "clock")}
     name = one_of(draw, *(one["name"] for one in bases))
-    if chance(draw, 3):
+    if "on" in stream and chance(draw, 4):
+        made = {**kept, "proportion": name}
+        del made["amount"]
+    elif chance(draw, 3):
         made = {**kept, "less": name, "amount": one_of(draw, 1500.0, "single_premium", "sum_assured")}
     else:
         made = {**kept, "returns": {"stream": name, "interest": one_of(draw, 0.0, 0.03, "escalation")}}

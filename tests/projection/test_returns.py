@@ -143,10 +143,45 @@ def test_protection_after_the_second_death_needs_instalments_that_never_fall() -
         ({"on": "death", "returns": {"stream": "premium"}, "increase": {"rate": 0.1}}, "takes no 'increase'"),
         ({"on": "death", "returns": {"stream": "premium", "interest": 2.0}}, "outside -0.5 to 1"),
         ({"while": "alive", "returns": {"stream": "premium"}}, "needs a stream paid on a move or once"),
-        ({"on": "death", "less": "premium", "amount": 5.0, "returns": {"stream": "premium"}}, "takes no 'amount'"),
+        (
+            {"on": "death", "less": "premium", "amount": 5.0, "returns": {"stream": "premium"}},
+            "one of 'returns' and 'less'",
+        ),
         ({"on": "death", "less": "premium"}, "needs 'direction' and 'amount'"),
     ],
 )
 def test_what_makes_no_sense_is_refused(keys: dict[str, Any], words: str) -> None:
     with pytest.raises(ValidationError, match=words):
         design(PREMIUM, {"name": "back", "direction": "out", **keys})
+
+
+def test_the_proportion_of_an_instalment_up_to_the_date_of_death() -> None:
+    # Closed form: quarterly instalments of 30 in arrears; deaths in the first, second and third month of a quarter get
+    # a sixth, a half and five sixths of one.
+    annuity = stream("annuity", 120.0, paid="arrears", a_year=4, to=5)
+    part = {"name": "to death", "direction": "out", "on": "death", "to": 5, "proportion": "annuity"}
+    found = value(design(annuity, part), basis(constant(0.02)), step="month")
+    mine = [payment for payment in found.payments if payment.stream == "to death"]
+    assert [one.amount * one.relative for one in mine if one.survival > 0][:4] == pytest.approx([5, 15, 25, 5])
+    stay, v = 0.98 ** (1 / 12), 1.04 ** (-1 / 12)
+    parts = [5 + 10 * (n % 3) for n in range(60)]
+    expected = sum(part * v ** (n + 1) * stay**n * (1 - stay) for n, part in enumerate(parts))
+    assert sum(one.value for one in mine) == pytest.approx(expected, rel=1e-13)
+    assert by_engine(design(annuity, part), step="month") > 0  # the twin has valued it beside the engine
+
+
+def test_the_proportion_of_a_yearly_instalment_with_yearly_steps_is_a_half() -> None:
+    # Closed form: the mean over the year of death.
+    annuity = stream("annuity", 100.0, paid="arrears", to=5)
+    part = {"name": "to death", "direction": "out", "on": "death", "to": 5, "proportion": "annuity"}
+    found = value(design(annuity, part), basis(constant(0.02)))
+    expected = sum(50 * 1.04 ** -(k + 1) * 0.98**k * 0.02 for k in range(5))
+    assert sum(one.value for one in found.payments if one.stream == "to death") == pytest.approx(expected, rel=1e-13)
+
+
+def test_a_proportion_needs_arrears_and_a_death() -> None:
+    part = {"name": "to death", "direction": "out", "proportion": "premium"}
+    with pytest.raises(ValidationError, match="not paid in arrears"):
+        design(PREMIUM, {**part, "on": "death"})
+    with pytest.raises(ValidationError, match="paid on a death"):
+        design(PREMIUM, {**part, "on": "lapse"})
