@@ -10,7 +10,7 @@ from collections.abc import Iterator
 from datetime import date
 from typing import Any, Literal
 
-from pydantic import BaseModel, ConfigDict, Field, field_validator, model_validator
+from pydantic import BaseModel, ConfigDict, Field, ValidationInfo, field_validator, model_validator
 
 from .returns import Returns, check_design, check_stream
 from .states import LEFT_ON, WHILE
@@ -24,6 +24,12 @@ class AtAge(_Part):
     """The first monthly due date on or after a birthday."""
 
     age: int = Field(ge=0, le=130, description="age in whole years")
+
+
+class AfterGuarantee(_Part):
+    """The end of the guarantee of another stream."""
+
+    after: str = Field(description="name of a stream with a guarantee")
 
 
 class Share(_Part):
@@ -94,6 +100,7 @@ class Loan(_Part):
 
 
 Duration = float | str | AtAge
+Start = Duration | AfterGuarantee
 Kind = Literal["premium", "benefit", "expense", "commission"]
 While = Literal["alive", "both", "either", "first", "second", "first only", "second only", "certain"]
 On = Literal["death", "first death", "second death", "death of first", "death of second", "lapse"]
@@ -138,8 +145,11 @@ class Stream(_Part):
     on: On | None = Field(
         None, description="paid on this move; 'death' is for one life, the others with 'death' are for two"
     )
-    from_: Duration = Field(
-        0.0, alias="from", description="years from commencement to its start: a number, a column, or { age = x }"
+    from_: Start = Field(
+        0.0,
+        alias="from",
+        description="years from commencement to its start: a number, a column, { age = x }, or { after = \"name\" } "
+        "when the guarantee of the stream of that name ends",
     )
     to: Duration | None = Field(None, description="years from commencement to its end; absent: for life")
     a_year: int | str = Field(1, description="payments a year, 1, 2, 4 or 12: a number or a column")
@@ -179,8 +189,14 @@ class Stream(_Part):
 
     @field_validator("from_", "to", mode="before")
     @classmethod
-    def _one_kind(cls, value: Any) -> Any:
-        return AtAge.model_validate(value) if isinstance(value, dict) else value
+    def _one_kind(cls, value: Any, info: ValidationInfo) -> Any:
+        if not isinstance(value, dict):
+            return value
+        if "after" not in value:
+            return AtAge.model_validate(value)
+        if info.field_name == "to":
+            raise ValueError("only 'from' may be 'after' another stream's guarantee")
+        return AfterGuarantee.model_validate(value)
 
     @model_validator(mode="after")
     def _complete(self) -> Stream:
@@ -253,6 +269,7 @@ class Design(_Part):
                 raise ValueError(f"two streams are called '{name}'")
         for stream in self.stream:
             self._check_words(stream)
+            self._check_start(stream)
             if stream.of is None:
                 continue
             base = next((other for other in self.stream if other.name == stream.of), None)
@@ -262,6 +279,20 @@ class Design(_Part):
                 raise ValueError(f"stream '{stream.name}' is a share of '{stream.of}', which is itself a share")
         check_design(self)
         return self
+
+    def _check_start(self, stream: Stream) -> None:
+        if not isinstance(stream.from_, AfterGuarantee):
+            return
+        base = next((other for other in self.stream if other.name == stream.from_.after), None)
+        if base is None or base.guarantee is None:
+            raise ValueError(f"stream '{stream.name}' begins after '{stream.from_.after}', which has no guarantee")
+        if isinstance(base.from_, AfterGuarantee):
+            raise ValueError(f"stream '{stream.name}' begins after '{base.name}', which itself begins after another")
+
+    def begins_at_age(self, stream: Stream) -> bool:
+        """Whether the start of a stream is stated by age, be it that of the stream whose guarantee it waits for."""
+        start = self.named(stream.from_.after).from_ if isinstance(stream.from_, AfterGuarantee) else stream.from_
+        return isinstance(start, AtAge)
 
     def _check_words(self, stream: Stream) -> None:
         one = self.states == "one life"

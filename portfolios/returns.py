@@ -63,6 +63,8 @@ def check_design(design: Design) -> None:
                 f"stream '{stream.name}' looks back at '{name}'; it must be a stream with terms of its own, paid "
                 "while a state lasts, for certain or once"
             )
+        if not isinstance(base.from_, float | int | str) and "after" in type(base.from_).model_fields:
+            raise ValueError(f"stream '{stream.name}' looks back at '{name}', which begins after a guarantee")
         if stream.proportion is not None and base.paid != "arrears":
             raise ValueError(f"stream '{stream.name}' is a proportion of '{name}', which is not paid in arrears")
         if base.increase is not None and base.increase.needs_calendar:

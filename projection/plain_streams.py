@@ -7,7 +7,7 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
 from typing import Any, Literal
 
-from portfolios.designs import AtAge, Design, Increase, Loan, Share, Stream
+from portfolios.designs import AfterGuarantee, AtAge, Design, Increase, Loan, Share, Stream
 from portfolios.returns import looked_back_at
 from portfolios.states import States
 
@@ -65,7 +65,7 @@ def design_streams(design: Design, policy: Policy, course: Course) -> list[Polic
     own = [stream for stream in design.stream if stream.of is None]
     bases: dict[str, PolicyStream] = {}
     for stream in sorted(own, key=lambda one: looked_back_at(one) is not None):
-        made = _own(stream, states_of(stream, design), policy, course)
+        made = _own(stream, states_of(stream, design), policy, course, _waits_for(stream, design))
         other = looked_back_at(stream)
         bases[stream.name] = made if other is None else _looking_back(stream, made, bases[other], policy, course)
     return [
@@ -73,11 +73,18 @@ def design_streams(design: Design, policy: Policy, course: Course) -> list[Polic
     ]
 
 
-def _own(stream: Stream, states: States | None, policy: Policy, course: Course) -> PolicyStream:
+def _waits_for(stream: Stream, design: Design) -> Stream | None:
+    """Return the stream after whose guarantee this one begins, if any."""
+    return design.named(stream.from_.after) if isinstance(stream.from_, AfterGuarantee) else None
+
+
+def _own(
+    stream: Stream, states: States | None, policy: Policy, course: Course, waits_for: Stream | None = None
+) -> PolicyStream:
     guaranteed = stream.guarantee is not None and course.lives.may_have_been(states)
     possible = course.lives.may_be(states) or guaranteed
     try:
-        terms = terms_of(stream, policy, course.step_months)._replace(states=states)
+        terms = terms_of(stream, policy, course.step_months, waits_for)._replace(states=states)
     except NotValued as fault:
         if possible or fault.reason not in UNFIT:
             raise
@@ -166,17 +173,25 @@ def _share_of(stream: Stream, base: PolicyStream) -> PolicyStream:
     )
 
 
-def terms_of(stream: Stream, policy: Policy, step_months: int) -> Terms:
-    """Return when a stream is paid. Raises NotValued for durations that do not fit it."""
+def terms_of(stream: Stream, policy: Policy, step_months: int, waits_for: Stream | None = None) -> Terms:
+    """Return when a stream is paid; waits_for: the stream after whose guarantee it begins.
+
+    Raises NotValued for durations that do not fit it.
+    """
     way: Way = stream.paid if stream.on is None else "lapse" if stream.on == "lapse" else "death"
-    start = _months(stream.from_, stream, policy, step_months)
+    if isinstance(stream.from_, AfterGuarantee):
+        assert waits_for is not None  # the design has checked it
+        start = _end_of_guarantee(stream, waits_for, policy, step_months)
+    else:
+        start = _months(stream.from_, stream, policy, step_months)
     end = None if stream.to is None else _months(stream.to, stream, policy, step_months)
     if way == "once":
         end = start
     if end is not None and end < start:
         raise NotValued("end before start", f"stream '{stream.name}'", f"{start} to {end} months", "to >= from")
     a_year = _frequency(stream, policy)
-    by_age = isinstance(stream.from_, AtAge) or isinstance(stream.to, AtAge)
+    begins = stream.from_ if waits_for is None else waits_for.from_
+    by_age = isinstance(begins, AtAge) or isinstance(stream.to, AtAge)
     periodic = way in ("advance", "arrears") and not by_age
     if periodic and end is not None and (end - start) % (12 // a_year):
         rule = f"with {a_year} payments a year it lasts a whole number of periods"
@@ -191,6 +206,17 @@ def terms_of(stream: Stream, policy: Policy, step_months: int) -> Terms:
         {"Woolhouse 2": 2, "Woolhouse 3": 3}.get(stream.payments, 0),
         start if stream.clock == "stream" and looked_back_at(stream) is None else 0,
     )
+
+
+def _end_of_guarantee(stream: Stream, other: Stream, policy: Policy, step_months: int) -> int:
+    # The design has checked both.
+    assert other.guarantee is not None
+    assert not isinstance(other.from_, AfterGuarantee)
+    begins = _months(other.from_, other, policy, step_months)
+    ends = begins + _months(other.guarantee, other, policy, step_months)
+    if stream.on is not None and ends % step_months:
+        raise NotValued("duration not in whole years", other.name, ends / 12, "needed on a move with the step 'year'")
+    return ends
 
 
 def _months(value: float | str | AtAge, stream: Stream, policy: Policy, step_months: int) -> int:

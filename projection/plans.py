@@ -135,10 +135,10 @@ class Plans:
         looked = np.zeros(len(self.segments) + 1, dtype=np.int64)
         for name in ("start", "end", "guarantee", "period", "changing"):
             looked[1:] |= self.segments[name] == column
-        # The largest of some durations looks at each of them.
-        for (kind, parts), latest in self.slots.whole.items():
-            if kind == "latest" and column in parts:  # type: ignore[operator]
-                looked[1:] |= self.segments["end"] == latest
+        # The largest of some durations looks at each of them, and so does a sum.
+        for (kind, parts), made in self.slots.whole.items():
+            if kind in ("latest", "sum") and column in parts:  # type: ignore[operator]
+                looked[1:] |= (self.segments["end"] == made) | (self.segments["start"] == made)
         until = np.cumsum(looked)
         uses[:] = until[self.ranges[:, 1]] > until[self.ranges[:, 0]]
         return uses
@@ -161,7 +161,7 @@ class Plans:
 
     def _stream(self, design: Design, stream: Stream) -> Iterator[_Record]:
         amount, factor = self.slots.amount(stream.amount if stream.amount is not None else 0.0)
-        start = self.slots.duration(stream.from_)
+        start = self.slots.start(design, stream)
         end = -1 if stream.to is None else self.slots.duration(stream.to)
         shape = shape_of(stream)
         record = _Record(
@@ -190,7 +190,7 @@ class Plans:
         elif stream.paid == "once":
             yield replace(record, when=s.ONCE, before=1, end=start)
         else:
-            yield from self._periodic(stream, record)
+            yield from self._periodic(design, stream, record)
 
     def _looking_back(self, design: Design, stream: Stream, record: _Record) -> Iterator[_Record]:
         """The parts of a benefit on a move or once that depends on what another stream has paid."""
@@ -199,7 +199,7 @@ class Plans:
         if when == s.ONCE:
             record = replace(record, before=1, end=record.start)
         base = design.named(str(looked_back_at(stream)))
-        for (column, figure), row in paid_so_far(stream, base, self.slots, self.step):
+        for (column, figure), row in paid_so_far(stream, base, self.slots, self.step, record.start):
             amount, factor = self.slots.amount(figure if column is None else column)
             factor *= 1.0 if column is None else figure
             changing = self.slots.changing(self.relative.of_kind(row))
@@ -207,9 +207,9 @@ class Plans:
             own = int(row.part != "paid")
             yield replace(record, amount=amount, factor=factor * _sign(stream), changing=changing, own=own)
 
-    def _periodic(self, stream: Stream, record: _Record) -> Iterator[_Record]:
+    def _periodic(self, design: Design, stream: Stream, record: _Record) -> Iterator[_Record]:
         when = s.ARREARS if stream.paid == "arrears" else s.ADVANCE
-        ages = isinstance(stream.from_, AtAge) or isinstance(stream.to, AtAge)
+        ages = design.begins_at_age(stream) or isinstance(stream.to, AtAge)
         whole = int(stream.to is not None and not ages)
         period = self.slots.frequency(stream.a_year)
         before = int(when == s.ARREARS)

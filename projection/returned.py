@@ -174,17 +174,17 @@ class PaidSoFar:
         return ratio
 
 
-def paid_so_far(stream: Stream, base: Stream, slots: Slots, step: int) -> list[tuple[Money, PaidSoFar]]:
-    """Return what a stream that looks back at another is made of: amounts, each with its row per policy."""
+def paid_so_far(stream: Stream, base: Stream, slots: Slots, step: int, own: int) -> list[tuple[Money, PaidSoFar]]:
+    """Return the amounts of a stream that looks back, each with its row per policy; own: column of its start."""
     payment = _money(base.amount, base.share)
     periodic = base.paid != "once"
     common = {
         "shape": shape_of(base),
         "way": base.paid,
-        "start": slots.duration(base.from_),
+        "start": slots.duration(base.from_),  # type: ignore[arg-type]
         "end": -1 if base.to is None else slots.duration(base.to),
         "period": slots.frequency(base.a_year) if periodic else -1,
-        "once": -1 if stream.on is not None else slots.duration(stream.from_),
+        "once": -1 if stream.on is not None else own,
         "step": step,
     }
     if stream.proportion is not None:

@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from portfolios.chunk import Chunk
-from portfolios.designs import AtAge, Duration
+from portfolios.designs import AfterGuarantee, AtAge, Design, Duration, Stream
 
 from . import loops
 from .streams import LONGEST
@@ -50,6 +50,13 @@ class Slots:
         if isinstance(duration, str):
             return self._row(("duration", duration))
         return self._row(("years", float(duration)))
+
+    def start(self, design: Design, stream: Stream) -> int:
+        """Return the row of a stream's start, which may be the end of another one's guarantee."""
+        if not isinstance(stream.from_, AfterGuarantee):
+            return self.duration(stream.from_)
+        base = design.named(stream.from_.after)
+        return self._row(("sum", (self.duration(base.from_), self.duration(base.guarantee or 0.0))))  # type: ignore[arg-type]
 
     def latest(self, rows: tuple[int, ...]) -> int:
         """Return the row that holds the largest of some durations."""
@@ -91,6 +98,10 @@ class Slots:
                 matrix[row] = months_to_age(int(what), row)[order]  # type: ignore[arg-type]
             elif kind == "latest":
                 np.max(matrix[list(what)], axis=0, out=matrix[row])  # type: ignore[arg-type, index]
+            elif kind == "sum":
+                parts = matrix[list(what)]  # type: ignore[arg-type, index]
+                whole = np.minimum(parts.sum(axis=0), LONGEST)
+                matrix[row] = np.where((parts < 0).any(axis=0), NOT_WHOLE, whole)
             elif kind == "duration":
                 loops.whole_months(chunk.number(str(what)), order, float(LONGEST), matrix[row])
             elif kind == "years":

@@ -234,6 +234,10 @@ def _looking_back(draw: Draw, stream: dict[str, Any], others: list[dict[str, Any
 def designs(draw: Draw, code: str, step: str) -> Design:
     pair = chance(draw, 3)
     own = [draw(own_streams(f"own {number}", step, pair)) for number in range(draw(st.integers(1, 4)))]
+    guaranteed = [stream["name"] for stream in own if "guarantee" in stream]
+    for stream in own:
+        if guaranteed and stream["name"] not in guaranteed and chance(draw, 2):
+            stream["from"] = {"after": one_of(draw, *guaranteed)}
     for stream in own:
         _looking_back(draw, stream, [other for other in own if other is not stream], pair)
     shared = [
