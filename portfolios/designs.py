@@ -6,13 +6,13 @@ so many times a year, in advance or arrears, as a relative pattern times one amo
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 from datetime import date
 from typing import Any, Literal
 
 from pydantic import BaseModel, ConfigDict, Field, ValidationInfo, field_validator, model_validator
 
-from .returns import Returns, check_design, check_stream
+from .returns import Returns, check_design, check_stream, looked_back_at
 from .states import LEFT_ON, WHILE
 
 
@@ -114,6 +114,12 @@ class Stream(_Part):
         None,
         description="part of the reserve that it belongs to; absent: 'premium' if the direction is in, else 'benefit'",
     )
+    for_: dict[str, str | list[str]] = Field(
+        default_factory=dict,
+        alias="for",
+        description="text columns of the extract and the values, or lists of them, of the policies that have this "
+        "stream; absent: every policy",
+    )
     direction: Literal["in", "out"] | None = Field(None, description="whether the office receives or pays it")
     amount: float | str | None = Field(
         None, description="an extract column or a number: a year for payments while a state lasts, else each time"
@@ -202,7 +208,7 @@ class Stream(_Part):
     def _complete(self) -> Stream:
         given = self.model_fields_set
         if self.of is not None:
-            extra = sorted(given - {"name", "kind", "direction", "of", "share", "pattern", "clock"})
+            extra = sorted(given - {"name", "kind", "direction", "of", "share", "pattern", "clock", "for_"})
             if extra:
                 raise ValueError(f"a stream paid as a share 'of' another takes no '{extra[0].rstrip('_')}'")
             return self
@@ -234,6 +240,11 @@ class Stream(_Part):
     def part(self) -> Kind:
         """The kind, stated or by direction."""
         return self.kind or ("premium" if self.direction == "in" else "benefit")
+
+    def is_for(self, policy: Mapping[str, Any]) -> bool:
+        """Say whether a policy, a mapping of extract column to value, has this stream."""
+        asked = ((column, [one] if isinstance(one, str) else one) for column, one in self.for_.items())
+        return all(policy.get(column) in values for column, values in asked)
 
     def columns(self) -> Iterator[str]:
         """Extract columns that the stream looks at."""
@@ -278,7 +289,29 @@ class Design(_Part):
             if base.of is not None:
                 raise ValueError(f"stream '{stream.name}' is a share of '{stream.of}', which is itself a share")
         check_design(self)
+        self._check_filters()
         return self
+
+    def _check_filters(self) -> None:
+        for stream in self.stream:
+            after = stream.from_.after if isinstance(stream.from_, AfterGuarantee) else None
+            for name in (looked_back_at(stream), after):
+                if name is not None and self.named(name).for_ not in ({}, stream.for_):
+                    raise ValueError(
+                        f"stream '{stream.name}' looks at '{name}', which not every policy has; make 'for' the same"
+                    )
+
+    def having(self, streams: tuple[bool, ...]) -> Design:
+        """Return the design of policies that have some of the streams only; a share goes with its stream."""
+        kept = {stream.name for stream, has in zip(self.stream, streams, strict=True) if has}
+        rest = [one for one in self.stream if one.name in kept and (one.of is None or one.of in kept)]
+        return self if len(rest) == len(self.stream) else self.model_copy(update={"stream": rest})
+
+    def filters(self) -> Iterator[tuple[str, str, list[str]]]:
+        """Yield stream, column and values of everything that streams ask of the policies that have them."""
+        for stream in self.stream:
+            for column, values in stream.for_.items():
+                yield stream.name, column, [values] if isinstance(values, str) else values
 
     def _check_start(self, stream: Stream) -> None:
         if not isinstance(stream.from_, AfterGuarantee):

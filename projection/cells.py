@@ -45,6 +45,8 @@ class Cell:
     interest: int = -1
     expenses: tuple[int, ...] = ()
     missing: str = ""
+    streams: tuple[bool, ...] = ()
+    """Which of the design's streams the policies have; nothing where all have all."""
 
 
 class _Coder(Protocol):
@@ -117,7 +119,7 @@ class Cells:
         self.designs, self.basis = designs, basis
         self.columns = [column for column in rule_columns(basis, designs, kinds) if column != "product"]
         rules = _placed(basis)
-        self.coders: list[_Coder] = [_coder(column, kinds[column], rules) for column in self.columns]
+        self.coders: list[_Coder] = [_coder(column, kinds[column], rules, designs) for column in self.columns]
         self.cells: list[Cell] = []
         self._numbers: dict[Cell, int] = {}
         self._by_signature: dict[int, int] = {}
@@ -174,7 +176,9 @@ class Cells:
             if rule is None:
                 return Cell(design, missing=f"expense '{item.name}'")
             expenses.append(rule)
-        return Cell(design, mortality, second, lives, lapse, interest, tuple(expenses))
+        streams = tuple(stream.is_for(policy) for stream in self.designs[design].stream)
+        has = () if all(streams) else streams
+        return Cell(design, mortality, second, lives, lapse, interest, tuple(expenses), streams=has)
 
 
 def _of_life(policy: dict[str, Any], life: str) -> dict[str, Any]:
@@ -198,9 +202,17 @@ def _placed(basis: Basis) -> list[tuple[str, Rule]]:
 _KINDS = {"text": "text", "number": "numbers", "day": "dates", "flag": "true and false"}
 
 
-def _coder(column: str, kind: str, rules: list[tuple[str, Rule]]) -> _Coder:
+def _coder(column: str, kind: str, rules: list[tuple[str, Rule]], designs: list[Design]) -> _Coder:
     fitting: Any = {"text": str, "flag": bool, "number": (int, float), "day": date}[kind]
     values: list[Any] = list(LIVES) if column == "lives" else []
+    for design in designs:
+        for stream, asked_of, wanted in design.filters():
+            if asked_of == column and kind != "text":
+                raise DocumentError(
+                    f"design {design.code}, stream '{stream}', for: key '{column}' asks for text, but the extract's "
+                    f"column holds {_KINDS[kind]}; use a text column"
+                )
+            values += wanted if asked_of == column else []
     for place, rule in rules:
         # Of the second life the same is asked as of the first.
         condition = rule.for_.get(column, rule.for_.get(column.removeprefix("second_")))

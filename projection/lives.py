@@ -43,12 +43,14 @@ def second(column: str) -> str:
 
 def rule_columns(basis: Basis, designs: Iterable[Design], held: Collection[str]) -> list[str]:
     """Return the extract columns that rules look at, with those of the second life that the extract holds."""
+    designs = list(designs)
     named = [column for column in basis.document.rule_columns() if column != LIFE]
     if on_two(designs):
         seconds = [second(column) for rule in basis.document.mortality.rule for column in rule.for_]
         named += [column for column in seconds if column in held]
     # On one life too, the column says that nobody is left.
-    return list(dict.fromkeys([*named, *(["lives"] if "lives" in held or on_two(designs) else [])]))
+    asked = [column for design in designs for _, column, _ in design.filters()]
+    return list(dict.fromkeys([*named, *asked, *(["lives"] if "lives" in held or on_two(designs) else [])]))
 
 
 def now(design: Design, lives: str | None) -> str:

@@ -26,7 +26,7 @@ from .plain_lapse import Persistency, until_months
 from .plain_life import Survival, yearly_rates
 from .plain_lives import Lives, running
 from .plain_occasions import Course, Occasion
-from .plain_streams import Part, Policy, PolicyStream, design_streams
+from .plain_streams import Part, Policy, PolicyStream, design_streams, held_by
 from .settings import Settings
 
 __all__ = ["NotValued", "Payment", "PlainValue", "RulesUsed", "plain_value"]
@@ -233,6 +233,7 @@ def _streams(
     ends = [end for stream in streams for end in _ends(stream, course)]
     if all(end is not None and end < course.u for end in ends):
         raise NotValued("matured", f"product {design.code}", None, "something is to come after the valuation date")
+    design = held_by(design, policy)
     own = {stream.name for stream in design.stream if stream.of is None}
     added: list[PolicyStream] = []
     for item in basis.document.expense:

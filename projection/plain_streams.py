@@ -58,10 +58,14 @@ class PolicyStream:
 
 
 def design_streams(design: Design, policy: Policy, course: Course) -> list[PolicyStream]:
-    """Return the streams of a design for one policy, in the design's order.
+    """Return the streams of a design that a policy has, in the design's order.
 
     Raises NotValued where a column of the policy makes no sense for its stream.
     """
+    for stream in design.stream:
+        if stream.of is None and not stream.is_for(policy):
+            _must_be_sound(stream, policy, course, _waits_for(stream, design))
+    design = held_by(design, policy)
     own = [stream for stream in design.stream if stream.of is None]
     bases: dict[str, PolicyStream] = {}
     for stream in sorted(own, key=lambda one: looked_back_at(one) is not None):
@@ -71,6 +75,26 @@ def design_streams(design: Design, policy: Policy, course: Course) -> list[Polic
     return [
         bases[stream.name] if stream.of is None else _share_of(stream, bases[stream.of]) for stream in design.stream
     ]
+
+
+def held_by(design: Design, policy: Policy) -> Design:
+    """Return the design without the streams that a policy does not have."""
+    return design.having(tuple(stream.is_for(policy) for stream in design.stream))
+
+
+def _must_be_sound(stream: Stream, policy: Policy, course: Course, waits_for: Stream | None) -> None:
+    """Raise NotValued where a column of a stream that the policy does not have holds no good number all the same."""
+    try:
+        terms_of(stream, policy, course.step_months, waits_for)
+    except NotValued as fault:
+        if fault.reason not in UNFIT:
+            raise
+    rates = [stream.increase.rate] if stream.increase is not None else []
+    rates += [stream.returns.interest] if stream.returns is not None else []
+    rates += [stream.decrease.loan] if isinstance(stream.decrease, Loan) else []
+    for value in (stream.amount, *rates):
+        if value is not None and number(policy, value, f"stream '{stream.name}'") < 0 and value is stream.amount:
+            raise NotValued("amount negative", str(value), policy.get(str(value)), "an amount is at least 0")
 
 
 def _waits_for(stream: Stream, design: Design) -> Stream | None:

@@ -101,16 +101,16 @@ class Plans:
     segments: NDArray[Any] = field(default_factory=lambda: np.zeros(0, s.SEGMENT))
     ranges: NDArray[np.int64] = field(default_factory=lambda: np.zeros((0, 2), np.int64))
     accounts: dict[Account, int] = field(default_factory=dict)
-    _known: dict[tuple[int, tuple[int, ...], str, str], tuple[int, int]] = field(default_factory=dict)
+    _known: dict[tuple[int, tuple[int, ...], str, str, tuple[bool, ...]], tuple[int, int]] = field(default_factory=dict)
 
     def add(self, cell: Cell) -> None:
         """Add the plan of the next cell; a cell without rules gets an empty one.
 
         Cells that differ only in rates share their plan.
         """
-        key = (cell.design, cell.expenses, cell.missing, cell.lives)
+        key = (cell.design, cell.expenses, cell.missing, cell.lives, cell.streams)
         if key not in self._known:
-            records = [] if cell.missing else list(self._records(self.designs[cell.design], cell))
+            records = [] if cell.missing else list(self._records(self._design(cell), cell))
             begin = len(self.segments)
             made = list(segments_of(records))
             rows = np.zeros(len(made), s.SEGMENT)
@@ -119,6 +119,11 @@ class Plans:
             self.segments = np.concatenate((self.segments, rows))
             self._known[key] = (begin, len(self.segments))
         self.ranges = np.concatenate((self.ranges, [self._known[key]]))
+
+    def _design(self, cell: Cell) -> Design:
+        """The design with the streams that a cell's policies have."""
+        design = self.designs[cell.design]
+        return design.having(cell.streams) if cell.streams else design
 
     def _fill(self, row: Any, shape: _Record, charged: list[_Record]) -> None:
         for name in _SHARED:

@@ -230,6 +230,14 @@ def _looking_back(draw: Draw, stream: dict[str, Any], others: list[dict[str, Any
     stream.update(made)
 
 
+def _name_in(stream: dict[str, Any]) -> str | None:
+    """Name of the stream that another one gives back or waits for."""
+    start = stream.get("from")
+    if isinstance(start, dict) and "after" in start:
+        return str(start["after"])
+    return stream["returns"]["stream"] if "returns" in stream else None
+
+
 @st.composite
 def designs(draw: Draw, code: str, step: str) -> Design:
     pair = chance(draw, 3)
@@ -240,6 +248,12 @@ def designs(draw: Draw, code: str, step: str) -> Design:
             stream["from"] = {"after": one_of(draw, *guaranteed)}
     for stream in own:
         _looking_back(draw, stream, [other for other in own if other is not stream], pair)
+    for stream in own:
+        if not chance(draw, 4):
+            continue
+        kept = {name for other in own for name in (other.get("less"), other.get("proportion"), _name_in(other))}
+        if stream["name"] not in kept:
+            stream["for"] = one_of(draw, {"status": "paid up"}, {"status": ["in force", "paid up"]}, {"sex": "F"})
     shared = [
         draw(shares_of(f"share {number}", one_of(draw, *(stream["name"] for stream in own))))
         for number in range(draw(st.integers(0, 2)))
@@ -428,7 +442,7 @@ def policies(draw: Draw, number: int, codes: list[str], today: date) -> dict[str
     policy: dict[str, Any] = {
         "policy_id": f"Q{number}",
         "product": one_of(draw, *codes),
-        "status": "in force",
+        "status": one_of(draw, "in force", "paid up"),
         "birth_date": min(born, commenced),
         "commencement_date": commenced,
         "sex": one_of(draw, "F", "M"),

@@ -43,7 +43,7 @@ def by_engine(example: Example) -> tuple[list[dict[str, Any]], dict[Key, float],
     asked = rule_columns(example.basis, example.designs, extract.column_names)
     needed = needed_columns(example.designs, [*(name for name in until if isinstance(name, str)), *asked])
     kinds = {column: str(extract.column_kind(column)) for column in asked}
-    engine = Engine(example.designs, example.basis, example.settings, needed, kinds)
+    engine = Engine(example.designs, example.basis, example.settings, needed, kinds, ("in force", "paid up"))
     (chunk,) = extract.chunks(needed)
     valued = engine.value(chunk)
     flows, largest = defaultdict[Key, float](float), defaultdict[Key, float](float)
