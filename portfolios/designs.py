@@ -154,7 +154,7 @@ class Stream(_Part):
     from_: Start = Field(
         0.0,
         alias="from",
-        description="years from commencement to its start: a number, a column, { age = x }, or { after = \"name\" } "
+        description='years from commencement to its start: a number, a column, { age = x }, or { after = "name" } '
         "when the guarantee of the stream of that name ends",
     )
     to: Duration | None = Field(None, description="years from commencement to its end; absent: for life")
