@@ -24,6 +24,9 @@ from projection.premium_rates import Premiums, premiums, rounded
 from projection.settings import Settings
 from projection.unrounded import Valuer
 
+pytestmark = pytest.mark.compiled
+"""Whole offices: without compilation they take minutes."""
+
 SOLD = date(2026, 12, 1)
 A, B, C, INTEREST = 0.0004, 7.6e-6, 1.1185, 0.0275
 

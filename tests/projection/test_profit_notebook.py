@@ -13,6 +13,9 @@ from projection.plain_profit import plain_profit
 from projection.profit_measures import present_value
 from projection.profit_notebook import new_business_profits
 
+pytestmark = pytest.mark.compiled
+"""Whole offices: without compilation they take minutes."""
+
 CONTRACT = design(
     stream("premium", 30.0, direction="in", to=5, a_year=4),
     stream("cover", 1000.0, on="death", to=10),

@@ -21,6 +21,9 @@ from projection.results import MONEY_COLUMNS, Outcome
 from projection.run_document import RunDocument
 from projection.settings import Settings
 
+pytestmark = pytest.mark.compiled
+"""Whole offices: without compilation they take minutes."""
+
 DATE = "2026-11-30"
 GROUPS = ("product", "sex")
 

@@ -25,6 +25,9 @@ from projection.documents import read_basis, read_designs, read_shocks
 from projection.sensitivity import Sensitivity, value_shocks
 from projection.settings import Settings
 
+pytestmark = pytest.mark.compiled
+"""Whole offices: without compilation they take minutes."""
+
 TODAY = date(2026, 11, 30)
 ON = date(2026, 3, 10)
 CERTAIN = design(stream("annuity", 1.0, certain=True, paid="arrears", start=0, to=20, a_year=1))
