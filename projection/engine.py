@@ -12,7 +12,7 @@ from collections.abc import Collection
 from datetime import date
 from threading import Lock
 from time import perf_counter
-from typing import Any
+from typing import Any, NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -39,16 +39,42 @@ from .tally import QUANTA
 Mask = NDArray[np.bool_]
 
 
+class Placed(NamedTuple):
+    """A chunk before any rates are looked at: what the checks found, and where its policies stand.
+
+    The same for every basis with the same designs and settings.
+    """
+
+    checked: Checked
+    places: loops.Places
+
+    def again(self) -> Placed:
+        """Return a copy to which further reasons can be added."""
+        return self._replace(checked=self.checked.again())
+
+
+class Laid(NamedTuple):
+    """A chunk as the loops take it: the order of calculation, and in it the policies and their tables."""
+
+    order: NDArray[np.int64]
+    policies: NDArray[Any]
+    tables: loops.Tables
+
+
 class Valued:
     """A chunk after the loops: the checks' result brought up to date, and the loops' results."""
 
-    def __init__(self, checked: Checked, places: loops.Places, results: loops.Results, months: int) -> None:
-        self.checked = checked
-        self.places = places
+    def __init__(self, placed: Placed, laid: Laid, results: loops.Results, months: int) -> None:
+        self.placed = placed
+        self.laid = laid
         self.results = results
         self.months = months
         self.seconds: dict[str, float] = {}
-        self.asked: tuple[NDArray[np.int64], NDArray[Any], loops.Tables] | None = None
+
+    @property
+    def checked(self) -> Checked:
+        """What checks and loops found against the policies."""
+        return self.placed.checked
 
     def add_seconds(self, seconds: dict[str, float]) -> None:
         """Add the seconds of the phases of an earlier attempt."""
@@ -107,22 +133,40 @@ class Engine:
 
     def meet(self, chunk: Chunk) -> None:
         """Make the plans and rows that a chunk needs, before it is valued."""
-        checked = self.checks.check(chunk)
-        places = self._locate(chunk, checked)
+        checked, places = self.place(chunk, _Clock())
         with self._lock:
             self._find(chunk, checked, self._cells(chunk, checked), places)
 
-    def value(self, chunk: Chunk, before: Valued | None = None) -> Valued:
+    def place(self, chunk: Chunk, clock: _Clock | None = None) -> Placed:
+        """Check the policies of a chunk and find where they stand."""
+        clock = clock or _Clock()
+        checked = self.checks.check(chunk)
+        clock.lap("check")
+        places = self._locate(chunk, checked)
+        clock.lap("dates")
+        return Placed(checked, places)
+
+    def value(self, chunk: Chunk, placed: Placed | None = None) -> Valued:
         """Value the policies of a chunk.
 
-        before: the same chunk as valued on another basis with the same designs and settings; what was found against a
-        policy then holds here too, and checks and dates are not gone through again.
+        placed: the chunk as another engine with the same designs and settings placed it, perhaps with reasons found on
+        its basis; they hold here too, and checks and dates are not gone through again.
         """
         clock = _Clock()
-        checked = self.checks.check(chunk) if before is None else before.checked.again()
-        clock.lap("check")
-        places = self._locate(chunk, checked) if before is None else before.places
-        clock.lap("dates")
+        placed = self.place(chunk, clock) if placed is None else placed.again()
+        checked, laid = placed.checked, self._lay_out(chunk, placed, clock)
+        results = _room_for(chunk.n, checked, laid.tables, len(self.plans.accounts))
+        loops.value_policies(*laid, self.rules, results)
+        self._take_back(laid, results)
+        clock.lap("loops")
+        self._name_faults(checked, results.fault, laid.tables.segments)
+        valued = Valued(placed, laid, results, int(results.months[0]))
+        valued.seconds = clock.seconds
+        return valued
+
+    def _lay_out(self, chunk: Chunk, placed: Placed, clock: _Clock) -> Laid:
+        """Find rules and rows of curves, and lay the policies out in the order of calculation."""
+        checked, places = placed
         with self._lock:
             cell = self._cells(chunk, checked)
             clock.lap("rules")
@@ -133,29 +177,14 @@ class Engine:
         loops.fill_policies(order, places, found, after, self.settings.step_months, policies)
         tables = self._tables(chunk, checked, cell, order)
         clock.lap("curves")
-        results = _room_for(chunk.n, checked, tables, len(self.plans.accounts))
-        loops.value_policies(order, policies, tables, self.rules, results)
-        self._take_back(order, policies, tables, results)
-        clock.lap("loops")
-        self._name_faults(checked, results.fault, tables.segments)
-        valued = Valued(checked, places, results, int(results.months[0]))
-        valued.seconds = clock.seconds
-        valued.asked = order, policies, tables
-        return valued
+        return Laid(order, policies, tables)
 
     def profile(self, chunk: Chunk, months: int) -> tuple[Checked, loops.Profile]:
         """Profiles of policies on one life that commence on the valuation date, by periods of so many months."""
-        checked = self.checks.check(chunk)
-        places = self._locate(chunk, checked)
-        with self._lock:
-            cell = self._cells(chunk, checked)
-            found = self._find(chunk, checked, cell, places)
-        order = self._order(found)
-        policies = loops.records(np.zeros(chunk.n, POLICY))
-        after = self.discount.months_after_start()
-        loops.fill_policies(order, places, found, after, self.settings.step_months, policies)
-        tables = self._tables(chunk, checked, cell, order)
-        results = _room_for(chunk.n, checked, tables, 1)
+        clock = _Clock()
+        placed = self.place(chunk, clock)
+        checked, laid = placed.checked, self._lay_out(chunk, placed, clock)
+        results = _room_for(chunk.n, checked, laid.tables, 1)
         periods = LONGEST // months + 1
         profile = loops.Profile(
             months=months,
@@ -165,13 +194,11 @@ class Engine:
             in_force=np.zeros((chunk.n, periods)),
             discount=np.ones((chunk.n, periods)),
         )
-        loops.profile_policies(order, policies, tables, self.rules, results, profile)
-        self._name_faults(checked, results.fault, tables.segments)
+        loops.profile_policies(*laid, self.rules, results, profile)
+        self._name_faults(checked, results.fault, laid.tables.segments)
         return checked, profile
 
-    def _take_back(
-        self, order: NDArray[np.int64], policies: NDArray[Any], tables: loops.Tables, results: loops.Results
-    ) -> None:
+    def _take_back(self, laid: Laid, results: loops.Results) -> None:
         """Take back the cash flows of policies whose result turned out to be no amount of money.
 
         The same payments with the other sign, each rounded to the same whole number, leave nothing behind.
@@ -181,7 +208,7 @@ class Engine:
             return
         others = np.where(reason == Reason.RESULT_NOT_FINITE, 0, reason | 1).astype(reason.dtype)
         again = results._replace(reason=others)
-        loops.value_policies(order, policies, tables, self.rules._replace(sign=-1.0), again)
+        loops.value_policies(*laid, self.rules._replace(sign=-1.0), again)
 
     def _locate(self, chunk: Chunk, checked: Checked) -> loops.Places:
         places = loops.Places(*(np.zeros(chunk.n, dtype=np.int32) for _ in loops.Places._fields))

@@ -49,7 +49,7 @@ def solve(valuer: Valuer, policies: pa.Table, unknown: str, target: float | Numb
     absent. target: reserve in currency, one or one for each policy; 0 is the equivalence of premiums and benefits.
     net: leave expenses and commission out. Raises DocumentError where no design uses the column.
     """
-    if unknown not in valuer.engine.plans.slots.money and unknown not in _amounts(valuer):
+    if unknown not in _amounts(valuer):
         raise DocumentError(f"the unknown '{unknown}' is not an amount of any stream; it has {_listed(valuer)}")
 
     def at(amount: Numbers) -> tuple[Numbers, Unrounded]:

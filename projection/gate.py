@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import pyarrow as pa
 
-from .results import ControlTotal
+from .results import ControlTotal, SampleCheck
 
 
 class RunStopped(ValueError):  # noqa: N818 - what happened, in words that a message can use
@@ -36,6 +36,15 @@ def check_gate(control: tuple[ControlTotal, ...], exceptions: pa.Table, rows: in
         raise RunStopped(
             f"{policies.exceptions:,} of {policies.read:,} policies are exceptions ({share:.2%}), more than the "
             f"'exceptions_limit' of {limit:.2%} allows ({_commonest(exceptions)}); mend the extract or raise the limit"
+        )
+
+
+def check_sample(result: SampleCheck, on: str = "") -> None:
+    """Raise RunStopped where engine and plain twin differ on a sample; on: the basis, in front of what is said."""
+    if not result.passes:
+        raise RunStopped(
+            f"policy {result.policy_id}: {on}the engine and the plain twin differ by {result.largest_difference:.6g} "
+            f"({result.largest_relative:.1e} of the value); this is a fault of the program, please report it"
         )
 
 

@@ -34,6 +34,11 @@ def check_names(group_by: Sequence[str], further: Sequence[str] = ()) -> None:
         )
 
 
+def group_order(key: tuple[Any, ...]) -> tuple[Any, ...]:
+    """Return what groups are sorted by: their values, one kind after another, a missing one last."""
+    return tuple((value is None, str(type(value)), value) for value in key)
+
+
 class Groups:
     """Numbers the combinations of values of some columns as they are met; safe to use from several threads."""
 

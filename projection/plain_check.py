@@ -17,6 +17,9 @@ from .plain import plain_value
 from .results import SampleCheck
 from .settings import Settings
 
+SPARE = 24
+"""Policies that may step in where others of the sample turn out to be exceptions."""
+
 
 @dataclass(frozen=True)
 class Candidate:

@@ -21,9 +21,9 @@ from portfolios.identifiers import find_duplicates
 from .basis_columns import needs_of
 from .documents import shocked_basis
 from .engine import Engine, Valued
-from .gate import RunStopped
-from .groups import Groups, check_names
-from .plain_check import Sample
+from .gate import check_sample
+from .groups import Groups, check_names, group_order
+from .plain_check import SPARE, Sample
 from .results import Progress, SampleCheck, no_progress
 from .settings import Settings
 
@@ -33,9 +33,6 @@ PolicyReserves = Callable[[pa.Array, NDArray[np.bool_], Minor, Minor], None]
 """Takes, chunk by chunk, what belongs to the policies that the base values: identifiers; whether each shocked basis
 values them too, shape (shocks, policies); reserves on the base, shape (policies,), and on the shocked bases, shape
 (shocks, policies), in minor units. Where a policy is not valued its figure is 0."""
-
-SPARE = 24
-"""Policies that may step in where others of the sample turn out to be exceptions."""
 
 
 @dataclass(frozen=True)
@@ -110,12 +107,14 @@ class _Run:
         read = 0
         with ThreadPoolExecutor(max(1, threads), thread_name_prefix="shock") as pool:
             for chunk in self.extract.chunks(self.needed, chunk_rows):
-                # The first engine converts the columns that the others share.
-                base = self.engines[0].value(chunk)
                 # What the checks find holds on every basis, but what one basis refuses does not keep others from it.
-                checked = self.engines[0].checks.check(chunk)
-                start = Valued(checked, base.places, base.results, 0)
-                found = [base, *pool.map(lambda engine, part=chunk, at=start: engine.value(part, at), self.engines[1:])]
+                placed = self.engines[0].place(chunk)
+                # The first engine converts the columns that the others share.
+                base = self.engines[0].value(chunk, placed)
+                found = [
+                    base,
+                    *pool.map(lambda engine, part=chunk, at=placed: engine.value(part, at), self.engines[1:]),
+                ]
                 for check, valued in zip(self.checks, found, strict=True):
                     check.take(check.candidates(chunk, valued))
                 self._add(chunk, found, sink)
@@ -142,12 +141,7 @@ class _Run:
         """The checks of the shocks' bases. Raises RunStopped where the plain twin disagrees with one or the base."""
         results = [check.result() for check in self.checks]
         for basis, result in zip(self.bases, results, strict=True):
-            if not result.passes:
-                raise RunStopped(
-                    f"policy {result.policy_id}, basis '{basis.title}': the engine and the plain twin differ by "
-                    f"{result.largest_difference:.6g} ({result.largest_relative:.1e} of the value); this is a fault of "
-                    "the program, please report it"
-                )
+            check_sample(result, f"on basis '{basis.title}': ")
         return tuple(results[place] for place in self.place)
 
     def table(self, named: list[tuple[str, str]]) -> pa.Table:
@@ -155,8 +149,7 @@ class _Run:
         keys, unit = self.groups.keys, 10**self.settings.decimals
         rows: list[dict[str, Any]] = []
         for (name, title), sums in zip(named, self.sums, strict=True):
-            order = sorted(sums, key=lambda place: tuple((v is None, str(type(v)), v) for v in keys[place]))
-            for place in order:
+            for place in sorted(sums, key=lambda place: group_order(keys[place])):
                 policies, base, after = sums[place]
                 row: dict[str, Any] = {"shock": name, "title": title}
                 row |= dict(zip(self.group_by, keys[place], strict=True))

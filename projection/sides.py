@@ -19,7 +19,6 @@ from .basis_names import OWN, check_name
 from .documents import DocumentError
 from .engine import Engine, Valued
 from .plain_check import Sample
-from .results import SampleCheck
 from .tally import Tally
 
 
@@ -37,10 +36,6 @@ class Side:
     def said(self) -> str:
         """The basis in the words of a message."""
         return f"on basis '{self.name}': " if self.name else ""
-
-    def checked(self) -> SampleCheck:
-        """Return the sample's result."""
-        return self.sample.result()
 
 
 def named_bases(basis: Basis, further: Mapping[str, Basis]) -> dict[str, Basis]:
@@ -62,12 +57,12 @@ def value_on_all(sides: list[Side], chunk: Chunk) -> tuple[list[Valued], NDArray
     found = [sides[0].engine.value(chunk)]
     refused = np.where(found[0].checked.reason != 0, 0, -1).astype(np.int8)
     for place, side in enumerate(sides[1:], 1):
-        found.append(side.engine.value(chunk, found[-1]))
+        found.append(side.engine.value(chunk, found[-1].placed))
         refused[(found[-1].checked.reason != 0) & (refused < 0)] = place
     left_out = np.count_nonzero(found[-1].checked.reason)
     for place, side in enumerate(sides[:-1]):
         if np.count_nonzero(found[place].checked.reason) < left_out:
-            again = side.engine.value(chunk, found[-1])
+            again = side.engine.value(chunk, found[-1].placed)
             again.add_seconds(found[place].seconds)
             found[place] = again
     return found, refused

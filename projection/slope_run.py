@@ -22,7 +22,7 @@ from . import loops
 from .basis_columns import needs_of
 from .documents import DocumentError
 from .engine import Engine
-from .groups import Groups
+from .groups import Groups, group_order
 from .plans import Line
 from .results import Progress, no_progress
 from .settings import Settings
@@ -136,9 +136,7 @@ class _Run:
 
     def _work(self, chunk: Chunk) -> int:
         valued = self.engine.value(chunk)
-        if valued.asked is None:
-            return chunk.n
-        order, policies, tables = valued.asked
+        order, policies, tables = valued.laid
         group = self.groups.of(chunk)[order]
         for number in np.unique(group).tolist():
             mine = np.flatnonzero(group == number)
@@ -160,7 +158,7 @@ class _Run:
         keys = self.groups.keys
         order = sorted(
             (number for number, one in self.gathered.items() if one.policies),
-            key=lambda number: tuple((value is None, str(type(value)), value) for value in keys[number]),
+            key=lambda number: group_order(keys[number]),
         )
         rows, lines, shifts = [], [], []
         for number in order:

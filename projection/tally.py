@@ -10,6 +10,7 @@ import pyarrow as pa
 from numpy.typing import NDArray
 
 from . import loops
+from .groups import group_order
 from .plans import Plans
 from .results import MONEY_COLUMNS, ControlTotal
 
@@ -76,7 +77,7 @@ class Tally:
         """Totals by group, sorted by group: group columns, policies, money columns, rounding."""
         order = sorted(
             (place for place in range(len(self.totals)) if self.totals[place, 0]),
-            key=lambda place: tuple((value is None, str(type(value)), value) for value in keys[place]),
+            key=lambda place: group_order(keys[place]),
         )
         columns: dict[str, Any] = {
             name: pa.array([keys[place][at] for place in order]) for at, name in enumerate(names)

@@ -26,17 +26,14 @@ from .basis_names import OWN, column_on
 from .chunk_results import ChunkResults
 from .documents import DocumentError
 from .engine import Engine
-from .gate import RunStopped, check_gate
+from .gate import check_gate, check_sample
 from .groups import Groups, check_names
-from .plain_check import Sample
-from .results import MONEY_COLUMNS, OnBasis, Outcome, PolicySink, Progress, SampleCheck, no_progress
+from .plain_check import SPARE, Sample
+from .results import MONEY_COLUMNS, OnBasis, Outcome, PolicySink, Progress, no_progress
 from .settings import Settings
 from .sheet import convention_sheet
 from .sides import Side, named_bases, value_on_all
 from .tally import ChunkTally, Tally
-
-SPARE = 24
-"""Policies that may step in where others of the sample turn out to be exceptions."""
 
 
 @dataclass(frozen=True)
@@ -191,7 +188,9 @@ class _Valuation:
         control = own.tally.control_totals()
         exceptions = pa.concat_tables([no_exceptions(), *own.tally.exceptions])
         check_gate(control, exceptions, self.extract.rows, self.plan.exceptions_limit)
-        samples = [_agreeing(side) for side in self.sides]
+        samples = [side.sample.result() for side in self.sides]
+        for side, sample in zip(self.sides, samples, strict=True):
+            check_sample(sample, side.said)
         totals = own.tally.totals_table(self.group_by, self.groups.keys)
         for side in others:
             table = side.tally.totals_table(self.group_by, self.groups.keys)
@@ -233,18 +232,6 @@ class _Valuation:
             for phase, taken in side.tally.seconds.items():
                 seconds[phase] = seconds.get(phase, 0.0) + taken
         return {**seconds, "total": perf_counter() - began}
-
-
-def _agreeing(side: Side) -> SampleCheck:
-    """Return the result of a basis's sample. Raises RunStopped where engine and twin differ."""
-    result = side.checked()
-    if not result.passes:
-        raise RunStopped(
-            f"policy {result.policy_id}: {side.said}the engine and the plain twin differ by "
-            f"{result.largest_difference:.6g} ({result.largest_relative:.1e} of the value); this is a fault of the "
-            "program, please report it"
-        )
-    return result
 
 
 def _counts(side: Side) -> dict[str, int]:
