@@ -12,9 +12,10 @@ from dataclasses import replace
 from datetime import date, timedelta
 
 from .adjustments import Adjustment, Step, Window
-from .basis import Basis
+from .basis import Basis, BasisDocument
 from .expenses import Expense
 from .interest import YieldCurve, curve_from
+from .items import Item
 from .shocked_curves import ForwardMoved, Move, SpotMoved, check_curve
 from .shocked_expenses import changed_item, inflated
 from .shocked_scales import Turn, turned
@@ -91,6 +92,11 @@ def _adjusted(held: tuple[Adjustment | None, ...], pieces: list[Piece], step: St
     return tuple(made)
 
 
+def _with_rules(basis: Basis, change: Change, **part: Item) -> BasisDocument:
+    """Return the document with a part whose rules were cut in two; itself where the change is for all policies."""
+    return basis.document.model_copy(update=part) if change.for_ else basis.document
+
+
 def _mortality(basis: Basis, change: Change, valuation_date: date) -> Basis:
     made, pieces = _mortality_split(basis, change)
     return replace(made, adjustments=_adjusted(basis.adjustments, pieces, _step(change, valuation_date)))
@@ -110,12 +116,9 @@ def _mortality_split(basis: Basis, change: Change) -> tuple[Basis, list[Piece]]:
     mortality = basis.document.mortality
     rules, pieces = split(mortality.rule, change.for_)
     scales = basis.scales or (None,) * len(mortality.rule)
-    document = basis.document
-    if change.for_:
-        document = document.model_copy(update={"mortality": mortality.model_copy(update={"rule": rules})})
     return replace(
         basis,
-        document=document,
+        document=_with_rules(basis, change, mortality=mortality.model_copy(update={"rule": rules})),
         rates=tuple(basis.rates[piece.of] for piece in pieces),
         scales=tuple(scales[piece.of] for piece in pieces),
         adjustments=tuple(basis.adjustments[piece.of] for piece in pieces) if basis.adjustments else (),
@@ -127,12 +130,9 @@ def _lapse(basis: Basis, change: Change, valuation_date: date) -> Basis:
     if lapse is None:
         return _nothing(basis, change)
     rules, pieces = split(lapse.rule, change.for_)
-    document = basis.document
-    if change.for_:
-        document = document.model_copy(update={"lapse": lapse.model_copy(update={"rule": rules})})
     return replace(
         basis,
-        document=document,
+        document=_with_rules(basis, change, lapse=lapse.model_copy(update={"rule": rules})),
         lapses=tuple(basis.lapses[piece.of] for piece in pieces),
         lapse_adjustments=_adjusted(basis.lapse_adjustments, pieces, _step(change, valuation_date)),
     )
@@ -148,9 +148,7 @@ def _nothing(basis: Basis, change: Change, valuation_date: date | None = None) -
 def _interest(basis: Basis, change: Change, valuation_date: date) -> Basis:
     interest = basis.document.interest
     rules, pieces = split(interest.rule, change.for_)
-    document = basis.document
-    if change.for_:
-        document = document.model_copy(update={"interest": interest.model_copy(update={"rule": rules})})
+    document = _with_rules(basis, change, interest=interest.model_copy(update={"rule": rules}))
     curves = tuple(_moved(basis.curves[one.of], change) if one.changes else basis.curves[one.of] for one in pieces)
     return replace(basis, document=document, curves=curves)
 

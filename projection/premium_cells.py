@@ -10,22 +10,16 @@ import pyarrow as pa
 
 from .documents import DocumentError
 from .plain_dates import monthiversary
-from .premium_document import PremiumDocument, SameAs, ToAge
+from .premium_document import BAND, PremiumDocument, SameAs, ToAge
 
 AGES = {"age": "birth_date", "second_age": "second_birth_date"}
 """Axes that stand for a date: the age on the day of sale, which is a birthday."""
 
-BAND = "size_from"
-"""Column of a rate table with the smallest size of a cell's band."""
-
 
 def cells_of(document: PremiumDocument) -> pa.Table:
     """Return the axes of the table, one row for each cell, the last axis running fastest; then the size bands."""
-    names, values = list(document.grid), [document.values(axis) for axis in document.grid]
-    if document.size is not None:
-        names, values = [*names, BAND], [*values, [band.from_ for band in document.size.band]]
-    rows = list(product(*values))
-    return pa.table({name: _column(name, [row[place] for row in rows]) for place, name in enumerate(names)})
+    rows = list(product(*document.axes.values()))
+    return pa.table({name: _column(name, [row[place] for row in rows]) for place, name in enumerate(document.axes)})
 
 
 def policies_of(document: PremiumDocument, cells: pa.Table) -> pa.Table:

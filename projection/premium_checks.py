@@ -8,7 +8,7 @@ from typing import Any, NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from .premium_document import PremiumDocument
+from .premium_document import BAND, PremiumDocument
 
 Numbers = NDArray[np.float64]
 
@@ -43,11 +43,7 @@ class _Axes:
     """The axes of a table: their names, their values and the shape; the size bands come last."""
 
     def __init__(self, document: PremiumDocument) -> None:
-        self.names = list(document.grid)
-        self.values = [document.values(axis) for axis in self.names]
-        if document.size is not None:
-            self.names.append("size_from")
-            self.values.append([band.from_ for band in document.size.band])
+        self.names, self.values = list(document.axes), list(document.axes.values())
         self.shape = tuple(map(len, self.values))
 
     def cell(self, place: tuple[int, ...]) -> dict[str, Any]:
@@ -104,7 +100,7 @@ def _edges(axes: _Axes, cube: Numbers, document: PremiumDocument, price: bool) -
                 said = (
                     f"at {edge:,.2f} of {size.column} the rate falls to {above[place]:,.10g} from {below[place]:,.10g}"
                 )
-            yield Finding("neighbouring sizes", "size_from", cell, said)
+            yield Finding("neighbouring sizes", BAND, cell, said)
 
 
 def _next(place: tuple[Any, ...], along: int) -> tuple[int, ...]:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from datetime import date
 from typing import Any, Literal
 
@@ -155,9 +156,7 @@ class PremiumDocument(_Part):
                     raise ValueError(f"checks: '{axis}' in {name} is no axis of rising numbers")
         if self.policy_fee and self.size is None:
             raise ValueError("a policy fee needs 'size', since it is what does not depend on the size")
-        cells = len(self.size.band) if self.size else 1
-        for axis in self.grid:
-            cells *= len(self.values(axis))
+        cells = math.prod(map(len, self.axes.values()))
         if cells > MOST_CELLS:
             raise ValueError(f"the grid has {cells:,} cells; at most {MOST_CELLS:,} are worked out at once")
         return self
@@ -166,6 +165,14 @@ class PremiumDocument(_Part):
         """Return the values of an axis in order."""
         written = self.grid[axis]
         return written.numbers() if isinstance(written, Steps) else list(written)
+
+    @property
+    def axes(self) -> dict[str, list[Any]]:
+        """Every axis of the table with its values, the size bands last where there are sizes."""
+        axes = {axis: self.values(axis) for axis in self.grid}
+        if self.size is not None:
+            axes[BAND] = [band.from_ for band in self.size.band]
+        return axes
 
     @property
     def smooth_axes(self) -> list[str]:
@@ -183,3 +190,6 @@ class PremiumDocument(_Part):
 
 MOST_CELLS = 2_000_000
 """Cells of a rate table."""
+
+BAND = "size_from"
+"""Axis and column of a rate table with the smallest size of a cell's band."""

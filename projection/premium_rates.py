@@ -51,7 +51,7 @@ class Premiums:
     @property
     def shape(self) -> tuple[int, ...]:
         """Lengths of the axes, with the size bands last where there are sizes."""
-        return shape_of(self.document)
+        return tuple(map(len, self.document.axes.values()))
 
 
 def premiums(document: PremiumDocument, designs: list[Design], basis: Basis) -> Premiums:
@@ -89,12 +89,6 @@ def premiums(document: PremiumDocument, designs: list[Design], basis: Basis) -> 
 def is_price(document: PremiumDocument, design: Design) -> bool:
     """Say whether the unknown is what the office receives."""
     return any(one.amount == document.unknown and one.direction == "in" for one in design.stream)
-
-
-def shape_of(document: PremiumDocument) -> tuple[int, ...]:
-    """Return the lengths of the axes, with the size bands last where there are sizes."""
-    bands = (len(document.size.band),) if document.size else ()
-    return (*(len(document.values(axis)) for axis in document.grid), *bands)
 
 
 def rounded(rates: Numbers, rounding: Rounding) -> Numbers:

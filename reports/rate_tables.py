@@ -28,12 +28,7 @@ class CrossTable:
 
 def cross_tables(premiums: Premiums) -> list[CrossTable]:
     """Return the rates with the longest axis downwards and the next longest across."""
-    document = premiums.document
-    names = list(document.grid)
-    values = [document.values(axis) for axis in names]
-    if document.size is not None:
-        names.append("size_from")
-        values.append([band.from_ for band in document.size.band])
+    names, values = list(premiums.document.axes), list(premiums.document.axes.values())
     cube = premiums.rates.reshape(premiums.shape)
     order = sorted(range(len(names)), key=lambda place: (-len(values[place]), place))
     down, across = order[0], order[1] if len(order) > 1 else None
